@@ -1,0 +1,2 @@
+//! The evenpoise command.
+fn main() {}
