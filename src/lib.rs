@@ -5,3 +5,5 @@
 //! * [`numeric`]: blocks of points, exponentials, streams, special functions;
 
 pub mod numeric;
+pub mod proposal;
+pub mod refit;
