@@ -3,5 +3,7 @@
 //! The rooms, in reading order, which is also dependency order:
 //!
 //! * [`numeric`]: blocks of points, exponentials, streams, special functions;
+//! * [`weights`]: log weights and what is said about them: effective sample size, tail shape, errors, verdict;
 
 pub mod numeric;
+pub mod weights;
