@@ -3,7 +3,11 @@
 //! The rooms, in reading order, which is also dependency order:
 //!
 //! * [`numeric`]: blocks of points, exponentials, streams, special functions;
+//! * [`proposal`]: mixtures of Gaussian and Student-t components, drawn from and evaluated;
+//! * [`weights`]: log weights and what is said about them: effective sample size, tail shape, errors, verdict;
+//! * [`refit`]: fits of a mixture to weighted points;
 
 pub mod numeric;
 pub mod proposal;
 pub mod refit;
+pub mod weights;
