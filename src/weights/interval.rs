@@ -6,9 +6,9 @@ use crate::numeric::{exp, ln};
 pub(super) const TWO_SIDED_95: f64 = 1.959_963_984_540_054;
 
 /// The name of [`normal_interval`] in results.
-pub const NORMAL: &str = "normal";
+pub(super) const NORMAL: &str = "normal";
 /// The name of [`log_interval`] in results.
-pub const LOG_NORMAL: &str = "log-normal";
+pub(super) const LOG_NORMAL: &str = "log-normal";
 
 /// `value -+ 1.96 se`.
 #[must_use]
