@@ -3,15 +3,21 @@
 //!
 //! Read in this order: [`LogWeights`] (the weights, valid by construction), [`TailShape`] (how heavy their top is),
 //! [`Strata`] (standard errors that know how the draws were spread over components), [`Score`] (all numbers about
-//! a set of weights). Every routine works relative to the largest log weight, so a target whose constant is off by
+//! a set of weights), [`Estimate`] (the answers), [`combine_rounds`] (rounds as one answer). Every routine works relative to the largest log weight, so a target whose constant is off by
 //! `e^5000` gives the same score.
 
+mod estimate;
+mod interval;
 mod log_weights;
+mod rounds;
 mod score;
 mod stratified;
 mod tail;
 
+pub use estimate::{Answer, Estimate, plain_mean, ratio_estimate};
+pub use interval::{log_interval, no_hit_bound, normal_interval};
 pub use log_weights::{LogWeights, WeightError};
+pub use rounds::{CombinedRounds, RoundMean, combine_rounds};
 pub use score::{Score, score};
 pub use stratified::{Strata, StratifiedMean};
 pub use tail::{TailReason, TailShape, smoothed_weights, tail_limit};

@@ -4,14 +4,13 @@ use super::LogWeights;
 use super::Strata;
 use super::TailReason;
 use super::TailShape;
+use super::interval::TWO_SIDED_95;
 use super::stratified::StratifiedMean;
 use crate::numeric::exp;
 use serde::Serialize;
 
 /// Above this tail shape the fourth moment that the error of the ESS fraction needs does not settle.
 const MAX_SHAPE_FOR_SE: f64 = 0.5;
-/// Normal quantile of a two-sided 95 % interval.
-pub(super) const TWO_SIDED_95: f64 = 1.959_963_984_540_054;
 
 /// What a set of weights says about the proposal it was drawn from. NaN (`null` in JSON) stands for "not known".
 ///
