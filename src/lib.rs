@@ -6,8 +6,13 @@
 //! * [`proposal`]: mixtures of Gaussian and Student-t components, drawn from and evaluated;
 //! * [`weights`]: log weights and what is said about them: effective sample size, tail shape, errors, verdict;
 //! * [`refit`]: fits of a mixture to weighted points;
+//! * [`adapt`]: the loop;
 
+pub mod adapt;
 pub mod numeric;
 pub mod proposal;
 pub mod refit;
 pub mod weights;
+
+/// An error of any kind that can cross threads.
+pub type BoxError = Box<dyn std::error::Error + Send + Sync>;

@@ -1,0 +1,119 @@
+//! The end: an ensemble of the last fits, confirm draws that decide, report draws that nothing else touches.
+
+use super::TuneError;
+use super::course::Course;
+use super::observer::Stage;
+use super::plan::Plan;
+use super::refine::ensemble;
+use super::settings::Settings;
+use super::standard::Standard;
+use super::tuning::{Finalist, ReportDraws};
+use crate::numeric::Purpose;
+use crate::proposal::{Drawn, Mixture};
+use crate::weights::{LogWeights, Score, score};
+
+/// Fits that the ensemble joins.
+const LAST_FITS: usize = 3;
+/// An earlier round is chosen only if its fresh ESS fraction is above the ensemble's by this and two standard errors.
+const MARGIN: f64 = 0.05;
+/// A round in which one draw held more than this is not trusted with the choice.
+const TRUSTED_SHARE: f64 = 0.05;
+
+/// The proposal chosen, in the start's units, and who stood beside it.
+pub(crate) fn choose(
+    target: &Standard,
+    settings: &Settings,
+    plan: &Plan,
+    wide: &Mixture,
+    course: &Course,
+) -> Result<(Mixture, Vec<Finalist>), TuneError> {
+    target.enter(Stage::Confirm);
+    let from = course.fits.len().saturating_sub(LAST_FITS);
+    let (joined, predicted) = ensemble(&course.pool, &course.fits[from..], wide, settings, course.last_draws)?;
+    let n = plan.confirm.min(plan.budget - target.spent()) as usize;
+    let confirmed = fresh_score(target, settings, &joined, n, Purpose::Confirm)?.1;
+    let mut finalists = vec![Finalist {
+        name: "ensemble".into(),
+        predicted_ess_fraction: predicted,
+        score: confirmed.clone(),
+        chosen: false,
+    }];
+    let best = best_round(course);
+    let mut chosen = joined;
+    let mut winner = 0;
+    if let Some(best) = best {
+        let round = &course.rounds[best];
+        finalists.push(Finalist {
+            name: format!("round {}", round.index),
+            predicted_ess_fraction: round.predicted_ess_fraction,
+            score: round.score.clone(),
+            chosen: false,
+        });
+        if clearly_better(round.score.as_ref(), confirmed.as_ref()) {
+            chosen = course.proposals[best].clone();
+            winner = 1;
+        }
+    }
+    finalists[winner].chosen = true;
+    Ok((chosen, finalists))
+}
+
+/// The round with the largest fresh ESS fraction among those whose score can be trusted.
+fn best_round(course: &Course) -> Option<usize> {
+    let mut best: Option<(f64, usize)> = None;
+    for (i, round) in course.rounds.iter().enumerate() {
+        if let Some(s) = &round.score
+            && s.largest_share < TRUSTED_SHARE
+            && best.is_none_or(|(ess, _)| s.ess_fraction > ess)
+        {
+            best = Some((s.ess_fraction, i));
+        }
+    }
+    best.map(|(_, i)| i)
+}
+
+fn clearly_better(round: Option<&Score>, ensemble: Option<&Score>) -> bool {
+    match (round, ensemble) {
+        (Some(_), None) => true,
+        (Some(a), Some(b)) => {
+            let error = 2.0 * b.ess_fraction_se.unwrap_or(0.1);
+            a.ess_fraction - MARGIN > b.ess_fraction + error
+        }
+        _ => false,
+    }
+}
+
+/// Draws `n` points, evaluates and scores them.
+fn fresh_score(
+    target: &Standard,
+    settings: &Settings,
+    proposal: &Mixture,
+    n: usize,
+    purpose: Purpose,
+) -> Result<(ReportDraws, Option<Score>), TuneError> {
+    let Drawn { points, labels } = proposal.draw(n, settings.seed, purpose, 0);
+    let log_proposal = proposal.log_density(&points);
+    let log_target = target.values(&points)?;
+    let draws = ReportDraws { points, labels, log_target, log_proposal };
+    let score = LogWeights::new(draws.log_weights()).ok().map(|w| score(&w, &draws.labels));
+    Ok((draws, score))
+}
+
+/// All that is left of the budget, drawn from the frozen proposal: the number was fixed before any of them was seen. Points and log
+/// densities come back in the proposal's coordinates.
+pub(crate) fn report(
+    target: &Standard,
+    settings: &Settings,
+    plan: &Plan,
+    chosen: &Mixture,
+) -> Result<(ReportDraws, Option<Score>), TuneError> {
+    target.enter(Stage::Report);
+    let n = plan.budget.saturating_sub(target.spent()) as usize;
+    let (mut draws, score) = fresh_score(target, settings, chosen, n, Purpose::Report)?;
+    draws.points = target.coordinates(&draws.points);
+    let shift = target.log_spread();
+    for l in draws.log_target.iter_mut().chain(&mut draws.log_proposal) {
+        *l -= shift;
+    }
+    Ok((draws, score))
+}

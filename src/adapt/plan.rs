@@ -1,0 +1,97 @@
+//! How a budget is divided before anything is spent.
+
+use super::TuneError;
+use super::settings::Settings;
+
+/// Shares and caps of the budget, in evaluations.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Plan {
+    /// All evaluations.
+    pub(crate) budget: u64,
+    /// The survey ends at this count, whatever it found.
+    pub(crate) survey_cap: u64,
+    /// The survey looks for thin basins up to this count even when nothing new turns up.
+    pub(crate) survey_least: u64,
+    /// One call of probing may spend this much.
+    pub(crate) probe: u64,
+    /// Curvature and probes after rounds may spend this much in all.
+    pub(crate) births: u64,
+    /// Confirm draws.
+    pub(crate) confirm: u64,
+    /// Report draws, at least.
+    pub(crate) report: u64,
+    /// Rounds at most.
+    pub(crate) most_rounds: u32,
+    /// Draws of a round, at least.
+    pub(crate) least_round: u64,
+    /// Draws of every round, where the user set them.
+    pub(crate) round_draws: Option<u64>,
+}
+
+/// Shares of the budget. Report: so that the reported error rests on as many draws as a third of the tuning; survey: 15 % found every
+/// mode of the trial problems; the others are what the loop needs on them (`docs/experiments.md`).
+const SURVEY: f64 = 0.15;
+const SURVEY_LEAST: f64 = 0.06;
+const PROBE: f64 = 0.04;
+const BIRTHS: f64 = 0.15;
+const CONFIRM: f64 = 0.05;
+const REPORT: f64 = 0.25;
+/// Rounds when the user does not say: more bring noise, fewer too little adaptation.
+const ROUNDS: u32 = 10;
+
+impl Plan {
+    pub(crate) fn new(settings: &Settings, dim: usize) -> Result<Self, TuneError> {
+        let d = dim as u64;
+        let budget = settings.budget;
+        let least = 300 + 60 * d;
+        if budget < least {
+            return Err(TuneError::Budget { budget, dim, least });
+        }
+        let of = |share: f64| (share * budget as f64) as u64;
+        Ok(Self {
+            budget,
+            survey_cap: of(SURVEY),
+            survey_least: of(SURVEY_LEAST),
+            probe: of(PROBE),
+            births: of(BIRTHS),
+            confirm: of(CONFIRM).max(of(0.1).min(200)),
+            report: of(settings.report_share.unwrap_or(REPORT)).max(of(0.2).min(400)),
+            most_rounds: settings.rounds.min(ROUNDS.max(if settings.round_draws.is_some() {
+                settings.rounds
+            } else {
+                0
+            })),
+            least_round: (150 + 25 * d).min(budget / 6),
+            round_draws: settings.round_draws.map(|n| n.max(10 * (d + 1))),
+        })
+    }
+
+    /// Evaluations left for rounds when `spent` are gone.
+    pub(crate) fn left_for_rounds(&self, spent: u64) -> u64 {
+        self.budget.saturating_sub(spent + self.confirm + self.report)
+    }
+
+    /// Number of rounds that what is left after the survey allows.
+    pub(crate) fn rounds(&self, spent: u64) -> u32 {
+        let left = self.left_for_rounds(spent);
+        let fitting = match self.round_draws {
+            Some(n) => left.div_ceil(n),
+            None => left / self.least_round,
+        };
+        (fitting.min(u64::from(self.most_rounds)) as u32).max(2.min(self.most_rounds)).max(1)
+    }
+
+    /// Draws of round `r` (from 0) of `rounds`: sizes grow from half their mean to it at mid-run; the last one takes what is left.
+    pub(crate) fn draws(&self, r: u32, rounds: u32, spent: u64) -> u64 {
+        let left = self.left_for_rounds(spent);
+        if let Some(n) = self.round_draws {
+            return n.min(left);
+        }
+        let to_come = u64::from(rounds - r);
+        if to_come <= 1 {
+            return left;
+        }
+        let grown = 0.5 + 0.5 * (2.0 * f64::from(r) / f64::from(rounds)).min(1.0);
+        (left as f64 / to_come as f64 * grown) as u64
+    }
+}
