@@ -64,6 +64,13 @@ fn run(row: &Row, seed: u64) -> Outcome {
         })
         .count();
     let reported = tuning.score.as_ref();
+    if std::env::args().any(|a| a == "--candidates") {
+        for r in &tuning.rounds {
+            let list: Vec<String> =
+                r.candidates.iter().map(|c| format!("{:?}k{}:{:+.3}", c.step, c.components, c.gain)).collect();
+            println!("    round {} g {:.2} halo {:.3} wide {:.3} {}", r.index, r.exponent, r.halo_share, r.wide_share, list.join(" "));
+        }
+    }
     Outcome {
         evaluations: tuning.evaluations,
         ess: score(&weights, &[]).ess_fraction,

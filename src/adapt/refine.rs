@@ -115,14 +115,21 @@ pub(crate) fn refine(
     );
     let made = permitted(made, settings);
     let held_points = pool.points.select(&held);
+    let ranked = if crate::knob("RL", 1.0) > 0.5 {
+        fit.layers.map(|_| LayerShares { halo: crate::knob("RH", 0.03), wide: crate::knob("RW", 0.02) })
+    } else {
+        fit.layers
+    };
     let log_densities = made
         .iter()
-        .map(|c| Ok(layered(&c.mixture, wide, fit.layers)?.log_density(&held_points)))
+        .map(|c| Ok(layered(&c.mixture, wide, ranked)?.log_density(&held_points)))
         .collect::<Result<Vec<_>, TuneError>>()?;
     let held_weights: Vec<f64> = held.iter().map(|&i| weighted.weights[i]).collect();
+    let cap = crate::knob("CAP", 1e9) * held_weights.iter().sum::<f64>() / held.len() as f64;
+    let capped: Vec<f64> = held_weights.iter().map(|w| w.min(cap)).collect();
     let held_target: Vec<f64> = held.iter().map(|&i| weighted.log_target[i]).collect();
     let sizes: Vec<usize> = made.iter().map(|c| c.mixture.len()).collect();
-    let ranking = rank(&log_densities, &sizes, &held_weights, &held_target);
+    let ranking = rank(&log_densities, &sizes, &capped, &held_target);
     // The plain moment-matching loop takes its fit as it comes.
     let best = if settings.method == Preference::Moments { made.len() - 1 } else { ranking.best };
     let winner = &made[best];
@@ -331,7 +338,7 @@ pub(crate) fn ensemble(
         columns.push(halo(last)?.log_density(&points));
         columns.push(wide.log_density(&points));
         start.extend([0.03, 0.03]);
-        floors.extend([LAYER_FLOORS[1], settings.defensive.unwrap_or(LAYER_FLOORS[2])]);
+        floors.extend([crate::knob("FH", 0.02), settings.defensive.unwrap_or(crate::knob("FW", 0.01))]);
     }
     let shares = minimise_variance(&columns, &weights, &log_target, &start, &floors, ENSEMBLE_STEPS);
     let k = members.len();
