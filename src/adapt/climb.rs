@@ -19,9 +19,9 @@ pub(crate) enum End {
     /// It left for infinity.
     Away,
     /// No step along an uphill direction goes up: a wall of the support, a kink, or rounding on a ridge.
-    Stuck(Vec<f64>),
+    Stuck,
     /// Its steps ran out.
-    Unfinished(Vec<f64>),
+    Unfinished,
     /// No density or no gradient to climb by.
     Void,
     /// The evaluations allowed ran out.
@@ -52,10 +52,7 @@ pub(crate) fn climb(
     let solver = Climb { known, metric: metric.to_vec(), first: metric.to_vec(), own_scale, end: None };
     let state = Executor::new(ascent, solver).configure(|s| s.param(x).max_iters(steps)).timer(false);
     match state.run() {
-        Ok(result) => {
-            let x = result.state().get_param().cloned().unwrap_or_default();
-            Ok(result.solver.end.unwrap_or(End::Unfinished(x)))
-        }
+        Ok(result) => Ok(result.solver.end.unwrap_or(End::Unfinished)),
         Err(error) => match error.downcast::<TuneError>() {
             Ok(error) => Err(error),
             Err(other) => Err(TuneError::Survey(other.to_string())),
@@ -155,7 +152,7 @@ impl<'a, 'b> Solver<Ascent<'a, 'b>, Position> for Climb<'_> {
             t *= BACKTRACK;
         }
         // Nothing along the step rises: the top to within rounding, or a wall.
-        self.end = Some(if rise < 1e-2 { End::Top(x.clone(), self.metric.clone()) } else { End::Stuck(x.clone()) });
+        self.end = Some(if rise < 1e-2 { End::Top(x.clone(), self.metric.clone()) } else { End::Stuck });
         Ok((state.param(x).gradient(g).cost(-l), None))
     }
 

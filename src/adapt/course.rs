@@ -44,7 +44,7 @@ pub(crate) fn first_proposal(target: &Standard, settings: &Settings, plan: &Plan
     let df = settings.first_df();
     let mut probed = 0;
     let main = if found.modes.is_empty() {
-        at_footholds(&found, target.dim(), df)?
+        at_start(target.dim(), df)?
     } else {
         let main = at_modes(&found, df)?;
         if settings.layered() && settings.method != Preference::Moments {
@@ -93,15 +93,9 @@ fn at_modes(found: &Found, df: f64) -> Result<Mixture, TuneError> {
     Ok(Mixture::new(&masses, components)?)
 }
 
-/// Without a mode: components where climbs got stuck, else the start itself.
-fn at_footholds(found: &Found, d: usize, df: f64) -> Result<Mixture, TuneError> {
-    let start = Component::new(vec![0.0; d], &identity(d), df)?;
-    if found.footholds.is_empty() {
-        return Ok(Mixture::single(start));
-    }
-    let mut components: Vec<Component> = found.footholds.iter().map(|l| l.component.with_df(df)).collect();
-    components.push(start);
-    Ok(Mixture::new(&vec![1.0; components.len()], components)?)
+/// Without a mode: the start itself.
+fn at_start(d: usize, df: f64) -> Result<Mixture, TuneError> {
+    Ok(Mixture::single(Component::new(vec![0.0; d], &identity(d), df)?))
 }
 
 fn with_probes(

@@ -2,7 +2,6 @@
 
 use super::TuneError;
 use super::climb::{End, climb};
-use super::curvature::{Local, by_curvature};
 use super::modes::{KnownMode, examine};
 use super::standard::Standard;
 use crate::numeric::{Purpose, normal, stream};
@@ -11,8 +10,6 @@ use crate::numeric::{Purpose, normal, stream};
 #[derive(Debug, Clone, Default)]
 pub(crate) struct Found {
     pub(crate) modes: Vec<KnownMode>,
-    /// Components at end points that are no interior maxima (walls, ridges), when there is no mode at all.
-    pub(crate) footholds: Vec<Local>,
     pub(crate) starts: u32,
     pub(crate) finished: u32,
     pub(crate) runaways: u32,
@@ -33,7 +30,6 @@ const HOPELESS: u32 = 6;
 pub(crate) fn survey(target: &Standard, seed: u64, least: u64, cap: u64) -> Result<Found, TuneError> {
     let d = target.dim();
     let mut found = Found::default();
-    let mut ends: Vec<(f64, Vec<f64>)> = Vec::new();
     let identity = identity(d);
     while found.starts < MOST && target.spent() + 2 * target.gradient_cost() < cap {
         let failed = found.starts - found.finished;
@@ -64,42 +60,15 @@ pub(crate) fn survey(target: &Standard, seed: u64, least: u64, cap: u64) -> Resu
                         None => found.modes.push(mode),
                     }
                 }
-                None => {
-                    found.stuck += 1;
-                    ends.push((0.0, x));
-                }
+                None => found.stuck += 1,
             },
-            End::Stuck(x) | End::Unfinished(x) => {
-                found.stuck += 1;
-                ends.push((0.0, x));
-            }
+            End::Stuck | End::Unfinished => found.stuck += 1,
             End::Away => found.runaways += 1,
             End::Void => found.void += 1,
             End::Spent => break,
         }
     }
-    if found.modes.is_empty() {
-        found.footholds = footholds(target, &ends, cap)?;
-    }
     Ok(found)
-}
-
-/// Components from the curvature at end points that were no maxima: better than nothing to begin with.
-fn footholds(target: &Standard, ends: &[(f64, Vec<f64>)], cap: u64) -> Result<Vec<Local>, TuneError> {
-    const FEW: usize = 4;
-    let mut locals: Vec<Local> = Vec::new();
-    for (_, x) in ends {
-        if locals.len() == FEW {
-            break;
-        }
-        if let Some(local) = by_curvature(target, x, cap)?
-            && local.log_density.is_finite()
-            && locals.iter().all(|other| other.component.distance(local.component.location()) > 4.0)
-        {
-            locals.push(local);
-        }
-    }
-    Ok(locals)
 }
 
 pub(crate) fn identity(d: usize) -> Vec<f64> {
