@@ -4,6 +4,8 @@
 //!
 //! * [`numeric`]: blocks of points, exponentials, streams, special functions;
 //! * [`weights`]: log weights and what is said about them: effective sample size, tail shape, errors, verdict;
+//! * [`store`]: files: whole or not at all, the journal, tables;
 
 pub mod numeric;
+pub mod store;
 pub mod weights;
