@@ -36,7 +36,7 @@ pub struct TableWriter<W: Write>(Form<W>);
 
 #[derive(Debug)]
 enum Form<W: Write> {
-    Csv { out: csv::Writer<W>, columns: usize },
+    Csv { out: Box<csv::Writer<W>>, columns: usize },
     Npy(NpyWriter<W>),
 }
 
@@ -48,7 +48,7 @@ impl<W: Write> TableWriter<W> {
     pub fn csv(out: W, names: &[String]) -> io::Result<Self> {
         let mut out = csv::WriterBuilder::new().buffer_capacity(1 << 16).from_writer(out);
         out.write_record(names)?;
-        Ok(Self(Form::Csv { out, columns: names.len() }))
+        Ok(Self(Form::Csv { out: Box::new(out), columns: names.len() }))
     }
 
     /// A NumPy array of `rows` rows (it has no place for the names).
