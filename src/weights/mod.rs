@@ -18,7 +18,7 @@ mod tail;
 pub mod verdict;
 
 pub use estimate::{Answer, Estimate, plain_mean, ratio_estimate};
-pub use interval::{log_interval, no_hit_bound, normal_interval};
+pub use interval::{gamma_interval, log_interval, no_hit_bound, normal_interval, probability_interval};
 pub use log_weights::{LogWeights, WeightError};
 pub use rounds::{CombinedRounds, RoundMean, combine_rounds};
 pub use score::{Score, score};

@@ -1,10 +1,11 @@
 //! The checks, one small function each, and their limits, one named constant each.
 
 use super::{Check, Word, figure, percent};
+use crate::numeric::exp;
 use crate::numeric::normal::quantile_of_tail;
+use crate::numeric::special::gamma_log_tails;
 use crate::weights::TailReason;
 use crate::weights::TailShape;
-use std::f64::consts::PI;
 
 /// Tail shape up to which the variance is finite and intervals keep their coverage (.92 at 0.5 with nominal .95).
 pub const TAIL_SOUND: f64 = 0.5;
@@ -227,19 +228,10 @@ pub(super) fn chi_squared_tail(x: f64, df: usize) -> f64 {
     if df == 0 {
         return 1.0;
     }
-    if x == f64::INFINITY {
-        return 0.0;
+    if x.is_nan() {
+        return x;
     }
-    // Closed forms (Abramowitz & Stegun 1964, 26.4.4 and 26.4.5), whose terms grow from the last by `half / step`.
-    let half = 0.5 * x;
-    let even = df.is_multiple_of(2);
-    let (start, far) = if even { (1.0, 0.0) } else { (2.0 * (half / PI).sqrt(), libm::erfc(half.sqrt())) };
-    let (mut term, mut sum) = (start, if df == 1 { 0.0 } else { start });
-    for j in 1..df / 2 {
-        term *= half / (j as f64 + if even { 0.0 } else { 0.5 });
-        sum += term;
-    }
-    far + libm::exp(-half) * sum
+    exp(gamma_log_tails(0.5 * df as f64, 0.5 * x).upper)
 }
 
 #[cfg(test)]
