@@ -67,6 +67,14 @@ fn temporary_name(path: &Path) -> PathBuf {
     folder_of(path).join(name)
 }
 
+/// Whether a name is one that [`temporary_name`] makes.
+pub(super) fn is_temporary(name: &str) -> bool {
+    let inside = name.strip_prefix('.').and_then(|name| name.strip_suffix(".partial"));
+    let numbers = inside.and_then(|name| name.rsplit_once('.')).and_then(|(_, numbers)| numbers.split_once('-'));
+    let whole = |text: &str| !text.is_empty() && text.bytes().all(|byte| byte.is_ascii_digit());
+    numbers.is_some_and(|(process, count)| whole(process) && whole(count))
+}
+
 /// The folder a file is in; `"note.txt"` is in `"."`.
 fn folder_of(path: &Path) -> &Path {
     match path.parent() {
@@ -106,6 +114,16 @@ mod tests {
         assert!(error.to_string().ends_with("a.json"), "{error}");
         assert_eq!(fs::read_to_string(&path).unwrap(), "[\n  1.5,\n  0.1\n]\n");
         assert_eq!(names(folder.path()), ["a.json"]);
+    }
+
+    #[test]
+    fn temporary_names_are_known_again() {
+        let name = temporary_name(Path::new("a/points.csv"));
+        assert_eq!(name.parent().unwrap(), Path::new("a"));
+        assert!(is_temporary(name.file_name().unwrap().to_str().unwrap()));
+        for other in ["points.csv", ".partial", ".a.partial", ".a.1-.partial", ".a.x-1.partial"] {
+            assert!(!is_temporary(other), "{other}");
+        }
     }
 
     #[test]

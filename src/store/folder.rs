@@ -2,14 +2,15 @@
 
 use super::Lock;
 use super::StoreError;
+use super::atomic::is_temporary;
 use super::journal::journal_path;
 use std::fs;
 use std::io;
 use std::path::Path;
 use std::path::PathBuf;
 
-/// Everything that a run writes into its folder. The journal stands last: a folder with a journal holds a run, so
-/// replacing one removes it last.
+/// Everything that a run writes into its folder. The journal makes it the folder of a run: it is written first
+/// ([`Journal::create`](super::Journal::create) before any other file), and removed last.
 pub const RUN_ENTRIES: [&str; 13] = [
     "report.html",
     "summary.json",
@@ -44,6 +45,7 @@ impl RunFolder {
     pub fn create(path: &Path, force: bool) -> Result<Self, StoreError> {
         fs::create_dir_all(path).map_err(StoreError::io("create the folder", path))?;
         let lock = Lock::take(path)?;
+        remove_leftovers(path)?;
         let present: Vec<&str> = RUN_ENTRIES.into_iter().filter(|name| is_there(&path.join(name))).collect();
         if let Some(entry) = present.first() {
             if !journal_path(path).is_file() {
@@ -68,6 +70,7 @@ impl RunFolder {
             return Err(StoreError::HoldsNoRun { folder: path.to_path_buf() });
         }
         let lock = Lock::take(path)?;
+        remove_leftovers(path)?;
         Ok(Self { path: path.to_path_buf(), lock })
     }
 
@@ -98,6 +101,23 @@ impl RunFolder {
         fs::create_dir_all(&path).map_err(StoreError::io("create the folder", &path))?;
         Ok(path)
     }
+}
+
+/// Clears away what a killed process left half written: temporary files, and an `evaluations` folder without anything in
+/// it, which was made for a journal that never came.
+fn remove_leftovers(path: &Path) -> Result<(), StoreError> {
+    for folder in [path.to_path_buf(), path.join("evaluations"), path.join("figures"), path.join("estimate")] {
+        let Ok(entries) = fs::read_dir(&folder) else { continue };
+        for entry in entries {
+            let entry = entry.map_err(StoreError::io("read", &folder))?;
+            if is_temporary(&entry.file_name().to_string_lossy()) {
+                remove(&entry.path())?;
+            }
+        }
+    }
+    // Fails, as it should, when the folder holds anything or is not there.
+    let _ = fs::remove_dir(path.join("evaluations"));
+    Ok(())
 }
 
 /// Whether there is anything under that name, a dangling link included.
@@ -153,6 +173,26 @@ mod tests {
             assert!(matches!(&error, StoreError::HoldsOther { entry, .. } if entry == "problem.toml"), "{error}");
         }
         assert_eq!(fs::read_to_string(folder.path().join("problem.toml")).unwrap(), "the only copy");
+    }
+
+    /// A process killed before its first record leaves no trace that stands in the way of the next.
+    #[test]
+    fn what_a_kill_left_behind_is_cleared_away() {
+        let folder = tempdir().unwrap();
+        let path = folder.path().join("d.run");
+        fs::create_dir_all(path.join("evaluations")).unwrap();
+        fs::write(path.join("evaluations/.journal.999999-0.partial"), "half").unwrap();
+        fs::write(path.join("lock"), "process 999999\n0\n").unwrap();
+        drop(RunFolder::create(&path, false).unwrap());
+        assert_eq!(fs::read_dir(&path).unwrap().count(), 0);
+        pretend_run(&path);
+        fs::write(path.join(".summary.json.999999-3.partial"), "{").unwrap();
+        fs::write(path.join("figures/.a.png.999999-4.partial"), "a").unwrap();
+        fs::write(path.join(".mine.partial"), "not ours: no process in its name").unwrap();
+        drop(RunFolder::open(&path).unwrap());
+        assert!(path.join("figures/a.png").exists() && path.join(".mine.partial").exists());
+        assert!(!path.join(".summary.json.999999-3.partial").exists());
+        assert_eq!(fs::read_dir(path.join("figures")).unwrap().count(), 1);
     }
 
     #[test]

@@ -282,7 +282,7 @@ mod tests {
 
     /// A journal of three batches in `folder`, and its bytes.
     fn three(folder: &Path) -> (Vec<JournalBatch>, Vec<u8>) {
-        let batches: Vec<JournalBatch> = (0..3).map(|round| batch(round, 2)).collect();
+        let batches: Vec<JournalBatch> = (0..3).map(|round| batch(round, 1)).collect();
         let mut journal = Journal::create(folder, &header("7")).unwrap();
         batches.iter().for_each(|batch| journal.append(batch).unwrap());
         (batches, fs::read(journal_path(folder)).unwrap())
@@ -322,7 +322,7 @@ mod tests {
         }
     }
 
-    /// 3,000 random damages of 1 to 8 bits each, anywhere, header included.
+    /// 3,000 random damages of 1 to 8 bits each, anywhere, header included; after every fiftieth the run goes on.
     #[test]
     fn flipped_bits_are_never_misread() {
         let folder = tempdir().unwrap();
@@ -343,8 +343,11 @@ mod tests {
                 Err(StoreError::JournalUnusable { .. }) => refused += 1,
                 Ok((_, replay)) => {
                     assert!(replay.dropped.is_some() && replay.batches.len() < 3, "damage {damage} not seen");
+                    assert!(batches.starts_with(&replay.batches), "damage {damage} misread");
                     told += 1;
-                    check(folder.path(), &batches, &whole, &format!("damage {damage}"));
+                    if damage % 50 == 0 {
+                        check(folder.path(), &batches, &whole, &format!("damage {damage}"));
+                    }
                 }
                 Err(other) => panic!("damage {damage}: {other}"),
             }

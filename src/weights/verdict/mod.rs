@@ -8,6 +8,8 @@
 pub mod checks;
 mod course;
 mod density;
+#[cfg(test)]
+mod error_rates;
 mod rare;
 
 pub use course::{RoundFacts, SurveyFacts};
