@@ -10,12 +10,18 @@
 //! mathematics library (its last bits differ between processors): use [`exp`], [`ln`] or the `libm` crate.
 //! Sums run in a fixed order.
 
+mod beta;
 mod elementary;
+mod error_function;
+mod gamma;
 mod points;
 mod streams;
+mod tails;
 
 pub mod linear;
 pub mod normal;
+pub mod quadrature;
+pub mod special;
 
 pub use elementary::{exp, ln, log_add_exp, log_sum_exp};
 pub use points::{BLOCK, Points};

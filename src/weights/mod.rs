@@ -3,7 +3,8 @@
 //!
 //! Read in this order: [`LogWeights`] (the weights, valid by construction), [`TailShape`] (how heavy their top is),
 //! [`Strata`] (standard errors that know how the draws were spread over components), [`Score`] (all numbers about
-//! a set of weights), [`Estimate`] (the answers), [`combine_rounds`] (rounds as one answer). Every routine works relative to the largest log weight, so a target whose constant is off by
+//! a set of weights), [`Estimate`] (the answers), [`combine_rounds`] (rounds as one answer), [`verdict`] (what the reader
+//! may do with them). Every routine works relative to the largest log weight, so a target whose constant is off by
 //! `e^5000` gives the same score.
 
 mod estimate;
@@ -14,8 +15,10 @@ mod score;
 mod stratified;
 mod tail;
 
+pub mod verdict;
+
 pub use estimate::{Answer, Estimate, plain_mean, ratio_estimate};
-pub use interval::{log_interval, no_hit_bound, normal_interval};
+pub use interval::{gamma_interval, log_interval, no_hit_bound, normal_interval, probability_interval};
 pub use log_weights::{LogWeights, WeightError};
 pub use rounds::{CombinedRounds, RoundMean, combine_rounds};
 pub use score::{Score, score};

@@ -1,0 +1,401 @@
+//! The journal of a run: every evaluated point, written and synced before it is used.
+//!
+//! A file of one header and any number of records, each with its number, its length and its checksum. A run that was
+//! killed at any moment leaves whole records and at most one torn one; reading stops at the first record that is not
+//! whole, says so, and what was in it is evaluated again. Nothing is ever believed that fails its checksum.
+
+use super::StoreError;
+use super::atomic::{sync_folder, write_atomically};
+use super::checksum::checksum;
+use super::record::{HEAD, JournalBatch, TAIL, decode, encode, payload_length};
+use serde::{Deserialize, Serialize};
+use std::collections::BTreeMap;
+use std::fs;
+use std::fs::File;
+use std::fs::OpenOptions;
+use std::io;
+use std::io::BufReader;
+use std::io::Read;
+use std::io::Write;
+use std::path::Path;
+use std::path::PathBuf;
+
+/// First line of a journal.
+const FORMAT: &str = "evenpoise-journal/1\n";
+/// A header longer than this is none: it holds digests and settings.
+const MAX_HEADER: u32 = 1 << 24;
+
+/// What a run was begun with: whatever must be the same when it is resumed.
+///
+/// Keys are what a person would call the thing ("the problem file", "the seed"), values its digest or setting.
+#[derive(Debug, Clone, PartialEq, Eq, Default, Serialize, Deserialize)]
+pub struct JournalHeader {
+    /// The facts, in the order of their names.
+    pub facts: BTreeMap<String, String>,
+}
+
+/// An open journal, to be appended to.
+#[derive(Debug)]
+pub struct Journal {
+    path: PathBuf,
+    file: File,
+    /// Bytes that are whole.
+    length: u64,
+    /// Records in them.
+    records: u32,
+    /// A torn record could not be taken back: nothing may follow it.
+    broken: bool,
+}
+
+/// What a journal held.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Replay {
+    /// The batches, in the order they were written.
+    pub batches: Vec<JournalBatch>,
+    /// What was dropped from the end, in a sentence for the user; nothing when the journal was whole.
+    pub dropped: Option<String>,
+}
+
+impl Journal {
+    /// Begins a journal in a run's folder.
+    ///
+    /// # Errors
+    /// [`StoreError::Io`] with the path.
+    ///
+    /// ```
+    /// # let folder = tempfile::tempdir()?;
+    /// use evenpoise::numeric::{Points, Purpose};
+    /// use evenpoise::store::{Journal, JournalBatch, JournalHeader};
+    /// let header = JournalHeader { facts: [("the seed".to_owned(), "7".to_owned())].into() };
+    /// let batch = JournalBatch {
+    ///     purpose: Purpose::Round,
+    ///     round: 1,
+    ///     points: Points::from_rows(2, &[0.1, 0.2]),
+    ///     log_density: vec![-1.5],
+    ///     columns: Vec::new(),
+    /// };
+    /// Journal::create(folder.path(), &header)?.append(&batch)?;
+    /// let (_, replay) = Journal::open_for_resume(folder.path(), &header)?;
+    /// assert_eq!(replay.batches, [batch]);
+    /// # Ok::<(), Box<dyn std::error::Error>>(())
+    /// ```
+    pub fn create(folder: &Path, header: &JournalHeader) -> Result<Self, StoreError> {
+        let path = journal_path(folder);
+        let inside = folder.join("evaluations");
+        fs::create_dir_all(&inside).map_err(StoreError::io("create the folder", &inside))?;
+        sync_folder(folder).map_err(StoreError::io("sync", folder))?;
+        let bytes = header_bytes(header).map_err(StoreError::io("write", &path))?;
+        write_atomically(&path, |file| file.write_all(&bytes))?;
+        Self::at(path, bytes.len() as u64, 0)
+    }
+
+    /// Appends a batch. When this returns, the batch is on the disk.
+    ///
+    /// # Errors
+    /// [`StoreError::Io`] with the path and the system's reason (the disk is full, ...). The torn record is taken back, so
+    /// the journal is as it was before.
+    ///
+    /// # Panics
+    /// When a column of the batch has another number of points than the batch.
+    pub fn append(&mut self, batch: &JournalBatch) -> Result<(), StoreError> {
+        if self.broken {
+            let source = io::Error::other("an earlier record could not be written whole, nor taken back");
+            return Err(StoreError::io("write", &self.path)(source));
+        }
+        let record = encode(self.records, batch);
+        let written = self.file.write_all(&record).and_then(|()| self.file.sync_data());
+        if let Err(source) = written {
+            self.broken = self.file.set_len(self.length).is_err();
+            return Err(StoreError::io("write", &self.path)(source));
+        }
+        self.length += record.len() as u64;
+        self.records += 1;
+        Ok(())
+    }
+
+    /// Opens the journal of a run that was begun with `header`, gives back what it holds and cuts off what is not whole.
+    ///
+    /// # Errors
+    /// [`StoreError::Changed`] with the first fact that differs; [`StoreError::JournalUnusable`] when the header itself
+    /// is damaged or of another version; [`StoreError::Io`].
+    pub fn open_for_resume(folder: &Path, header: &JournalHeader) -> Result<(Self, Replay), StoreError> {
+        let path = journal_path(folder);
+        let read = read_all(&path)?;
+        compare(&path, &read.header, header)?;
+        let journal = Self::at(path, read.length, read.replay.batches.len() as u32)?;
+        if read.replay.dropped.is_some() {
+            let cut = journal.file.set_len(read.length).and_then(|()| journal.file.sync_all());
+            cut.map_err(StoreError::io("shorten", &journal.path))?;
+        }
+        Ok((journal, read.replay))
+    }
+
+    /// Reads the journal in a run's folder and changes nothing.
+    ///
+    /// # Errors
+    /// [`StoreError::JournalUnusable`], [`StoreError::Io`].
+    pub fn read(folder: &Path) -> Result<(JournalHeader, Replay), StoreError> {
+        let read = read_all(&journal_path(folder))?;
+        Ok((read.header, read.replay))
+    }
+
+    fn at(path: PathBuf, length: u64, records: u32) -> Result<Self, StoreError> {
+        let file = OpenOptions::new().append(true).open(&path).map_err(StoreError::io("open", &path))?;
+        Ok(Self { path, file, length, records, broken: false })
+    }
+}
+
+/// Where a run's journal is.
+pub(super) fn journal_path(folder: &Path) -> PathBuf {
+    folder.join("evaluations").join("journal")
+}
+
+/// Format line, length of the header, header as JSON, checksum of all of them.
+fn header_bytes(header: &JournalHeader) -> io::Result<Vec<u8>> {
+    let json = serde_json::to_vec(header)?;
+    let mut bytes = FORMAT.as_bytes().to_vec();
+    bytes.extend((json.len() as u32).to_le_bytes());
+    bytes.extend(json);
+    let sum = checksum(&bytes);
+    bytes.extend(sum.to_le_bytes());
+    Ok(bytes)
+}
+
+/// A journal as it was found: `length` bytes of it are whole.
+struct Found {
+    header: JournalHeader,
+    replay: Replay,
+    length: u64,
+}
+
+fn read_all(path: &Path) -> Result<Found, StoreError> {
+    let file = File::open(path).map_err(StoreError::io("read", path))?;
+    let size = file.metadata().map_err(StoreError::io("read", path))?.len();
+    let mut input = BufReader::new(file);
+    let (header, header_length) = read_header(&mut input)
+        .map_err(StoreError::io("read", path))?
+        .map_err(|reason| StoreError::JournalUnusable { path: path.to_path_buf(), reason })?;
+    let (replay, length) = read_records(&mut input, header_length, size).map_err(StoreError::io("read", path))?;
+    Ok(Found { header, replay, length })
+}
+
+/// The header and its length in bytes, or why it cannot be used.
+fn read_header(input: &mut impl Read) -> io::Result<Result<(JournalHeader, u64), String>> {
+    let damaged = || Ok(Err("its header is damaged or cut off".to_owned()));
+    let mut bytes = read_up_to(input, FORMAT.len() as u64 + 4)?;
+    if bytes.len() < FORMAT.len() + 4 {
+        return damaged();
+    }
+    let (format, length) = bytes.split_at(FORMAT.len());
+    if format != FORMAT.as_bytes() {
+        let found = String::from_utf8_lossy(format).lines().next().unwrap_or_default().to_owned();
+        return Ok(Err(format!("it begins with {found:?} and not with {:?}", FORMAT.trim_end())));
+    }
+    let length = u32::from_le_bytes([length[0], length[1], length[2], length[3]]);
+    if length > MAX_HEADER {
+        return damaged();
+    }
+    bytes.extend(read_up_to(input, u64::from(length) + 8)?);
+    let Some((body, sum)) = bytes.split_last_chunk::<8>() else { return damaged() };
+    if body.len() != FORMAT.len() + 4 + length as usize || checksum(body) != u64::from_le_bytes(*sum) {
+        return damaged();
+    }
+    match serde_json::from_slice(&body[FORMAT.len() + 4..]) {
+        Ok(header) => Ok(Ok((header, bytes.len() as u64))),
+        Err(_) => damaged(),
+    }
+}
+
+/// All whole records from byte `start` of `size`, and where they end.
+fn read_records(input: &mut impl Read, start: u64, size: u64) -> io::Result<(Replay, u64)> {
+    let (mut batches, mut at) = (Vec::new(), start);
+    while at < size {
+        let number = batches.len() as u32;
+        let mut record = read_up_to(input, HEAD as u64)?;
+        let head_whole = record.len() == HEAD;
+        let length = if head_whole { payload_length(&record, number) } else { None };
+        let rest = length.map(|length| length.saturating_add(TAIL as u64));
+        let fits = rest.is_some_and(|rest| rest <= size - at - HEAD as u64);
+        if let (Some(rest), true) = (rest, fits) {
+            record.extend(read_up_to(input, rest)?);
+        }
+        let Some(batch) = (if fits { decode(&record) } else { None }) else {
+            // The length is under a checksum: a record that claims more than there is was cut, not damaged.
+            let torn = !head_whole || (length.is_some() && !fits);
+            return Ok((Replay { batches, dropped: Some(dropped(number, size - at, torn)) }, at));
+        };
+        batches.push(batch);
+        at += record.len() as u64;
+    }
+    Ok((Replay { batches, dropped: None }, at))
+}
+
+fn dropped(number: u32, bytes: u64, torn: bool) -> String {
+    let number = u64::from(number) + 1;
+    if torn {
+        format!(
+            "The journal ends in the middle of record {number}, as after a kill or a power cut; its {bytes} bytes are dropped and \
+             those points are evaluated again."
+        )
+    } else {
+        format!(
+            "Record {number} of the journal is damaged (a checksum does not match); it and what follows, {bytes} bytes, are dropped \
+             and those points are evaluated again. Check the disk."
+        )
+    }
+}
+
+/// Up to `length` bytes, fewer where the file ends.
+fn read_up_to(input: &mut impl Read, length: u64) -> io::Result<Vec<u8>> {
+    let mut bytes = Vec::new();
+    input.take(length).read_to_end(&mut bytes)?;
+    Ok(bytes)
+}
+
+/// Refuses when a fact differs, is missing, or is new.
+fn compare(path: &Path, before: &JournalHeader, now: &JournalHeader) -> Result<(), StoreError> {
+    let absent = || "nothing".to_owned();
+    for key in before.facts.keys().chain(now.facts.keys()) {
+        let (a, b) = (before.facts.get(key), now.facts.get(key));
+        if a != b {
+            return Err(StoreError::Changed {
+                path: path.to_path_buf(),
+                what: key.clone(),
+                before: a.cloned().unwrap_or_else(absent),
+                now: b.cloned().unwrap_or_else(absent),
+            });
+        }
+    }
+    Ok(())
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::record::tests::batch;
+    use super::*;
+    use crate::numeric::{Purpose, stream, uniform};
+    use tempfile::tempdir;
+
+    fn header(seed: &str) -> JournalHeader {
+        JournalHeader { facts: [("the problem", "4f1c"), ("the seed", seed)].map(|(a, b)| (a.into(), b.into())).into() }
+    }
+
+    /// A journal of three batches in `folder`, and its bytes.
+    fn three(folder: &Path) -> (Vec<JournalBatch>, Vec<u8>) {
+        let batches: Vec<JournalBatch> = (0..3).map(|round| batch(round, 1)).collect();
+        let mut journal = Journal::create(folder, &header("7")).unwrap();
+        batches.iter().for_each(|batch| journal.append(batch).unwrap());
+        (batches, fs::read(journal_path(folder)).unwrap())
+    }
+
+    /// Whatever is there is a beginning of what was written; an error is a refusal, which is allowed too.
+    fn check(folder: &Path, batches: &[JournalBatch], whole: &[u8], context: &str) {
+        let Ok((mut journal, replay)) = Journal::open_for_resume(folder, &header("7")) else { return };
+        assert!(batches.starts_with(&replay.batches), "{context}: misread");
+        if replay.batches.len() < batches.len() {
+            let boundary = fs::metadata(journal_path(folder)).unwrap().len() == journal.length;
+            assert!(boundary, "{context}: what is not whole is cut off");
+        }
+        // Going on gives the bytes of a run that was never interrupted.
+        batches[replay.batches.len()..].iter().for_each(|batch| journal.append(batch).unwrap());
+        assert_eq!(fs::read(journal_path(folder)).unwrap(), whole, "{context}");
+    }
+
+    #[test]
+    fn a_cut_at_any_byte_loses_only_what_was_torn() {
+        let folder = tempdir().unwrap();
+        let (batches, whole) = three(folder.path());
+        let header_length = header_bytes(&header("7")).unwrap().len();
+        let record = (whole.len() - header_length) / 3;
+        for cut in 0..whole.len() {
+            fs::write(journal_path(folder.path()), &whole[..cut]).unwrap();
+            let read = Journal::read(folder.path());
+            if cut < header_length {
+                assert!(matches!(read, Err(StoreError::JournalUnusable { .. })), "cut {cut}");
+                continue;
+            }
+            let (_, replay) = read.unwrap();
+            assert_eq!(replay.batches.len(), (cut - header_length) / record, "cut {cut}");
+            assert_eq!(replay.dropped.is_some(), !(cut - header_length).is_multiple_of(record), "cut {cut}");
+            assert!(replay.dropped.is_none_or(|text| text.contains("ends in the middle")), "cut {cut}");
+            check(folder.path(), &batches, &whole, &format!("cut {cut}"));
+        }
+    }
+
+    /// 3,000 random damages of 1 to 8 bits each, anywhere, header included; after every fiftieth the run goes on.
+    #[test]
+    fn flipped_bits_are_never_misread() {
+        let folder = tempdir().unwrap();
+        let (batches, whole) = three(folder.path());
+        let mut rng = stream(9, Purpose::Trial, 0, 0);
+        let (mut refused, mut told) = (0, 0);
+        for damage in 0..3000 {
+            let mut bytes = whole.clone();
+            for _ in 0..=(8.0 * uniform(&mut rng)) as usize {
+                let bit = (uniform(&mut rng) * (bytes.len() * 8) as f64) as usize;
+                bytes[bit / 8] ^= 1 << (bit % 8);
+            }
+            if bytes == whole {
+                continue;
+            }
+            fs::write(journal_path(folder.path()), &bytes).unwrap();
+            match Journal::read(folder.path()) {
+                Err(StoreError::JournalUnusable { .. }) => refused += 1,
+                Ok((_, replay)) => {
+                    assert!(replay.dropped.is_some() && replay.batches.len() < 3, "damage {damage} not seen");
+                    assert!(batches.starts_with(&replay.batches), "damage {damage} misread");
+                    told += 1;
+                    if damage % 50 == 0 {
+                        check(folder.path(), &batches, &whole, &format!("damage {damage}"));
+                    }
+                }
+                Err(other) => panic!("damage {damage}: {other}"),
+            }
+        }
+        assert!(refused > 100 && told > 1000, "{refused} refused, {told} told");
+    }
+
+    #[test]
+    fn a_record_in_the_wrong_place_is_not_believed() {
+        let folder = tempdir().unwrap();
+        let (batches, whole) = three(folder.path());
+        let start = header_bytes(&header("7")).unwrap().len();
+        let record = (whole.len() - start) / 3;
+        let mut swapped = whole[..start + record].to_vec();
+        swapped.extend(&whole[start + 2 * record..]);
+        fs::write(journal_path(folder.path()), swapped).unwrap();
+        let (_, replay) = Journal::read(folder.path()).unwrap();
+        assert_eq!(replay.batches, batches[..1]);
+        assert!(replay.dropped.unwrap().contains("Record 2 of the journal is damaged"));
+    }
+
+    #[test]
+    fn another_beginning_is_refused_by_name() {
+        let folder = tempdir().unwrap();
+        three(folder.path());
+        let error = Journal::open_for_resume(folder.path(), &header("8")).unwrap_err();
+        assert!(error.to_string().starts_with("the seed is not what the run"), "{error}");
+        assert!(error.to_string().contains("then 7, now 8"), "{error}");
+        let mut more = header("7");
+        more.facts.insert("the library".to_owned(), "99aa".to_owned());
+        let error = Journal::open_for_resume(folder.path(), &more).unwrap_err();
+        assert!(error.to_string().contains("then nothing, now 99aa"), "{error}");
+        fs::write(journal_path(folder.path()), "evenpoise-journal/9\nfrom the future").unwrap();
+        let error = Journal::read(folder.path()).unwrap_err();
+        assert!(error.to_string().contains("evenpoise-journal/9"), "{error}");
+    }
+
+    /// The device that is always full stands in for a full disk.
+    #[cfg(target_os = "linux")]
+    #[test]
+    fn a_full_disk_is_told_with_its_path_and_nothing_follows_a_torn_record() {
+        let path = PathBuf::from("/dev/full");
+        let mut journal = Journal::at(path, 0, 0).unwrap();
+        for reason in ["No space left on device", "nor taken back"] {
+            let error = journal.append(&batch(0, 2)).unwrap_err();
+            assert_eq!(error.to_string(), "cannot write /dev/full");
+            let source = std::error::Error::source(&error).unwrap().to_string();
+            assert!(source.contains(reason), "{source}");
+        }
+    }
+}

@@ -1,0 +1,27 @@
+//! Files: every byte that goes to disk, or comes from it, goes through here.
+//!
+//! * [`write_atomically`], [`write_json`]: a file is there whole, or as it was before;
+//! * [`RunFolder`]: the folder of a run, held by one process at a time;
+//! * [`Journal`]: every evaluated point, written and synced before it is used, so that an interrupted run loses nothing;
+//! * [`Table`], [`TableWriter`]: points as CSV or NumPy files, numbers read back to the same bits.
+//!
+//! **Invariant:** nothing here computes. A file holds what it was given, or the caller is told, with the path, why not.
+
+mod atomic;
+mod checksum;
+mod error;
+mod folder;
+mod journal;
+mod lock;
+mod npy;
+mod record;
+mod table;
+
+pub use atomic::{write_atomically, write_json};
+pub use error::StoreError;
+pub use folder::{RUN_ENTRIES, RunFolder};
+pub use journal::{Journal, JournalHeader, Replay};
+pub use lock::Lock;
+pub use npy::{NpyWriter, read_npy};
+pub use record::{JournalBatch, JournalColumn};
+pub use table::{Table, TableWriter, decimal};
