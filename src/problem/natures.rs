@@ -130,13 +130,17 @@ pub(crate) fn refuse(
     circumstance: Option<&str>,
 ) {
     let NatureSpec::Random { family, parameters, between, shift } = &variable.spec.nature else { return };
-    let at_parameter = error.parameter().and_then(|name| parameters.iter().find(|entry| entry.key == name));
-    let span = match (at_parameter, error.parameter()) {
-        (Some(entry), _) => entry.span.clone(),
-        (None, Some("between")) => between.as_ref().map_or(family.span.clone(), |(_, span)| span.clone()),
-        (None, Some("shift")) => shift.as_ref().map_or(family.span.clone(), |(_, span)| span.clone()),
-        _ => family.span.clone(),
+    let placed = match error {
+        DistributionError::Value { parameter, .. } => {
+            parameters.iter().find(|entry| entry.key == *parameter).map(|entry| entry.span.clone())
+        }
+        DistributionError::Between { .. } | DistributionError::NoMass { .. } => {
+            between.as_ref().map(|(_, span)| span.clone())
+        }
+        DistributionError::Shift { .. } => shift.as_ref().map(|(_, span)| span.clone()),
+        _ => None,
     };
+    let span = placed.unwrap_or_else(|| family.span.clone());
     let message = format!("`{}`: {error}", variable.spec.name);
     let fault = Fault::new(span, message);
     reader.fault(match circumstance {

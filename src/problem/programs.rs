@@ -51,6 +51,8 @@ pub(crate) struct Programs {
     pub(crate) target: FormulaTarget,
     /// None without estimates.
     pub(crate) estimates: Option<Program>,
+    /// Names of what each estimate that is a column runs over: labels of members, numbers of rows.
+    pub(crate) estimate_labels: Vec<Option<Vec<String>>>,
     /// For each variable as stated: the program of its parameters that are formulas, in their order.
     pub(crate) parameters: Vec<Option<Program>>,
 }
@@ -69,7 +71,7 @@ pub(crate) fn compile(
     expanded: &[Expanded<'_>],
     tables: &[DataTable],
 ) -> Option<Programs> {
-    let scope = scope(statement, expanded, tables);
+    let (scope, kinds) = scope(statement, expanded, tables);
     let target = target_outputs(statement);
     let estimates: Vec<Output<'_>> = statement
         .estimates
@@ -96,11 +98,19 @@ pub(crate) fn compile(
     };
     unused(reader, statement, &whole);
     let program = |outputs: &[Output<'_>]| scope.compile(&asked(outputs.iter())).ok();
+    let estimates = if estimates.is_empty() { None } else { Some(program(&estimates)?) };
+    let labels = |program: &Program, k: usize| {
+        program.output_rows(k).and_then(|rows| kinds.iter().find(|(id, _)| *id == rows)).map(|(_, names)| names.clone())
+    };
+    let estimate_labels = (0..statement.estimates.len())
+        .map(|k| estimates.as_ref().and_then(|program| labels(program, k)))
+        .collect();
     let requirements = statement.target.require.len();
     let first_requirement = if statement.target.aim == Aim::Probability { 2 } else { 1 };
     Some(Programs {
         target: FormulaTarget { program: program(&target)?, first_requirement, requirements },
-        estimates: if estimates.is_empty() { None } else { Some(program(&estimates)?) },
+        estimates,
+        estimate_labels,
         parameters: parameters.iter().map(|outputs| if outputs.is_empty() { None } else { program(outputs) }).collect(),
     })
 }
@@ -159,13 +169,18 @@ fn unused(reader: &mut Reader<'_>, statement: &Statement, whole: &Program) {
     }
 }
 
-fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable]) -> Scope {
+/// Kinds of rows, each with the names of its rows: labels, or numbers from 1.
+type Kinds = Vec<(RowsId, Vec<String>)>;
+
+fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable]) -> (Scope, Kinds) {
     let mut scope = Scope::new();
+    let mut kinds: Kinds = Vec::new();
     for (name, value, _) in &statement.constants {
         scope.constant(name, *value);
     }
     for table in tables {
         let rows = scope.rows(Rows { description: format!("the rows of {}", table.raw.shown), len: table.kept.len() });
+        kinds.push((rows, (1..=table.kept.len()).map(|row| row.to_string()).collect()));
         for column in &table.columns {
             match &column.cells {
                 Cells::Numbers(numbers, _) => scope.column(&column.name, rows, numbers.clone()),
@@ -193,13 +208,16 @@ fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable])
             },
             _ => scope.rows(Rows { description: format!("the members of {name}"), len: labels.len() }),
         };
+        if kinds.iter().all(|(known, _)| *known != rows) {
+            kinds.push((rows, labels.clone()));
+        }
         scope.group(name, rows, labels);
         link_columns(&mut scope, name, labels, tables);
     }
     for formula in &statement.formulas {
         scope.formula(&formula.name, &formula.formula.value);
     }
-    scope
+    (scope, kinds)
 }
 
 /// `group[column]` for every column whose labels are all among those of the group.

@@ -112,7 +112,7 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path) -> Option<Problem> {
     }
     let expanded = expand::expand(reader, &statement, &tables)?;
     let programs = programs::compile(reader, &statement, &expanded, &tables);
-    let Programs { target, estimates, parameters } = programs?;
+    let Programs { target, estimates, estimate_labels, parameters } = programs?;
     let settled = natures::settle(reader, &expanded, &parameters)?;
     let mut variables = settled.variables;
     let correlations = correlation::settle(reader, &statement.correlations, &expanded, &variables)?;
@@ -128,7 +128,7 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path) -> Option<Problem> {
     };
     let centre = space.to_natural(&Points::from_rows(variables.len(), &start.near));
     natures::try_at_start(reader, &expanded, &settled.groups, &centre);
-    let estimate_names = estimate_names(&statement, &expanded, estimates.as_ref());
+    let estimate_names = estimate_names(&statement, &estimate_labels);
     Some(Problem {
         title: statement.title.clone(),
         correlations,
@@ -220,19 +220,12 @@ fn misplaced(reader: &mut Reader<'_>, errors: &[Misplaced], expanded: &[Expanded
 }
 
 /// Columns of estimates are named by what they run over: `level[Alder]` over labels, `level[3]` over rows.
-fn estimate_names(
-    statement: &Statement,
-    expanded: &[Expanded<'_>],
-    program: Option<&crate::expression::Program>,
-) -> Vec<String> {
-    let _ = expanded;
+fn estimate_names(statement: &Statement, labels: &[Option<Vec<String>>]) -> Vec<String> {
     let mut names = Vec::new();
-    for (k, estimate) in statement.estimates.iter().enumerate() {
-        let n = program.map_or(1, |program| program.output_len(k));
-        if n == 1 {
-            names.push(estimate.name.clone());
-        } else {
-            names.extend((1..=n).map(|row| format!("{}[{row}]", estimate.name)));
+    for (estimate, labels) in statement.estimates.iter().zip(labels) {
+        match labels {
+            None => names.push(estimate.name.clone()),
+            Some(labels) => names.extend(labels.iter().map(|label| format!("{}[{label}]", estimate.name))),
         }
     }
     names

@@ -1,0 +1,394 @@
+//! Tokens to a tree, by binding powers (Pratt, POPL 1973): `or` < `and` < `not` < comparison < `+ -` < `* /` <
+//! unary minus < `^`.
+//!
+//! The tree is a list in which every node comes after its parts, so that whoever works on it runs a loop and no
+//! recursion: a formula of ten thousand terms is as safe as one of two. Only brackets nest the parser itself, and
+//! [`MAX_NESTING`] ends that.
+
+use std::ops::Range;
+
+use super::lexer::{Fault, Token, tokens};
+
+/// How deep brackets, powers and signs may nest.
+pub(super) const MAX_NESTING: usize = 200;
+
+/// Place of a node in [`Syntax::nodes`].
+pub(super) type Place = usize;
+
+/// Operators with two sides.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Infix {
+    Or,
+    And,
+    Less,
+    LessEqual,
+    Greater,
+    GreaterEqual,
+    Equal,
+    Differ,
+    Add,
+    Subtract,
+    Multiply,
+    Divide,
+    Power,
+}
+
+/// What stands in the square brackets after a group's name.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) enum Member {
+    Column(String),
+    Label(String),
+    Position(f64),
+}
+
+/// One node of a formula's tree.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) enum Node {
+    Number(f64),
+    Name(String),
+    Label(String),
+    Negate(Place),
+    Not(Place),
+    Infix(Infix, Place, Place),
+    Call { name: String, name_span: Range<usize>, arguments: Vec<Place> },
+    Index { group: String, member: Member, member_span: Range<usize> },
+}
+
+/// A formula's tree: `nodes` with their spans, parts before wholes; the last one is the whole formula.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) struct Syntax {
+    pub(super) nodes: Vec<(Node, Range<usize>)>,
+}
+
+impl Syntax {
+    pub(super) fn root(&self) -> Place {
+        self.nodes.len() - 1
+    }
+
+    /// Every name that stands for a value, with its span, in order.
+    pub(super) fn names(&self) -> impl Iterator<Item = (&str, Range<usize>)> {
+        self.nodes
+            .iter()
+            .flat_map(|(node, span)| match node {
+                Node::Name(name) => [Some((name.as_str(), span.clone())), None],
+                Node::Index { group, member, member_span } => {
+                    let column = match member {
+                        Member::Column(column) => Some((column.as_str(), member_span.clone())),
+                        _ => None,
+                    };
+                    [Some((group.as_str(), span.start..span.start + group.len())), column]
+                }
+                _ => [None, None],
+            })
+            .flatten()
+    }
+}
+
+/// The tree of `text`.
+pub(super) fn parse(text: &str) -> Result<Syntax, Fault> {
+    let mut parser = Parser { tokens: tokens(text)?, at: 0, nodes: Vec::new(), depth: 0 };
+    parser.expression(0)?;
+    match parser.peek() {
+        Token::End => Ok(Syntax { nodes: parser.nodes }),
+        _ => Err(parser.unexpected_after_value()),
+    }
+}
+
+/// Binding power of a prefix minus: between products and powers.
+const MINUS_POWER: u8 = 11;
+/// Binding power of `not`: between `and` and comparisons.
+const NOT_POWER: u8 = 5;
+/// Left binding power of all comparisons, which do not chain.
+const COMPARE_POWER: u8 = 6;
+
+struct Parser {
+    tokens: Vec<(Token, Range<usize>)>,
+    at: usize,
+    nodes: Vec<(Node, Range<usize>)>,
+    depth: usize,
+}
+
+impl Parser {
+    fn peek(&self) -> &Token {
+        &self.tokens[self.at].0
+    }
+
+    fn span(&self) -> Range<usize> {
+        self.tokens[self.at].1.clone()
+    }
+
+    fn is_sign(&self, sign: &str) -> bool {
+        matches!(self.peek(), Token::Sign(found) if *found == sign)
+    }
+
+    /// Moves on; the last token, the end, stays.
+    fn advance(&mut self) -> Range<usize> {
+        let span = self.span();
+        self.at = (self.at + 1).min(self.tokens.len() - 1);
+        span
+    }
+
+    fn push(&mut self, node: Node, span: Range<usize>) -> Place {
+        self.nodes.push((node, span));
+        self.nodes.len() - 1
+    }
+
+    fn span_of(&self, place: Place) -> Range<usize> {
+        self.nodes[place].1.clone()
+    }
+
+    /// An expression whose operators bind at least as tightly as `least`.
+    fn expression(&mut self, least: u8) -> Result<Place, Fault> {
+        if self.depth == MAX_NESTING {
+            return Err(Fault::new(self.span(), format!("nested more than {MAX_NESTING} deep"))
+                .help("give inner parts names of their own under [formulas]"));
+        }
+        self.depth += 1;
+        let mut left = self.prefix()?;
+        let mut compared = false;
+        while let Some((infix, left_power, right_power)) = self.infix() {
+            if left_power < least {
+                break;
+            }
+            if left_power == COMPARE_POWER && std::mem::replace(&mut compared, true) {
+                return Err(Fault::new(self.span(), "comparisons do not chain").help("write a < b and b < c"));
+            }
+            self.advance();
+            let right = self.expression(right_power)?;
+            let span = self.span_of(left).start..self.span_of(right).end;
+            left = self.push(Node::Infix(infix, left, right), span);
+        }
+        self.depth -= 1;
+        Ok(left)
+    }
+
+    /// The operator here, with the powers by which it binds to its left and its right.
+    fn infix(&self) -> Option<(Infix, u8, u8)> {
+        Some(match self.peek() {
+            Token::Name(word) if word == "or" => (Infix::Or, 1, 2),
+            Token::Name(word) if word == "and" => (Infix::And, 3, 4),
+            Token::Sign("<") => (Infix::Less, COMPARE_POWER, 7),
+            Token::Sign("<=") => (Infix::LessEqual, COMPARE_POWER, 7),
+            Token::Sign(">") => (Infix::Greater, COMPARE_POWER, 7),
+            Token::Sign(">=") => (Infix::GreaterEqual, COMPARE_POWER, 7),
+            Token::Sign("==") => (Infix::Equal, COMPARE_POWER, 7),
+            Token::Sign("!=") => (Infix::Differ, COMPARE_POWER, 7),
+            Token::Sign("+") => (Infix::Add, 7, 8),
+            Token::Sign("-") => (Infix::Subtract, 7, 8),
+            Token::Sign("*") => (Infix::Multiply, 9, 10),
+            Token::Sign("/") => (Infix::Divide, 9, 10),
+            Token::Sign("^") => (Infix::Power, 14, 13),
+            _ => return None,
+        })
+    }
+
+    fn prefix(&mut self) -> Result<Place, Fault> {
+        match self.peek().clone() {
+            Token::Sign("-") => {
+                let from = self.advance().start;
+                let of = self.expression(MINUS_POWER)?;
+                let span = from..self.span_of(of).end;
+                Ok(self.push(Node::Negate(of), span))
+            }
+            Token::Sign("+") => {
+                self.advance();
+                self.expression(MINUS_POWER)
+            }
+            Token::Sign("(") => self.bracket(),
+            Token::Number(value) => {
+                let span = self.advance();
+                Ok(self.push(Node::Number(value), span))
+            }
+            Token::Label(label) => {
+                let span = self.advance();
+                Ok(self.push(Node::Label(label), span))
+            }
+            Token::Name(word) if word == "not" => {
+                let from = self.advance().start;
+                let of = self.expression(NOT_POWER)?;
+                let span = from..self.span_of(of).end;
+                Ok(self.push(Node::Not(of), span))
+            }
+            Token::Name(word) if word != "and" && word != "or" => self.name(word),
+            Token::End => Err(self.ends_early()),
+            Token::Name(word) => Err(self.missing_value(&word)),
+            Token::Sign(sign) => Err(self.missing_value(sign)),
+        }
+    }
+
+    fn ends_early(&self) -> Fault {
+        if self.tokens.len() == 1 {
+            return Fault::new(self.span(), "the formula is empty");
+        }
+        Fault::new(self.span(), "the formula ends where a value should follow")
+            .help("a number, a name, a function or an opening bracket can stand here")
+    }
+
+    fn missing_value(&self, found: &str) -> Fault {
+        Fault::new(self.span(), format!("`{found}` stands where a value should"))
+            .help("a number, a name, a function or an opening bracket can stand here")
+    }
+
+    fn bracket(&mut self) -> Result<Place, Fault> {
+        let open = self.advance();
+        let inner = self.expression(0)?;
+        let close = self.close(")", &open)?;
+        // The brackets belong to the span, so that an error about the whole underlines them as well.
+        self.nodes[inner].1 = open.start..close.end;
+        Ok(inner)
+    }
+
+    /// The closing bracket that answers `open`.
+    fn close(&mut self, sign: &str, open: &Range<usize>) -> Result<Range<usize>, Fault> {
+        if self.is_sign(sign) {
+            return Ok(self.advance());
+        }
+        if *self.peek() == Token::End {
+            return Err(Fault::new(open.clone(), "this bracket is never closed").help(format!("close it with {sign}")));
+        }
+        Err(self.unexpected_after_value())
+    }
+
+    fn name(&mut self, word: String) -> Result<Place, Fault> {
+        let span = self.advance();
+        if self.is_sign("(") {
+            return self.call(word, span);
+        }
+        if self.is_sign("[") {
+            return self.index(word, &span);
+        }
+        Ok(self.push(Node::Name(word), span))
+    }
+
+    fn call(&mut self, name: String, name_span: Range<usize>) -> Result<Place, Fault> {
+        let open = self.advance();
+        let mut arguments = Vec::new();
+        if !self.is_sign(")") {
+            arguments.push(self.expression(0)?);
+            while self.is_sign(",") {
+                self.advance();
+                arguments.push(self.expression(0)?);
+            }
+        }
+        let close = self.close(")", &open)?;
+        let span = name_span.start..close.end;
+        Ok(self.push(Node::Call { name, name_span, arguments }, span))
+    }
+
+    fn index(&mut self, group: String, group_span: &Range<usize>) -> Result<Place, Fault> {
+        let open = self.advance();
+        let member = match self.peek().clone() {
+            Token::Name(column) if !matches!(column.as_str(), "and" | "or" | "not" | "if") => Member::Column(column),
+            Token::Label(label) => Member::Label(label),
+            Token::Number(position) => Member::Position(position),
+            _ => {
+                return Err(Fault::new(self.span(), format!("`{group}[...]` wants to know which one"))
+                    .help("in square brackets stands a column of labels, a label in quotes, or a position from 1"));
+            }
+        };
+        let member_span = self.advance();
+        let close = self.close("]", &open)?;
+        Ok(self.push(Node::Index { group, member, member_span }, group_span.start..close.end))
+    }
+
+    /// What follows a whole value and cannot.
+    fn unexpected_after_value(&self) -> Fault {
+        let span = self.span();
+        let operator = "an operator is missing before it, * for a product";
+        match self.peek() {
+            Token::Number(value) => Fault::new(span, format!("the number {value} follows a value")).help(operator),
+            Token::Name(word) => Fault::new(span, format!("`{word}` follows a value")).help(operator),
+            Token::Label(label) => Fault::new(span, format!("the label '{label}' follows a value"))
+                .help("compare a column with it: station == 'Alder'"),
+            Token::Sign("(") => Fault::new(span, "a bracket follows a value").help(operator),
+            Token::Sign("[") => Fault::new(span, "square brackets follow a value")
+                .help("only the name of a variable made with `each` takes square brackets"),
+            Token::Sign(",") => Fault::new(span, "a comma stands outside the brackets of a function")
+                .help("write decimals with a point"),
+            Token::Sign(sign) => Fault::new(span, format!("`{sign}` closes no bracket that is open")),
+            Token::End => self.ends_early(),
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// The tree written out with all its brackets.
+    fn shape(text: &str) -> String {
+        fn write(syntax: &Syntax, place: Place) -> String {
+            let of = |place: &Place| write(syntax, *place);
+            match &syntax.nodes[place].0 {
+                Node::Number(value) => value.to_string(),
+                Node::Name(name) => name.clone(),
+                Node::Label(label) => format!("'{label}'"),
+                Node::Negate(a) => format!("(-{})", of(a)),
+                Node::Not(a) => format!("(not {})", of(a)),
+                Node::Infix(infix, a, b) => format!("({} {infix:?} {})", of(a), of(b)),
+                Node::Call { name, arguments, .. } => {
+                    format!("{name}({})", arguments.iter().map(of).collect::<Vec<_>>().join(", "))
+                }
+                Node::Index { group, member, .. } => format!("{group}[{member:?}]"),
+            }
+        }
+        let syntax = parse(text).unwrap_or_else(|fault| panic!("{text}: {fault:?}"));
+        write(&syntax, syntax.root())
+    }
+
+    #[test]
+    fn operators_bind_as_promised() {
+        for (text, want) in [
+            ("-2^2", "(-(2 Power 2))"),
+            ("2^3^2", "(2 Power (3 Power 2))"),
+            ("2^-x*3", "((2 Power (-x)) Multiply 3)"),
+            ("-a*b", "((-a) Multiply b)"),
+            ("a-b-c", "((a Subtract b) Subtract c)"),
+            ("a/b*c", "((a Divide b) Multiply c)"),
+            (
+                "a+b < c*d or e > f and not g <= h",
+                "(((a Add b) Less (c Multiply d)) Or ((e Greater f) And (not (g LessEqual h))))",
+            ),
+            ("if(a < b, f(), -g(1, 2))", "if((a Less b), f(), (-g(1, 2)))"),
+            ("+a - +b", "(a Subtract b)"),
+            (
+                "effect[gauge.station] * effect['Alder'] * effect[2]",
+                "((effect[Column(\"gauge.station\")] Multiply effect[Label(\"Alder\")]) Multiply effect[Position(2.0)])",
+            ),
+        ] {
+            assert_eq!(shape(text), want, "{text}");
+        }
+    }
+
+    #[test]
+    fn mistakes_are_placed() {
+        for (text, span, part) in [
+            ("", 0..0, "empty"),
+            ("a +", 3..3, "ends where"),
+            ("(a + b", 0..1, "never closed"),
+            ("f(a, b", 1..2, "never closed"),
+            ("a + b)", 5..6, "closes no bracket"),
+            ("2 x", 2..3, "follows a value"),
+            ("2(x)", 1..2, "follows a value"),
+            ("a < b < c", 6..7, "do not chain"),
+            ("a, b", 1..2, "comma"),
+            ("a * / b", 4..5, "where a value should"),
+            ("effect[]", 7..8, "which one"),
+            ("and", 0..3, "where a value should"),
+        ] {
+            let fault = parse(text).unwrap_err();
+            assert_eq!(fault.span, span, "{text}: {fault:?}");
+            assert!(fault.message.contains(part), "{text}: {fault:?}");
+        }
+    }
+
+    #[test]
+    fn deep_nesting_is_an_error_and_long_chains_are_not() {
+        for opening in ["(", "-", "2^", "exp(", "not ", "if(", "+"] {
+            let fault = parse(&opening.repeat(100_000)).unwrap_err();
+            assert!(fault.message.contains("nested"), "{opening}: {fault:?}");
+        }
+        let long = vec!["x"; 50_000].join("+");
+        assert_eq!(parse(&long).unwrap().nodes.len(), 99_999);
+    }
+}
