@@ -7,6 +7,7 @@ use std::path::PathBuf;
 use super::faults::Fault;
 use super::faults::Source;
 use super::names::all_of;
+use super::table::Entry;
 use super::table::Reader;
 use super::table::Table;
 use super::text_value::Text;
@@ -54,9 +55,12 @@ pub(crate) struct RawTable {
     pub(crate) records: Vec<(usize, Vec<String>)>,
 }
 
+const KEYS: [&str; 4] = ["file", "names", "missing", "rows"];
+
 /// Reads `[data]` or the tables of `[data.NAME]`.
 pub(crate) fn read_specs(reader: &mut Reader<'_>, table: &Table<'_>) -> Vec<DataSpec> {
-    if table.entry("file").is_some() || table.entries.iter().any(|entry| !entry.value.is_table()) {
+    let own_key = |entry: &Entry<'_>| KEYS.contains(&entry.key) || !entry.value.is_table();
+    if table.entries.iter().any(own_key) {
         return read_spec(reader, table, None).into_iter().collect();
     }
     let mut specs = Vec::new();
@@ -76,7 +80,7 @@ pub(crate) fn read_specs(reader: &mut Reader<'_>, table: &Table<'_>) -> Vec<Data
 }
 
 fn read_spec(reader: &mut Reader<'_>, table: &Table<'_>, name: Option<String>) -> Option<DataSpec> {
-    reader.only(table, &["file", "names", "missing", "rows"]);
+    reader.only(table, &KEYS);
     let Some(entry) = table.entry("file") else {
         reader.fault(
             Fault::new(table.span.clone(), format!("{} names no file", table.name))
@@ -156,6 +160,13 @@ fn parse_records(
             return None;
         }
     };
+    if headers.len() == 1 && (headers[0].contains(';') || headers[0].contains('\t')) {
+        reader.fault(
+            Fault::new(spec.file.span.clone(), format!("the columns of `{shown}` are not separated by commas"))
+                .help("save the file with commas between the columns and points in the numbers"),
+        );
+        return None;
+    }
     let mut records = Vec::new();
     for record in csv.records() {
         let record = match record {
@@ -176,13 +187,6 @@ fn parse_records(
             return None;
         }
         records.push((line, record.iter().map(str::to_owned).collect()));
-    }
-    if headers.len() == 1 && (headers[0].contains(';') || headers[0].contains('\t')) {
-        reader.fault(
-            Fault::new(spec.file.span.clone(), format!("the columns of `{shown}` are not separated by commas"))
-                .help("save the file with commas between the columns and points in the numbers"),
-        );
-        return None;
     }
     if records.is_empty() {
         reader.fault(

@@ -86,7 +86,7 @@ fn labels_of(reader: &mut Reader<'_>, name: &Text, tables: &[DataTable]) -> Opti
             let line = table.raw.records[record].0;
             let message = format!("line {line} of `{}` has no label in the column `{}`", table.raw.shown, column.name);
             let fault = table.raw.cell_fault(record, column.place(), message).label("no label");
-            reader.fault(fault.help("every row needs one, as the column says which member the row belongs to"));
+            reader.fault(fault.help("fill the cell: the column says which member of the `each` a row belongs to"));
             None
         }
     }

@@ -77,22 +77,23 @@ impl Names {
         true
     }
 
-    /// What `name` is, if anything.
-    pub(crate) fn kind_of(&self, name: &str) -> Option<&str> {
-        self.0.get(name).map(|(kind, _)| kind.as_str())
+    /// Whether anything has this name.
+    pub(crate) fn has(&self, name: &str) -> bool {
+        self.0.contains_key(name)
     }
 }
 
 /// A name like `text` that is one.
 fn suggestion(text: &str) -> String {
     let mapped: String = text.chars().map(|c| if c.is_alphanumeric() { c } else { '_' }).collect();
-    let trimmed = mapped.trim_matches('_');
+    let parts: Vec<&str> = mapped.split('_').filter(|part| !part.is_empty()).collect();
+    let trimmed = parts.join("_");
     let begins = trimmed.chars().next().is_some_and(char::is_alphabetic);
     if begins { format!("`{trimmed}`, say") } else { format!("`x{trimmed}`, say") }
 }
 
 fn clash(name: &str, kind: &str, given: &Given, other_kind: &str, other: &Given, source: &str) -> Fault {
-    let message = format!("{kind} `{name}` has the name of {other_kind} `{name}`");
+    let message = format!("{kind} `{name}` and {other_kind} `{name}` share a name");
     match (given, other) {
         (Given::Here(span), Given::Here(first)) => Fault::new(span.clone(), message)
             .label("given again here")
@@ -100,7 +101,7 @@ fn clash(name: &str, kind: &str, given: &Given, other_kind: &str, other: &Given,
             .help("give one of them another name"),
         (Given::Header(file, span), Given::Here(first)) => {
             let line = 1 + source[..first.start.min(source.len())].matches('\n').count();
-            Fault::new(first.clone(), format!("{other_kind} `{name}` has the name of a column of `{}`", file.file))
+            Fault::new(first.clone(), format!("{other_kind} `{name}` and a column of `{}` share a name", file.file))
                 .label(format!("the column is in line 1 of `{}`, character {}", file.file, span.start + 1))
                 .help(format!(
                     "rename the one in line {line}, or the column: names = {{ {name}_data = \"{}\" }}",
@@ -110,9 +111,13 @@ fn clash(name: &str, kind: &str, given: &Given, other_kind: &str, other: &Given,
         (Given::Here(span), Given::Header(file, at)) => Fault::new(span.clone(), message)
             .label(format!("the column is in line 1 of `{}`, character {}", file.file, at.start + 1))
             .help("give one of them another name"),
-        (Given::Header(file, span), Given::Header(..)) => Fault::new(span.clone(), message)
-            .within(file.clone())
-            .help("give each column its own header, or name one in `names`"),
+        (Given::Header(file, span), Given::Header(first, other)) => {
+            let message =
+                if file == first { format!("two columns of `{}` are called `{name}`", file.file) } else { message };
+            let fault = Fault::new(span.clone(), message).label("again").within(file.clone());
+            let fault = if file == first { fault.also(other.clone(), "first") } else { fault };
+            fault.help("give each column its own header")
+        }
     }
 }
 
@@ -175,7 +180,7 @@ mod tests {
             assert!(is_name(suggestion(text).split('`').nth(1).unwrap()), "{text}");
         }
         assert_eq!(listed(&["a", "b", "c"]), "`a`, `b` or `c`");
-        assert_eq!(suggestion("Flow (m3/s)"), "`Flow__m3_s`, say");
+        assert_eq!(suggestion("Flow (m3/s)"), "`Flow_m3_s`, say");
     }
 
     #[test]

@@ -198,7 +198,7 @@ pub(crate) fn try_at_start(reader: &mut Reader<'_>, expanded: &[Expanded<'_>], g
         let values = group.parameter_values(start);
         let Err(error) = group.try_distribution(&values, 0) else { continue };
         if let Some(variable) = expanded.iter().find(|variable| variable.places == group.members) {
-            let circumstance = "so it is where the search starts: every other variable at its median or `near`";
+            let circumstance = "this is so where the search starts, with every other variable at its median or `near`";
             refuse(reader, variable, &error, Some(circumstance));
         }
     }

@@ -7,6 +7,7 @@ use super::columns::Cells;
 use super::columns::DataTable;
 use super::expand::Expanded;
 use super::faults::Fault;
+use super::names::Names;
 use super::statement::Statement;
 use super::table::Reader;
 use super::target::Aim;
@@ -19,6 +20,7 @@ use crate::expression::Rows;
 use crate::expression::RowsId;
 use crate::expression::Scope;
 use crate::expression::Wanted;
+use crate::expression::is_name;
 
 /// The target of a problem whose target is a formula.
 ///
@@ -67,6 +69,7 @@ struct Output<'a> {
 /// Compiles all formulas; what is wrong with them goes to `reader`.
 pub(crate) fn compile(
     reader: &mut Reader<'_>,
+    names: &Names,
     statement: &Statement,
     expanded: &[Expanded<'_>],
     tables: &[DataTable],
@@ -89,9 +92,15 @@ pub(crate) fn compile(
         Err(errors) => {
             let texts = texts_by_key(statement, &all);
             for error in errors {
-                let place = texts.get(error.key.as_str()).map_or(0..0, |text| text.place(&error.span));
+                let text = texts.get(error.key.as_str());
+                let place = text.map_or(0..0, |text| text.place(&error.span));
+                let wrong = text.and_then(|text| text.value.get(error.span.clone())).unwrap_or("");
                 let fault = Fault::new(place, error.message);
-                reader.fault(error.help.into_iter().fold(fault, Fault::help));
+                reader.fault(match error.help {
+                    Some(help) => fault.help(help),
+                    None if is_name(wrong) && !names.has(wrong) => fault.help(UNKNOWN_NAME_HELP),
+                    None => fault,
+                });
             }
             return None;
         }
@@ -102,9 +111,8 @@ pub(crate) fn compile(
     let labels = |program: &Program, k: usize| {
         program.output_rows(k).and_then(|rows| kinds.iter().find(|(id, _)| *id == rows)).map(|(_, names)| names.clone())
     };
-    let estimate_labels = (0..statement.estimates.len())
-        .map(|k| estimates.as_ref().and_then(|program| labels(program, k)))
-        .collect();
+    let estimate_labels =
+        (0..statement.estimates.len()).map(|k| estimates.as_ref().and_then(|program| labels(program, k))).collect();
     let requirements = statement.target.require.len();
     let first_requirement = if statement.target.aim == Aim::Probability { 2 } else { 1 };
     Some(Programs {
@@ -114,6 +122,9 @@ pub(crate) fn compile(
         parameters: parameters.iter().map(|outputs| if outputs.is_empty() { None } else { program(outputs) }).collect(),
     })
 }
+
+const UNKNOWN_NAME_HELP: &str =
+    "a formula knows the names under [constants], [variables] and [formulas] and the columns of the data";
 
 fn asked<'a>(outputs: impl Iterator<Item = &'a Output<'a>>) -> Vec<(&'a str, &'a str, Wanted)> {
     outputs.map(|output| (output.key.as_str(), output.text.value.as_str(), output.wanted)).collect()

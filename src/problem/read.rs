@@ -111,7 +111,7 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path) -> Option<Problem> {
         return None; // Names that are wrong or missing would be told again, less clearly, by the formulas.
     }
     let expanded = expand::expand(reader, &statement, &tables)?;
-    let programs = programs::compile(reader, &statement, &expanded, &tables);
+    let programs = programs::compile(reader, &names, &statement, &expanded, &tables);
     let Programs { target, estimates, estimate_labels, parameters } = programs?;
     let settled = natures::settle(reader, &expanded, &parameters)?;
     let mut variables = settled.variables;

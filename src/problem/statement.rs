@@ -54,7 +54,7 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
         for error in errors {
             let end = reader.source.len();
             let span = error.span().unwrap_or(end..end);
-            reader.fault(Fault::new(span, format!("this is not TOML: {}", error.message().trim())).help(SYNTAX_HELP));
+            reader.fault(not_toml(error.message().trim(), span));
         }
         return None;
     }
@@ -114,8 +114,17 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
     Some(statement)
 }
 
-const SYNTAX_HELP: &str =
-    "a key and its value stand on one line: key = value; texts and formulas in quotes, tables under [name]";
+fn not_toml(message: &str, span: Range<usize>) -> Fault {
+    if message.contains("duplicate key") {
+        return Fault::new(span, "this key stands twice in its table").label("again").help("keep one of the two");
+    }
+    let help = if message.contains("string") {
+        "close the text with the quotes it began with; a backslash in \"...\" is written \\\\, in '...' as it is"
+    } else {
+        "a key and its value stand on one line: key = value; texts and formulas in quotes, tables under [name]"
+    };
+    Fault::new(span, format!("this is not TOML: {message}")).help(help)
+}
 
 fn check_top(reader: &mut Reader<'_>, file: &Table<'_>) {
     for entry in file.entries.iter().filter(|entry| !TABLES.contains(&entry.key)) {

@@ -260,7 +260,9 @@ fn read_range(
     }
     let (low, high) = reader.interval(entry, "range = [0.0, inf]")?;
     for key in ["near", "spread"] {
-        if table.entry(key).is_none() {
+        // A slip in the key has been told already.
+        let misspelt = || table.entries.iter().any(|entry| nearest(entry.key, [key]).is_some());
+        if table.entry(key).is_none() && !misspelt() {
             let says = if key == "near" { "where to look first" } else { "how wide to look first" };
             reader.fault(
                 Fault::new(entry.span.clone(), format!("the range of `{}` needs `{key}`", variable.key))
