@@ -20,6 +20,7 @@ mod tails;
 
 pub mod linear;
 pub mod normal;
+pub mod quadrature;
 pub mod special;
 
 pub use elementary::{exp, ln, log_add_exp, log_sum_exp};

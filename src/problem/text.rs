@@ -13,8 +13,10 @@ use super::statement::Statement;
 use super::variable::Nature;
 use super::variables_table::Each;
 use super::variables_table::NatureSpec;
+use super::variables_table::ParameterEntry;
 use super::variables_table::ParameterSpec;
 use super::variables_table::VariableSpec;
+use crate::distribution::Distribution;
 
 impl Problem {
     /// The problem as a problem file with every default written out; paths of data as they were given.
@@ -66,6 +68,13 @@ impl Problem {
                     let _ = writeln!(out, "distribution = {}", quoted(distribution.family()));
                     for (name, value) in distribution.parameters() {
                         let _ = writeln!(out, "{name} = {value:?}");
+                    }
+                    if distribution.shift() != 0.0 {
+                        let _ = writeln!(out, "shift = {:?}", distribution.shift());
+                    }
+                    if distribution.is_truncated() {
+                        let (low, high) = distribution.support();
+                        let _ = writeln!(out, "between = [{low:?}, {high:?}]");
                     }
                 }
                 Nature::Dependent { family, parameters } => {
@@ -157,10 +166,8 @@ fn write_variable(out: &mut String, spec: &VariableSpec) {
                 };
                 let _ = writeln!(out, "{} = {value}", parameter.key);
             }
-            for &(name, value) in defaults_of(&family.value) {
-                if !parameters.iter().any(|parameter| parameter.key == name) {
-                    let _ = writeln!(out, "{name} = {value:?}");
-                }
+            for (name, value) in left_out(&family.value, parameters) {
+                let _ = writeln!(out, "{name} = {value:?}");
             }
             if let Some(((low, high), _)) = between {
                 let _ = writeln!(out, "between = [{low:?}, {high:?}]");
@@ -186,13 +193,19 @@ fn write_words(out: &mut String, unit: Option<&String>, label: Option<&String>, 
     }
 }
 
-/// Parameters that may be left out, with what they then are.
-fn defaults_of(family: &str) -> &'static [(&'static str, f64)] {
-    match family {
-        "beta" => &[("low", 0.0), ("high", 1.0)],
-        "student-t" => &[("location", 0.0), ("scale", 1.0)],
-        _ => &[],
-    }
+/// Parameters that are left out, with what they then are.
+fn left_out(family: &str, given: &[ParameterEntry]) -> Vec<(&'static str, f64)> {
+    let has = |name: &str| given.iter().any(|parameter| parameter.key == name);
+    let sets = Distribution::parameters_of(family).unwrap_or_default();
+    let chosen = sets.iter().find(|set| {
+        set.required.iter().all(|name| has(name))
+            && given.iter().all(|parameter| {
+                let key = parameter.key.as_str();
+                set.required.contains(&key) || set.optional.iter().any(|(name, _)| *name == key)
+            })
+    });
+    let optional = chosen.map_or(&[][..], |set| set.optional);
+    optional.iter().copied().filter(|(name, _)| !has(name)).collect()
 }
 
 fn write_data(out: &mut String, table: &DataTable, path: &str) {

@@ -169,7 +169,7 @@ fn known_keys(family: Option<&str>) -> Vec<&'static str> {
 pub(crate) fn parameter_keys(family: &str) -> Vec<&'static str> {
     let mut keys: Vec<&'static str> = Vec::new();
     for set in Distribution::parameters_of(family).unwrap_or_default() {
-        for key in *set {
+        for key in set.required.iter().chain(set.optional.iter().map(|(key, _)| key)) {
             if !keys.contains(key) {
                 keys.push(key);
             }
