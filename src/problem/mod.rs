@@ -36,6 +36,7 @@ mod variable;
 mod variables_table;
 
 pub use correlation::Correlation;
+pub use correlation::CorrelationError;
 pub use correlation_table::CorrelationKind;
 pub use data::Rows;
 pub use evaluate::EvaluateError;

@@ -11,7 +11,6 @@ use super::variable::Variable;
 use super::variables_table::NatureSpec;
 use super::variables_table::ParameterEntry;
 use super::variables_table::ParameterSpec;
-use crate::distribution::Distribution;
 use crate::distribution::DistributionError;
 use crate::expression::Program;
 use crate::numeric::Points;
@@ -201,13 +200,5 @@ pub(crate) fn try_at_start(reader: &mut Reader<'_>, expanded: &[Expanded<'_>], g
             let circumstance = "this is so where the search starts, with every other variable at its median or `near`";
             refuse(reader, variable, &error, Some(circumstance));
         }
-    }
-}
-
-/// The distribution of a settled random variable.
-pub(crate) fn distribution_of(variable: &Variable) -> Option<&Distribution> {
-    match &variable.nature {
-        Nature::Random(distribution) => Some(distribution),
-        Nature::Range { .. } | Nature::Dependent { .. } => None,
     }
 }

@@ -38,7 +38,6 @@ pub(crate) enum ParameterSpec {
 #[derive(Debug, Clone)]
 pub(crate) struct ParameterEntry {
     pub(crate) key: String,
-    pub(crate) key_span: Range<usize>,
     pub(crate) span: Range<usize>,
     pub(crate) value: ParameterSpec,
 }
@@ -207,12 +206,7 @@ fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) ->
                     reader.number(entry, &example).map(ParameterSpec::Number)
                 }
             };
-            parameters.push(ParameterEntry {
-                key: entry.key.to_owned(),
-                key_span: entry.key_span.clone(),
-                span: entry.span.clone(),
-                value: value?,
-            });
+            parameters.push(ParameterEntry { key: entry.key.to_owned(), span: entry.span.clone(), value: value? });
         } else if !COMMON.contains(&entry.key) {
             unknown_parameter(reader, entry, &family.value, &own);
         }
