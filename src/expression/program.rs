@@ -2,6 +2,7 @@
 
 use rayon::iter::{IndexedParallelIterator, IntoParallelIterator, ParallelIterator};
 
+use super::columns::RowsId;
 use super::operations::Operations;
 use super::plan::{Plan, Root};
 use super::sweep::{Block, Sweep, WorkSpace};
@@ -74,6 +75,12 @@ impl Program {
     #[must_use]
     pub fn output_len(&self, k: usize) -> usize {
         self.outputs[k].root.rows.map_or(1, |rows| self.operations.row_count(rows))
+    }
+
+    /// What output `k` runs over, if it is a column.
+    #[must_use]
+    pub fn output_rows(&self, k: usize) -> Option<RowsId> {
+        self.outputs[k].root.rows
     }
 
     /// Whether any output depends on input `i`.

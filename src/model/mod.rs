@@ -1,0 +1,104 @@
+//! Models: a batch of points in, a batch of values out.
+//!
+//! A [`Model`] is what a problem asks when its target is not (only) a formula. It knows nothing of distributions,
+//! coordinates or aims: it gets values in natural units and answers with numbers. [`Closure`] wraps a Rust function.
+//!
+//! **Invariant:** a model answers every point by its own values alone, so that the same point has the same answer in
+//! any batch, at any place in it and on any number of threads.
+
+mod closure;
+
+pub use closure::Closure;
+
+use thiserror::Error;
+
+use crate::numeric::Points;
+
+/// A batch of points to values.
+///
+/// The contract: an answer depends on its own point only; the same point has the same answer, bit for bit, in every
+/// batch. NaN says "this evaluation failed": it is counted, and weighs nothing. An `Err` says that the model as a whole
+/// cannot go on.
+pub trait Model: Send + Sync {
+    /// Values that a point has: `inputs.dim()`.
+    fn n_inputs(&self) -> usize;
+
+    /// Values that an answer has: `outputs.dim()`.
+    fn n_outputs(&self) -> usize;
+
+    /// Answers every point of `inputs`, in order.
+    ///
+    /// # Shapes
+    /// `inputs.dim()` is [`Model::n_inputs`]; `outputs` comes with `n_outputs` coordinates and `inputs.len()` points.
+    ///
+    /// # Errors
+    /// [`ModelError`] when no further answer can be had. A single failed point is no error, it is NaN.
+    fn evaluate(&self, inputs: &Points, outputs: &mut Points) -> Result<(), ModelError>;
+
+    /// Whether [`Model::gradient`] answers.
+    fn has_gradient(&self) -> bool {
+        false
+    }
+
+    /// Values of a model of one output, and their derivatives with respect to every input.
+    ///
+    /// # Shapes
+    /// `values` has one number a point; `gradients` has `n_inputs` coordinates and as many points as `inputs`.
+    ///
+    /// # Errors
+    /// [`ModelError::NoGradient`] for models without one; else as [`Model::evaluate`].
+    fn gradient(&self, inputs: &Points, values: &mut [f64], gradients: &mut Points) -> Result<(), ModelError> {
+        let _ = (inputs, values, gradients);
+        Err(ModelError::NoGradient)
+    }
+}
+
+/// What keeps a model from answering at all.
+#[derive(Debug, Clone, PartialEq, Eq, Error)]
+#[non_exhaustive]
+pub enum ModelError {
+    /// Points came with another number of values than the model takes.
+    #[error(
+        "the model takes {expected} values a point and was given {given}; list its inputs in the model's own order"
+    )]
+    WrongInputs {
+        /// Values that the model takes.
+        expected: usize,
+        /// Values that it was given.
+        given: usize,
+    },
+    /// Room for another number of answers than the model gives.
+    #[error("the model answers with {expected} values a point, and {given} were asked for")]
+    WrongOutputs {
+        /// Values that the model answers with.
+        expected: usize,
+        /// Values that were asked for.
+        given: usize,
+    },
+    /// Derivatives were asked of a model that has none.
+    #[error("the model gives no derivatives; ask for its values alone")]
+    NoGradient,
+}
+
+/// Checks that `inputs` and `outputs` fit `model`.
+pub(crate) fn check_shapes(model: &dyn Model, inputs: usize, outputs: usize) -> Result<(), ModelError> {
+    if inputs != model.n_inputs() {
+        return Err(ModelError::WrongInputs { expected: model.n_inputs(), given: inputs });
+    }
+    if outputs != model.n_outputs() {
+        return Err(ModelError::WrongOutputs { expected: model.n_outputs(), given: outputs });
+    }
+    Ok(())
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn errors_may_cross_threads() {
+        fn crosses<T: Send + Sync + 'static>() {}
+        crosses::<ModelError>();
+        crosses::<Box<dyn Model>>();
+    }
+}

@@ -1,0 +1,313 @@
+//! Gaussian copulas: correlations of the variables, of their ranks and of their scores.
+//!
+//! What is given as a linear or a rank correlation becomes one of the standard normal scores; tables that share a
+//! variable become one group. Pairs that are not named are uncorrelated.
+
+use std::ops::Range;
+
+use thiserror::Error;
+
+use super::correlation_table::CorrelationKind;
+use super::correlation_table::CorrelationSpec;
+use super::expand::Expanded;
+use super::faults::Fault;
+use super::table::Reader;
+use super::text_value::Text;
+use super::variable::Nature;
+use super::variable::Variable;
+use super::variables_table::NatureSpec;
+use crate::distribution::Distribution;
+use crate::expression::nearest;
+use crate::numeric::linear;
+
+/// Variables that are correlated, directly or through one another.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Correlation {
+    /// Their places among all coordinates, ascending.
+    pub members: Vec<usize>,
+    /// The correlation of their standard normal scores: the whole symmetric matrix, row by row.
+    pub score: Vec<f64>,
+    /// Lower factor of `score`.
+    pub(crate) lower: Vec<f64>,
+}
+
+/// Why variables cannot be correlated so.
+#[derive(Debug, Clone, PartialEq, Error)]
+#[non_exhaustive]
+pub enum CorrelationError {
+    /// The matrix of the scores is not positive definite.
+    #[error(
+        "the correlations contradict each other: the smallest eigenvalue of the matrix of the scores is {smallest:.4}; it must be above zero"
+    )]
+    NotPositiveDefinite {
+        /// Smallest eigenvalue.
+        smallest: f64,
+    },
+    /// Only settled distributions can be correlated.
+    #[error("`{name}` has no distribution of its own that could be correlated")]
+    NotSettled {
+        /// The variable.
+        name: String,
+    },
+    /// No copula gives that correlation to these two distributions.
+    #[error(
+        "`{first}` and `{second}` cannot have the linear correlation {given}: theirs is between {low:.4} and {high:.4}"
+    )]
+    OutOfReach {
+        /// One of the pair.
+        first: String,
+        /// The other.
+        second: String,
+        /// What was asked for.
+        given: f64,
+        /// The least that they can have.
+        low: f64,
+        /// The most.
+        high: f64,
+    },
+}
+
+/// A pair with the correlation that is asked of it.
+struct Pair {
+    places: (usize, usize),
+    kind: CorrelationKind,
+    value: f64,
+    span: Range<usize>,
+    /// Place of the numbers of its table.
+    table: Range<usize>,
+}
+
+/// A correlation among `members` from a whole matrix of one kind.
+pub(crate) fn of_matrix(
+    variables: &[Variable],
+    members: Vec<usize>,
+    kind: CorrelationKind,
+    matrix: &[f64],
+) -> Result<Correlation, CorrelationError> {
+    let d = members.len();
+    let mut scores = Vec::new();
+    for i in 0..d {
+        for j in 0..i {
+            let value = score_of_pair(variables, (members[i], members[j]), kind, matrix[i * d + j])?;
+            scores.push(((members[i], members[j]), value));
+        }
+    }
+    let mut sorted = members;
+    sorted.sort_unstable();
+    group(sorted, &scores)
+}
+
+/// All groups of the file; faults point at the number, the name or the table that is wrong.
+pub(crate) fn settle(
+    reader: &mut Reader<'_>,
+    specs: &[CorrelationSpec],
+    expanded: &[Expanded<'_>],
+    variables: &[Variable],
+) -> Option<Vec<Correlation>> {
+    let before = reader.faults.len();
+    let mut pairs: Vec<Pair> = Vec::new();
+    for spec in specs {
+        add_pairs(reader, spec, expanded, variables, &mut pairs);
+    }
+    let mut scores = Vec::new();
+    for pair in &pairs {
+        match score_of_pair(variables, pair.places, pair.kind, pair.value) {
+            Ok(score) => scores.push((pair.places, score)),
+            Err(error) => {
+                let fault = Fault::new(pair.span.clone(), error.to_string());
+                reader.fault(fault.help("write a number between these, or say it as rank = ... or score = ..."));
+            }
+        }
+    }
+    if reader.faults.len() > before {
+        return None;
+    }
+    let mut groups = Vec::new();
+    for members in connected(&pairs) {
+        let inside: Vec<((usize, usize), f64)> =
+            scores.iter().copied().filter(|((i, _), _)| members.contains(i)).collect();
+        let table = pairs.iter().find(|pair| members.contains(&pair.places.0)).map_or(0..0, |pair| pair.table.clone());
+        match group(members, &inside) {
+            Ok(found) => groups.push(found),
+            Err(error) => {
+                let fault = Fault::new(table, error.to_string());
+                reader.fault(fault.help("bring the numbers nearer to zero, or check their signs"));
+            }
+        }
+    }
+    (reader.faults.len() == before).then_some(groups)
+}
+
+fn add_pairs(
+    reader: &mut Reader<'_>,
+    spec: &CorrelationSpec,
+    expanded: &[Expanded<'_>],
+    variables: &[Variable],
+    pairs: &mut Vec<Pair>,
+) {
+    let mut places: Vec<usize> = Vec::new();
+    for name in &spec.among {
+        let Some(place) = place_of(reader, name, expanded, variables) else { continue };
+        if places.contains(&place) {
+            let message = format!("`{}` stands twice among the correlated", name.value);
+            reader.fault(Fault::new(name.span.clone(), message).help("name each variable once"));
+        } else {
+            places.push(place);
+        }
+    }
+    let d = spec.among.len();
+    if places.len() != d {
+        return;
+    }
+    for (i, j, span) in &spec.places {
+        let (first, second) = (places[*i].max(places[*j]), places[*i].min(places[*j]));
+        let value = spec.matrix[i * d + j];
+        if let Some(other) = pairs.iter().find(|pair| pair.places == (first, second)) {
+            let message = format!("`{}` and `{}` are correlated twice", spec.among[*j].value, spec.among[*i].value);
+            let fault = Fault::new(span.clone(), message).also(other.span.clone(), "first here");
+            reader.fault(fault.help("give each pair one number"));
+        } else {
+            let table = spec.span.clone();
+            pairs.push(Pair { places: (first, second), kind: spec.kind, value, span: span.clone(), table });
+        }
+    }
+}
+
+/// The place of a variable that may be correlated.
+fn place_of(reader: &mut Reader<'_>, name: &Text, expanded: &[Expanded<'_>], variables: &[Variable]) -> Option<usize> {
+    let Some(found) = expanded.iter().find(|variable| variable.spec.name == name.value) else {
+        let known = expanded.iter().map(|variable| variable.spec.name.as_str());
+        let fault = Fault::new(name.span.clone(), format!("no variable is called `{}`", name.value));
+        reader.fault(match nearest(&name.value, known) {
+            Some(near) => fault.help(format!("did you mean `{near}`?")),
+            None => fault.help("name variables of [variables]"),
+        });
+        return None;
+    };
+    let refusal = match &found.spec.nature {
+        _ if found.labels.is_some() => Some("is a group of variables (`each`)"),
+        NatureSpec::Range { .. } => Some("has a range and no distribution"),
+        NatureSpec::Random { .. } => {
+            let dependent = matches!(variables[found.places.start].nature, Nature::Dependent { .. });
+            dependent.then_some("has parameters that depend on other variables")
+        }
+    };
+    if let Some(refusal) = refusal {
+        let message = format!("`{}` cannot be correlated: it {refusal}", name.value);
+        let fault = Fault::new(name.span.clone(), message).also(found.spec.name_span.clone(), "the variable");
+        reader.fault(fault.help("correlate single variables whose distribution has numbers as parameters"));
+        return None;
+    }
+    Some(found.places.start)
+}
+
+/// The correlation of the scores of a pair.
+fn score_of_pair(
+    variables: &[Variable],
+    (i, j): (usize, usize),
+    kind: CorrelationKind,
+    value: f64,
+) -> Result<f64, CorrelationError> {
+    let settled = |k: usize| -> Result<&Distribution, CorrelationError> {
+        match &variables[k].nature {
+            Nature::Random(distribution) => Ok(distribution),
+            _ => Err(CorrelationError::NotSettled { name: variables[k].name.clone() }),
+        }
+    };
+    let (_first, _second) = (settled(i)?, settled(j)?);
+    Ok(match kind {
+        CorrelationKind::Score => value,
+        CorrelationKind::Rank => 2.0 * libm::sin(std::f64::consts::PI * value / 6.0),
+        CorrelationKind::Linear => value,
+    })
+}
+
+/// Members that hang together, directly or through others, in the order of their places.
+fn connected(pairs: &[Pair]) -> Vec<Vec<usize>> {
+    let mut groups: Vec<Vec<usize>> = Vec::new();
+    for pair in pairs {
+        let (i, j) = pair.places;
+        let touched: Vec<usize> =
+            (0..groups.len()).filter(|&k| groups[k].contains(&i) || groups[k].contains(&j)).collect();
+        let mut merged = vec![i, j];
+        for &k in touched.iter().rev() {
+            merged.extend(groups.remove(k));
+        }
+        merged.sort_unstable();
+        merged.dedup();
+        groups.push(merged);
+    }
+    groups.sort();
+    groups
+}
+
+fn group(members: Vec<usize>, scores: &[((usize, usize), f64)]) -> Result<Correlation, CorrelationError> {
+    let d = members.len();
+    let mut score = vec![0.0; d * d];
+    (0..d).for_each(|i| score[i * d + i] = 1.0);
+    let row = |place: usize| members.iter().position(|&member| member == place);
+    for &((i, j), value) in scores {
+        if let (Some(i), Some(j)) = (row(i), row(j)) {
+            score[i * d + j] = value;
+            score[j * d + i] = value;
+        }
+    }
+    match linear::cholesky(&score, d) {
+        Some(lower) => Ok(Correlation { members, score, lower }),
+        None => {
+            let smallest = linear::eigen(&score, d).map_or(f64::NAN, |eigen| eigen.values[0]);
+            Err(CorrelationError::NotPositiveDefinite { smallest })
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn normal(name: &str) -> Variable {
+        Variable::random(name, Distribution::new("normal", &[("mean", 0.0), ("sd", 1.0)]).unwrap())
+    }
+
+    /// Eigenvalues of `[[1, a, b], [a, 1, c], [b, c, 1]]` for `a, b, c = .9, -.9, .9`: the matrix is one minus .9 times
+    /// the adjacency of a frustrated triangle, whose eigenvalues are -1, -1, 2: the smallest is 1 - 1.8.
+    #[test]
+    fn contradictions_are_refused_with_an_eigenvalue() {
+        let variables: Vec<Variable> = ["a", "b", "c"].map(normal).to_vec();
+        let matrix = [1.0, 0.9, -0.9, 0.9, 1.0, 0.9, -0.9, 0.9, 1.0];
+        match of_matrix(&variables, vec![0, 1, 2], CorrelationKind::Score, &matrix) {
+            Err(CorrelationError::NotPositiveDefinite { smallest }) => assert!((smallest + 0.8).abs() < 1e-12),
+            other => panic!("{other:?}"),
+        }
+    }
+
+    #[test]
+    fn the_order_of_the_names_does_not_matter() {
+        let variables: Vec<Variable> = ["a", "b", "c"].map(normal).to_vec();
+        let one = of_matrix(
+            &variables,
+            vec![0, 1, 2],
+            CorrelationKind::Score,
+            &[1.0, 0.1, 0.2, 0.1, 1.0, 0.3, 0.2, 0.3, 1.0],
+        );
+        let two = of_matrix(
+            &variables,
+            vec![2, 0, 1],
+            CorrelationKind::Score,
+            &[1.0, 0.2, 0.3, 0.2, 1.0, 0.1, 0.3, 0.1, 1.0],
+        );
+        assert_eq!(one, two);
+    }
+
+    #[test]
+    fn tables_that_share_a_variable_are_one_group() {
+        let pair = |i, j| Pair { places: (i, j), kind: CorrelationKind::Score, value: 0.1, span: 0..0, table: 0..0 };
+        assert_eq!(connected(&[pair(1, 0), pair(5, 4), pair(6, 2), pair(5, 1)]), [vec![0, 1, 4, 5], vec![2, 6]]);
+    }
+
+    #[test]
+    fn errors_may_cross_threads() {
+        fn crosses<T: std::error::Error + Send + Sync + 'static>() {}
+        crosses::<CorrelationError>();
+    }
+}

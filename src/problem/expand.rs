@@ -1,0 +1,101 @@
+//! Variables as stated, spread out over the labels of their `each`: one place for every coordinate.
+
+use std::ops::Range;
+
+use super::columns::Column;
+use super::columns::DataTable;
+use super::faults::Fault;
+use super::names::all_of;
+use super::statement::Statement;
+use super::table::Reader;
+use super::text_value::Text;
+use super::variable::Member;
+use super::variables_table::Each;
+use super::variables_table::VariableSpec;
+use crate::expression::nearest;
+
+/// A variable as stated, and the places that it, or its members, have among all coordinates.
+#[derive(Debug, Clone)]
+pub(crate) struct Expanded<'a> {
+    pub(crate) spec: &'a VariableSpec,
+    pub(crate) places: Range<usize>,
+    /// Labels of the members of an `each`.
+    pub(crate) labels: Option<Vec<String>>,
+}
+
+impl Expanded<'_> {
+    /// Names of its coordinates with their membership: `depth`, or `effect[Alder]`, `effect[Birch]`, ...
+    pub(crate) fn names(&self) -> Vec<(String, Option<Member>)> {
+        let name = &self.spec.name;
+        match &self.labels {
+            None => vec![(name.clone(), None)],
+            Some(labels) => labels
+                .iter()
+                .enumerate()
+                .map(|(position, label)| {
+                    let member = Member { group: name.clone(), label: label.clone(), position };
+                    (format!("{name}[{label}]"), Some(member))
+                })
+                .collect(),
+        }
+    }
+}
+
+/// Spreads out every variable. A fault of one leaves the others.
+pub(crate) fn expand<'a>(
+    reader: &mut Reader<'_>,
+    statement: &'a Statement,
+    tables: &[DataTable],
+) -> Option<Vec<Expanded<'a>>> {
+    let before = reader.faults.len();
+    let mut expanded = Vec::new();
+    let mut next = 0;
+    for spec in &statement.variables {
+        let labels = match &spec.each {
+            None => None,
+            Some(Each::Count(n)) => Some((1..=*n).map(|k| k.to_string()).collect()),
+            Some(Each::Column(column)) => match labels_of(reader, column, tables) {
+                Some(labels) => Some(labels),
+                None => continue,
+            },
+        };
+        let size = labels.as_ref().map_or(1, Vec::len);
+        expanded.push(Expanded { spec, places: next..next + size, labels });
+        next += size;
+    }
+    (reader.faults.len() == before).then_some(expanded)
+}
+
+fn labels_of(reader: &mut Reader<'_>, name: &Text, tables: &[DataTable]) -> Option<Vec<String>> {
+    let Some((table, column)) = column_named(&name.value, tables) else {
+        let known: Vec<&str> =
+            tables.iter().flat_map(|table| &table.columns).map(|column| column.name.as_str()).collect();
+        let fault = Fault::new(name.span.clone(), format!("there is no data column `{}`", name.value));
+        let help = match (nearest(&name.value, known.iter().copied()), known.is_empty()) {
+            (_, true) => "name the data file under [data]: file = \"readings.csv\"; or say how many: each = 4".into(),
+            (Some(near), _) => format!("did you mean `{near}`?"),
+            (None, _) => format!("the columns are {}", all_of(&known)),
+        };
+        reader.fault(fault.label("no such column").help(help));
+        return None;
+    };
+    match column.distinct_labels() {
+        Ok(labels) => Some(labels),
+        Err(row) => {
+            let record = table.kept[row];
+            let line = table.raw.records[record].0;
+            let message = format!("line {line} of `{}` has no label in the column `{}`", table.raw.shown, column.name);
+            let fault = table.raw.cell_fault(record, column.place(), message).label("no label");
+            reader.fault(fault.help("fill the cell: the column says which member of the `each` a row belongs to"));
+            None
+        }
+    }
+}
+
+/// A column by the name that formulas use.
+pub(crate) fn column_named<'t>(name: &str, tables: &'t [DataTable]) -> Option<(&'t DataTable, &'t Column)> {
+    tables
+        .iter()
+        .flat_map(|table| table.columns.iter().map(move |column| (table, column)))
+        .find(|(_, column)| column.name == name)
+}

@@ -1,0 +1,254 @@
+//! TOML tables in the order of the text, with the place of every key and value.
+
+use std::ops::Range;
+
+use toml::Spanned;
+use toml::de::DeTable;
+use toml::de::DeValue;
+
+use super::faults::Fault;
+use super::faults::Faults;
+use super::names::all_of;
+use super::names::listed;
+use super::text_value::Text;
+use crate::expression::nearest;
+
+/// A table whose entries stand in the order of the text.
+#[derive(Debug, Clone)]
+pub(crate) struct Table<'a> {
+    /// How messages call it: `[variables]`, or `the variable x`.
+    pub(crate) name: String,
+    pub(crate) span: Range<usize>,
+    pub(crate) entries: Vec<Entry<'a>>,
+}
+
+/// A key with its value, or an item of a list (then the key is that of the list).
+#[derive(Debug, Clone)]
+pub(crate) struct Entry<'a> {
+    pub(crate) key: &'a str,
+    pub(crate) key_span: Range<usize>,
+    pub(crate) value: &'a DeValue<'a>,
+    pub(crate) span: Range<usize>,
+}
+
+impl<'a> Table<'a> {
+    pub(crate) fn new(name: impl Into<String>, table: &'a DeTable<'a>, span: Range<usize>) -> Self {
+        let mut entries: Vec<Entry<'a>> = table
+            .iter()
+            .map(|(key, value)| Entry {
+                key: key.get_ref(),
+                key_span: key.span(),
+                value: value.get_ref(),
+                span: value.span(),
+            })
+            .collect();
+        entries.sort_by_key(|entry| entry.key_span.start);
+        Self { name: name.into(), span, entries }
+    }
+
+    pub(crate) fn entry(&self, key: &str) -> Option<&Entry<'a>> {
+        self.entries.iter().find(|entry| entry.key == key)
+    }
+}
+
+/// Reads typed values out of a document and keeps what is wrong.
+#[derive(Debug)]
+pub(crate) struct Reader<'s> {
+    pub(crate) source: &'s str,
+    pub(crate) faults: Faults,
+}
+
+impl<'s> Reader<'s> {
+    pub(crate) fn new(source: &'s str) -> Self {
+        Self { source, faults: Faults::default() }
+    }
+
+    pub(crate) fn fault(&mut self, fault: Fault) {
+        self.faults.push(fault);
+    }
+
+    /// Keys of `table` that are not `known` are faults.
+    pub(crate) fn only(&mut self, table: &Table<'_>, known: &[&str]) {
+        for entry in table.entries.iter().filter(|entry| !known.contains(&entry.key)) {
+            self.unknown_key(entry, &table.name, known);
+        }
+    }
+
+    pub(crate) fn unknown_key(&mut self, entry: &Entry<'_>, place: &str, known: &[&str]) {
+        let fault =
+            Fault::new(entry.key_span.clone(), format!("`{}` is no key of {place}", entry.key)).label("unknown key");
+        self.fault(match nearest(entry.key, known.iter().copied()) {
+            Some(near) => fault.help(format!("did you mean `{near}`?")),
+            None => fault.help(format!("the keys of {place} are {}", all_of(known))),
+        });
+    }
+
+    /// A value of the wrong kind: "`near` wants a number", with an example.
+    pub(crate) fn wants(&mut self, entry: &Entry<'_>, what: &str, example: &str) {
+        self.fault(
+            Fault::new(entry.span.clone(), format!("`{}` wants {what}", entry.key))
+                .label(format!("this is {}", kind(entry.value)))
+                .help(format!("write {example}")),
+        );
+    }
+
+    /// A number; whole numbers are numbers too.
+    pub(crate) fn number(&mut self, entry: &Entry<'_>, example: &str) -> Option<f64> {
+        let found = plain_number(entry.value);
+        if found.is_none() {
+            self.wants(entry, "a number", example);
+        }
+        if found.is_some_and(f64::is_nan) {
+            self.fault(
+                Fault::new(entry.span.clone(), format!("`{}` is not a number", entry.key))
+                    .help("`nan` stands for no value here; write the number that is meant"),
+            );
+            return None;
+        }
+        found
+    }
+
+    /// A whole number of at least `least`.
+    pub(crate) fn count(&mut self, entry: &Entry<'_>, least: u64, example: &str) -> Option<u64> {
+        let number = plain_number(entry.value);
+        match number {
+            Some(n) if n >= least as f64 && n.fract() == 0.0 && n < 9e15 => Some(n as u64),
+            Some(_) => {
+                self.fault(
+                    Fault::new(entry.span.clone(), format!("`{}` wants a whole number, {least} or more", entry.key))
+                        .help(format!("write {example}")),
+                );
+                None
+            }
+            None => {
+                self.wants(entry, "a whole number", example);
+                None
+            }
+        }
+    }
+
+    pub(crate) fn text(&mut self, entry: &Entry<'_>, example: &str) -> Option<Text> {
+        match entry.value {
+            DeValue::String(value) => Some(Text::new(self.source, value, entry.span.clone())),
+            _ => {
+                self.wants(entry, "a text in quotes", example);
+                None
+            }
+        }
+    }
+
+    /// One of `known` words.
+    pub(crate) fn word(&mut self, entry: &Entry<'_>, known: &[&str]) -> Option<String> {
+        let example = format!("{} = \"{}\"", entry.key, known[0]);
+        let text = self.text(entry, &example)?;
+        if known.contains(&text.value.as_str()) {
+            return Some(text.value);
+        }
+        let quoted: Vec<String> = known.iter().map(|word| format!("\"{word}\"")).collect();
+        let all = listed(&quoted).replace('`', "");
+        let fault = Fault::new(entry.span.clone(), format!("`{}` knows no \"{}\"", entry.key, text.value))
+            .label("unknown word");
+        self.fault(match nearest(&text.value, known.iter().copied()) {
+            Some(near) => fault.help(format!("did you mean \"{near}\"? The words are {all}")),
+            None => fault.help(format!("write {all}")),
+        });
+        None
+    }
+
+    pub(crate) fn table<'a>(&mut self, entry: &Entry<'a>, name: &str, example: &str) -> Option<Table<'a>> {
+        match entry.value {
+            DeValue::Table(table) => Some(Table::new(name, table, entry.key_span.clone())),
+            _ => {
+                self.wants(entry, "a table", example);
+                None
+            }
+        }
+    }
+
+    pub(crate) fn list<'a>(&mut self, entry: &Entry<'a>, example: &str) -> Option<Vec<Entry<'a>>> {
+        match entry.value {
+            DeValue::Array(items) => Some(items.iter().map(|item| item_entry(entry, item)).collect()),
+            _ => {
+                self.wants(entry, "a list in square brackets", example);
+                None
+            }
+        }
+    }
+
+    /// A list of texts.
+    pub(crate) fn texts(&mut self, entry: &Entry<'_>, example: &str) -> Option<Vec<Text>> {
+        let items = self.list(entry, example)?;
+        items.iter().map(|item| self.text(item, example)).collect()
+    }
+
+    /// `[low, high]` with `low < high`; infinite ends are allowed.
+    pub(crate) fn interval(&mut self, entry: &Entry<'_>, example: &str) -> Option<(f64, f64)> {
+        let items = self.list(entry, example)?;
+        if items.len() != 2 {
+            self.fault(
+                Fault::new(entry.span.clone(), format!("`{}` wants two numbers, its low and its high end", entry.key))
+                    .label(format!("{} here", items.len()))
+                    .help(format!("write {example}")),
+            );
+            return None;
+        }
+        let low = self.number(&items[0], example);
+        let high = self.number(&items[1], example);
+        let (low, high) = (low?, high?);
+        if low >= high || low == f64::INFINITY || high == f64::NEG_INFINITY {
+            self.fault(
+                Fault::new(
+                    entry.span.clone(),
+                    format!("`{}` is empty: its low end must be below its high end", entry.key),
+                )
+                .help(format!("write {} = [{high:?}, {low:?}] if the ends were swapped", entry.key)),
+            );
+            return None;
+        }
+        Some((low, high))
+    }
+}
+
+fn item_entry<'a>(list: &Entry<'a>, item: &'a Spanned<DeValue<'a>>) -> Entry<'a> {
+    Entry { key: list.key, key_span: item.span(), value: item.get_ref(), span: item.span() }
+}
+
+/// The number that a TOML value is, `nan` included.
+pub(crate) fn plain_number(value: &DeValue<'_>) -> Option<f64> {
+    match value {
+        DeValue::Float(float) => float.as_str().parse().ok(),
+        DeValue::Integer(integer) => i64::from_str_radix(integer.as_str(), integer.radix()).ok().map(|n| n as f64),
+        _ => None,
+    }
+}
+
+/// What a TOML value is, in words.
+pub(crate) fn kind(value: &DeValue<'_>) -> &'static str {
+    match value {
+        DeValue::String(_) => "a text",
+        DeValue::Integer(_) | DeValue::Float(_) => "a number",
+        DeValue::Boolean(_) => "true or false",
+        DeValue::Datetime(_) => "a date",
+        DeValue::Array(_) => "a list",
+        DeValue::Table(_) => "a table",
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn entries_stand_in_the_order_of_the_text() {
+        let text = "zebra = 1\n[b.late]\nx = 1\n[b.early]\nx = 2\n[a]\ny = 3\n";
+        let document = DeTable::parse(text).unwrap();
+        let table = Table::new("the file", document.get_ref(), document.span());
+        let keys: Vec<&str> = table.entries.iter().map(|entry| entry.key).collect();
+        assert_eq!(keys, ["zebra", "b", "a"]);
+        let mut reader = Reader::new(text);
+        let inner = reader.table(&table.entries[1], "[b]", "").unwrap();
+        let keys: Vec<&str> = inner.entries.iter().map(|entry| entry.key).collect();
+        assert_eq!(keys, ["late", "early"]);
+        assert_eq!(&text[inner.entries[1].key_span.clone()], "early");
+    }
+}
