@@ -94,6 +94,10 @@ impl Axis {
                 tick.label.clear();
             }
         }
+        let powers = log10(high / low).max(1.0);
+        if room.length / powers < 2.0 * room.size {
+            marking.minor.clear();
+        }
         Self { low, high, scale, marking }
     }
 
@@ -234,7 +238,7 @@ fn fits(marking: &Marking, low: f64, high: f64, scale: Scale, room: Room) -> boo
         .map(|tick| {
             let half = match room.along {
                 Along::Page => text::width(&tick.label, room.size, Face::Regular) / 2.0 + 0.35 * room.size,
-                Along::Column => 0.72 * room.size,
+                Along::Column => 0.63 * room.size,
             };
             (place(tick.at, low, high, scale) * room.length, half)
         })

@@ -303,7 +303,7 @@ impl Canvas {
     /// A rectangle of `size` inside `room` in which least is drawn; among equals the one nearest to `near`.
     #[must_use]
     pub fn free_area(&self, room: Area, size: (f64, f64), near: Spot) -> Area {
-        const STEPS: u32 = 24;
+        const STEPS: u32 = 40;
         let (slack_x, slack_y) = ((room.width() - size.0).max(0.0), (room.height() - size.1).max(0.0));
         let mut best: Option<(usize, f64, Area)> = None;
         for (i, j) in (0..=STEPS).flat_map(|i| (0..=STEPS).map(move |j| (i, j))) {

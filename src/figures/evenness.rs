@@ -18,6 +18,7 @@ use super::colour::MEASURED_TINT;
 use super::colour::MODELLED;
 use super::colour::REFERENCE;
 use super::heading;
+use super::numbers::count;
 use super::numbers::fixed;
 use super::numbers::percent;
 use super::numbers::significant;
@@ -168,9 +169,14 @@ fn draw_shares(canvas: &mut Canvas, style: &Style, panel: &Panel, data: &Evennes
     canvas.fill(points.iter().map(|&(x, y)| panel.spot(x, y)).collect(), MEASURED_TINT, 1.0);
     let diagonal = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.4 * unit, 0.3 * unit);
     panel.curve(canvas, [(0.0, 0.0), (1.0, 1.0)], diagonal);
-    panel.curve(canvas, points, Pen::solid(MEASURED, style.stroke()));
+    panel.curve(canvas, points.iter().copied(), Pen::solid(MEASURED, style.stroke()));
     let right = panel.area.right - 0.2 * unit;
-    let score = |name: &str, value: f64| format!("{name} {}", fixed(value, if value < 0.1 { 3 } else { 2 }));
+    if points.len() < 2 {
+        let middle = panel.spot(0.42, 0.88);
+        canvas.write("no draw has weight", middle, Anchor::Middle, style.plain(REFERENCE));
+        return;
+    }
+    let score = |name: &str, value: f64| format!("{name} {}", significant(value, 2));
     let lines = [(score("ESS fraction", data.ess_fraction), MEASURED), (score("perplexity", data.perplexity), MEASURED)];
     write_lines(canvas, style, &lines, (right, panel.area.bottom - 0.5 * unit));
     let near = panel.spot(0.72, 0.55);
@@ -209,8 +215,11 @@ impl Tail {
         // From the draw that leaves three quarters above it, or a thousandth of the largest: the tail is the subject.
         let usual = points.iter().rev().find(|&&(_, share)| share <= 0.75).map_or(most, |&(w, _)| w);
         let low = usual.max(most * 1e-4).min(fit.map_or(f64::INFINITY, |fit| fit.threshold * 0.8)) / 1.15;
-        let y = Axis::new(0.4 / n.max(1.0), 1.0, Scale::Log, room);
-        Self { points, low, high: most * libm::pow(most / low, 0.12), y }
+        let y = Axis::new(0.4 / n.max(50.0), 1.0, Scale::Log, room);
+        // Weights that hardly differ stand in the middle of a range that says so.
+        let (low, high) =
+            if most / low < 1.3 { (most / 2.0, most * 2.0) } else { (low, most * libm::pow(most / low, 0.12)) };
+        Self { points, low, high, y }
     }
 }
 
@@ -232,19 +241,23 @@ fn draw_tail(canvas: &mut Canvas, style: &Style, panel: &Panel, data: &EvennessD
                 })
                 .collect()
         };
-        panel.curve(canvas, line(fit.shape), Pen::solid(MODELLED, style.stroke()));
-        let bound = Pen::solid(MODELLED, 0.8 * style.stroke()).dashed(0.45 * unit, 0.3 * unit);
+        panel.curve(canvas, line(fit.shape), Pen::solid(MODELLED, 0.75 * style.stroke()));
+        let bound = Pen::solid(MODELLED, 0.75 * style.stroke()).dashed(0.45 * unit, 0.3 * unit);
         panel.curve(canvas, line(fit.shape_upper), bound);
         lines.push((format!("tail shape {}", fixed(fit.shape, 2)), MODELLED));
-        lines.push((format!("bound {} (dashed)", fixed(fit.shape_upper, 2)), MODELLED));
+        lines.push((format!("its bound {}", fixed(fit.shape_upper, 2)), MODELLED));
         lines.push((format!("sound below {}", significant(fit.limit, 1)), REFERENCE));
     } else {
         lines.push(("tail not fitted".to_owned(), REFERENCE));
     }
     let width = lines.iter().map(|(line, _)| text::width(line, unit, Face::Regular)).fold(0.0, f64::max);
     let size = (width + 0.6 * unit, (LINE * lines.len() as f64 + 0.2) * unit);
-    let room = Area { left: panel.area.left + 0.2 * unit, right: panel.area.right + 0.8 * unit, ..panel.area };
-    let area = canvas.free_area(room, size, (panel.area.right, panel.area.top));
+    let room = Area { left: panel.area.left + 0.2 * unit, right: panel.area.right + 0.4 * unit, ..panel.area };
+    // A falling line leaves two corners free; with both taken, wherever least is drawn.
+    let above = Area { left: room.right - size.0, bottom: room.top + size.1, ..room };
+    let below = Area { right: room.left + size.0, top: room.bottom - size.1, ..room };
+    let free = [above, below].into_iter().find(|corner| canvas.crowding(corner) == 0);
+    let area = free.unwrap_or_else(|| canvas.free_area(room, size, (room.right, room.top)));
     write_lines(canvas, style, &lines, (area.right - 0.3 * unit, area.bottom - 0.4 * unit));
 }
 
@@ -254,22 +267,29 @@ fn caption(data: &EvennessData, falling: &[f64]) -> String {
         return "No draw has weight.".to_owned();
     }
     let n = falling.len();
-    let hundredth = n.div_ceil(100);
-    let top: f64 = falling[..hundredth].iter().sum();
     let half = shares(falling).iter().find(|&&(_, share)| share >= 0.5).map_or(1.0, |&(draws, _)| draws);
     let mut parts = vec![format!(
-        "Cumulative share of the total weight against the share of draws (a): half of the total rests on {} of the {} draws, \
-         the heaviest {} carry {}, the heaviest one {}.",
-        percent(half),
-        super::numbers::count(n),
-        if hundredth == 1 { "draw".to_owned() } else { format!("{hundredth} draws") },
-        percent(top / total),
-        percent(falling[0] / total)
+        "Cumulative share of the total weight against the share of draws (a): ESS fraction {}, perplexity {}.",
+        significant(data.ess_fraction, 3),
+        significant(data.perplexity, 3)
     )];
+    let hundredth = n.div_ceil(100);
+    if hundredth > 1 {
+        let top: f64 = falling[..hundredth].iter().sum();
+        parts.push(format!(
+            "Half of the total rests on {} of the {} draws; the {hundredth} heaviest carry {}, the heaviest one {}.",
+            percent(half),
+            count(n),
+            percent(top / total),
+            percent(falling[0] / total)
+        ));
+    } else {
+        parts.push(format!("The heaviest of {} draws carries {}.", count(n), percent(falling[0] / total)));
+    }
     parts.push(match &data.tail {
         Some(fit) => format!(
-            "Share of draws above a weight (b), with the generalised Pareto fit to the heaviest {} of the draws: tail shape {}, \
-             upper bound {}, which has to stay below {}.",
+            "Share of draws above a weight (b), with the generalised Pareto fit to the heaviest {} of the draws: tail \
+             shape {}; dashed, the same at its upper bound {}, which has to stay below {}.",
             percent(fit.share_above),
             fixed(fit.shape, 2),
             fixed(fit.shape_upper, 2),

@@ -5,10 +5,12 @@
 //! data came from.
 //!
 //! * [`progress`]: scores of the rounds against the evaluations spent;
-//! * [`evenness`]: how evenly the weights share the total, and their upper tail with its fit.
+//! * [`evenness`]: how evenly the weights share the total, and their upper tail with its fit;
+//! * [`variables`]: the variables, each with its marginal and with the two it depends on most
+//!   ([`dependence`] finds them);
 //!
 //! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`], [`canvas`] (marks and text boxes in points),
-//! [`panel`], [`table`], and the two writers [`raster`] and [`svg`](mod@svg).
+//! [`panel`], [`key`], [`table`], [`columns`], and the two writers [`raster`] and [`svg`](mod@svg).
 //!
 //! **Sizes.** A figure is laid out anew for the width it is asked for. The text size follows the width between 8 and
 //! 16 cm, so a figure made 16 cm wide and printed 8 cm wide still has letters of 6 pt; no text is ever set below 6 pt,
@@ -19,7 +21,10 @@
 pub mod axis;
 pub mod canvas;
 pub mod colour;
+pub mod columns;
+pub mod dependence;
 pub mod evenness;
+pub mod key;
 pub mod numbers;
 pub mod panel;
 pub mod progress;
@@ -27,6 +32,9 @@ pub mod raster;
 pub mod svg;
 pub mod table;
 pub mod text;
+pub mod variables;
+
+mod marginal;
 
 #[cfg(test)]
 mod checks;

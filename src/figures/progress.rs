@@ -18,7 +18,6 @@ use super::colour::MODELLED;
 use super::colour::REFERENCE;
 use super::heading;
 use super::numbers::count;
-use super::numbers::fixed;
 use super::numbers::significant;
 use super::panel::Panel;
 use super::panel::bottom_room;
@@ -149,6 +148,10 @@ pub fn draw(data: &ProgressData, style: &Style) -> Drawing {
         for series in &row.series {
             draw_series(&mut canvas, style, panel, series);
         }
+        if row.series.is_empty() {
+            let middle = (f64::midpoint(left, right), f64::midpoint(panel.area.top, panel.area.bottom));
+            canvas.write("no round has a score", middle, Anchor::Middle, style.plain(REFERENCE));
+        }
         if i == 0 {
             for series in &row.series {
                 name_series(&mut canvas, style, panel, series);
@@ -237,9 +240,11 @@ fn rows(data: &ProgressData) -> Vec<Row> {
     }
     let values: Vec<f64> = variance.iter().flat_map(|s| s.points.iter().map(|p| p.y)).filter(|y| y.is_finite()).collect();
     let (low, high) = values.iter().fold((f64::INFINITY, 0.0_f64), |(low, high), &y| (low.min(y), high.max(y)));
+    // At least one power of ten, so that noise does not fill the panel.
+    let widening = (10.0 * low / high).max(2.56).sqrt();
     push_row(
         &mut rows,
-        Row { title: "weight variance", height: 6.0, low: low / 1.6, high: high * 1.6, scale: Scale::Log, ticks: 5, series: variance },
+        Row { title: "weight variance", height: 6.0, low: low / widening, high: high * widening, scale: Scale::Log, ticks: 5, series: variance },
     );
 
     let steps = vec![series("", Kind::Fresh, &|round| plain(round, round.schedule))];
@@ -276,10 +281,10 @@ fn draw_phases(canvas: &mut Canvas, style: &Style, phases: &[Phase], panels: &[P
     let mut spans = Vec::new();
     for phase in phases.iter().filter(|phase| phase.from.is_finite() && phase.to > phase.from) {
         let (from, to) = (place(phase.from), place(phase.to));
+        let inset = (0.08 * unit).min((to - from) / 4.0);
         if phase.shaded {
-            canvas.fill_area(Area { left: from, top, right: to, bottom: last.area.bottom }, GROUND);
+            canvas.fill_area(Area { left: from + inset, top, right: to - inset, bottom: last.area.bottom }, GROUND);
         }
-        let inset = (0.1 * unit).min((to - from) / 4.0);
         canvas.line(vec![(from + inset, top), (to - inset, top)], rule);
         spans.push((phase.name.as_str(), f64::midpoint(from, to)));
     }
@@ -331,13 +336,14 @@ fn name_series(canvas: &mut Canvas, style: &Style, panel: &Panel, series: &Serie
     let colour = if series.kind == Kind::Predicted { MODELLED } else { MEASURED };
     let (x, y) = panel.spot(last.x, last.y);
     let size = (text::width(series.name, unit, Face::Regular) + 0.5 * unit, 1.25 * unit);
-    let side = match series.kind {
-        Kind::Predicted => -1.2 * unit,
-        Kind::Fresh => 1.2 * unit,
-        Kind::Report => 1.6 * unit,
+    // Beside the end of a line, predictions above; below the diamond.
+    let near = match series.kind {
+        Kind::Predicted => (x + size.0 / 2.0 + 0.5 * unit, y - 0.7 * unit),
+        Kind::Fresh => (x + size.0 / 2.0 + 0.5 * unit, y + 0.7 * unit),
+        Kind::Report => (x, y + 1.6 * unit),
     };
     let room = Area { left: panel.area.left + 0.3 * unit, right: canvas.width() - 0.2 * unit, ..panel.area };
-    let area = canvas.free_area(room, size, (x, y + side));
+    let area = canvas.free_area(room, size, near);
     canvas.write(series.name, (area.left + 0.25 * unit, area.bottom - 0.3 * unit), Anchor::Start, style.plain(colour));
 }
 
@@ -352,22 +358,25 @@ fn caption(data: &ProgressData) -> String {
         let components = if last.components == 1 { "1 component".to_owned() } else { format!("{} components", last.components) };
         if let Some(ess) = last.ess_fraction {
             let se = last.ess_fraction_se.map_or(String::new(), |se| format!(" ± {} (standard error)", significant(se, 1)));
-            let predicted = last.predicted_ess_fraction.map_or(String::new(), |p| format!(", predicted {}", fixed(p, 2)));
+            let predicted = last.predicted_ess_fraction.map_or(String::new(), |p| format!(", predicted {}", significant(p, 3)));
             let variance =
                 last.weight_variance.map_or(String::new(), |v| format!(", at a weight variance of {}", significant(v, 2)));
             parts.push(format!(
                 "Round {}, with {components}, reached an ESS fraction of {}{se} on its own fresh draws{predicted}{variance}.",
                 last.round,
-                fixed(ess, 3)
+                significant(ess, 3)
             ));
         }
     }
     if let Some(report) = &data.report {
         parts.push(format!(
             "The report draws score {} (diamond), after {} evaluations in all.",
-            fixed(report.ess_fraction, 3),
+            significant(report.ess_fraction, 3),
             count(report.evaluations.max(0.0) as usize)
         ));
+    }
+    if data.rounds.iter().any(|round| round.weight_variance.is_some_and(|variance| variance < LEAST_VARIANCE)) {
+        parts.push(format!("Weight variances below {} are drawn there.", significant(LEAST_VARIANCE, 1)));
     }
     if data.rounds.iter().any(|round| round.ess_fraction_se.is_some()) {
         parts.push("Bars are 95 % intervals.".to_owned());
@@ -499,6 +508,9 @@ mod tests {
         for phase in &mut long.phases {
             phase.from *= 1e5;
             phase.to *= 1e5;
+        }
+        if let Some(report) = &mut long.report {
+            report.evaluations *= 1e5;
         }
         let mut narrow = run(20, 0.9, Schedule::Exponent);
         narrow.phases[0].to = 100.0;
