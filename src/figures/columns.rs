@@ -1,6 +1,7 @@
 //! Variables as columns of draws, and what several figures ask of them: weighted quantiles, titles that fit.
 
 use super::axis::Axis;
+use super::axis::Scale;
 use super::text::Face;
 use super::text::shorten;
 use super::text::width;
@@ -29,25 +30,56 @@ impl VariableColumn {
     }
 }
 
-/// The title of an axis in at most `lines` lines no wider than `room`. A name that is too long loses letters in its
-/// middle; unit, power of ten and offset stay.
+/// The title of an axis in one or two lines no wider than `room`.
+///
+/// Two lines break before the unit where that is enough. A name that is too long even so loses letters in its middle;
+/// unit and power of ten stay.
 #[must_use]
 pub fn title_lines(axis: &Axis, name: &str, unit: Option<&str>, room: f64, size: f64, lines: usize) -> Vec<String> {
-    let mut name = name.to_owned();
-    loop {
-        let full = axis.title(&name, unit);
-        let wrapped = wrap(&full, room, size, Face::Regular, lines);
-        let dots = |text: &str| text.matches('…').count();
-        let letters = name.chars().count();
-        if letters <= 2 || wrapped.iter().map(|line| dots(line)).sum::<usize>() <= dots(&full) {
-            return wrapped;
-        }
-        // One letter less at a time: what fits into all but the last bit of the present width.
-        name = shorten(&name, width(&name, size, Face::Regular) - 0.3 * size, size, Face::Regular).replace("……", "…");
-        if name.chars().count() >= letters {
-            name = name.chars().take(letters - 1).collect();
-        }
+    let full = axis.title(name, unit);
+    let fits = |text: &str| width(text, size, Face::Regular) <= room;
+    if fits(&full) {
+        return vec![full];
     }
+    // The part in brackets that the axis and the unit add, and what stands before it.
+    let start = full.rfind(" (").filter(|&at| at >= name.len() && full.ends_with(')')).unwrap_or(full.len());
+    let (before, after) = (&full[..start], full[start..].trim_start());
+    if lines < 2 {
+        let left = (room - width(&full[start..], size, Face::Regular)).max(0.0);
+        return vec![format!("{}{}", shorten(before, left, size, Face::Regular), &full[start..])];
+    }
+    let wrapped = wrap(&full, room, size, Face::Regular, lines);
+    if after.is_empty() || !(fits(before) || wrapped.iter().any(|line| line.contains('…'))) {
+        return wrapped;
+    }
+    vec![shorten(before, room, size, Face::Regular), shorten(after, room, size, Face::Regular)]
+}
+
+/// Shares of the weight below and above which an axis does not have to reach.
+const ENDS: [f64; 2] = [0.003, 0.997];
+/// From this ratio of its ends on, a positive variable gets a log axis.
+const LOG_FROM: f64 = 30.0;
+
+/// Range and spacing of a variable's axis: nearly all of the weight, with a little room on both sides.
+#[must_use]
+pub fn range(column: &VariableColumn, weights: &[f64]) -> (f64, f64, Scale) {
+    let Some([low, high]) = quantiles(&column.values, weights, ENDS) else { return (0.0, 1.0, Scale::Linear) };
+    if column.discrete {
+        let pad = 0.75 + 0.03 * (high - low);
+        return (low - pad, high + pad, Scale::Whole);
+    }
+    if low > 0.0 && high / low >= LOG_FROM {
+        let pad = libm::pow(high / low, 0.08);
+        return (low / pad, high * pad, Scale::Log);
+    }
+    if high - low <= 1e-12 * low.abs().max(high.abs()) {
+        let pad = if low == 0.0 { 1.0 } else { 0.05 * low.abs() };
+        return (low - pad, high + pad, Scale::Linear);
+    }
+    let pad = 0.08 * (high - low);
+    // A variable that cannot be negative does not get an axis that says it is.
+    let floor = if low >= 0.0 && low - pad < 0.0 { 0.0 } else { low - pad };
+    (floor, high + pad, Scale::Linear)
 }
 
 /// Weights that can be summed: negative ones and those that are not finite count as zero.
@@ -107,7 +139,6 @@ pub fn positions(values: &[f64], weights: &[f64]) -> Vec<f64> {
 mod tests {
     use super::super::axis::Along;
     use super::super::axis::Room;
-    use super::super::axis::Scale;
     use super::*;
 
     #[test]
@@ -126,9 +157,15 @@ mod tests {
     fn titles_keep_their_unit() {
         let room = Room { along: Along::Page, length: 100.0, size: 6.0, most: 4 };
         let axis = Axis::new(0.0, 4e-12, Scale::Linear, room);
-        let lines = title_lines(&axis, "discharge_of_the_feeder_canal_7", Some("m³/s"), 60.0, 6.0, 2);
-        assert_eq!(lines.len(), 2, "{lines:?}");
-        assert!(lines[1].ends_with("(10⁻¹² m³/s)") && lines.concat().contains('…'), "{lines:?}");
+        let title = |name: &str, lines| title_lines(&axis, name, Some("m³/s"), 70.0, 6.0, lines);
+        assert_eq!(title("canal_discharge", 2), ["canal_discharge", "(10⁻¹² m³/s)"]);
+        let long = title("discharge_of_the_feeder_canal_7", 2);
+        assert!(long[0].starts_with("disch") && long[0].contains('…') && long[0].ends_with('7'), "{long:?}");
+        assert_eq!(long[1], "(10⁻¹² m³/s)");
+        let single = title("discharge_of_the_feeder_canal_7", 1);
+        assert!(single.len() == 1 && single[0].contains('…') && single[0].ends_with(" (10⁻¹² m³/s)"), "{single:?}");
+        let plain = Axis::new(0.0, 1.0, Scale::Linear, room);
+        assert_eq!(title_lines(&plain, "width (at the crest)", None, 50.0, 6.0, 2), ["width (at the", "crest)"]);
         assert_eq!(title_lines(&axis, "q", None, 60.0, 6.0, 2), ["q (10⁻¹²)"]);
         let column = VariableColumn { name: "q".into(), label: Some(" ".into()), unit: None, values: vec![], discrete: false };
         assert_eq!(column.title(), "q");

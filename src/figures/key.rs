@@ -1,4 +1,4 @@
-//! A key in running lines: what the marks of a figure with many panels stand for.
+//! A key: what the marks of a figure with many panels stand for.
 
 use super::LINE;
 use super::Style;
@@ -32,22 +32,21 @@ pub struct Key {
 }
 
 impl Key {
-    /// Sets the entries into lines of at most `room` points.
+    /// Sets the entries into as few lines of at most `room` points as will do, in equal columns.
     #[must_use]
     pub fn new(entries: &[(Sample, String)], room: f64, style: &Style) -> Self {
+        let entries: Vec<(Sample, String)> = entries
+            .iter()
+            .map(|(sample, text)| (*sample, shorten(text, room - indent(style), style.unit(), Face::Regular)))
+            .collect();
+        // The fewest lines on which equal columns fit.
         let mut lines: Vec<Vec<(Sample, String)>> = Vec::new();
-        let mut filled = 0.0;
-        for (sample, text) in entries {
-            let text = shorten(text, room - indent(style), style.unit(), Face::Regular);
-            let needed = entry_width(&text, style);
-            match lines.last_mut() {
-                Some(line) if filled + needed <= room + gap(style) => line.push((*sample, text)),
-                _ => {
-                    lines.push(vec![(*sample, text)]);
-                    filled = 0.0;
-                }
+        for count in 1..=entries.len() {
+            lines = entries.chunks(entries.len().div_ceil(count)).map(<[_]>::to_vec).collect();
+            let needed: f64 = column_widths(&lines, style).iter().sum();
+            if needed <= room + gap(style) {
+                break;
             }
-            filled += needed;
         }
         Self { lines }
     }
@@ -61,13 +60,14 @@ impl Key {
     /// Draws it with its upper left corner at `(left, top)`.
     pub fn draw(&self, canvas: &mut Canvas, style: &Style, (left, top): super::text::Spot) {
         let unit = style.unit();
+        let widths = column_widths(&self.lines, style);
         for (i, line) in self.lines.iter().enumerate() {
             let baseline = top + (0.9 + 1.1 * LINE * i as f64) * unit;
             let mut at = left;
-            for (sample, text) in line {
+            for ((sample, text), width) in line.iter().zip(&widths) {
                 draw_sample(canvas, style, *sample, (at, baseline - 0.32 * unit));
                 canvas.write(text, (at + indent(style), baseline), Anchor::Start, style.plain(INK));
-                at += entry_width(text, style);
+                at += width;
             }
         }
     }
@@ -81,8 +81,15 @@ fn indent(style: &Style) -> f64 {
     2.0 * style.unit()
 }
 
-fn entry_width(text: &str, style: &Style) -> f64 {
-    indent(style) + width(text, style.unit(), Face::Regular) + gap(style)
+/// Width of each column with the gap behind it.
+fn column_widths(lines: &[Vec<(Sample, String)>], style: &Style) -> Vec<f64> {
+    let columns = lines.first().map_or(0, Vec::len);
+    let width = |line: &Vec<(Sample, String)>, k: usize| {
+        line.get(k).map_or(0.0, |(_, text)| width(text, style.unit(), Face::Regular))
+    };
+    (0..columns)
+        .map(|k| indent(style) + lines.iter().map(|line| width(line, k)).fold(0.0, f64::max) + gap(style))
+        .collect()
 }
 
 fn draw_sample(canvas: &mut Canvas, style: &Style, sample: Sample, (x, y): super::text::Spot) {
@@ -117,6 +124,8 @@ mod tests {
             (0..5).map(|i| (Sample::Dot(1.0, INK, 1.0), format!("entry number {i}"))).collect();
         let key = Key::new(&entries, 300.0, &style);
         assert_eq!(key.lines.iter().map(Vec::len).collect::<Vec<_>>(), [2, 2, 1]);
+        let few = Key::new(&entries[..4], 400.0, &style);
+        assert_eq!(few.lines.iter().map(Vec::len).collect::<Vec<_>>(), [2, 2], "not three and one");
         let mut canvas = Canvas::new(300.0, 300.0);
         key.draw(&mut canvas, &style, (0.0, 0.0));
         assert_eq!(canvas.labels().len(), 5);

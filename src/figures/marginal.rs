@@ -57,12 +57,17 @@ impl Marginal {
         if most > 0.0 { most } else { 1.0 }
     }
 
-    /// The unit of the density.
-    pub(super) fn unit(&self, column: &VariableColumn) -> String {
+    /// What its vertical axis shows.
+    pub(super) fn name(&self) -> &'static str {
+        if self.scale == Scale::Whole { "probability" } else { "density" }
+    }
+
+    /// The unit of that.
+    pub(super) fn unit(&self, column: &VariableColumn) -> Option<String> {
         match (self.scale, column.unit.as_deref().map(str::trim).filter(|unit| !unit.is_empty())) {
-            (Scale::Log, _) => "per decade".to_owned(),
-            (Scale::Linear, Some(unit)) => format!("per {unit}"),
-            (Scale::Linear | Scale::Whole, _) => String::new(),
+            (Scale::Log, _) => Some("per decade".to_owned()),
+            (Scale::Linear, Some(unit)) => Some(format!("per {unit}")),
+            (Scale::Linear | Scale::Whole, _) => None,
         }
     }
 
@@ -146,7 +151,7 @@ mod tests {
             let wide = |from: f64, to: f64| if scale == Scale::Log { log10(to / from) } else { to - from };
             let area: f64 = marginal.bins.iter().map(|&(from, to, density)| density * wide(from, to)).sum();
             assert!((area - 1.0).abs() < 1e-12, "{scale:?} {area}");
-            assert_eq!(marginal.unit(&column), want);
+            assert_eq!(marginal.unit(&column).as_deref(), Some(want));
         }
     }
 

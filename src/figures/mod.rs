@@ -35,6 +35,7 @@ pub mod text;
 pub mod variables;
 
 mod marginal;
+mod thinned;
 
 #[cfg(test)]
 mod checks;

@@ -20,8 +20,7 @@ use super::colour::MEASURED_TINT;
 use super::colour::MODELLED;
 use super::colour::REFERENCE;
 use super::columns::VariableColumn;
-use super::columns::clean;
-use super::columns::quantiles;
+use super::columns::range;
 use super::columns::title_lines;
 use super::heading;
 use super::key::Key;
@@ -35,16 +34,20 @@ use super::panel::left_room;
 use super::table::Cell;
 use super::table::Table;
 use super::text::Face;
+use super::text::Spot;
 use super::text::width;
+use super::thinned::DOTS;
+use super::thinned::Thinned;
 
-/// Dots that stand for the whole weight in a panel.
-const DOTS: usize = 500;
-/// Shares of the weight below and above which an axis does not have to reach.
-const ENDS: [f64; 2] = [0.003, 0.997];
-/// From this ratio of its ends on, a positive variable gets a log axis.
-const LOG_FROM: f64 = 30.0;
 /// Tallest page, in widths (a sheet of A4 with its caption).
-const TALLEST: f64 = 1.4;
+const TALLEST: f64 = 1.45;
+
+/// Space at the edges of the page, in text sizes.
+const MARGIN: f64 = 0.3;
+/// Radius of a dot, in text sizes.
+const DOT: f64 = 0.11;
+/// Columns of the table.
+const COLUMNS: [&str; 7] = ["variable", "series", "partner", "component", "x", "y", "dots"];
 
 /// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
@@ -93,16 +96,18 @@ pub struct Outline {
 /// Draws the figure, on as many pages as its rows need.
 #[must_use]
 pub fn draw(data: &VariablesData, style: &Style) -> Vec<Drawing> {
-    let sample = Thinned::new(data);
-    let rows: Vec<&VariableRow> = data.rows.iter().filter(|row| row.variable < data.variables.len()).collect();
-    let layout = Layout::new(&rows, data, style);
-    let pages = rows.len().div_ceil(layout.rows_a_page).max(1);
-    let rows_a_page = rows.len().div_ceil(pages).max(1);
+    let sample = Thinned::new(&data.weights);
+    if data.rows.iter().all(|row| row.variable >= data.variables.len()) || sample.dots.iter().all(|&dots| dots == 0) {
+        return vec![nothing(style)];
+    }
+    let layout = Layout::new(data, &sample, style);
+    let pages = layout.rows.len().div_ceil(layout.rows_a_page);
+    let rows_a_page = layout.rows.len().div_ceil(pages);
     let mut drawings = Vec::new();
-    for (page, rows) in (0..pages).map(|page| (page, rows.chunks(rows_a_page).nth(page).unwrap_or_default())) {
+    for (page, rows) in layout.rows.chunks(rows_a_page).enumerate() {
         let mut drawing = draw_page(data, rows, &sample, &layout, style);
-        drawing.name = if pages == 1 { "variables".to_owned() } else { format!("variables-{}", page + 1) };
         if pages > 1 {
+            drawing.name = format!("variables-{}", page + 1);
             drawing.caption = format!("{} Page {} of {pages}.", drawing.caption, page + 1);
         }
         drawings.push(drawing);
@@ -110,52 +115,53 @@ pub fn draw(data: &VariablesData, style: &Style) -> Vec<Drawing> {
     drawings
 }
 
-/// Dots of equal weight: how many each draw gets.
-struct Thinned {
-    weights: Vec<f64>,
-    dots: Vec<usize>,
-}
-
-impl Thinned {
-    /// Systematic resampling with its steps starting half a step in, so that nothing is left to chance.
-    fn new(data: &VariablesData) -> Self {
-        let weights = clean(&data.weights);
-        let total: f64 = weights.iter().sum();
-        let mut dots = vec![0; weights.len()];
-        if total > 0.0 {
-            let (mut sum, mut next) = (0.0, 0.5);
-            for (dot, weight) in dots.iter_mut().zip(&weights) {
-                sum += weight / total * DOTS as f64;
-                while next < sum && next < DOTS as f64 {
-                    *dot += 1;
-                    next += 1.0;
-                }
-            }
-        }
-        Self { weights, dots }
-    }
+/// The figure of a run without weighted draws.
+fn nothing(style: &Style) -> Drawing {
+    let mut canvas = Canvas::new(style.width(), 8.0 * style.unit());
+    let middle = (style.width() / 2.0, 4.0 * style.unit());
+    canvas.write("no draw has weight", middle, Anchor::Middle, style.plain(REFERENCE));
+    let (name, caption) = ("variables".to_owned(), "No draw has weight.".to_owned());
+    Drawing { name, caption, table: Table::new(&COLUMNS), canvas, dpi: style.dpi() }
 }
 
 /// Sizes that all pages share.
-struct Layout {
-    columns: usize,
+struct Layout<'a> {
+    rows: Vec<Prepared<'a>>,
+    /// Left and right edges of the panels of each column.
+    cells: Vec<(f64, f64)>,
     /// Height of a panel, points.
     height: f64,
-    /// Lines of the titles above panels.
+    /// Most lines of a title above a panel.
     lines: usize,
     rows_a_page: usize,
 }
 
-impl Layout {
-    fn new(rows: &[&VariableRow], data: &VariablesData, style: &Style) -> Self {
+/// A row before it has a place.
+struct Prepared<'a> {
+    row: &'a VariableRow,
+    partners: Vec<&'a Partner>,
+    marginal: Marginal,
+    /// Vertical axes, first the density's.
+    y: Vec<Axis>,
+    /// Titles above the panels.
+    titles: Vec<Vec<String>>,
+}
+
+impl<'a> Layout<'a> {
+    fn new(data: &'a VariablesData, sample: &Thinned, style: &Style) -> Self {
         let unit = style.unit();
+        let rows: Vec<&VariableRow> = data.rows.iter().filter(|row| row.variable < data.variables.len()).collect();
         let columns = 1 + rows.iter().map(|row| partners(row, data).len()).max().unwrap_or(0);
-        let cell = style.width() / columns as f64;
-        let height = (0.5 * cell).clamp(5.5 * unit, 11.0 * unit);
-        // Titles of a page may take two lines where one is too narrow for most names.
-        let lines = if columns == 1 { 1 } else { 2 };
-        let mut layout = Self { columns, height, lines, rows_a_page: 1 };
-        let most = TALLEST * style.width().max(37.0 * unit) - 3.0 * unit;
+        let height = (0.45 * style.width() / columns as f64).clamp(5.5 * unit, 11.0 * unit);
+        let mut prepared: Vec<Prepared> =
+            rows.into_iter().map(|row| Prepared::new(data, row, sample, height, style)).collect();
+        let cells = cells(&prepared, columns, style);
+        for row in &mut prepared {
+            row.set_titles(data, &cells, style);
+        }
+        let lines = prepared.iter().flat_map(|row| &row.titles).map(Vec::len).max().unwrap_or(1);
+        let mut layout = Self { rows: prepared, cells, height, lines, rows_a_page: 1 };
+        let most = TALLEST * style.width() - 3.0 * unit;
         layout.rows_a_page = ((most / layout.row_height(style)).floor() as usize).clamp(1, 8);
         layout
     }
@@ -169,25 +175,44 @@ impl Layout {
     }
 }
 
-fn partners<'a>(row: &'a VariableRow, data: &VariablesData) -> Vec<&'a Partner> {
-    row.partners.iter().filter(|partner| partner.variable < data.variables.len()).take(2).collect()
+impl<'a> Prepared<'a> {
+    fn new(data: &'a VariablesData, row: &'a VariableRow, sample: &Thinned, height: f64, style: &Style) -> Self {
+        let column = &data.variables[row.variable];
+        let marginal = Marginal::new(column, row, &sample.weights, range(column, &sample.weights));
+        let room = Room { along: Along::Column, length: height, size: style.unit(), most: 4 };
+        let mut y = vec![Axis::new(0.0, marginal.highest() * 1.08, Scale::Linear, room)];
+        let partners = partners(row, data);
+        for partner in &partners {
+            y.push(axis(&data.variables[partner.variable], &sample.weights, Along::Column, height, style));
+        }
+        Self { row, partners, marginal, y, titles: Vec::new() }
+    }
+
+    /// Titles over the panels, starting above the labels of their axes.
+    fn set_titles(&mut self, data: &VariablesData, cells: &[(f64, f64)], style: &Style) {
+        let unit = style.unit();
+        for (k, (y, &(left, right))) in self.y.iter().zip(cells).enumerate() {
+            let room = right + 0.3 * unit - title_start(k, left, y, style);
+            let title = if k == 0 {
+                let column = &data.variables[self.row.variable];
+                let letter = width("a", unit, Face::Bold) + 0.5 * unit;
+                title_lines(y, self.marginal.name(), self.marginal.unit(column).as_deref(), room - letter, unit, 2)
+            } else {
+                let other = &data.variables[self.partners[k - 1].variable];
+                title_lines(y, other.title(), other.unit.as_deref(), room, unit, 2)
+            };
+            self.titles.push(title);
+        }
+    }
 }
 
-/// Range and spacing of a variable's axis.
-fn range(column: &VariableColumn, weights: &[f64]) -> (f64, f64, Scale) {
-    let Some([low, high]) = quantiles(&column.values, weights, ENDS) else { return (0.0, 1.0, Scale::Linear) };
-    if column.discrete {
-        let pad = 0.75 + 0.03 * (high - low);
-        return (low - pad, high + pad, Scale::Whole);
-    }
-    if low > 0.0 && high / low >= LOG_FROM {
-        let pad = libm::pow(high / low, 0.08);
-        return (low / pad, high * pad, Scale::Log);
-    }
-    let pad = 0.08 * (high - low);
-    // A variable that cannot be negative does not get an axis that says it is.
-    let floor = if low >= 0.0 && low - pad < 0.0 { 0.0 } else { low - pad };
-    (floor, high + pad, Scale::Linear)
+/// Where the title of a panel starts.
+fn title_start(k: usize, left: f64, y: &Axis, style: &Style) -> f64 {
+    if k == 0 { MARGIN * style.unit() } else { left - left_room(y, style) }
+}
+
+fn partners<'a>(row: &'a VariableRow, data: &VariablesData) -> Vec<&'a Partner> {
+    row.partners.iter().filter(|partner| partner.variable < data.variables.len()).take(2).collect()
 }
 
 fn axis(column: &VariableColumn, weights: &[f64], along: Along, length: f64, style: &Style) -> Axis {
@@ -196,108 +221,67 @@ fn axis(column: &VariableColumn, weights: &[f64], along: Along, length: f64, sty
     Axis::new(low, high, scale, Room { along, length, size: style.unit(), most: most + (length / (12.0 * style.unit())) as usize })
 }
 
-/// The panels of one row before they have a place: vertical axes, first the density's.
-struct RowAxes {
-    marginal: Marginal,
-    y: Vec<Axis>,
-}
-
-fn draw_page(data: &VariablesData, rows: &[&VariableRow], sample: &Thinned, layout: &Layout, style: &Style) -> Drawing {
+fn draw_page(data: &VariablesData, rows: &[Prepared], sample: &Thinned, layout: &Layout, style: &Style) -> Drawing {
     let unit = style.unit();
-    let margin = 0.3 * unit;
-    let dot = 0.11 * unit;
     let outline = Pen::solid(MODELLED, 0.09 * unit);
-    let shown = sample.dots.iter().sum::<usize>();
-    let key = Key::new(
-        &[
-            (Sample::Field(MEASURED_TINT, Pen::solid(MEASURED, 0.6 * style.stroke())), "weighted draws".to_owned()),
-            (Sample::Line(Pen::solid(MODELLED, 0.8 * style.stroke())), "proposal".to_owned()),
-            (Sample::Dot(1.4 * dot, MEASURED, 0.8), format!("1/{DOTS} of the weight")),
-            (Sample::Outline(outline), "component, 1 sd".to_owned()),
-        ][..if layout.columns == 1 { 2 } else { 4 }],
-        style.width() - 2.0 * margin,
-        style,
-    );
+    let entries = [
+        (Sample::Field(MEASURED_TINT, Pen::solid(MEASURED, 0.6 * style.stroke())), "weighted draws".to_owned()),
+        (Sample::Line(Pen::solid(MODELLED, 0.8 * style.stroke())), "proposal".to_owned()),
+        (Sample::Dot(1.4 * DOT * unit, MEASURED, 0.8), format!("1/{DOTS} of the weight")),
+        (Sample::Outline(outline), "component, 1 sd".to_owned()),
+    ];
+    let entries = &entries[..if layout.cells.len() == 1 { 2 } else { 4 }];
+    let key = Key::new(entries, style.width() - 2.0 * MARGIN * unit, style);
     let top = key.height(style) + 0.2 * unit;
-    let height = top + rows.len().max(1) as f64 * layout.row_height(style);
+    let height = top + rows.len() as f64 * layout.row_height(style);
     let mut canvas = Canvas::new(style.width(), height);
-    let mut table = Table::new(&["variable", "series", "partner", "component", "x", "y", "dots"]);
-    if rows.is_empty() || shown == 0 {
-        canvas.write("no draw has weight", (style.width() / 2.0, height / 2.0), Anchor::Middle, style.plain(REFERENCE));
-        return Drawing { name: String::new(), caption: "No draw has weight.".to_owned(), table, canvas, dpi: style.dpi() };
-    }
-    key.draw(&mut canvas, style, (margin, 0.2 * unit));
-
-    let axes: Vec<RowAxes> = rows.iter().map(|row| row_axes(data, row, sample, layout, style)).collect();
-    let cells = cells(&axes, layout, style);
-    for (i, (row, row_axes)) in rows.iter().zip(&axes).enumerate() {
+    key.draw(&mut canvas, style, (MARGIN * unit, 0.2 * unit));
+    let mut table = Table::new(&COLUMNS);
+    for (i, row) in rows.iter().enumerate() {
         let row_top = top + i as f64 * layout.row_height(style) + layout.head(style);
-        let column = &data.variables[row.variable];
-        let mut x_axis: Option<Axis> = None;
-        for (k, y) in row_axes.y.iter().enumerate() {
-            let (left, right) = cells[k];
+        let column = &data.variables[row.row.variable];
+        let letter = char::from(b'a' + i as u8).to_string();
+        for (k, (y, &(left, right))) in row.y.iter().zip(&layout.cells).enumerate() {
             let area = Area { left, top: row_top, right, bottom: row_top + layout.height };
-            let x = axis(column, &sample.weights, Along::Page, area.width(), style);
-            let panel = Panel { area, x, y: y.clone() };
-            let partner = (k > 0).then(|| partners(row, data)[k - 1]);
-            let letter = if k == 0 { char::from(b'a' + i as u8).to_string() } else { String::new() };
-            let from = if k == 0 { margin } else { left - left_room(y, style) };
-            let indent = if k == 0 { width(&letter, unit, Face::Bold) + 0.5 * unit } else { 0.0 };
-            let room = right - from - indent + if k + 1 < cells.len() { 0.3 * unit } else { 0.0 };
-            let title = match partner {
-                None => title_lines(y, "density", Some(&row_axes.marginal.unit(column)), room, unit, layout.lines),
-                Some(partner) => {
-                    let other = &data.variables[partner.variable];
-                    title_lines(y, other.title(), other.unit.as_deref(), room, unit, layout.lines)
-                }
-            };
-            heading(&mut canvas, style, &letter, &title, (from, row_top - 0.75 * unit));
-            match partner {
-                None => row_axes.marginal.draw(&mut canvas, style, &panel),
-                Some(partner) => draw_pair(&mut canvas, &panel, data, row, partner, sample, (dot, outline)),
+            let panel = Panel { area, x: axis(column, &sample.weights, Along::Page, area.width(), style), y: y.clone() };
+            let start = (title_start(k, left, y, style), row_top - 0.75 * unit);
+            heading(&mut canvas, style, if k == 0 { &letter } else { "" }, &row.titles[k], start);
+            if k == 0 {
+                row.marginal.draw(&mut canvas, style, &panel);
+                let middle = f64::midpoint(left, layout.cells[row.y.len() - 1].1);
+                let baseline = area.bottom + bottom_room(style) + 1.05 * unit;
+                write_name(&mut canvas, style, column, &panel.x, (middle, baseline));
+            } else {
+                draw_pair(&mut canvas, &panel, data, row.row, row.partners[k - 1], sample, (DOT * unit, outline));
             }
             panel.axes(&mut canvas, style, true);
-            x_axis = Some(panel.x);
         }
-        if let Some(x) = x_axis {
-            let (left, right) = (cells[0].0, cells[row_axes.y.len() - 1].1);
-            let title = title_lines(&x, column.title(), column.unit.as_deref(), style.width() - 2.0 * margin, unit, 1);
-            let baseline = row_top + layout.height + bottom_room(style) + 1.05 * unit;
-            write_centred(&mut canvas, style, &title.concat(), f64::midpoint(left, right), baseline);
-        }
-        add_rows(&mut table, data, row, row_axes, sample);
+        add_rows(&mut table, data, row, sample);
     }
-    Drawing { name: String::new(), caption: caption(data, rows, sample), table, canvas, dpi: style.dpi() }
+    let (name, caption) = ("variables".to_owned(), caption(data, rows, sample));
+    Drawing { name, caption, table, canvas, dpi: style.dpi() }
 }
 
-/// Writes a text centred at `middle`, moved as far as it takes to stay on the page.
-fn write_centred(canvas: &mut Canvas, style: &Style, text: &str, middle: f64, baseline: f64) {
-    let half = width(text, style.unit(), Face::Regular) / 2.0 + 0.2 * style.unit();
-    let middle = middle.min(canvas.width() - half).max(half);
-    canvas.write(text, (middle, baseline), Anchor::Middle, style.plain(INK));
-}
-
-fn row_axes(data: &VariablesData, row: &VariableRow, sample: &Thinned, layout: &Layout, style: &Style) -> RowAxes {
-    let column = &data.variables[row.variable];
-    let marginal = Marginal::new(column, row, &sample.weights, range(column, &sample.weights));
-    let room = Room { along: Along::Column, length: layout.height, size: style.unit(), most: 4 };
-    let mut y = vec![Axis::new(0.0, marginal.highest() * 1.08, Scale::Linear, room)];
-    for partner in partners(row, data) {
-        y.push(axis(&data.variables[partner.variable], &sample.weights, Along::Column, layout.height, style));
-    }
-    RowAxes { marginal, y }
-}
-
-/// Left and right edges of the panels of each column: the same for all rows of a page.
-fn cells(axes: &[RowAxes], layout: &Layout, style: &Style) -> Vec<(f64, f64)> {
+/// Writes the name of a row's variable below its panels, as near to their middle as the page allows.
+fn write_name(canvas: &mut Canvas, style: &Style, column: &VariableColumn, x: &Axis, (middle, baseline): Spot) {
     let unit = style.unit();
-    let margins: Vec<f64> = (0..layout.columns)
-        .map(|k| axes.iter().filter_map(|row| row.y.get(k)).map(|y| left_room(y, style)).fold(0.0, f64::max))
+    let room = canvas.width() - 2.0 * MARGIN * unit;
+    let title = title_lines(x, column.title(), column.unit.as_deref(), room, unit, 1).concat();
+    let half = width(&title, unit, Face::Regular) / 2.0 + MARGIN * unit;
+    let middle = middle.min(canvas.width() - half).max(half);
+    canvas.write(&title, (middle, baseline), Anchor::Middle, style.plain(INK));
+}
+
+/// Left and right edges of the panels of each column: the same for all rows.
+fn cells(rows: &[Prepared], columns: usize, style: &Style) -> Vec<(f64, f64)> {
+    let unit = style.unit();
+    let margins: Vec<f64> = (0..columns)
+        .map(|k| rows.iter().filter_map(|row| row.y.get(k)).map(|y| left_room(y, style)).fold(0.0, f64::max))
         .collect();
     let gap = 1.1 * unit;
-    let free = style.width() - 0.3 * unit - margins.iter().sum::<f64>() - gap * layout.columns as f64;
-    let panel = free / layout.columns as f64;
-    let mut at = 0.3 * unit;
+    let free = style.width() - MARGIN * unit - margins.iter().sum::<f64>() - gap * columns as f64;
+    let panel = free / columns as f64;
+    let mut at = MARGIN * unit;
     margins
         .iter()
         .map(|margin| {
@@ -328,17 +312,17 @@ fn draw_pair(
     }
 }
 
-fn caption(data: &VariablesData, rows: &[&VariableRow], sample: &Thinned) -> String {
+fn caption(data: &VariablesData, rows: &[Prepared], sample: &Thinned) -> String {
     let draws = sample.weights.iter().filter(|&&w| w > 0.0).count();
     let mut outside: f64 = 0.0;
     let total: f64 = sample.weights.iter().sum();
     for row in rows {
-        let column = &data.variables[row.variable];
+        let column = &data.variables[row.row.variable];
         let (low, high, _) = range(column, &sample.weights);
         let inside = column.values.iter().zip(&sample.weights).filter(|(v, _)| (low..=high).contains(*v));
         outside = outside.max(1.0 - inside.map(|(_, w)| w).sum::<f64>() / total);
     }
-    let pairs = rows.iter().any(|row| !partners(row, data).is_empty());
+    let pairs = rows.iter().any(|row| !row.partners.is_empty());
     let mut text = format!(
         "Marginal distribution of the {} weighted draws, and marginal density of the proposal.",
         count(draws)
@@ -355,16 +339,16 @@ fn caption(data: &VariablesData, rows: &[&VariableRow], sample: &Thinned) -> Str
     text
 }
 
-fn add_rows(table: &mut Table, data: &VariablesData, row: &VariableRow, axes: &RowAxes, sample: &Thinned) {
-    let column = &data.variables[row.variable];
+fn add_rows(table: &mut Table, data: &VariablesData, row: &Prepared, sample: &Thinned) {
+    let column = &data.variables[row.row.variable];
     let name = || Cell::Text(column.name.clone());
     let none = || Cell::Number(f64::NAN);
-    for (series, points) in [("weighted draws", axes.marginal.middles()), ("proposal", axes.marginal.curve().to_vec())] {
+    for (series, points) in [("weighted draws", row.marginal.middles()), ("proposal", row.marginal.curve().to_vec())] {
         for (x, y) in points {
             table.push([name(), series.into(), "".into(), none(), x.into(), y.into(), none()]);
         }
     }
-    for partner in partners(row, data) {
+    for partner in &row.partners {
         let other = &data.variables[partner.variable];
         for ((&x, &y), &dots) in column.values.iter().zip(&other.values).zip(&sample.dots) {
             if dots > 0 {
@@ -493,15 +477,5 @@ mod tests {
             });
             assert_eq!(found.count(), 1, "{want}");
         }
-    }
-
-    /// A draw with half of the weight gets half of the dots; the dots are all there.
-    #[test]
-    fn dots_stand_for_equal_weight() {
-        let mut data = data(2, short, |_, s| s, false);
-        data.weights = [vec![1.0; 1499], vec![1499.0]].concat();
-        let thinned = Thinned::new(&data);
-        assert_eq!(thinned.dots.iter().sum::<usize>(), DOTS);
-        assert_eq!(thinned.dots[1499], DOTS / 2);
     }
 }
