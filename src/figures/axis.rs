@@ -404,15 +404,26 @@ mod tests {
     /// Whatever the range, an axis has two ends, a tick, and labels that keep apart.
     #[test]
     fn every_range_can_be_drawn() {
-        let mut ranges = vec![(0.0, 0.0), (5.0, 5.0), (f64::NAN, 1.0), (1.0, f64::INFINITY), (3.0, -2.0), (1e-300, 1.0)];
-        ranges.extend([(-1e-12, 2e-12), (1e9, 1e9 + 1e-6), (1e300, 1.1e300), (0.999, 1.0), (0.21, 0.79), (-1e-320, 1e-320)]);
+        let mut ranges =
+            vec![(0.0, 0.0), (5.0, 5.0), (f64::NAN, 1.0), (1.0, f64::INFINITY), (3.0, -2.0), (1e-300, 1.0)];
+        ranges.extend([
+            (-1e-12, 2e-12),
+            (1e9, 1e9 + 1e-6),
+            (1e300, 1.1e300),
+            (0.999, 1.0),
+            (0.21, 0.79),
+            (-1e-320, 1e-320),
+        ]);
         for (low, high) in ranges {
             for scale in [Scale::Linear, Scale::Whole, Scale::Log] {
                 for length in [40.0, 90.0, 400.0] {
                     let room = Room { along: Along::Page, length, size: 6.0, most: 6 };
                     let axis = Axis::new(low, high, scale, room);
                     assert!(axis.low() < axis.high() && axis.low().is_finite() && axis.high().is_finite());
-                    assert!(fits(&axis.marking, axis.low(), axis.high(), scale, room), "{low} {high} {scale:?}: {axis:?}");
+                    assert!(
+                        fits(&axis.marking, axis.low(), axis.high(), scale, room),
+                        "{low} {high} {scale:?}: {axis:?}"
+                    );
                     assert!(axis.place(axis.low()).abs() < 1e-9 && (axis.place(axis.high()) - 1.0).abs() < 1e-9);
                     let middle = axis.value_at(0.5);
                     assert!((axis.place(middle) - 0.5).abs() < 1e-6, "{axis:?}");

@@ -313,9 +313,9 @@ impl Canvas {
             let (dx, dy) = ((left + area.right) / 2.0 - near.0, (top + area.bottom) / 2.0 - near.1);
             let far = dx * dx + dy * dy;
             let crowding = self.crowding(&area);
-            let better = best.as_ref().is_none_or(|(least, nearest, _)| {
-                crowding < *least || (crowding == *least && far < *nearest)
-            });
+            let better = best
+                .as_ref()
+                .is_none_or(|(least, nearest, _)| crowding < *least || (crowding == *least && far < *nearest));
             if better {
                 best = Some((crowding, far, area));
             }

@@ -41,18 +41,17 @@ pub fn title_lines(axis: &Axis, name: &str, unit: Option<&str>, room: f64, size:
     if fits(&full) {
         return vec![full];
     }
-    // The part in brackets that the axis and the unit add, and what stands before it.
-    let start = full.rfind(" (").filter(|&at| at >= name.len() && full.ends_with(')')).unwrap_or(full.len());
-    let (before, after) = (&full[..start], full[start..].trim_start());
+    // A title is the name followed by what the axis and the unit add.
+    let added = full.strip_prefix(name).unwrap_or_default();
     if lines < 2 {
-        let left = (room - width(&full[start..], size, Face::Regular)).max(0.0);
-        return vec![format!("{}{}", shorten(before, left, size, Face::Regular), &full[start..])];
+        let left = (room - width(added, size, Face::Regular)).max(0.0);
+        return vec![format!("{}{added}", shorten(name, left, size, Face::Regular))];
     }
     let wrapped = wrap(&full, room, size, Face::Regular, lines);
-    if after.is_empty() || !(fits(before) || wrapped.iter().any(|line| line.contains('…'))) {
+    if added.is_empty() || !(fits(name) || wrapped.iter().any(|line| line.contains('…'))) {
         return wrapped;
     }
-    vec![shorten(before, room, size, Face::Regular), shorten(after, room, size, Face::Regular)]
+    vec![shorten(name, room, size, Face::Regular), shorten(added.trim_start(), room, size, Face::Regular)]
 }
 
 /// Shares of the weight below and above which an axis does not have to reach.
@@ -167,7 +166,8 @@ mod tests {
         let plain = Axis::new(0.0, 1.0, Scale::Linear, room);
         assert_eq!(title_lines(&plain, "width (at the crest)", None, 50.0, 6.0, 2), ["width (at the", "crest)"]);
         assert_eq!(title_lines(&axis, "q", None, 60.0, 6.0, 2), ["q (10⁻¹²)"]);
-        let column = VariableColumn { name: "q".into(), label: Some(" ".into()), unit: None, values: vec![], discrete: false };
+        let column =
+            VariableColumn { name: "q".into(), label: Some(" ".into()), unit: None, values: vec![], discrete: false };
         assert_eq!(column.title(), "q");
     }
 }

@@ -88,8 +88,7 @@ pub fn draw(data: &EvennessData, style: &Style) -> Drawing {
     let cell = (style.width() - gap) / 2.0;
     let titles = ["share of the total weight", "share of draws above"];
     let room = cell - 1.6 * unit;
-    let lines: Vec<Vec<String>> =
-        titles.iter().map(|title| wrap(title, room, unit, Face::Regular, 2)).collect();
+    let lines: Vec<Vec<String>> = titles.iter().map(|title| wrap(title, room, unit, Face::Regular, 2)).collect();
     let top = (1.0 + LINE * lines.iter().map(Vec::len).max().unwrap_or(1) as f64) * unit;
     let side = (cell - 4.2 * unit).min(24.0 * unit);
     let height = top + side + bottom_room(style) + 1.7 * unit;
@@ -106,7 +105,8 @@ pub fn draw(data: &EvennessData, style: &Style) -> Drawing {
     let horizontal = |column: usize| Room { along: Along::Page, length: area(column).width(), size: unit, most: 5 };
 
     let shares = Panel { area: area(0), x: Axis::new(0.0, 1.0, Scale::Linear, horizontal(0)), y: shares_y };
-    let above = Panel { area: area(1), x: Axis::new(tail.low, tail.high, Scale::Log, horizontal(1)), y: tail.y.clone() };
+    let above =
+        Panel { area: area(1), x: Axis::new(tail.low, tail.high, Scale::Log, horizontal(1)), y: tail.y.clone() };
     draw_shares(&mut canvas, style, &shares, data, &falling);
     draw_tail(&mut canvas, style, &above, data, &tail);
     let x_titles = ["share of draws, heaviest first", "weight / mean weight"];
@@ -116,7 +116,12 @@ pub fn draw(data: &EvennessData, style: &Style) -> Drawing {
         panel.axes(&mut canvas, style, true);
         let width = text::width(&panel.x.title(x_titles[i], None), unit, Face::Regular);
         let middle = f64::midpoint(panel.area.left, panel.area.right).min(left + cell - 0.3 * unit - width / 2.0);
-        canvas.write(&panel.x.title(x_titles[i], None), (middle, height - 0.5 * unit), Anchor::Middle, style.plain(INK));
+        canvas.write(
+            &panel.x.title(x_titles[i], None),
+            (middle, height - 0.5 * unit),
+            Anchor::Middle,
+            style.plain(INK),
+        );
     }
     Drawing {
         name: "evenness".to_owned(),
@@ -177,12 +182,18 @@ fn draw_shares(canvas: &mut Canvas, style: &Style, panel: &Panel, data: &Evennes
         return;
     }
     let score = |name: &str, value: f64| format!("{name} {}", significant(value, 2));
-    let lines = [(score("ESS fraction", data.ess_fraction), MEASURED), (score("perplexity", data.perplexity), MEASURED)];
+    let lines =
+        [(score("ESS fraction", data.ess_fraction), MEASURED), (score("perplexity", data.perplexity), MEASURED)];
     write_lines(canvas, style, &lines, (right, panel.area.bottom - 0.5 * unit));
     let near = panel.spot(0.72, 0.55);
     let size = (text::width("even weights", unit, Face::Regular) + 0.4 * unit, 1.3 * unit);
     let area = canvas.free_area(Area { right, ..panel.area }, size, (near.0, near.1 + 0.5 * unit));
-    canvas.write("even weights", (area.left + 0.2 * unit, area.bottom - 0.3 * unit), Anchor::Start, style.plain(REFERENCE));
+    canvas.write(
+        "even weights",
+        (area.left + 0.2 * unit, area.bottom - 0.3 * unit),
+        Anchor::Start,
+        style.plain(REFERENCE),
+    );
 }
 
 /// Right-aligned lines, the last one with its baseline at `bottom`.

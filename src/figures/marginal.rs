@@ -43,7 +43,8 @@ impl Marginal {
             }
         }
         let wide = |from: f64, to: f64| if scale == Scale::Log { log10(to / from) } else { to - from };
-        let bins = edges.windows(2).zip(sums).map(|(edge, sum)| (edge[0], edge[1], sum / total / wide(edge[0], edge[1])));
+        let bins =
+            edges.windows(2).zip(sums).map(|(edge, sum)| (edge[0], edge[1], sum / total / wide(edge[0], edge[1])));
         let per = |x: f64| if scale == Scale::Log { x * LN_10 } else { 1.0 };
         let curve = row.proposal_at.iter().zip(&row.proposal_density).map(|(&x, &density)| (x, density * per(x)));
         let curve = curve.filter(|&(x, density)| (low..=high).contains(&x) && density.is_finite()).collect();
@@ -117,7 +118,8 @@ fn edges(low: f64, high: f64, scale: Scale, weights: &[f64]) -> Vec<f64> {
         return (0..=bins as u32).map(|i| first - 0.5 + f64::from(i) * every).collect();
     }
     let largest = weights.iter().copied().fold(0.0, f64::max);
-    let (sum, squares) = weights.iter().fold((0.0, 0.0), |(s, q), w| (s + w / largest, q + w / largest * (w / largest)));
+    let (sum, squares) =
+        weights.iter().fold((0.0, 0.0), |(s, q), w| (s + w / largest, q + w / largest * (w / largest)));
     let bins = (2.0 * libm::cbrt(sum * sum / squares)).clamp(BINS.0, BINS.1).round();
     let bins = if bins.is_finite() { bins } else { BINS.0 };
     (0..=bins as u32)

@@ -8,6 +8,7 @@
 //! * [`evenness`]: how evenly the weights share the total, and their upper tail with its fit;
 //! * [`variables`]: the variables, each with its marginal and with the two it depends on most
 //!   ([`dependence`] finds them);
+//! * [`heavy`]: in which variables, and on which side, the heaviest draws lie.
 //!
 //! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`], [`canvas`] (marks and text boxes in points),
 //! [`panel`], [`key`], [`table`], [`columns`], and the two writers [`raster`] and [`svg`](mod@svg).
@@ -24,6 +25,7 @@ pub mod colour;
 pub mod columns;
 pub mod dependence;
 pub mod evenness;
+pub mod heavy;
 pub mod key;
 pub mod numbers;
 pub mod panel;

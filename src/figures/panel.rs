@@ -25,10 +25,7 @@ impl Panel {
     /// Where `(x, y)` lies on the page.
     #[must_use]
     pub fn spot(&self, x: f64, y: f64) -> Spot {
-        (
-            self.area.left + self.x.place(x) * self.area.width(),
-            self.area.bottom - self.y.place(y) * self.area.height(),
-        )
+        (self.area.left + self.x.place(x) * self.area.width(), self.area.bottom - self.y.place(y) * self.area.height())
     }
 
     /// Draws the axes; labels below the bottom axis only if `say_x`.
@@ -175,7 +172,8 @@ mod tests {
 
     #[test]
     fn lines_are_cut_at_the_edges() {
-        let pieces = panel().clipped([(-5.0, 0.5), (5.0, 0.5), (5.0, 2.0), (7.0, 2.0), (f64::NAN, 0.0), (1.0, 0.1), (2.0, 0.1)]);
+        let pieces =
+            panel().clipped([(-5.0, 0.5), (5.0, 0.5), (5.0, 2.0), (7.0, 2.0), (f64::NAN, 0.0), (1.0, 0.1), (2.0, 0.1)]);
         assert_eq!(pieces.len(), 2, "{pieces:?}");
         assert_eq!(pieces[0], vec![(10.0, 45.0), (60.0, 45.0), (60.0, 20.0)]);
         assert_eq!(pieces[1].len(), 2);

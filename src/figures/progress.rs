@@ -159,12 +159,7 @@ pub fn draw(data: &ProgressData, style: &Style) -> Drawing {
         }
     }
     let middle = f64::midpoint(left, right);
-    canvas.write(
-        &x.title("evaluations", None),
-        (middle, height - 0.5 * unit),
-        Anchor::Middle,
-        style.plain(INK),
-    );
+    canvas.write(&x.title("evaluations", None), (middle, height - 0.5 * unit), Anchor::Middle, style.plain(INK));
     Drawing { name: "progress".to_owned(), caption: caption(data), table: table(data), canvas, dpi: style.dpi() }
 }
 
@@ -213,9 +208,7 @@ fn rows(data: &ProgressData) -> Vec<Row> {
     let plain = |round: &RoundScore, y: Option<f64>| y.map(|y| Point { x: round.evaluations, y, interval: None });
     let mut rows = Vec::new();
 
-    let interval = |y: f64, se: Option<f64>| {
-        se.map(|se| ((y - HALF_95 * se).max(0.0), (y + HALF_95 * se).min(1.0)))
-    };
+    let interval = |y: f64, se: Option<f64>| se.map(|se| ((y - HALF_95 * se).max(0.0), (y + HALF_95 * se).min(1.0)));
     let mut ess = vec![
         series("predicted", Kind::Predicted, &|round| plain(round, round.predicted_ess_fraction)),
         series("fresh draws", Kind::Fresh, &|round| {
@@ -230,21 +223,34 @@ fn rows(data: &ProgressData) -> Vec<Row> {
     let tops = ess.iter().flat_map(|s| s.points.iter().map(|p| p.interval.map_or(p.y, |(_, top)| top)));
     let most = tops.filter(|top| top.is_finite()).fold(0.0, f64::max);
     let high = if most > 0.5 || most <= 0.0 { 1.0 } else { 1.25 * most };
-    push_row(&mut rows, Row { title: "ESS fraction", height: 9.0, low: 0.0, high, scale: Scale::Linear, ticks: 6, series: ess });
+    push_row(
+        &mut rows,
+        Row { title: "ESS fraction", height: 9.0, low: 0.0, high, scale: Scale::Linear, ticks: 6, series: ess },
+    );
 
     let floored = |y: f64| y.max(LEAST_VARIANCE);
-    let mut variance = vec![series("fresh draws", Kind::Fresh, &|round| plain(round, round.weight_variance.map(floored)))];
+    let mut variance =
+        vec![series("fresh draws", Kind::Fresh, &|round| plain(round, round.weight_variance.map(floored)))];
     if let Some(report) = &data.report {
         let point = Point { x: report.evaluations, y: floored(report.weight_variance), interval: None };
         variance.push(Series { name: "report draws", kind: Kind::Report, points: vec![point] });
     }
-    let values: Vec<f64> = variance.iter().flat_map(|s| s.points.iter().map(|p| p.y)).filter(|y| y.is_finite()).collect();
+    let values: Vec<f64> =
+        variance.iter().flat_map(|s| s.points.iter().map(|p| p.y)).filter(|y| y.is_finite()).collect();
     let (low, high) = values.iter().fold((f64::INFINITY, 0.0_f64), |(low, high), &y| (low.min(y), high.max(y)));
     // At least one power of ten, so that noise does not fill the panel.
     let widening = (10.0 * low / high).max(2.56).sqrt();
     push_row(
         &mut rows,
-        Row { title: "weight variance", height: 6.0, low: low / widening, high: high * widening, scale: Scale::Log, ticks: 5, series: variance },
+        Row {
+            title: "weight variance",
+            height: 6.0,
+            low: low / widening,
+            high: high * widening,
+            scale: Scale::Log,
+            ticks: 5,
+            series: variance,
+        },
     );
 
     let steps = vec![series("", Kind::Fresh, &|round| plain(round, round.schedule))];
@@ -259,7 +265,15 @@ fn rows(data: &ProgressData) -> Vec<Row> {
     let most = components[0].points.iter().map(|p| p.y).fold(1.0, f64::max);
     push_row(
         &mut rows,
-        Row { title: "components", height: 4.5, low: 0.0, high: most * 1.1 + 0.2, scale: Scale::Whole, ticks: 4, series: components },
+        Row {
+            title: "components",
+            height: 4.5,
+            low: 0.0,
+            high: most * 1.1 + 0.2,
+            scale: Scale::Whole,
+            ticks: 4,
+            series: components,
+        },
     );
     rows
 }
@@ -355,12 +369,16 @@ fn caption(data: &ProgressData) -> String {
         _ => format!("Scores of the {rounds} rounds against the evaluations spent."),
     }];
     if let Some(last) = data.rounds.last() {
-        let components = if last.components == 1 { "1 component".to_owned() } else { format!("{} components", last.components) };
+        let components =
+            if last.components == 1 { "1 component".to_owned() } else { format!("{} components", last.components) };
         if let Some(ess) = last.ess_fraction {
-            let se = last.ess_fraction_se.map_or(String::new(), |se| format!(" ± {} (standard error)", significant(se, 1)));
-            let predicted = last.predicted_ess_fraction.map_or(String::new(), |p| format!(", predicted {}", significant(p, 3)));
-            let variance =
-                last.weight_variance.map_or(String::new(), |v| format!(", at a weight variance of {}", significant(v, 2)));
+            let se =
+                last.ess_fraction_se.map_or(String::new(), |se| format!(" ± {} (standard error)", significant(se, 1)));
+            let predicted =
+                last.predicted_ess_fraction.map_or(String::new(), |p| format!(", predicted {}", significant(p, 3)));
+            let variance = last
+                .weight_variance
+                .map_or(String::new(), |v| format!(", at a weight variance of {}", significant(v, 2)));
             parts.push(format!(
                 "Round {}, with {components}, reached an ESS fraction of {}{se} on its own fresh draws{predicted}{variance}.",
                 last.round,

@@ -147,7 +147,11 @@ impl Cover {
     /// Adds a piece within one row: it runs from `x0` to `x1` and is `rise` high (signed).
     fn piece(&mut self, row: usize, rise: f64, x0: f64, x1: f64) {
         let most = self.width as f64;
-        let (low, high) = if x0 < x1 { (x0.clamp(0.0, most), x1.clamp(0.0, most)) } else { (x1.clamp(0.0, most), x0.clamp(0.0, most)) };
+        let (low, high) = if x0 < x1 {
+            (x0.clamp(0.0, most), x1.clamp(0.0, most))
+        } else {
+            (x1.clamp(0.0, most), x0.clamp(0.0, most))
+        };
         let row = &mut self.sums[row * (self.width + 2)..(row + 1) * (self.width + 2)];
         let mut add = |column: usize, rise: f64, middle: f64| {
             let inside = middle - column as f64;
@@ -259,10 +263,7 @@ fn thicken(spots: &[Spot], half: f64, contours: &mut Vec<Vec<Spot>>) {
         if let Some(other) = after.filter(|&other| corner(normal, other).is_none()) {
             let turn = normal.0 * other.1 - normal.1 * other.0;
             let side = if turn > 0.0 { -1.0 } else { 1.0 };
-            let (p, q) = (
-                (b.0 + side * normal.0, b.1 + side * normal.1),
-                (b.0 + side * other.0, b.1 + side * other.1),
-            );
+            let (p, q) = ((b.0 + side * normal.0, b.1 + side * normal.1), (b.0 + side * other.0, b.1 + side * other.1));
             contours.push(if side > 0.0 { vec![b, p, q] } else { vec![b, q, p] });
         }
     }

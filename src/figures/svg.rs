@@ -49,7 +49,9 @@ pub fn svg(canvas: &Canvas, title: &str) -> String {
 }
 
 fn draw(text: &mut String, mark: &Mark) {
-    let share = |name: &str, opacity: f64| if opacity < 1.0 { format!(" {name}=\"{}\"", number(opacity)) } else { String::new() };
+    let share = |name: &str, opacity: f64| {
+        if opacity < 1.0 { format!(" {name}=\"{}\"", number(opacity)) } else { String::new() }
+    };
     let _ = match mark {
         Mark::Fill { corners, colour, opacity } => writeln!(
             text,
@@ -59,9 +61,9 @@ fn draw(text: &mut String, mark: &Mark) {
             share("fill-opacity", *opacity)
         ),
         Mark::Line { spots, pen } => {
-            let dash = pen.dash.map_or(String::new(), |(on, off)| {
-                format!(" stroke-dasharray=\"{},{}\"", number(on), number(off))
-            });
+            let dash = pen
+                .dash
+                .map_or(String::new(), |(on, off)| format!(" stroke-dasharray=\"{},{}\"", number(on), number(off)));
             writeln!(
                 text,
                 "<polyline points=\"{}\" fill=\"none\" stroke=\"{}\" stroke-width=\"{}\"{dash}{}/>",

@@ -96,7 +96,8 @@ pub fn outline(text: &str, (x, baseline): Spot, size: f64, face: Face) -> Vec<Ve
             if let Some(contour) = contours.last_mut() {
                 if let OutlineCurve::Quad(a, control, b) = curve {
                     let (a, control, b) = (place(*a), place(*control), place(*b));
-                    contour.extend((1..CURVE_PIECES).map(|i| bend(a, control, b, f64::from(i) / f64::from(CURVE_PIECES))));
+                    contour
+                        .extend((1..CURVE_PIECES).map(|i| bend(a, control, b, f64::from(i) / f64::from(CURVE_PIECES))));
                 }
                 contour.push(place(to));
             }
@@ -179,7 +180,8 @@ mod tests {
     #[test]
     fn labels_have_their_signs() {
         let missing = font(Face::Regular).glyph_id('\u{E000}');
-        for character in "−×·…≤≥±αβγσμΣ⁰¹²³⁴⁵⁶⁷⁸⁹⁻₀₁₂₉°üßéŁžπ√∞–—ЖЯ".chars() {
+        for character in "−×·…≤≥±αβγσμΣ⁰¹²³⁴⁵⁶⁷⁸⁹⁻₀₁₂₉°üßéŁžπ√∞–—ЖЯ".chars()
+        {
             for face in [Face::Regular, Face::Bold] {
                 assert_ne!(font(face).glyph_id(character), missing, "{character} is not in {face:?}");
             }

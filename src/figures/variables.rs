@@ -218,7 +218,12 @@ fn partners<'a>(row: &'a VariableRow, data: &VariablesData) -> Vec<&'a Partner> 
 fn axis(column: &VariableColumn, weights: &[f64], along: Along, length: f64, style: &Style) -> Axis {
     let (low, high, scale) = range(column, weights);
     let most = if along == Along::Page { 4 } else { 3 };
-    Axis::new(low, high, scale, Room { along, length, size: style.unit(), most: most + (length / (12.0 * style.unit())) as usize })
+    Axis::new(
+        low,
+        high,
+        scale,
+        Room { along, length, size: style.unit(), most: most + (length / (12.0 * style.unit())) as usize },
+    )
 }
 
 fn draw_page(data: &VariablesData, rows: &[Prepared], sample: &Thinned, layout: &Layout, style: &Style) -> Drawing {
@@ -243,7 +248,8 @@ fn draw_page(data: &VariablesData, rows: &[Prepared], sample: &Thinned, layout: 
         let letter = char::from(b'a' + i as u8).to_string();
         for (k, (y, &(left, right))) in row.y.iter().zip(&layout.cells).enumerate() {
             let area = Area { left, top: row_top, right, bottom: row_top + layout.height };
-            let panel = Panel { area, x: axis(column, &sample.weights, Along::Page, area.width(), style), y: y.clone() };
+            let panel =
+                Panel { area, x: axis(column, &sample.weights, Along::Page, area.width(), style), y: y.clone() };
             let start = (title_start(k, left, y, style), row_top - 0.75 * unit);
             heading(&mut canvas, style, if k == 0 { &letter } else { "" }, &row.titles[k], start);
             if k == 0 {
@@ -323,10 +329,8 @@ fn caption(data: &VariablesData, rows: &[Prepared], sample: &Thinned) -> String 
         outside = outside.max(1.0 - inside.map(|(_, w)| w).sum::<f64>() / total);
     }
     let pairs = rows.iter().any(|row| !row.partners.is_empty());
-    let mut text = format!(
-        "Marginal distribution of the {} weighted draws, and marginal density of the proposal.",
-        count(draws)
-    );
+    let mut text =
+        format!("Marginal distribution of the {} weighted draws, and marginal density of the proposal.", count(draws));
     if pairs {
         text = format!(
             "{text} Right of it, the same draws over the variables that depend on it most: every dot stands for 1/{DOTS} of \
@@ -412,7 +416,7 @@ mod tests {
             let density = |k: usize| {
                 let (a, b) = (k.saturating_sub(1), (k + 1).min(160));
                 let slope = (at[b] - at[a]) / (steps[b] - steps[a]);
-                libm::exp(-steps[k] * steps[k] / 2.6) / (1.3 * std::f64::consts::TAU).sqrt() / slope
+                libm::exp(-steps[k] * steps[k] / 2.6) / (1.3 * std::f64::consts::TAU).sqrt() / slope.abs()
             };
             let proposal_density = (0..=160).map(density).collect();
             let partners = chosen[j].iter().map(|&other| Partner {
@@ -444,7 +448,8 @@ mod tests {
         let wild = |j: usize, s: f64| {
             [1e-12 * (3.0 + s), 1e9 * (4.0 + s), 1e9 + 0.3 * s, 1e-12 * libm::exp(3.0 * s), -7e4 * s][j % 5]
         };
-        let mut counts = data(3, short, |j, s| if j == 1 { (4.0 + 1.5 * s).round().max(0.0) } else { mild(j, s) }, false);
+        let mut counts =
+            data(3, short, |j, s| if j == 1 { (4.0 + 1.5 * s).round().max(0.0) } else { mild(j, s) }, false);
         counts.variables[1].discrete = true;
         let mut empty = data(2, short, mild, false);
         empty.weights.clear();
@@ -472,9 +477,8 @@ mod tests {
         assert!(pages.len() >= 4 && pages[0].name == "variables-1" && pages[1].name == "variables-2");
         for j in 0..30 {
             let want = format!("gauge_{j}");
-            let found = pages.iter().filter(|page| {
-                page.table.rows().iter().any(|row| row[0] == Cell::Text(want.clone()))
-            });
+            let found =
+                pages.iter().filter(|page| page.table.rows().iter().any(|row| row[0] == Cell::Text(want.clone())));
             assert_eq!(found.count(), 1, "{want}");
         }
     }
