@@ -3,8 +3,9 @@
 
 mod targets;
 
-use evenpoise::adapt::{Family, Settings, Silent, tune};
+use evenpoise::adapt::{Settings, Silent, tune};
 use evenpoise::numeric::{Purpose, exp, log_sum_exp};
+use evenpoise::problem::Family;
 use evenpoise::weights::{LogWeights, score};
 use std::time::Instant;
 use targets::Row;
@@ -23,15 +24,17 @@ struct Outcome {
     survey: u64,
     starts: u32,
     steps: String,
+    word: String,
+    reasons: Vec<String>,
 }
 
 fn run(row: &Row, seed: u64) -> Outcome {
     let mut settings = Settings::new(row.budget, seed);
     if row.gaussian {
-        settings.family = Family::Gaussian;
+        settings.family = Some(Family::Gaussian);
     }
     let begin = Instant::now();
-    let tuning = tune(row, &settings, &mut Silent).unwrap();
+    let tuning = tune(&row.problem(), &settings, &mut Silent).unwrap();
     let seconds = begin.elapsed().as_secs_f64();
     let n = 100_000;
     let fresh = tuning.chosen.draw(n, seed + 900, Purpose::Compare, 0);
@@ -68,7 +71,14 @@ fn run(row: &Row, seed: u64) -> Outcome {
         for r in &tuning.rounds {
             let list: Vec<String> =
                 r.candidates.iter().map(|c| format!("{:?}k{}:{:+.3}", c.step, c.components, c.gain)).collect();
-            println!("    round {} g {:.2} halo {:.3} wide {:.3} {}", r.index, r.exponent, r.halo_share, r.wide_share, list.join(" "));
+            println!(
+                "    round {} g {:.2} halo {:.3} wide {:.3} {}",
+                r.index,
+                r.exponent,
+                r.halo_share,
+                r.wide_share,
+                list.join(" ")
+            );
         }
     }
     Outcome {
@@ -84,6 +94,14 @@ fn run(row: &Row, seed: u64) -> Outcome {
         seconds,
         survey: tuning.survey.evaluations,
         starts: tuning.survey.starts,
+        word: format!("{:?}", tuning.verdict.word),
+        reasons: tuning
+            .verdict
+            .checks
+            .iter()
+            .filter(|c| c.word > evenpoise::weights::verdict::Word::Sound)
+            .map(|c| format!("{}={:.3}", c.name, c.value))
+            .collect(),
         steps: tuning
             .rounds
             .iter()
@@ -143,7 +161,7 @@ fn main() {
         let mut dfs: Vec<f64> = out.iter().map(|o| o.df).collect();
         dfs.sort_by(f64::total_cmp);
         println!(
-            "{:16} ev {:6} ess {:.3} low {:.3} (before {:.3} goal {:.3}) report {:.3} logZ rms {:.4} claimed/true {:.2} mean {:.3} modes {:.2} df {:.1} K {} survey {} starts {} {:.2} s",
+            "{:16} ev {:6} ess {:.3} low {:.3} (before {:.3} goal {:.3}) report {:.3} logZ rms {:.4} claimed/true {:.2} mean {:.3} modes {:.2} df {:.1} K {} survey {} starts {} sound {:.2} {:.2} s",
             row.name,
             out[0].evaluations,
             median(&ess),
@@ -159,6 +177,7 @@ fn main() {
             out.iter().map(|o| o.components).max().unwrap(),
             out.iter().map(|o| o.survey).sum::<u64>() / seeds,
             out.iter().map(|o| o.starts).sum::<u32>() / seeds as u32,
+            out.iter().filter(|o| o.word == "Sound").count() as f64 / n,
             out.iter().map(|o| o.seconds).sum::<f64>() / n
         );
     }

@@ -1,13 +1,14 @@
 //! The density rows: log densities with exact gradients, starts, budgets and exact answers.
 
-use evenpoise::BoxError;
-use evenpoise::adapt::LogDensity;
+use evenpoise::model::Closure;
 use evenpoise::numeric::linear::{cholesky, invert_lower};
-use evenpoise::numeric::{Points, exp, ln};
+use evenpoise::numeric::{exp, ln};
+use evenpoise::problem::{Aim, Problem, Variable};
 use std::f64::consts::PI;
+use std::sync::Arc;
 
 /// Value and gradient of one point: the gradient is written where its slice is not empty.
-pub type Function = Box<dyn Fn(&[f64], &mut [f64]) -> f64 + Sync + Send>;
+pub type Function = Arc<dyn Fn(&[f64], &mut [f64]) -> f64 + Sync + Send>;
 
 /// A row of the table.
 pub struct Row {
@@ -31,31 +32,20 @@ pub struct Row {
     pub before: f64,
 }
 
-impl LogDensity for Row {
-    fn dim(&self) -> usize {
-        self.near.len()
-    }
-    fn near(&self) -> &[f64] {
-        &self.near
-    }
-    fn spread(&self) -> &[f64] {
-        &self.spread
-    }
-    fn log_density(&self, points: &Points) -> Result<Vec<f64>, BoxError> {
-        Ok((0..points.len()).map(|i| (self.function)(&points.point(i), &mut [])).collect())
-    }
-    fn has_gradient(&self) -> bool {
-        self.gradient
-    }
-    fn log_density_and_gradient(&self, points: &Points) -> Result<(Vec<f64>, Points), BoxError> {
-        let mut gradients = Points::new(self.dim());
-        let mut values = Vec::new();
-        let mut g = vec![0.0; self.dim()];
-        for i in 0..points.len() {
-            values.push((self.function)(&points.point(i), &mut g));
-            gradients.push(&g);
+impl Row {
+    /// The row as a problem, through the same door as a user's.
+    pub fn problem(&self) -> Problem {
+        let names: Vec<String> = (1..=self.near.len()).map(|j| format!("x{j}")).collect();
+        let all = f64::INFINITY;
+        let variables =
+            (0..self.near.len()).map(|j| Variable::range(&names[j], -all, all, self.near[j], self.spread[j])).collect();
+        let f = Arc::clone(&self.function);
+        let mut model = Closure::new(self.near.len(), move |x| f(x, &mut []));
+        if self.gradient {
+            let f = Arc::clone(&self.function);
+            model = model.with_gradient(move |x, g| f(x, g));
         }
-        Ok((values, gradients))
+        Problem::from_model(self.name, variables, Aim::Density, Box::new(model)).unwrap()
     }
 }
 
@@ -78,7 +68,7 @@ fn mixture(shares: &[f64], means: &[Vec<f64>], scales: &[Vec<f64>], df: f64) -> 
             (ln(*a) + c - log_det, m.clone(), invert_lower(&l, d))
         })
         .collect();
-    Box::new(move |x, g| {
+    Arc::new(move |x, g| {
         let mut terms = Vec::with_capacity(parts.len());
         let mut slopes = Vec::with_capacity(parts.len());
         for (c, m, inverse) in &parts {
@@ -153,7 +143,7 @@ fn five(name: &'static str, width: f64, budget: u64) -> Row {
 
 fn banana(name: &'static str, d: usize, budget: u64, goal: f64, before: f64) -> Row {
     let (b, s2) = (0.03, 100.0);
-    let function: Function = Box::new(move |x, g| {
+    let function: Function = Arc::new(move |x, g| {
         let y = x[1] + b * (x[0] * x[0] - s2);
         let rest: f64 = x[2..].iter().map(|v| v * v).sum();
         if !g.is_empty() {
@@ -175,7 +165,7 @@ fn banana(name: &'static str, d: usize, budget: u64, goal: f64, before: f64) -> 
 }
 
 fn banana_2d() -> Row {
-    let function: Function = Box::new(|x, g| {
+    let function: Function = Arc::new(|x, g| {
         let e = 4.0 - 10.0 * x[0] - x[1] * x[1];
         if !g.is_empty() {
             g[0] = e * 10.0 / 16.0 - x[0] / 12.25;
@@ -278,7 +268,7 @@ fn two_modes() -> Row {
 fn coaching(proper: bool) -> Row {
     const Y: [f64; 8] = [28.0, 8.0, -3.0, 7.0, -1.0, 1.0, 18.0, 12.0];
     const S: [f64; 8] = [15.0, 10.0, 16.0, 11.0, 9.0, 11.0, 10.0, 18.0];
-    let function: Function = Box::new(move |x, g| {
+    let function: Function = Arc::new(move |x, g| {
         let (mu, lt, theta) = (x[0], x[1], &x[2..]);
         let precision = exp(-2.0 * lt);
         let mut l = -7.0 * lt - 8.0 * ln(2.0 * PI);
@@ -362,7 +352,7 @@ fn o_ring() -> Row {
         0.0, 1.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 1.0, 1.0, 1.0, 0.0, 0.0, 1.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 1.0, 0.0,
         1.0,
     ];
-    let function: Function = Box::new(|x, g| {
+    let function: Function = Arc::new(|x, g| {
         let mut l = -0.5 * x[0] * x[0] / 100.0 - 0.5 * x[1] * x[1] / 6.25 - ln(2.0 * PI * 25.0);
         let (mut a, mut c) = (-x[0] / 100.0, -x[1] / 6.25);
         for (t, d) in T.iter().zip(&D) {
@@ -398,7 +388,7 @@ fn norris() -> Row {
     let s2: f64 = 0.884_796_396_144_373 * 0.884_796_396_144_373;
     let det = se[0] * se[0] * se[1] * se[1] * (1.0 - r * r);
     let a = [se[1] * se[1] / det * s2, -r * se[0] * se[1] / det * s2, se[0] * se[0] / det * s2];
-    let function: Function = Box::new(move |x, g| {
+    let function: Function = Arc::new(move |x, g| {
         let y = [x[0] - b[0], x[1] - b[1]];
         let q = a[0] * y[0] * y[0] + 2.0 * a[1] * y[0] * y[1] + a[2] * y[1] * y[1];
         if !g.is_empty() {
@@ -426,7 +416,7 @@ const MISRA_Y: [f64; 14] =
 
 /// NIST StRD Misra1a, sigma integrated out: `-7 log RSS`.
 fn misra() -> Row {
-    let function: Function = Box::new(|x, g| {
+    let function: Function = Arc::new(|x, g| {
         let (mut rss, mut ga, mut gb) = (0.0, 0.0, 0.0);
         for (t, y) in MISRA_X.iter().zip(&MISRA_Y) {
             let e = exp(-x[1] * t);
@@ -454,7 +444,7 @@ fn misra() -> Row {
 /// The hand-written funnel (Neal 2003): a trap at this budget.
 fn funnel() -> Row {
     let d = 10;
-    let function: Function = Box::new(move |x, g| {
+    let function: Function = Arc::new(move |x, g| {
         let v = x[0];
         let e = exp(-v);
         let s: f64 = x[1..].iter().map(|y| y * y).sum();

@@ -25,6 +25,8 @@ pub(crate) struct Course {
     pub(crate) fits: Vec<Fit>,
     /// The proposal that every round drew from.
     pub(crate) proposals: Vec<Mixture>,
+    /// Components born from the curvature at heavy points, with the round (from 1) after which.
+    pub(crate) born: Vec<(u32, Mixture)>,
     pub(crate) stop: StopReason,
     pub(crate) last_draws: usize,
 }
@@ -140,6 +142,7 @@ pub(crate) fn rounds(
         pool: Pool::new(target.dim()),
         fits: Vec::new(),
         proposals: Vec::new(),
+        born: Vec::new(),
         stop: if count < plan.most_rounds { StopReason::Budget } else { StopReason::Rounds },
         last_draws: 0,
     };
@@ -170,6 +173,7 @@ pub(crate) fn rounds(
                 if let Some(born) = births(target, &course.pool, &now, df, cap)? {
                     round.births = born.len() as u32;
                     fit = join(&fit, &born)?;
+                    course.born.push((r + 1, born));
                 }
                 births_left -= target.spent() - before;
             }

@@ -7,6 +7,7 @@ mod climb;
 mod course;
 mod curvature;
 mod finish;
+mod judgement;
 mod layers;
 mod modes;
 mod observer;
@@ -20,11 +21,11 @@ mod survey;
 mod tuning;
 
 pub use observer::{Answers, Batch, Observer, Silent, Stage};
-pub use settings::{Family, Settings, Structure};
-pub use standard::LogDensity;
+pub use settings::Settings;
 pub use tuning::{CandidateScore, Finalist, Mode, ReportDraws, Round, StopReason, Survey, Tuning};
 
 use crate::BoxError;
+use crate::problem::{EvaluateError, Problem};
 use crate::proposal::ProposalError;
 use crate::refit::RefitError;
 use plan::Plan;
@@ -47,7 +48,7 @@ pub enum TuneError {
     },
     /// The target cannot be evaluated.
     #[error("the target could not be evaluated")]
-    Evaluation(#[source] BoxError),
+    Evaluation(#[from] EvaluateError),
     /// The log density is `+inf` at a point.
     #[error(
         "the log density of the target is +inf at a point: it is unbounded there; bound it, or cut the point out with `require`"
@@ -81,34 +82,69 @@ pub enum TuneError {
     Proposal(#[from] ProposalError),
 }
 
-/// Tunes a proposal for `target`: the one loop, top to bottom.
+/// Tunes a proposal for a problem whose aim is a density: the one loop, top to bottom.
 ///
-/// Same target, settings and seed give the same bits, whatever the number of threads.
+/// Same problem, settings and seed give the same bits, whatever the number of threads.
 ///
 /// # Errors
 /// [`TuneError`]; what was evaluated until then went through the observer.
-pub fn tune(target: &dyn LogDensity, settings: &Settings, observer: &mut dyn Observer) -> Result<Tuning, TuneError> {
-    let plan = Plan::new(settings, target.dim())?;
-    let standard = Standard::new(target, observer);
-    let wide = layers::wide(target.dim())?;
+///
+/// ```
+/// use evenpoise::adapt::{Settings, Silent, tune};
+/// use evenpoise::model::Closure;
+/// use evenpoise::problem::{Aim, Problem, Variable};
+/// // A Gaussian with mean 3 and standard deviation 2: its integral is 2 sqrt(2 pi).
+/// let target = Closure::new(1, |x| -0.125 * (x[0] - 3.0) * (x[0] - 3.0));
+/// let level = Variable::range("level", f64::NEG_INFINITY, f64::INFINITY, 0.0, 10.0);
+/// let problem = Problem::from_model("A level", vec![level], Aim::Density, Box::new(target)).unwrap();
+/// let tuning = tune(&problem, &Settings::new(3000, 1), &mut Silent).unwrap();
+/// let score = tuning.score.unwrap();
+/// assert!(score.ess_fraction > 0.9);
+/// let exact = (2.0 * (2.0 * std::f64::consts::PI).sqrt()).ln();
+/// assert!((score.log_normaliser - exact).abs() < 5.0 * score.log_normaliser_se + 1e-3);
+/// ```
+pub fn tune(problem: &Problem, settings: &Settings, observer: &mut dyn Observer) -> Result<Tuning, TuneError> {
+    let plan = Plan::new(settings, problem.dim())?;
+    let target = Standard::new(problem, observer);
+    let wide = layers::wide(problem.dim())?;
 
-    let (first, survey) = course::first_proposal(&standard, settings, &plan)?;
-    standard.tell(|o| o.surveyed(&survey));
-    let course = course::rounds(&standard, settings, &plan, &wide, first)?;
-    let (chosen, finalists) = finish::choose(&standard, settings, &plan, &wide, &course)?;
-    let (report, score) = finish::report(&standard, settings, &plan, &chosen)?;
+    let (first, survey) = course::first_proposal(&target, settings, &plan)?;
+    target.tell(|o| o.surveyed(&survey));
+    let course = course::rounds(&target, settings, &plan, &wide, first)?;
+    let (chosen, finalists) = finish::choose(&target, settings, &plan, &wide, &course)?;
+    let (report, score) = finish::report(&target, settings, &plan, &chosen)?;
 
+    let late_modes = judgement::late_modes(&course, &chosen, &report, &target);
     let df = course.fits[course.fits.len() - 1].full.components()[0].df();
+    let estimate_values = problem.estimates(&report.points);
+    let names = problem.estimate_names();
+    let estimates = judgement::estimates(names, &estimate_values, &report);
+    let (evaluations, failed) = (target.spent(), target.failed());
+    let evidence = judgement::Evidence {
+        survey: &survey,
+        rounds: &course.rounds,
+        finalists: &finalists,
+        report: &report,
+        score: score.as_ref(),
+        estimates: &estimates,
+        estimate_values: &estimate_values,
+        late_modes: &late_modes,
+        failed_share: failed as f64 / evaluations.max(1) as f64,
+    };
+    let verdict = judgement::judge(&evidence);
     Ok(Tuning {
         survey,
         rounds: course.rounds,
         finalists,
         stop: course.stop,
-        chosen: chosen.rescaled(target.near(), target.spread())?,
+        chosen: chosen.rescaled(&problem.start().near, &problem.start().spread)?,
         df,
         report,
         score,
-        evaluations: standard.spent(),
-        failed: standard.failed(),
+        estimates,
+        estimate_values,
+        verdict,
+        evaluations,
+        failed,
     })
 }

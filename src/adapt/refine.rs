@@ -5,7 +5,7 @@ use super::curvature::{Probing, by_curvature, probe};
 use super::layers::{LayerShares, halo, layered};
 use super::pool::{Pool, temper, tempered};
 use super::rank::{predicted_ess_fraction, rank};
-use super::settings::{Settings, Structure};
+use super::settings::Settings;
 use super::standard::Standard;
 use super::tuning::CandidateScore;
 use crate::numeric::{Points, Purpose, exp, ln, log_add_exp, log_sum_exp, stream, uniform};
@@ -108,7 +108,7 @@ pub(crate) fn refine(
             reseed: round <= RESEED_ROUNDS,
             preference: settings.method,
             gaussian: settings.gaussian(),
-            diagonal: settings.structure == Structure::Diagonal,
+            diagonal: settings.diagonal(),
         },
         settings.seed,
         round,
@@ -141,13 +141,7 @@ pub(crate) fn refine(
         _ => {
             let all = thinned(live, POLISHING, &mut rng);
             let weights = shares_of(&weighted.weights, &all);
-            polish(
-                winner,
-                &pool.points.select(&all),
-                &weights,
-                settings.fit_df(),
-                settings.structure == Structure::Diagonal,
-            )
+            polish(winner, &pool.points.select(&all), &weights, settings.fit_df(), settings.diagonal())
         }
     };
     let floored = floored(&full)?;

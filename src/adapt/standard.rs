@@ -3,35 +3,12 @@
 use super::observer::{Batch, Observer, Stage};
 use super::{TuneError, observer::Answers};
 use crate::numeric::{Points, ln};
+use crate::problem::Problem;
 use std::cell::RefCell;
 
-/// A log density over the proposal's coordinates with a start: where to look first, and how wide.
-///
-/// Implementations are pure: the same points give the same bits, whatever was asked before and on any thread.
-pub trait LogDensity: Sync {
-    /// Dimension `d`.
-    fn dim(&self) -> usize;
-    /// Centre of the start, one number a coordinate.
-    fn near(&self) -> &[f64];
-    /// Width of the start, one positive number a coordinate.
-    fn spread(&self) -> &[f64];
-    /// Log density of every point, nats, up to one constant for all; `-inf` outside the support, NaN where the model failed.
-    ///
-    /// # Errors
-    /// What stopped the evaluation as a whole.
-    fn log_density(&self, points: &Points) -> Result<Vec<f64>, crate::BoxError>;
-    /// Whether [`LogDensity::log_density_and_gradient`] is exact and costs about as much as a value.
-    fn has_gradient(&self) -> bool;
-    /// Log density and its gradient (a row of `d` numbers for every point).
-    ///
-    /// # Errors
-    /// What stopped the evaluation as a whole.
-    fn log_density_and_gradient(&self, points: &Points) -> Result<(Vec<f64>, Points), crate::BoxError>;
-}
-
-/// A log density `l` in coordinates `z = (x - near) / spread`, where the start is standard: centre 0, width 1.
+/// The problem's log density in `z = (x - near) / spread`, `x` its own coordinates, where the start is standard: centre 0, width 1.
 pub(crate) struct Standard<'a> {
-    source: &'a dyn LogDensity,
+    source: &'a Problem,
     log_spread: f64,
     state: RefCell<State<'a>>,
 }
@@ -47,8 +24,8 @@ struct State<'a> {
 const DIFFERENCE: f64 = 1e-5;
 
 impl<'a> Standard<'a> {
-    pub(crate) fn new(source: &'a dyn LogDensity, observer: &'a mut dyn Observer) -> Self {
-        let log_spread = source.spread().iter().map(|&s| ln(s)).sum();
+    pub(crate) fn new(source: &'a Problem, observer: &'a mut dyn Observer) -> Self {
+        let log_spread = source.start().spread.iter().map(|&s| ln(s)).sum();
         let state = State { observer, spent: 0, failed: 0, stage: Stage::Survey };
         Self { source, log_spread, state: RefCell::new(state) }
     }
@@ -98,13 +75,27 @@ impl<'a> Standard<'a> {
         let mut x = z.clone();
         for b in 0..x.n_blocks() {
             for j in 0..x.dim() {
-                let (near, spread) = (self.source.near()[j], self.source.spread()[j]);
+                let (near, spread) = (self.source.start().near[j], self.source.start().spread[j]);
                 for v in x.column_mut(b, j) {
                     *v = near + spread * *v;
                 }
             }
         }
         x
+    }
+
+    /// Points of the proposal's coordinates in the start's units.
+    pub(crate) fn standardised(&self, x: &Points) -> Points {
+        let start = self.source.start();
+        let mut z = x.clone();
+        for b in 0..z.n_blocks() {
+            for j in 0..z.dim() {
+                for v in z.column_mut(b, j) {
+                    *v = (*v - start.near[j]) / start.spread[j];
+                }
+            }
+        }
+        z
     }
 
     /// Log densities at `z`; `-inf` outside and NaN where the model failed.
@@ -124,7 +115,7 @@ impl<'a> Standard<'a> {
         let d = self.dim();
         if self.source.has_gradient() {
             let answers = self.ask(z, true, z.len() as u64)?;
-            let spread = self.source.spread();
+            let spread = &self.source.start().spread;
             let gradients =
                 (0..z.len()).map(|i| (0..d).map(|j| answers.gradients.get(i, j) * spread[j]).collect()).collect();
             return Ok((answers.log_density, gradients));
@@ -260,11 +251,11 @@ impl<'a> Standard<'a> {
 
     fn evaluate(&self, x: &Points, gradient: bool) -> Result<Answers, TuneError> {
         if gradient {
-            let (log_density, gradients) = self.source.log_density_and_gradient(x).map_err(TuneError::Evaluation)?;
-            Ok(Answers { log_density, gradients })
+            let (evaluation, gradients) = self.source.evaluate_with_gradient(x)?;
+            Ok(Answers { log_density: evaluation.log_density, gradients })
         } else {
-            let log_density = self.source.log_density(x).map_err(TuneError::Evaluation)?;
-            Ok(Answers { log_density, gradients: Points::new(x.dim()) })
+            let evaluation = self.source.evaluate(x)?;
+            Ok(Answers { log_density: evaluation.log_density, gradients: Points::new(x.dim()) })
         }
     }
 }

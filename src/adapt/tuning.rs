@@ -3,7 +3,8 @@
 use crate::numeric::Points;
 use crate::proposal::Mixture;
 use crate::refit::Step;
-use crate::weights::Score;
+use crate::weights::verdict::Verdict;
+use crate::weights::{Estimate, Score};
 use serde::Serialize;
 
 /// A mode that the survey found, in the proposal's coordinates.
@@ -161,6 +162,12 @@ pub struct Tuning {
     pub report: ReportDraws,
     /// Their score; none where no draw met the target.
     pub score: Option<Score>,
+    /// The problem's estimates from the report draws, by name.
+    pub estimates: Vec<(String, Estimate)>,
+    /// Values of the estimates at every report draw, a column an estimate.
+    pub estimate_values: Vec<Vec<f64>>,
+    /// What may be said.
+    pub verdict: Verdict,
     /// All evaluations.
     pub evaluations: u64,
     /// Those that failed.
