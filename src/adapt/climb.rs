@@ -49,18 +49,29 @@ pub(crate) fn climb(
     known: &[KnownMode],
     steps: u64,
     cap: u64,
-) -> Result<End, TuneError> {
+) -> Result<(End, Trail), TuneError> {
     let ascent = Ascent { target, cap };
-    let solver = Climb { known, metric: metric.to_vec(), first: metric.to_vec(), own_scale, end: None, stride: 1.0 };
+    let solver = Climb {
+        known,
+        metric: metric.to_vec(),
+        first: metric.to_vec(),
+        own_scale,
+        end: None,
+        stride: 1.0,
+        trail: Vec::new(),
+    };
     let state = Executor::new(ascent, solver).configure(|s| s.param(x).max_iters(steps)).timer(false);
     match state.run() {
-        Ok(result) => Ok(result.solver.end.unwrap_or(End::Unfinished)),
+        Ok(result) => Ok((result.solver.end.unwrap_or(End::Unfinished), result.solver.trail)),
         Err(error) => match error.downcast::<TuneError>() {
             Ok(error) => Err(error),
             Err(other) => Err(TuneError::Survey(other.to_string())),
         },
     }
 }
+
+/// The places that a climb came through, with their log densities.
+pub(crate) type Trail = Vec<(Vec<f64>, f64)>;
 
 /// The operator handed to the driver: the target, and the count up to which it may be asked.
 struct Ascent<'a, 'b> {
@@ -88,6 +99,7 @@ struct Climb<'k> {
     /// Steps are lengthened by this where the density is not concave along them: there the metric learns nothing, and a
     /// heavy tail would be walked in steps that shrink with its slope.
     stride: f64,
+    trail: Trail,
 }
 
 type Position = IterState<Vec<f64>, Vec<f64>, (), (), (), f64>;
@@ -128,6 +140,7 @@ impl<'a, 'b> Solver<Ascent<'a, 'b>, Position> for Climb<'_> {
             self.end = Some(End::Known(j));
             return Ok((state.param(x).gradient(g).cost(-l), None));
         }
+        self.trail.push((x.clone(), l));
         let mut step = times(&self.metric, &g);
         let mut rise = dot(&g, &step);
         if !(rise > 0.0) {
