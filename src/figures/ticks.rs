@@ -88,8 +88,9 @@ fn labelled(values: &[f64], finest: i32) -> Marking {
     let mut offset = 0.0;
     let mut shown: Vec<f64> = values.to_vec();
     if spread > 0.0 && largest > 0.0 && exponent_of(largest) - finest > 5 {
-        let coarse = power_of_ten(exponent_of(spread) + 1);
-        offset = (values[0] / coarse).floor() * coarse;
+        // A rounder number is worth a digit more in the labels.
+        let coarse = power_of_ten(exponent_of(spread) + 2);
+        offset = (values[values.len() / 2] / coarse).round() * coarse;
         shown = values.iter().map(|value| value - offset).collect();
     }
     let largest = shown.iter().fold(0.0_f64, |most, value| most.max(value.abs()));

@@ -24,9 +24,12 @@ pub(super) fn caption(data: &VariablesData, rows: &[Prepared], sample: &Thinned)
     let pairs = rows.iter().any(|row| !row.partners.is_empty());
     let mut text =
         format!("Marginal distribution of the {} weighted draws, and marginal density of the proposal.", count(draws));
+    if rows.iter().any(|row| data.variables[row.row.variable].discrete) {
+        text = format!("{text} Circles are the proposal's probabilities of whole numbers.");
+    }
     if pairs {
         text = format!(
-            "{text} Right of it, the same draws over the variables that depend on it most: every dot stands for 1/{DOTS} of \
+            "{text} To the right, the same draws over the variables that depend on it most: every dot stands for 1/{DOTS} of \
              the weight (larger ones for several), lines for one standard deviation of each component."
         );
     }
