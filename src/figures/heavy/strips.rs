@@ -9,7 +9,7 @@ use crate::numeric::ln;
 /// Share of the draws that count as heaviest.
 const SHARE: f64 = 0.01;
 /// Fewest and most of them.
-const DRAWS: (usize, usize) = (5, 200);
+const DRAWS: (usize, usize) = (5, 100);
 
 /// A variable with the places of the heaviest draws.
 pub(super) struct Strip<'a> {
