@@ -2,7 +2,7 @@
 
 use super::normal;
 use super::tails::LogTails;
-use super::tails::newton_step;
+use super::tails::Search;
 use super::{exp, ln};
 
 /// `ln |Gamma(x)|`, to a few units in the last place for `x > 0` (its zeros at 1 and 2 included).
@@ -234,12 +234,13 @@ pub fn gamma_quantile(a: f64, log_tail: f64, upper: bool) -> f64 {
         return exp(log_power_law).max(f64::MIN_POSITIVE);
     }
     let mut x = start_of_quantile(a, log_tail, upper, log_power_law);
-    for _ in 0..100 {
+    let mut search = Search::new(log_tail, upper);
+    for _ in 0..200 {
         let tails = gamma_log_tails(a, x);
         let have = if upper { tails.upper } else { tails.lower };
-        let step = newton_step(have, log_tail, log_gamma_front(a, x), a - x, upper);
-        x *= exp(step.change);
-        if step.is_last {
+        let (change, is_last) = search.step(have, log_gamma_front(a, x), a - x);
+        x = (x * exp(change)).max(f64::MIN_POSITIVE);
+        if is_last {
             break;
         }
     }

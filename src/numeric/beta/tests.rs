@@ -83,7 +83,10 @@ fn student_t_matches_mpmath() {
 #[test]
 fn quantiles_invert_the_tails() {
     let targets = [-690.775, -300.0, -30.0, -5.0, -1.0, -0.3, -1e-3, -1e-12];
-    for (a, b) in [(0.05, 0.4), (0.5, 0.5), (0.5, 30.0), (1.0, 1.0), (2.0, 3.0), (40.0, 3.0), (5e5, 0.5), (5e3, 5e5)] {
+    let ordinary = [(0.5, 0.5), (0.5, 30.0), (1.0, 1.0), (2.0, 3.0), (40.0, 3.0), (5e5, 0.5), (5e3, 5e5)];
+    // Where the start is far off, and the logarithm of the tail flat on one side and steep on the other.
+    let lopsided = [(0.05, 0.4), (1e6, 1e-3), (0.05, 1e6), (1e-3, 1e6), (5e8, 0.5)];
+    for (a, b) in ordinary.into_iter().chain(lopsided) {
         for (log_tail, upper) in targets.iter().flat_map(|&t| [(t, false), (t, true)]) {
             let (x, y) = beta_quantile(a, b, log_tail, upper);
             if x.min(y) <= f64::MIN_POSITIVE {
