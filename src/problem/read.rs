@@ -210,8 +210,9 @@ fn misplaced(reader: &mut Reader<'_>, errors: &[Misplaced], expanded: &[Expanded
             .variable()
             .and_then(|name| expanded.iter().find(|variable| variable.names().iter().any(|(known, _)| known == name)));
         let span = about.map_or(0..0, |variable| match error {
-            Misplaced::NearOutside { .. } => {
-                variable.spec.near.as_ref().map_or(variable.spec.name_span.clone(), |(_, span)| span.clone())
+            Misplaced::NearOutside { .. } | Misplaced::StartOfDependent { .. } => {
+                let said = variable.spec.near.as_ref().or(variable.spec.spread.as_ref());
+                said.map_or(variable.spec.name_span.clone(), |(_, span)| span.clone())
             }
             _ => variable.spec.name_span.clone(),
         });

@@ -1,6 +1,7 @@
 //! Problem files, right and wrong: what they mean, checked against independent numbers, and how they are refused.
 #![allow(clippy::unwrap_used)]
 
+mod built;
 mod documentation;
 mod right;
 mod whole;

@@ -355,5 +355,5 @@ fn tuning_and_correlation() {
 #[test]
 fn a_problem_file_that_is_not_there() {
     let error = Problem::read(Path::new("nowhere/weir.toml")).unwrap_err();
-    insta::assert_snapshot!(error.render(false), @"");
+    snapshot("a_problem_file_that_is_not_there", &error.render(false));
 }
