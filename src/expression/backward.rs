@@ -7,7 +7,7 @@ use std::f64::consts::{FRAC_2_SQRT_PI, LN_10};
 
 use multiversion::multiversion;
 
-use super::forward::Operand;
+use super::forward::{Operand, Spare};
 use super::operations::{Binary, Reduction, Unary};
 use super::special::{
     digamma, ln_gamma_half_step_slope, ln_rising_slopes, log_normal_tail_slope, log1p, logistic, logistic_slope,
@@ -22,43 +22,44 @@ fn masked(g: f64, d: f64) -> f64 {
     if g == 0.0 { 0.0 } else { product }
 }
 
-/// Adds `g * slope(x, y)` to `gx`, point by point; `y` is the operation's value.
-#[inline(always)]
-fn add_slope(g: &[f64], x: &[f64], y: &[f64], gx: &mut [f64], slope: impl Fn(f64, f64) -> f64) {
-    for (((gx, &g), &x), &y) in gx.iter_mut().zip(g).zip(x).zip(y) {
-        *gx += masked(g, slope(x, y));
-    }
+// Macros for the reason given in `forward`.
+/// Adds `g * slope` of `x` and the value `y` to `gx`, point by point.
+macro_rules! add_slope {
+    (($g:expr, $x:expr, $y:expr) => $gx:expr, |$v:tt, $w:tt| $slope:expr) => {
+        for (((gx, &g), &$v), &$w) in $gx.iter_mut().zip($g).zip($x).zip($y) {
+            *gx += masked(g, $slope);
+        }
+    };
+}
+/// Adds `g * slope` of `a`, `b` and the value `y` to `to`, point by point.
+macro_rules! add_slope_of_two {
+    (($g:expr, $a:expr, $b:expr, $y:expr) => $to:expr, |$u:tt, $v:tt, $w:tt| $slope:expr) => {
+        for ((((to, &g), &$u), &$v), &$w) in $to.iter_mut().zip($g).zip($a).zip($b).zip($y) {
+            *to += masked(g, $slope);
+        }
+    };
 }
 
 /// Adjoint of the argument of `y = function(x)`.
 #[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx2", "x86_64+avx2"))]
 pub(super) fn unary_slope(function: Unary, g: &[f64], x: &[f64], y: &[f64], gx: &mut [f64]) {
-    unary_slope_body(function, g, x, y, gx);
-}
-
-#[inline(always)]
-fn unary_slope_body(function: Unary, g: &[f64], x: &[f64], y: &[f64], gx: &mut [f64]) {
-    let add = |gx: &mut [f64], slope: fn(f64, f64) -> f64| {
-        // For functions that are calls in themselves; the inner loops of the others are written out below.
-        add_slope(g, x, y, gx, slope);
-    };
     match function {
         Unary::Negate => {
             for (gx, &g) in gx.iter_mut().zip(g) {
                 *gx -= g;
             }
         }
-        Unary::Square => add_slope(g, x, y, gx, |x, _| 2.0 * x),
-        Unary::WholePower(3) => add_slope(g, x, y, gx, |x, _| 3.0 * (x * x)),
-        Unary::WholePower(-1) => add_slope(g, x, y, gx, |_, y| -(y * y)),
-        Unary::WholePower(n) => add_slope(g, x, y, gx, |x, _| f64::from(n) * whole_power(x, n - 1)),
-        Unary::Exp => add_slope(g, x, y, gx, |_, y| y),
-        Unary::Ln => add_slope(g, x, y, gx, |x, _| 1.0 / x),
-        Unary::Log10 => add_slope(g, x, y, gx, |x, _| 1.0 / (x * LN_10)),
-        Unary::Log1p => add_slope(g, x, y, gx, |x, _| 1.0 / (1.0 + x)),
-        Unary::Expm1 => add_slope(g, x, y, gx, |_, y| y + 1.0),
-        Unary::Sqrt => add_slope(g, x, y, gx, |_, y| 0.5 / y),
-        Unary::Abs => add_slope(g, x, y, gx, |x, _| {
+        Unary::Square => add_slope!((g, x, y) => gx, |x, _| 2.0 * x),
+        Unary::WholePower(3) => add_slope!((g, x, y) => gx, |x, _| 3.0 * (x * x)),
+        Unary::WholePower(-1) => add_slope!((g, x, y) => gx, |_, y| -(y * y)),
+        Unary::WholePower(n) => add_slope!((g, x, y) => gx, |x, _| f64::from(n) * whole_power(x, n - 1)),
+        Unary::Exp => add_slope!((g, x, y) => gx, |_, y| y),
+        Unary::Ln => add_slope!((g, x, y) => gx, |x, _| 1.0 / x),
+        Unary::Log10 => add_slope!((g, x, y) => gx, |x, _| 1.0 / (x * LN_10)),
+        Unary::Log1p => add_slope!((g, x, y) => gx, |x, _| 1.0 / (1.0 + x)),
+        Unary::Expm1 => add_slope!((g, x, y) => gx, |_, y| y + 1.0),
+        Unary::Sqrt => add_slope!((g, x, y) => gx, |_, y| 0.5 / y),
+        Unary::Abs => add_slope!((g, x, y) => gx, |x, _| {
             if x > 0.0 {
                 1.0
             } else if x < 0.0 {
@@ -67,121 +68,128 @@ fn unary_slope_body(function: Unary, g: &[f64], x: &[f64], y: &[f64], gx: &mut [
                 0.0
             }
         }),
-        Unary::Sin => add(gx, |x, _| libm::cos(x)),
-        Unary::Cos => add(gx, |x, _| -libm::sin(x)),
-        Unary::Tan => add_slope(g, x, y, gx, |_, y| 1.0 + y * y),
-        Unary::Asin => add_slope(g, x, y, gx, |x, _| 1.0 / ((1.0 - x) * (1.0 + x)).sqrt()),
-        Unary::Acos => add_slope(g, x, y, gx, |x, _| -1.0 / ((1.0 - x) * (1.0 + x)).sqrt()),
-        Unary::Atan => add_slope(g, x, y, gx, |x, _| 1.0 / (1.0 + x * x)),
-        Unary::Sinh => add(gx, |x, _| libm::cosh(x)),
-        Unary::Cosh => add(gx, |x, _| libm::sinh(x)),
+        Unary::Sin => add_slope!((g, x, y) => gx, |x, _| libm::cos(x)),
+        Unary::Cos => add_slope!((g, x, y) => gx, |x, _| -libm::sin(x)),
+        Unary::Tan => add_slope!((g, x, y) => gx, |_, y| 1.0 + y * y),
+        Unary::Asin => add_slope!((g, x, y) => gx, |x, _| 1.0 / ((1.0 - x) * (1.0 + x)).sqrt()),
+        Unary::Acos => add_slope!((g, x, y) => gx, |x, _| -1.0 / ((1.0 - x) * (1.0 + x)).sqrt()),
+        Unary::Atan => add_slope!((g, x, y) => gx, |x, _| 1.0 / (1.0 + x * x)),
+        Unary::Sinh => add_slope!((g, x, y) => gx, |x, _| libm::cosh(x)),
+        Unary::Cosh => add_slope!((g, x, y) => gx, |x, _| libm::sinh(x)),
         // 1 - tanh^2 cancels far out; 4 e^-2|x| / (1 + e^-2|x|)^2 does not.
-        Unary::Tanh => add_slope(g, x, y, gx, |x, _| 4.0 * logistic_slope(2.0 * x)),
-        Unary::LnGamma | Unary::LnGammaPositive => add(gx, |x, _| digamma(x)),
-        Unary::LnGammaHalfStep => add(gx, |x, _| ln_gamma_half_step_slope(x)),
-        Unary::Erf => add_slope(g, x, y, gx, |x, _| FRAC_2_SQRT_PI * exp(-x * x)),
-        Unary::Erfc => add_slope(g, x, y, gx, |x, _| -FRAC_2_SQRT_PI * exp(-x * x)),
-        Unary::NormalCdf => add_slope(g, x, y, gx, |x, _| normal_density(x)),
-        Unary::NormalQuantile => add_slope(g, x, y, gx, |_, y| 1.0 / normal_density(y)),
-        Unary::LogNormalTail => add(gx, |x, _| log_normal_tail_slope(x)),
-        Unary::Logistic => add_slope(g, x, y, gx, |x, _| logistic_slope(x)),
-        Unary::Logit => add_slope(g, x, y, gx, |x, _| 1.0 / (x * (1.0 - x))),
-        Unary::Softplus => add_slope(g, x, y, gx, |x, _| logistic(x)),
+        Unary::Tanh => add_slope!((g, x, y) => gx, |x, _| 4.0 * logistic_slope(2.0 * x)),
+        Unary::LnGamma | Unary::LnGammaPositive => add_slope!((g, x, y) => gx, |x, _| digamma(x)),
+        Unary::LnGammaHalfStep => add_slope!((g, x, y) => gx, |x, _| ln_gamma_half_step_slope(x)),
+        Unary::Erf => add_slope!((g, x, y) => gx, |x, _| FRAC_2_SQRT_PI * exp(-x * x)),
+        Unary::Erfc => add_slope!((g, x, y) => gx, |x, _| -FRAC_2_SQRT_PI * exp(-x * x)),
+        Unary::NormalCdf => add_slope!((g, x, y) => gx, |x, _| normal_density(x)),
+        Unary::NormalQuantile => add_slope!((g, x, y) => gx, |_, y| 1.0 / normal_density(y)),
+        Unary::LogNormalTail => add_slope!((g, x, y) => gx, |x, _| log_normal_tail_slope(x)),
+        Unary::Logistic => add_slope!((g, x, y) => gx, |x, _| logistic_slope(x)),
+        Unary::Logit => add_slope!((g, x, y) => gx, |x, _| 1.0 / (x * (1.0 - x))),
+        Unary::Softplus => add_slope!((g, x, y) => gx, |x, _| logistic(x)),
         Unary::Not | Unary::Floor | Unary::Ceil | Unary::Round | Unary::Present | Unary::IsFraction => {}
-    }
-}
-
-/// Adds `g * slope(a, b, y)` to `to`.
-#[inline(always)]
-fn add_slope_of_two(
-    g: &[f64],
-    (a, b): (Operand<'_>, Operand<'_>),
-    y: &[f64],
-    to: &mut [f64],
-    slope: impl Fn(f64, f64, f64) -> f64,
-) {
-    match (a, b) {
-        (Operand::Block(a), Operand::Block(b)) => {
-            for ((((to, &g), &a), &b), &y) in to.iter_mut().zip(g).zip(a).zip(b).zip(y) {
-                *to += masked(g, slope(a, b, y));
-            }
-        }
-        (Operand::Block(a), Operand::Scalar(b)) => {
-            for (((to, &g), &a), &y) in to.iter_mut().zip(g).zip(a).zip(y) {
-                *to += masked(g, slope(a, b, y));
-            }
-        }
-        (Operand::Scalar(a), Operand::Block(b)) => {
-            for (((to, &g), &b), &y) in to.iter_mut().zip(g).zip(b).zip(y) {
-                *to += masked(g, slope(a, b, y));
-            }
-        }
-        (Operand::Scalar(a), Operand::Scalar(b)) => {
-            for ((to, &g), &y) in to.iter_mut().zip(g).zip(y) {
-                *to += masked(g, slope(a, b, y));
-            }
-        }
     }
 }
 
 /// Adjoint of the first argument of `y = function(a, b)`.
 #[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx2", "x86_64+avx2"))]
-pub(super) fn left_slope(function: Binary, g: &[f64], a: Operand<'_>, b: Operand<'_>, y: &[f64], ga: &mut [f64]) {
-    left_slope_body(function, g, (a, b), y, ga);
-}
-
-#[inline(always)]
-fn left_slope_body(function: Binary, g: &[f64], ab: (Operand<'_>, Operand<'_>), y: &[f64], ga: &mut [f64]) {
-    match function {
-        Binary::Add | Binary::Subtract => add_all(g, ga),
-        Binary::Multiply => add_slope_of_two(g, ab, y, ga, |_, b, _| b),
-        Binary::Divide => add_slope_of_two(g, ab, y, ga, |_, b, _| 1.0 / b),
-        Binary::Power => add_slope_of_two(g, ab, y, ga, |a, b, _| b * libm::pow(a, b - 1.0)),
-        Binary::Atan2 => add_slope_of_two(g, ab, y, ga, |a, b, _| b / (a * a + b * b)),
-        Binary::Hypot => add_slope_of_two(g, ab, y, ga, |a, _, y| if y == 0.0 { 0.0 } else { a / y }),
-        Binary::Minimum => add_slope_of_two(g, ab, y, ga, |a, b, _| if a <= b { 1.0 } else { 0.0 }),
-        Binary::Maximum => add_slope_of_two(g, ab, y, ga, |a, b, _| if a >= b { 1.0 } else { 0.0 }),
-        Binary::MinimumDefined => {
-            add_slope_of_two(g, ab, y, ga, |a, b, _| if a <= b || b.is_nan() { 1.0 } else { 0.0 });
+pub(super) fn left_slope(
+    function: Binary,
+    g: &[f64],
+    (a, b): (Operand<'_>, Operand<'_>),
+    y: &[f64],
+    spare: &mut Spare,
+    ga: &mut [f64],
+) {
+    // The frequent ones need no repetition of a number for all points.
+    match (function, b) {
+        (Binary::Add | Binary::Subtract, _) => {
+            for (ga, &g) in ga.iter_mut().zip(g) {
+                *ga += g;
+            }
+            return;
         }
-        Binary::LogAddExp => add_slope_of_two(g, ab, y, ga, |a, _, y| share(a, y)),
-        Binary::XLogY => add_slope_of_two(g, ab, y, ga, |_, b, _| ln(b)),
-        Binary::XLog1pY => add_slope_of_two(g, ab, y, ga, |_, b, _| log1p(b)),
-        Binary::LnRising => add_slope_of_two(g, ab, y, ga, |a, b, _| ln_rising_slopes(a, b).0),
+        (Binary::Multiply, Operand::Scalar(b)) => {
+            for (ga, &g) in ga.iter_mut().zip(g) {
+                *ga += masked(g, b);
+            }
+            return;
+        }
+        _ => {}
+    }
+    let [room_a, room_b] = spare;
+    let (a, b) = (a.spread(g.len(), room_a), b.spread(g.len(), room_b));
+    match function {
+        Binary::Multiply => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| b),
+        Binary::Divide => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| 1.0 / b),
+        Binary::Power => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b * libm::pow(a, b - 1.0)),
+        Binary::Atan2 => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b / (a * a + b * b)),
+        Binary::Hypot => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| if y == 0.0 { 0.0 } else { a / y }),
+        Binary::Minimum => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a <= b { 1.0 } else { 0.0 }),
+        Binary::Maximum => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a >= b { 1.0 } else { 0.0 }),
+        Binary::MinimumDefined => {
+            add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a <= b || b.is_nan() { 1.0 } else { 0.0 });
+        }
+        Binary::LogAddExp => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| share(a, y)),
+        Binary::XLogY => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| ln(b)),
+        Binary::XLog1pY => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| log1p(b)),
+        Binary::LnRising => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| ln_rising_slopes(a, b).0),
+        Binary::Add | Binary::Subtract => unreachable!("done above"),
         Binary::Less | Binary::LessEqual | Binary::Equal | Binary::Differ | Binary::And | Binary::Or => {}
     }
 }
 
 /// Adjoint of the second argument of `y = function(a, b)`.
 #[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx2", "x86_64+avx2"))]
-pub(super) fn right_slope(function: Binary, g: &[f64], a: Operand<'_>, b: Operand<'_>, y: &[f64], gb: &mut [f64]) {
-    right_slope_body(function, g, (a, b), y, gb);
-}
-
-#[inline(always)]
-fn right_slope_body(function: Binary, g: &[f64], ab: (Operand<'_>, Operand<'_>), y: &[f64], gb: &mut [f64]) {
-    match function {
-        Binary::Add => add_all(g, gb),
-        Binary::Subtract => {
+pub(super) fn right_slope(
+    function: Binary,
+    g: &[f64],
+    (a, b): (Operand<'_>, Operand<'_>),
+    y: &[f64],
+    spare: &mut Spare,
+    gb: &mut [f64],
+) {
+    match (function, a) {
+        (Binary::Add, _) => {
+            for (gb, &g) in gb.iter_mut().zip(g) {
+                *gb += g;
+            }
+            return;
+        }
+        (Binary::Subtract, _) => {
             for (gb, &g) in gb.iter_mut().zip(g) {
                 *gb -= g;
             }
+            return;
         }
-        Binary::Multiply => add_slope_of_two(g, ab, y, gb, |a, _, _| a),
-        Binary::Divide => add_slope_of_two(g, ab, y, gb, |_, b, y| -(y / b)),
+        (Binary::Multiply, Operand::Scalar(a)) => {
+            for (gb, &g) in gb.iter_mut().zip(g) {
+                *gb += masked(g, a);
+            }
+            return;
+        }
+        _ => {}
+    }
+    let [room_a, room_b] = spare;
+    let (a, b) = (a.spread(g.len(), room_a), b.spread(g.len(), room_b));
+    match function {
+        Binary::Multiply => add_slope_of_two!((g, a, b, y) => gb, |a, _, _| a),
+        Binary::Divide => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| -(y / b)),
         // 0^b is 0 for all b > 0: there ln 0 must not turn it into NaN.
-        Binary::Power => add_slope_of_two(g, ab, y, gb, |a, _, y| if y == 0.0 { 0.0 } else { y * ln(a) }),
-        Binary::Atan2 => add_slope_of_two(g, ab, y, gb, |a, b, _| -a / (a * a + b * b)),
-        Binary::Hypot => add_slope_of_two(g, ab, y, gb, |_, b, y| if y == 0.0 { 0.0 } else { b / y }),
-        Binary::Minimum => add_slope_of_two(g, ab, y, gb, |a, b, _| if a <= b { 0.0 } else { 1.0 }),
-        Binary::Maximum => add_slope_of_two(g, ab, y, gb, |a, b, _| if a >= b { 0.0 } else { 1.0 }),
+        Binary::Power => add_slope_of_two!((g, a, b, y) => gb, |a, _, y| if y == 0.0 { 0.0 } else { y * ln(a) }),
+        Binary::Atan2 => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| -a / (a * a + b * b)),
+        Binary::Hypot => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| if y == 0.0 { 0.0 } else { b / y }),
+        Binary::Minimum => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a <= b { 0.0 } else { 1.0 }),
+        Binary::Maximum => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a >= b { 0.0 } else { 1.0 }),
         Binary::MinimumDefined => {
-            add_slope_of_two(g, ab, y, gb, |a, b, _| if a <= b || b.is_nan() { 0.0 } else { 1.0 });
+            add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a <= b || b.is_nan() { 0.0 } else { 1.0 });
         }
-        Binary::LogAddExp => add_slope_of_two(g, ab, y, gb, |_, b, y| share(b, y)),
-        Binary::XLogY => add_slope_of_two(g, ab, y, gb, |a, b, _| if a == 0.0 { 0.0 } else { a / b }),
-        Binary::XLog1pY => add_slope_of_two(g, ab, y, gb, |a, b, _| if a == 0.0 { 0.0 } else { a / (1.0 + b) }),
-        Binary::LnRising => add_slope_of_two(g, ab, y, gb, |a, b, _| ln_rising_slopes(a, b).1),
+        Binary::LogAddExp => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| share(b, y)),
+        Binary::XLogY => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a == 0.0 { 0.0 } else { a / b }),
+        Binary::XLog1pY => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a == 0.0 { 0.0 } else { a / (1.0 + b) }),
+        Binary::LnRising => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| ln_rising_slopes(a, b).1),
+        Binary::Add | Binary::Subtract => unreachable!("done above"),
         Binary::Less | Binary::LessEqual | Binary::Equal | Binary::Differ | Binary::And | Binary::Or => {}
     }
 }
@@ -202,21 +210,18 @@ fn share(x: f64, total: f64) -> f64 {
 }
 
 /// Adjoint of the branch of an `if` that is taken where `condition` is not zero (`taken`) or zero (`!taken`).
-#[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx2", "x86_64+avx2"))]
 pub(super) fn branch_slope(taken: bool, g: &[f64], condition: Operand<'_>, to: &mut [f64]) {
     match condition {
-        Operand::Scalar(condition) => {
-            if (condition != 0.0) == taken {
-                for (to, &g) in to.iter_mut().zip(g) {
-                    *to += g;
-                }
-            }
-        }
-        Operand::Block(condition) => {
-            for ((to, &g), &condition) in to.iter_mut().zip(g).zip(condition) {
-                *to += if (condition != 0.0) == taken { g } else { 0.0 };
-            }
-        }
+        Operand::Scalar(condition) if (condition != 0.0) == taken => add_all(g, to),
+        Operand::Scalar(_) => {}
+        Operand::Block(condition) => branch_loop(taken, g, condition, to),
+    }
+}
+
+#[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx2", "x86_64+avx2"))]
+fn branch_loop(taken: bool, g: &[f64], condition: &[f64], to: &mut [f64]) {
+    for ((to, &g), &condition) in to.iter_mut().zip(g).zip(condition) {
+        *to += if (condition != 0.0) == taken { g } else { 0.0 };
     }
 }
 
@@ -243,8 +248,9 @@ pub(super) fn row_slope(
             }
         }
         Reduction::LogSumExp => {
-            for (j, ((to, &g), &total)) in to.iter_mut().zip(g).zip(total).enumerate() {
-                *to += masked(g, share(body.at(j), total));
+            // What is summed up varies with the inputs: it is a block.
+            if let Operand::Block(body) = body {
+                add_slope!((g, body, total) => to, |x, total| share(x, total));
             }
         }
     }

@@ -4,7 +4,7 @@ use std::collections::HashMap;
 use std::collections::HashSet;
 
 use super::columns::RowsId;
-use super::forward::{Operand, binary, reduce_row, select, unary};
+use super::forward::{Operand, Row, binary_long, finish_log_sum_exp, reduce_row, select, unary_long};
 
 /// Place of an operation in [`Operations`]; its arguments have smaller ones.
 pub(super) type Id = u32;
@@ -218,7 +218,7 @@ impl Operations {
         if self.entry(of).varies {
             return self.add(op, self.rows(of), true);
         }
-        self.fold(op, self.rows(of), |list, out| unary(function, list.operand(of), out))
+        self.fold(op, self.rows(of), |list, out| unary_long(function, list.operand(of), out))
     }
 
     pub(super) fn binary(&mut self, function: Binary, a: Id, b: Id) -> Id {
@@ -233,7 +233,7 @@ impl Operations {
         if self.entry(a).varies || self.entry(b).varies {
             return self.add(op, rows, true);
         }
-        self.fold(op, rows, |list, out| binary(function, list.operand(a), list.operand(b), out))
+        self.fold(op, rows, |list, out| binary_long(function, list.operand(a), list.operand(b), out))
     }
 
     /// `a^b`, by multiplication and square roots where the exponent is a constant that allows it.
@@ -384,11 +384,12 @@ impl Operations {
         }
         self.fold(op, None, |list, out| {
             let mut extra = [0.0];
+            let mut spare = [Row::ZERO; 2];
             for r in 0..count {
-                reduce_row(reduction, r, Operand::Scalar(list.operand(of).at(r)), out, &mut extra);
+                reduce_row(reduction, r, Operand::Scalar(list.operand(of).at(r)), &mut spare, out, &mut extra);
             }
             if reduction == Reduction::LogSumExp {
-                super::forward::finish_log_sum_exp(out, &extra);
+                finish_log_sum_exp(out, &extra);
             }
         })
     }

@@ -1,16 +1,23 @@
 //! Runs a [`Plan`] over a block of points: forward for values, and backward for gradients.
 
 use super::backward::{add_all, branch_slope, left_slope, right_slope, row_slope, unary_slope};
-use super::forward::{Operand, binary, finish_log_sum_exp, reduce_row, select, unary};
+use super::forward::{Operand, Row, Spare, binary, finish_log_sum_exp, reduce_row, select, unary};
 use super::operations::{Operations, Reduction};
 use super::plan::{Action, Fold, Lag, Pass, Plan, Slot, Source, Step};
 use crate::numeric::BLOCK;
 
 /// Room for one block's numbers; kept from block to block.
-#[derive(Debug, Clone, Default)]
+#[derive(Debug, Clone)]
 pub(super) struct WorkSpace {
-    values: Vec<f64>,
-    adjoints: Vec<f64>,
+    values: Vec<Row>,
+    adjoints: Vec<Row>,
+    spare: Spare,
+}
+
+impl Default for WorkSpace {
+    fn default() -> Self {
+        Self { values: Vec::new(), adjoints: Vec::new(), spare: [Row::ZERO; 2] }
+    }
 }
 
 /// A block of points: the columns of its inputs, and how many points of it are looked at.
@@ -25,26 +32,26 @@ pub(super) type Write<'a> = dyn FnMut(usize, usize, Operand<'_>) + 'a;
 
 /// The slots of a work space around the one that is written: arguments are read from `below` and `above` it.
 struct Around<'a> {
-    below: &'a [f64],
-    above: &'a [f64],
+    below: &'a [Row],
+    above: &'a [Row],
     out: Slot,
 }
 
 impl<'a> Around<'a> {
     fn slot(&self, slot: Slot, width: usize) -> &'a [f64] {
         if slot < self.out {
-            &self.below[slot as usize * BLOCK..][..width]
+            &self.below[slot as usize].0[..width]
         } else {
-            &self.above[(slot - self.out - 1) as usize * BLOCK..][..width]
+            &self.above[(slot - self.out - 1) as usize].0[..width]
         }
     }
 }
 
 /// The slot `out` to write, and the others to read.
-fn open(slots: &mut [f64], out: Slot, width: usize) -> (&mut [f64], Around<'_>) {
-    let (below, rest) = slots.split_at_mut(out as usize * BLOCK);
-    let (own, above) = rest.split_at_mut(BLOCK);
-    (&mut own[..width], Around { below, above, out })
+fn open(slots: &mut [Row], out: Slot, width: usize) -> (&mut [f64], Around<'_>) {
+    let (below, rest) = slots.split_at_mut(out as usize);
+    let (own, above) = rest.split_at_mut(1);
+    (&mut own[0].0[..width], Around { below, above, out })
 }
 
 /// One block on its way through one plan.
@@ -54,14 +61,15 @@ pub(super) struct Sweep<'a> {
     inputs: &'a [f64],
     /// Points computed: the block's own, filled up to a multiple of eight so that vector instructions come out even.
     width: usize,
-    values: &'a mut [f64],
-    adjoints: &'a mut [f64],
+    values: &'a mut [Row],
+    adjoints: &'a mut [Row],
+    spare: &'a mut Spare,
 }
 
 impl<'a> Sweep<'a> {
     pub(super) fn new(operations: &'a Operations, plan: &'a Plan, block: Block<'a>, space: &'a mut WorkSpace) -> Self {
-        space.values.resize(plan.n_slots * BLOCK, 0.0);
-        space.adjoints.resize(plan.n_slots * BLOCK, 0.0);
+        space.values.resize(plan.n_slots, Row::ZERO);
+        space.adjoints.resize(plan.n_slots, Row::ZERO);
         Self {
             operations,
             plan,
@@ -69,6 +77,7 @@ impl<'a> Sweep<'a> {
             width: block.len.next_multiple_of(8).min(BLOCK),
             values: &mut space.values,
             adjoints: &mut space.adjoints,
+            spare: &mut space.spare,
         }
     }
 
@@ -91,7 +100,7 @@ impl<'a> Sweep<'a> {
     /// Adds the derivatives of output number `source` to `gradient`, the columns of all inputs; after [`Self::forward`].
     pub(super) fn backward(&mut self, source: Source, gradient: &mut [f64]) {
         let plan = self.plan;
-        self.adjoints.fill(0.0);
+        self.adjoints.fill(Row::ZERO);
         let ones = [1.0; BLOCK];
         self.give(source, 0, &ones[..self.width], gradient);
         for stage in plan.stages.iter().rev() {
@@ -107,7 +116,7 @@ impl<'a> Sweep<'a> {
     /// The numbers of `source` in row `row`.
     fn read(&self, source: Source, row: usize) -> Operand<'_> {
         match source {
-            Source::Slot(slot) => Operand::Block(&self.values[slot as usize * BLOCK..][..self.width]),
+            Source::Slot(slot) => Operand::Block(&self.values[slot as usize].0[..self.width]),
             other => leaf(self.operations, self.inputs, other, row, self.width),
         }
     }
@@ -120,8 +129,11 @@ impl<'a> Sweep<'a> {
             other => leaf(operations, inputs, other, row, width),
         };
         match step.action {
-            Action::Unary(function, x) => unary(function, read(x), out),
-            Action::Binary(function, a, b) => binary(function, read(a), read(b), out),
+            Action::Unary(function, x) => match read(x) {
+                Operand::Block(x) => unary(function, x, out),
+                Operand::Scalar(_) => unreachable!("what does not vary is folded"),
+            },
+            Action::Binary(function, a, b) => binary(function, read(a), read(b), self.spare, out),
             Action::Select(condition, yes, no) => select(read(condition), read(yes), read(no), out),
         }
     }
@@ -151,27 +163,27 @@ impl<'a> Sweep<'a> {
             self.next_row(&pass.lags, row);
         }
         for fold in pass.folds.iter().filter(|fold| fold.reduction == Reduction::LogSumExp) {
-            let (total, extra, _) = self.open_fold(fold);
+            let (total, extra, ..) = self.open_fold(fold);
             finish_log_sum_exp(total, extra);
         }
     }
 
     fn fold(&mut self, fold: &Fold, row: usize) {
         let (operations, inputs, width) = (self.operations, self.inputs, self.width);
-        let (total, extra, around) = self.open_fold(fold);
+        let (total, extra, around, spare) = self.open_fold(fold);
         let body = match fold.body {
             Source::Slot(slot) => Operand::Block(around.slot(slot, width)),
             other => leaf(operations, inputs, other, row, width),
         };
-        reduce_row(fold.reduction, row, body, total, extra);
+        reduce_row(fold.reduction, row, body, spare, total, extra);
     }
 
     /// The two slots of a reduction, which follow each other, and those before them.
-    fn open_fold(&mut self, fold: &Fold) -> (&mut [f64], &mut [f64], Around<'_>) {
-        let (below, rest) = self.values.split_at_mut(fold.out as usize * BLOCK);
-        let (total, rest) = rest.split_at_mut(BLOCK);
+    fn open_fold(&mut self, fold: &Fold) -> (&mut [f64], &mut [f64], Around<'_>, &mut Spare) {
+        let (below, rest) = self.values.split_at_mut(fold.out as usize);
+        let (total, rest) = rest.split_at_mut(1);
         let around = Around { below, above: &[], out: fold.out };
-        (&mut total[..self.width], &mut rest[..self.width], around)
+        (&mut total[0].0[..self.width], &mut rest[0].0[..self.width], around, self.spare)
     }
 
     fn first_row(&mut self, lags: &[Lag]) {
@@ -191,7 +203,7 @@ impl<'a> Sweep<'a> {
     fn give(&mut self, source: Source, row: usize, g: &[f64], gradient: &mut [f64]) {
         let width = self.width;
         match source {
-            Source::Slot(slot) => add_all(g, &mut self.adjoints[slot as usize * BLOCK..][..width]),
+            Source::Slot(slot) => add_all(g, &mut self.adjoints[slot as usize].0[..width]),
             other => {
                 if let Some(input) = input(self.operations, other, row) {
                     add_all(g, &mut gradient[input * BLOCK..][..width]);
@@ -202,17 +214,18 @@ impl<'a> Sweep<'a> {
 
     fn step_backward(&mut self, step: Step, row: usize, gradient: &mut [f64]) {
         let (operations, inputs, width) = (self.operations, self.inputs, self.width);
-        let (below, rest) = self.adjoints.split_at_mut(step.out as usize * BLOCK);
-        let g = &rest[..width];
-        let values: &[f64] = self.values;
-        let y = &values[step.out as usize * BLOCK..][..width];
+        let (below, rest) = self.adjoints.split_at_mut(step.out as usize);
+        let g = &rest[0].0[..width];
+        let values: &[Row] = self.values;
+        let spare = &mut *self.spare;
+        let y = &values[step.out as usize].0[..width];
         let read = |source| match source {
-            Source::Slot(slot) => Operand::Block(&values[slot as usize * BLOCK..][..width]),
+            Source::Slot(slot) => Operand::Block(&values[slot as usize].0[..width]),
             other => leaf(operations, inputs, other, row, width),
         };
         // Arguments have smaller slots than results.
-        let mut give = |source, add: &dyn Fn(&mut [f64])| match source {
-            Source::Slot(slot) => add(&mut below[slot as usize * BLOCK..][..width]),
+        let mut give = |source, add: &mut dyn FnMut(&mut [f64])| match source {
+            Source::Slot(slot) => add(&mut below[slot as usize].0[..width]),
             other => {
                 if let Some(input) = input(operations, other, row) {
                     add(&mut gradient[input * BLOCK..][..width]);
@@ -222,16 +235,16 @@ impl<'a> Sweep<'a> {
         match step.action {
             Action::Unary(function, x) => {
                 if let Operand::Block(xs) = read(x) {
-                    give(x, &|gx| unary_slope(function, g, xs, y, gx));
+                    give(x, &mut |gx| unary_slope(function, g, xs, y, gx));
                 }
             }
             Action::Binary(function, a, b) => {
-                give(a, &|ga| left_slope(function, g, read(a), read(b), y, ga));
-                give(b, &|gb| right_slope(function, g, read(a), read(b), y, gb));
+                give(a, &mut |ga| left_slope(function, g, (read(a), read(b)), y, spare, ga));
+                give(b, &mut |gb| right_slope(function, g, (read(a), read(b)), y, spare, gb));
             }
             Action::Select(condition, yes, no) => {
-                give(yes, &|to| branch_slope(true, g, read(condition), to));
-                give(no, &|to| branch_slope(false, g, read(condition), to));
+                give(yes, &mut |to| branch_slope(true, g, read(condition), to));
+                give(no, &mut |to| branch_slope(false, g, read(condition), to));
             }
         }
     }
@@ -283,13 +296,13 @@ impl<'a> Sweep<'a> {
 
     /// The values of all lags, one after the other.
     fn lagged(&self, lags: &[Lag]) -> Vec<f64> {
-        let slot = |lag: &Lag| &self.values[lag.out as usize * BLOCK..][..self.width];
+        let slot = |lag: &Lag| &self.values[lag.out as usize].0[..self.width];
         lags.iter().flat_map(slot).copied().collect()
     }
 
     fn set_lagged(&mut self, lags: &[Lag], values: &[f64]) {
         for (lag, values) in lags.iter().zip(values.chunks_exact(self.width)) {
-            self.values[lag.out as usize * BLOCK..][..self.width].copy_from_slice(values);
+            self.values[lag.out as usize].0[..self.width].copy_from_slice(values);
         }
     }
 
@@ -298,10 +311,10 @@ impl<'a> Sweep<'a> {
     fn row_backward(&mut self, pass: &Pass, row: usize, pending: &mut [Vec<f64>], gradient: &mut [f64]) {
         for &step in &pass.steps {
             self.step(step, row);
-            self.adjoints[step.out as usize * BLOCK..][..self.width].fill(0.0);
+            self.adjoints[step.out as usize].0[..self.width].fill(0.0);
         }
         for lag in &pass.lags {
-            self.adjoints[lag.out as usize * BLOCK..][..self.width].fill(0.0);
+            self.adjoints[lag.out as usize].0[..self.width].fill(0.0);
         }
         for (lag, owed) in pass.lags.iter().zip(pending.iter()) {
             self.give(lag.of, row, owed, gradient);
@@ -313,7 +326,7 @@ impl<'a> Sweep<'a> {
             self.step_backward(step, row, gradient);
         }
         for (lag, owed) in pass.lags.iter().zip(pending) {
-            owed.copy_from_slice(&self.adjoints[lag.out as usize * BLOCK..][..self.width]);
+            owed.copy_from_slice(&self.adjoints[lag.out as usize].0[..self.width]);
             if row == 0 {
                 let owed = owed.clone();
                 self.give(lag.first, 0, &owed, gradient);
@@ -323,8 +336,8 @@ impl<'a> Sweep<'a> {
 
     fn fold_backward(&mut self, fold: &Fold, row: usize, gradient: &mut [f64]) {
         let (operations, inputs, width) = (self.operations, self.inputs, self.width);
-        let values: &[f64] = self.values;
-        let slot = |slot: Slot| &values[slot as usize * BLOCK..][..width];
+        let values: &[Row] = self.values;
+        let slot = |slot: Slot| &values[slot as usize].0[..width];
         let results = (slot(fold.out), slot(fold.extra));
         let body = match fold.body {
             Source::Slot(body) => Operand::Block(slot(body)),
@@ -333,13 +346,13 @@ impl<'a> Sweep<'a> {
         match fold.body {
             Source::Slot(slot) => {
                 // A column comes before its sum in the list, and so do their slots.
-                let (below, rest) = self.adjoints.split_at_mut(fold.out as usize * BLOCK);
-                let to = &mut below[slot as usize * BLOCK..][..width];
-                row_slope(fold.reduction, row, &rest[..width], body, results, to);
+                let (below, rest) = self.adjoints.split_at_mut(fold.out as usize);
+                let to = &mut below[slot as usize].0[..width];
+                row_slope(fold.reduction, row, &rest[0].0[..width], body, results, to);
             }
             other => {
                 if let Some(input) = input(operations, other, row) {
-                    let g = &self.adjoints[fold.out as usize * BLOCK..][..width];
+                    let g = &self.adjoints[fold.out as usize].0[..width];
                     let to = &mut gradient[input * BLOCK..][..width];
                     row_slope(fold.reduction, row, g, body, results, to);
                 }
@@ -349,6 +362,7 @@ impl<'a> Sweep<'a> {
 }
 
 /// The numbers of a source that is no slot.
+#[inline]
 fn leaf<'a>(operations: &'a Operations, inputs: &'a [f64], source: Source, row: usize, width: usize) -> Operand<'a> {
     match source {
         Source::Constant(value) => Operand::Scalar(value),
@@ -361,6 +375,7 @@ fn leaf<'a>(operations: &'a Operations, inputs: &'a [f64], source: Source, row: 
 }
 
 /// Which input a source is in row `row`, if it is one.
+#[inline]
 fn input(operations: &Operations, source: Source, row: usize) -> Option<usize> {
     match source {
         Source::Input(input) => Some(input as usize),
