@@ -162,7 +162,7 @@ fn check(variables: &[Variable], model: &dyn Model) -> Result<(), ProblemErrors>
             return refuse(format!("variable {} needs a name of its own, and is called `{}`", k + 1, variable.name));
         }
         match variable.nature {
-            Nature::Range { low, high } if !(low < high) => {
+            Nature::Range { low, high } if low.is_nan() || high.is_nan() || low >= high => {
                 return refuse(format!("the range of `{}` is empty: [{low:?}, {high:?}]", variable.name));
             }
             Nature::Dependent { .. } => {

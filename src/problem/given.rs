@@ -135,10 +135,9 @@ impl GivenGroup {
     /// `dx / d parameter k` at a fixed score: exact where the parameter moves or stretches the distribution, else by
     /// differences of fourth order, right to about twelve digits.
     fn slope(&self, parameters: &[f64], k: usize, u: f64, x: f64) -> f64 {
-        if self.between.is_none() {
-            if let Some(slope) = self.exact_slope(parameters, k, u, x - self.shift.unwrap_or(0.0)) {
-                return slope;
-            }
+        let exact = self.exact_slope(parameters, k, u, x - self.shift.unwrap_or(0.0));
+        if let Some(slope) = exact.filter(|_| self.between.is_none()) {
+            return slope;
         }
         self.difference(parameters, k, u)
     }

@@ -104,14 +104,14 @@ pub struct Problem {
 
 /// What answers for the target.
 enum Target {
-    Formulas(FormulaTarget),
+    Formulas(Box<FormulaTarget>),
     Model(Box<dyn Model>),
 }
 
 /// What answers for the estimates.
 enum Estimates {
     None,
-    Formulas(Program),
+    Formulas(Box<Program>),
     Model(Box<dyn Model>),
 }
 

@@ -97,14 +97,12 @@ fn read_one(reader: &mut Reader<'_>, entry: &Entry<'_>, table: &Table<'_>) -> Op
     let each = table.entry("each").and_then(|entry| read_each(reader, entry));
     let near = placed(reader, table, "near", "near = 5.0");
     let spread = placed(reader, table, "spread", "spread = 2.0");
-    if let Some((width, span)) = &spread {
-        if !(*width > 0.0 && width.is_finite()) {
-            reader.fault(
-                Fault::new(span.clone(), "`spread` must be above zero and finite")
-                    .help("it says how wide to look first, in the variable's own unit"),
-            );
-            return None;
-        }
+    if let Some((_, span)) = spread.as_ref().filter(|(width, _)| *width <= 0.0 || width.is_infinite()) {
+        reader.fault(
+            Fault::new(span.clone(), "`spread` must be above zero and finite")
+                .help("it says how wide to look first, in the variable's own unit"),
+        );
+        return None;
     }
     let nature = match (table.entry("distribution"), table.entry("range")) {
         (Some(_), Some(range)) => {
