@@ -3,6 +3,7 @@
 
 mod built;
 mod documentation;
+mod mutations;
 mod right;
 mod whole;
 mod wrong;

@@ -13,7 +13,7 @@ use crate::right::EFFECTS;
 use crate::right::TRACER;
 use crate::right::read;
 
-const SUPPORTS: &str = r#"
+pub(crate) const SUPPORTS: &str = r#"
 title = "Every support, correlated"
 [variables]
 a = { distribution = "gamma", shape = 2.0, rate = 1.5 }
@@ -33,7 +33,7 @@ require = ["a + b > 0.1"]
 "#;
 
 /// Dependent parameters of every way of differentiating: moved, stretched, by shape, truncated, in a chain.
-const CHAIN: &str = r#"
+pub(crate) const CHAIN: &str = r#"
 title = "Parameters that depend on others"
 [constants]
 crest = 4.0
@@ -54,7 +54,7 @@ log_factor = "-(t - m)^2/9 - w^2 + sum(g)*s/5 - u^2/8 - log(l)^2 + sin(h) - log(
 spread = "s"
 "#;
 
-const SCORES: &str = r#"
+pub(crate) const SCORES: &str = r#"
 title = "Correlated scores"
 [variables]
 load = { distribution = "gumbel", mean = 30.0, cv = 0.2 }
