@@ -30,7 +30,7 @@ impl fmt::Display for ParameterSet {
 }
 
 impl ParameterSet {
-    fn names(&self) -> impl Iterator<Item = &'static str> {
+    pub(super) fn names(&self) -> impl Iterator<Item = &'static str> {
         self.required.iter().copied().chain(self.optional.iter().map(|&(name, _)| name))
     }
 
