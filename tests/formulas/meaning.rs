@@ -77,7 +77,10 @@ fn columns_become_numbers() {
     }
     let effects: f64 = FLOW.iter().zip(MEMBERS).map(|(f, member)| f * AT[2 + member]).sum();
     check("sum(effect[station]*flow)", effects);
-    check("sum(effect[station] * x / y - level)", 2.0 / 3.0 * (0.5 - 1.0 + 0.5 + 0.25 - 1.0) - LEVEL.iter().sum::<f64>());
+    check(
+        "sum(effect[station] * x / y - level)",
+        2.0 / 3.0 * (0.5 - 1.0 + 0.5 + 0.25 - 1.0) - LEVEL.iter().sum::<f64>(),
+    );
 }
 
 #[test]
@@ -85,13 +88,11 @@ fn gradients_of_columns_reach_every_input() {
     let first_after: f64 = FLOW[..4].iter().zip(&LEVEL[1..]).map(|(f, l)| f * l).sum();
     check_gradient("sum(lag(flow*y, x)*level)", AT, [LEVEL[0], first_after, 0.0, 0.0, 0.0]);
     // Of a lag of a lag: rows 2, 3 and 4 see the first three rows.
-    check_gradient("sum(lag(lag(level*x, y), x)*flow)", AT, [
-        FLOW[0] + (FLOW[2] * LEVEL[0] + FLOW[3] * LEVEL[1] + FLOW[4] * LEVEL[2]),
-        FLOW[1],
-        0.0,
-        0.0,
-        0.0,
-    ]);
+    check_gradient(
+        "sum(lag(lag(level*x, y), x)*flow)",
+        AT,
+        [FLOW[0] + (FLOW[2] * LEVEL[0] + FLOW[3] * LEVEL[1] + FLOW[4] * LEVEL[2]), FLOW[1], 0.0, 0.0, 0.0],
+    );
     check_gradient("sum(effect[station]*flow)", AT, [0.0, 0.0, 4.5, 1.0, 2.0]);
     check_gradient("max(effect) + 10*min(effect) + 100*effect[3]", AT, [0.0, 0.0, 1.0, 10.0, 100.0]);
     check_gradient("sum(effect^2)*x", AT, [1.3125, 0.0, 2.0, -4.0, 1.0]);
@@ -144,7 +145,9 @@ fn the_branch_not_taken_leaves_no_trace() {
 
 #[test]
 fn what_is_undefined_is_told_by_nan_and_log_of_zero_is_not() {
-    for text in ["log(-x)", "sqrt(-x)", "0/0*x", "asin(x)", "log_density_normal(x, y, -1)", "log_density_gamma(x, -2, 1)"] {
+    for text in
+        ["log(-x)", "sqrt(-x)", "0/0*x", "asin(x)", "log_density_normal(x, y, -1)", "log_density_gamma(x, -2, 1)"]
+    {
         assert!(value(text, AT).is_nan(), "{text}");
     }
     for text in [
@@ -209,7 +212,11 @@ fn programs_know_what_they_use() {
     scope.formula("used", "x*crest");
     scope.formula("idle", "spare + y");
     let program = scope
-        .compile(&[("a", "used", Wanted::Number), ("b", "effect[station] + flow", Wanted::NumberOrColumn), ("c", "x > 1", Wanted::Condition)])
+        .compile(&[
+            ("a", "used", Wanted::Number),
+            ("b", "effect[station] + flow", Wanted::NumberOrColumn),
+            ("c", "x > 1", Wanted::Condition),
+        ])
         .unwrap();
     assert_eq!(program.unused_formulas(), ["idle"]);
     assert_eq!(program.unused_constants(), ["spare"]);
