@@ -112,8 +112,10 @@ impl Problem {
             let message = format!("`{}` is correlated already; give one matrix for all", self.variables[place].name);
             return Err(ProblemErrors::of_code(message));
         }
-        let found = correlation::of_matrix(&self.variables, members, kind, matrix)
-            .map_err(|error| ProblemErrors::of_code(error.to_string()))?;
+        let found = correlation::of_matrix(&self.variables, members, kind, matrix).map_err(|error| {
+            let (message, help) = error.explained();
+            ProblemErrors::of_code(format!("{message}; {help}"))
+        })?;
         self.correlations.push(found);
         self.placed()
     }

@@ -4,7 +4,7 @@ use super::expand::Expanded;
 use super::faults::Fault;
 use super::given::GivenGroup;
 use super::given::Parameter;
-use super::given::settled;
+use super::given::placed;
 use super::names::all_of;
 use super::table::Reader;
 use super::variable::Nature;
@@ -12,7 +12,9 @@ use super::variable::Variable;
 use super::variables_table::NatureSpec;
 use super::variables_table::ParameterEntry;
 use super::variables_table::ParameterSpec;
+use crate::distribution::Distribution;
 use crate::distribution::DistributionError;
+use crate::distribution::Form;
 use crate::distribution::ParameterSet;
 use crate::expression::Program;
 use crate::numeric::Points;
@@ -68,24 +70,29 @@ fn nature_of(
     };
     if let Some(program) = program.filter(|program| (0..dim).any(|input| program.uses_input(input))) {
         let mut output = 0;
-        let values: Vec<(String, Parameter)> = parameters
+        let keys: Vec<&str> = parameters.iter().map(|entry| entry.key.as_str()).collect();
+        let form = match Form::new(&family.value, &keys) {
+            Ok(form) => form,
+            Err(error) => {
+                refuse(reader, variable, &error, None);
+                return None;
+            }
+        };
+        let values = parameters
             .iter()
-            .map(|entry| {
-                let value = match &entry.value {
-                    ParameterSpec::Number(number) => Parameter::Fixed(*number),
-                    ParameterSpec::Formula(_) => {
-                        output += 1;
-                        Parameter::Output(output - 1)
-                    }
-                };
-                (entry.key.clone(), value)
+            .map(|entry| match &entry.value {
+                ParameterSpec::Number(number) => Parameter::Fixed(*number),
+                ParameterSpec::Formula(_) => {
+                    output += 1;
+                    Parameter::Output(output - 1)
+                }
             })
             .collect();
         let written = parameters.iter().map(|entry| (entry.key.clone(), as_written(entry))).collect();
         let nature = Nature::Dependent { family: family.value.clone(), parameters: written };
         let group = GivenGroup {
             members: variable.places.clone(),
-            family: family.value.clone(),
+            form,
             parameters: values,
             program: program.clone(),
             between,
@@ -107,7 +114,8 @@ fn nature_of(
             (entry.key.as_str(), value)
         })
         .collect();
-    match settled(&family.value, &values, shift, between) {
+    let settled = Distribution::new(&family.value, &values).and_then(|plain| placed(plain, shift, between));
+    match settled {
         Ok(distribution) => Some((Nature::Random(distribution), None)),
         Err(error) => {
             refuse(reader, variable, &error, None);

@@ -280,9 +280,11 @@ fn correlations_of_every_kind_become_scores() {
     let linear = problem("[[correlation]]\namong = [\"a\", \"b\"]\nlinear = 0.4");
     let group = &linear.correlations()[0];
     assert_eq!(group.members, [0, 1]);
-    close(group.score[1], 0.420_191_506_699_709_45, 1e-8);
+    close(group.score[1], 0.420_191_506_699_709_45, 1e-12);
+    close(group.linear(linear.variables())[1], 0.4, 1e-12);
     let rank = problem("[[correlation]]\namong = [\"c\", \"d\"]\nrank = 0.5");
     close(rank.correlations()[0].score[1], 0.517_638_090_205_041_5, 1e-14);
+    close(rank.correlations()[0].rank()[2], 0.5, 1e-14);
     let several = problem(
         "[[correlation]]\namong = [\"c\", \"d\"]\nlinear = 0.4\n[[correlation]]\namong = [\"d\", \"a\"]\nscore = -0.2",
     );
