@@ -56,6 +56,16 @@ pub(crate) fn settle(
     Some(Natures { variables, groups })
 }
 
+/// Checks the distributions whose parameters are numbers, where there is no program for the others.
+pub(crate) fn check_numbers(reader: &mut Reader<'_>, expanded: &[Expanded<'_>]) {
+    for variable in expanded {
+        let NatureSpec::Random { parameters, .. } = &variable.spec.nature else { continue };
+        if parameters.iter().all(|entry| matches!(entry.value, ParameterSpec::Number(_))) {
+            nature_of(reader, variable, None, 0);
+        }
+    }
+}
+
 fn nature_of(
     reader: &mut Reader<'_>,
     variable: &Expanded<'_>,
@@ -214,7 +224,7 @@ fn in_order(
                 circle.iter().filter_map(|&k| spec(&waiting[k])).map(|v| v.spec.name.as_str()).collect();
             let first = spec(&waiting[circle[0]]).map_or(0..0, |variable| variable.spec.name_span.clone());
             let message = match names.as_slice() {
-                [one] => format!("`{one}` has a parameter that depends on itself"),
+                [one] => format!("a parameter of `{one}` depends on `{one}` itself"),
                 [head, rest @ ..] => {
                     let steps: Vec<String> = rest.iter().map(|name| format!("on `{name}`, which depends")).collect();
                     format!("`{head}` depends {} on `{head}`", steps.join(" "))

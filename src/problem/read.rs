@@ -106,16 +106,23 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path) -> Option<Problem> {
     let statement = statement::read(reader, &mut names);
     let statement = statement?;
     check_aim(reader, &statement);
+    let before = reader.faults.len();
     let tables = load(reader, &mut names, &statement, folder)?;
-    if !reader.faults.is_empty() {
+    if !statement.names_known || reader.faults.len() > before {
         return None; // Names that are wrong or missing would be told again, less clearly, by the formulas.
     }
     let expanded = expand::expand(reader, &statement, &tables)?;
-    let programs = programs::compile(reader, &names, &statement, &expanded, &tables);
-    let Programs { target, estimates, estimate_labels, parameters } = programs?;
+    let Some(programs) = programs::compile(reader, &names, &statement, &expanded, &tables) else {
+        natures::check_numbers(reader, &expanded);
+        return None;
+    };
+    let Programs { target, estimates, estimate_labels, parameters } = programs;
     let settled = natures::settle(reader, &expanded, &parameters)?;
     let mut variables = settled.variables;
     let correlations = correlation::settle(reader, &statement.correlations, &expanded, &variables)?;
+    if !reader.faults.is_empty() {
+        return None;
+    }
     let aim = statement.target.aim;
     let choice = statement.tuning.coordinates;
     let placed = start::place(&mut variables, &settled.groups, &correlations, aim, choice);

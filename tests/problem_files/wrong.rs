@@ -77,6 +77,28 @@ fn files_that_are_no_problem() {
 }
 
 #[test]
+fn several_at_once() {
+    snapshot(
+        "several_at_once",
+        &gallery(&[
+            ("slips in every table", {
+                "title = 3\n\n[variables]\ndepth = { distribution = \"normal\", mean = 2.0, sd = 0.5, unti = \"m\" }\n\
+                 flow = { range = [0.0, 1.0], near = 2.0, spread = 1.0 }\n\n[data]\nfile = \"typo.csv\"\n\n[formulas]\n\
+                 head = \"depth*level\"\n\n[target]\naim = \"density\"\nlog_factor = \"-sum(head)\"\nfailed = \"in\"\n\n\
+                 [tuning]\nrounds = 0\n"
+                    .into()
+            }),
+            ("several formulas beside a slip in the tuning", {
+                rest(
+                    "[formulas]\nhead = \"dept + 1\"\nwidth = \"sqroot(depth)\"\n\n[target]\naim = \"density\"\n\
+                     log_factor = \"-head^2 - width\"\n\n[estimates]\nanswer = \"head +\"\n\n[tuning]\nsede = 3",
+                )
+            }),
+        ]),
+    );
+}
+
+#[test]
 fn constants_and_names() {
     snapshot(
         "constants_and_names",
