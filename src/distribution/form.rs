@@ -3,7 +3,8 @@
 
 use super::Distribution;
 use super::DistributionError;
-use super::catalogue::{self, Entry, ParameterSet};
+use super::catalogue::{self, Entry};
+use super::given::ParameterSet;
 use crate::numeric::ln;
 use crate::numeric::special::{lower_tail, upper_tail};
 

@@ -15,6 +15,7 @@ mod exponential;
 mod family;
 mod form;
 mod gamma;
+mod given;
 mod law;
 mod normal;
 mod student_t;
@@ -22,9 +23,9 @@ mod window;
 
 pub mod correlation;
 
-pub use catalogue::ParameterSet;
 pub use error::{DistributionError, nearest_name};
 pub use form::{Form, central_slope, from_score_parameter_slopes};
+pub use given::ParameterSet;
 
 use crate::numeric::exp;
 use crate::numeric::normal as standard;

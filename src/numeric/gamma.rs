@@ -115,8 +115,9 @@ pub fn log_gamma_front(a: f64, x: f64) -> f64 {
     gamma_deviance(a, x) + 0.5 * ln(a) - HALF_LN_TWO_PI - stirling_rest(a)
 }
 
-/// `a (ln(x/a) - x/a + 1)`: zero at `x = a`, negative elsewhere.
-pub(super) fn gamma_deviance(a: f64, x: f64) -> f64 {
+/// `a (ln(x/a) - x/a + 1)`: zero at `x = a`, negative elsewhere; nothing cancels.
+#[must_use]
+pub fn gamma_deviance(a: f64, x: f64) -> f64 {
     let excess = (x - a) / a;
     if excess < -0.4 { a * (ln(x / a) - excess) } else { a * log1p_minus(excess) }
 }

@@ -7,7 +7,8 @@ and, for beta, Student's t and the binomial, the hypergeometric series of positi
 never one minus the other.
 
 Columns: case, x, log density (or log mass), log P(X <= x), log P(X > x).
-The points of a case have these probabilities below: 1e-300, 1e-100, 1e-20, 1e-6, 0.02, 0.3 and the same above.
+The points of a continuous case have these probabilities below: 1e-300, 1e-100, 1e-20, 1e-6, 0.02, 0.3 and the same
+above; for those too near an end for a double to be there 0.1, 0.45, 0.003, 0.2 stand in.
 """
 
 import csv
@@ -64,7 +65,7 @@ def normal_tails(z):
 
 def exponential_tails(e):
     """Of the unit exponential variable at e."""
-    return mp.log(-mp.expm1(-e)), -e
+    return mp.log(-mp.expm1(-e)) if e < 1 else mp.log1p(-mp.exp(-e)), -e
 
 
 def swap(tails):
@@ -86,22 +87,27 @@ def student(df, t):
 
 
 def student_million(t):
-    """Many degrees of freedom: the upper tail by the integral of the density (Gauss-Legendre in panels)."""
-    df = mp.mpf(10) ** 6
-    constant = mp.loggamma((df + 1) / 2) - mp.loggamma(df / 2) - mp.log(df * mp.pi) / 2
-    log_density = lambda s: constant - (df + 1) / 2 * mp.log1p(s * s / df)
-    far = abs(t)
-    panels = [far + step for step in (0, half / 2, half, 1, 2, 4, 8, 16, 32)]
-    above = mp.log(mp.quad(lambda s: mp.exp(log_density(s)), panels))
-    tails = mp.log1p(-mp.exp(above)), above
-    return (log_density(t),) + (swap(tails) if t < 0 else tails)
+    """Many degrees of freedom: the same series by `hyp2f1`, which sums slow ones otherwise; 100 digits."""
+    with mp.workdps(100):
+        df = mp.mpf(10) ** 6
+        a, x, y = df / 2, df / (df + t * t), t * t / (df + t * t)
+        front = x**a * mp.sqrt(y) / mp.beta(a, half)
+        if abs(t) > 1:
+            above = front / a * mp.hyp2f1(a + half, 1, a + 1, x) / 2
+        else:
+            above = half - front * mp.hyp2f1(a + half, 1, 3 * half, y)
+        tails = mp.log1p(-above), mp.log(above)
+        density = mp.loggamma((df + 1) / 2) - mp.loggamma(df / 2) - mp.log(df * mp.pi) / 2
+        return (density - (df + 1) / 2 * mp.log1p(t * t / df),) + (swap(tails) if t < 0 else tails)
 
 
 def binomial(n, p, k):
     mass = mp.log(mp.binomial(n, k)) + k * mp.log(p) + (n - k) * mp.log1p(-p)
     below = sum(mp.binomial(n, j) * p**j * (1 - p) ** (n - j) for j in range(int(k) + 1))
     above = sum(mp.binomial(n, j) * p**j * (1 - p) ** (n - j) for j in range(int(k) + 1, int(n) + 1))
-    return mass, mp.log(below), mp.log(above) if above else -mp.inf
+    if above == 0:
+        return mass, mp.mpf(0), -mp.inf
+    return (mass, mp.log(below), mp.log1p(-below)) if below < half else (mass, mp.log1p(-above), mp.log(above))
 
 
 def poisson(mean, k):
@@ -114,7 +120,7 @@ def poisson(mean, k):
         term *= mean / j
         above += term
         if j > mean and term < above * mp.mpf(10) ** (-55):
-            return mass, mp.log(below), mp.log(above)
+            return (mass, mp.log(below), mp.log1p(-below)) if below < half else (mass, mp.log1p(-above), mp.log(above))
 
 
 def gev(shape, t):
@@ -129,12 +135,15 @@ def cauchy(t):
 
 
 def half_cauchy(t):
-    tails = mp.log(2 * mp.atan(t) / mp.pi), mp.log(2 * mp.atan(1 / t) / mp.pi)
+    above = 2 * mp.atan(1 / t) / mp.pi
+    tails = mp.log(2 * mp.atan(t) / mp.pi) if t < 1 else mp.log1p(-above), mp.log(above) if t > 1 else mp.log1p(-2 * mp.atan(t) / mp.pi)
     return (mp.log(2 / mp.pi) - mp.log1p(t * t),) + tails
 
 
 def half_normal(x):
-    return mp.log(2) + log_normal_density(x), mp.log(mp.erf(x / mp.sqrt(2))), mp.log(mp.erfc(x / mp.sqrt(2)))
+    inside, outside = mp.erf(x / mp.sqrt(2)), mp.erfc(x / mp.sqrt(2))
+    tails = (mp.log(inside), mp.log1p(-inside)) if x < 1 else (mp.log1p(-outside), mp.log(outside))
+    return (mp.log(2) + log_normal_density(x),) + tails
 
 
 def triangular(low, mode, high, x):
@@ -257,19 +266,22 @@ def point(values, low, high, way, target, upper):
     return float(at((left + right) / 2))
 
 
+# The last four stand in for those too near an end for a double.
+TARGETS = [f(10) ** -300, f(10) ** -100, f(10) ** -20, f(10) ** -6, f("0.02"), f("0.3"), f("0.1"), f("0.45"), f("0.003"), f("0.2")]
+
 rows = []
 for current, (values, low, high, way) in CASES.items():
     for upper in (False, True):
-        for target in (f(10) ** -300, f(10) ** -100, f(10) ** -20, f(10) ** -6, f("0.02"), f("0.3")):
+        points = []
+        for target in TARGETS:
             if way == "points":
-                x = (1 if upper else -1) * float(mp.nint(-mp.sqrt(2) * mp.erfinv(2 * target - 1) * 16) / 16 if target > 1e-50 else mp.sqrt(-2 * mp.log(target)))
+                z = -mp.sqrt(2) * mp.erfinv(2 * target - 1) if target > f(10) ** -50 else mp.sqrt(-2 * mp.log(target))
+                x = (1 if upper else -1) * float(z)
             else:
                 x = point(values, low, high, way, target, upper)
-            if x in (low, high) or abs(x) < 1e-307:
-                continue
-            answer = values(f(x))
-            if upper and answer[2] < -680 or mp.isfinite(answer[1]):
-                rows.append([current, repr(x)] + [repr(float(v)) for v in answer])
+            if x not in (low, high, 2.0) and abs(x) > 1e-307 and x not in points and len(points) < 6:
+                points.append(x)
+        rows += [[current, repr(x)] + [repr(float(v)) for v in values(f(x))] for x in points]
     print(current, flush=True)
 for current, (values, points) in DISCRETE.items():
     for k in points:
