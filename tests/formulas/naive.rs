@@ -32,6 +32,10 @@ pub(crate) struct Bounded {
 #[derive(Debug, Clone, Copy)]
 pub(crate) struct Unsure;
 
+/// What was decided on the way: signs, whole parts, branches, extremes. Between two points that decide alike the
+/// value is smooth.
+pub(crate) type Decisions = Vec<i64>;
+
 const UNIT: f64 = f64::EPSILON / 2.0;
 
 /// The function, its derivative, and its own error in roundings (those of the library and of the system together).
@@ -94,7 +98,7 @@ impl Tree {
 
     /// The value at `inputs` in row `row`, with a running error bound (Wilkinson's manner: errors of the arguments
     /// times slopes, plus the operation's own).
-    pub(crate) fn value(&self, inputs: &[f64], row: usize) -> Result<Bounded, Unsure> {
+    pub(crate) fn value(&self, inputs: &[f64], row: usize, made: &mut Decisions) -> Result<Bounded, Unsure> {
         let exact = |value: f64| Bounded { value, error: 0.0 };
         let bounded = match self {
             Tree::Number(value) => exact(*value),
@@ -103,7 +107,7 @@ impl Tree {
             Tree::Level => exact(LEVEL[row]),
             Tree::EffectOfStation => exact(inputs[2 + MEMBERS[row]]),
             Tree::One(name, a) => {
-                let a = a.value(inputs, row)?;
+                let a = a.value(inputs, row, made)?;
                 let (value, slope, own) = one(name, a.value);
                 let edge = match *name {
                     "floor" => (a.value - a.value.round()).abs(),
@@ -112,11 +116,16 @@ impl Tree {
                     _ => f64::INFINITY,
                 };
                 far(edge, a.error)?;
+                match *name {
+                    "floor" => made.push(value as i64),
+                    "abs" => made.push(i64::from(a.value > 0.0)),
+                    _ => {}
+                }
                 Bounded { value, error: a.error * slope.abs() + own * value.abs() }
             }
-            Tree::Two(name, a, b) => two(name, a.value(inputs, row)?, b.value(inputs, row)?)?,
+            Tree::Two(name, a, b) => two(name, a.value(inputs, row, made)?, b.value(inputs, row, made)?, made)?,
             Tree::If(compare, [a, b, c, d]) => {
-                let (a, b) = (a.value(inputs, row)?, b.value(inputs, row)?);
+                let (a, b) = (a.value(inputs, row, made)?, b.value(inputs, row, made)?);
                 far((a.value - b.value).abs(), a.error + b.error)?;
                 let holds = match *compare {
                     "<" => a.value < b.value,
@@ -124,15 +133,16 @@ impl Tree {
                     ">" => a.value > b.value,
                     _ => a.value >= b.value,
                 };
+                made.push(i64::from(holds));
                 // The other branch is not even looked at.
-                if holds { c.value(inputs, row)? } else { d.value(inputs, row)? }
+                if holds { c.value(inputs, row, made)? } else { d.value(inputs, row, made)? }
             }
-            Tree::All(name, a) => all(name, inputs, a)?,
+            Tree::All(name, a) => all(name, inputs, a, made)?,
             Tree::Lag(a, first) => {
                 if row == 0 {
-                    first.value(inputs, 0)?
+                    first.value(inputs, 0, made)?
                 } else {
-                    a.value(inputs, row - 1)?
+                    a.value(inputs, row - 1, made)?
                 }
             }
         };
@@ -145,7 +155,7 @@ fn far(distance: f64, error: f64) -> Result<(), Unsure> {
     if distance > 1e-3 + 4.0 * error * UNIT { Ok(()) } else { Err(Unsure) }
 }
 
-fn two(name: &str, a: Bounded, b: Bounded) -> Result<Bounded, Unsure> {
+fn two(name: &str, a: Bounded, b: Bounded, made: &mut Decisions) -> Result<Bounded, Unsure> {
     let (x, y) = (a.value, b.value);
     let bound = |value: f64, by_x: f64, by_y: f64, own: f64| Bounded {
         value,
@@ -160,11 +170,13 @@ fn two(name: &str, a: Bounded, b: Bounded) -> Result<Bounded, Unsure> {
             bound(x / y, 1.0 / y, x / (y * y), 1.0)
         }
         "^" => {
-            far(x.abs(), a.error)?;
+            // Below zero only whole exponents are defined, and no slope in the exponent is.
+            far(x, a.error)?;
             bound(x.powf(y), y * x.powf(y - 1.0), x.powf(y) * x.abs().ln(), 4.0)
         }
         "min" | "max" => {
             far((x - y).abs(), a.error + b.error)?;
+            made.push(i64::from(x < y));
             bound(if name == "min" { x.min(y) } else { x.max(y) }, 1.0, 1.0, 0.0)
         }
         "hypot" => bound(x.hypot(y), 1.0, 1.0, 4.0),
@@ -177,8 +189,8 @@ fn two(name: &str, a: Bounded, b: Bounded) -> Result<Bounded, Unsure> {
     })
 }
 
-fn all(name: &str, inputs: &[f64], of: &Tree) -> Result<Bounded, Unsure> {
-    let rows: Vec<Bounded> = (0..FLOW.len()).map(|row| of.value(inputs, row)).collect::<Result<_, _>>()?;
+fn all(name: &str, inputs: &[f64], of: &Tree, made: &mut Decisions) -> Result<Bounded, Unsure> {
+    let rows: Vec<Bounded> = (0..FLOW.len()).map(|row| of.value(inputs, row, made)).collect::<Result<_, _>>()?;
     let n = rows.len() as f64;
     let errors: f64 = rows.iter().map(|row| row.error).sum();
     let sizes: f64 = rows.iter().map(|row| row.value.abs()).sum();
@@ -200,6 +212,7 @@ fn all(name: &str, inputs: &[f64], of: &Tree) -> Result<Bounded, Unsure> {
             if values().filter(|&value| value == extreme).count() > 1 {
                 return Err(Unsure);
             }
+            made.extend(values().position(|value| value == extreme).map(|row| row as i64));
             Bounded { value: extreme, error: errors }
         }
         "logsumexp" => {

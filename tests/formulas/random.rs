@@ -3,6 +3,7 @@
 use evenpoise::expression::{Wanted, names_used};
 use evenpoise::numeric::Points;
 use proptest::prelude::*;
+use proptest::test_runner::RngSeed;
 
 use crate::naive::{Tree, Unsure};
 use crate::world::{program, scope};
@@ -75,16 +76,21 @@ fn grown(choices: &[u16]) -> Tree {
 }
 
 /// Central differences of the naive value in input `i`, extrapolated (Richardson), with a bound of their error:
-/// rounding over the step, and what two steps disagree by.
+/// rounding over the step, and what two steps disagree by. Unsure where anything is decided differently nearby.
 fn difference(tree: &Tree, inputs: &[f64], i: usize) -> Result<(f64, f64), Unsure> {
-    let slope = |h: f64| {
+    let mut here = Vec::new();
+    tree.value(inputs, 0, &mut here)?;
+    let at = |x: f64| {
         let mut moved = inputs.to_vec();
-        moved[i] = inputs[i] + h;
-        let (up, high) = (moved[i], tree.value(&moved, 0)?);
-        moved[i] = inputs[i] - h;
-        let (down, low) = (moved[i], tree.value(&moved, 0)?);
-        let width = up - down;
-        Ok(((high.value - low.value) / width, (high.error + low.error) * f64::EPSILON / width))
+        moved[i] = x;
+        let mut there = Vec::new();
+        let value = tree.value(&moved, 0, &mut there)?;
+        if there == here { Ok(value) } else { Err(Unsure) }
+    };
+    let slope = |h: f64| {
+        let (up, down) = (inputs[i] + h, inputs[i] - h);
+        let (high, low) = (at(up)?, at(down)?);
+        Ok(((high.value - low.value) / (up - down), (high.error + low.error) * f64::EPSILON / (up - down)))
     };
     let ((wide, wide_error), (near, near_error)) = (slope(2e-4)?, slope(1e-4)?);
     let extrapolated = (4.0 * near - wide) / 3.0;
@@ -93,7 +99,7 @@ fn difference(tree: &Tree, inputs: &[f64], i: usize) -> Result<(f64, f64), Unsur
 
 fn run(tree: &Tree, inputs: &[f64]) -> Result<(), TestCaseError> {
     let text = tree.text();
-    let Ok(naive) = tree.value(inputs, 0) else { return Err(TestCaseError::reject("unsure")) };
+    let Ok(naive) = tree.value(inputs, 0, &mut Vec::new()) else { return Err(TestCaseError::reject("unsure")) };
     let program = program(&text, Wanted::Number);
     let points = Points::from_rows(5, inputs);
     let (value, gradient) = program.value_and_gradient(0, &points);
@@ -129,7 +135,8 @@ fn run(tree: &Tree, inputs: &[f64]) -> Result<(), TestCaseError> {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 1500, max_global_rejects: 30_000, failure_persistence: None, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig { cases: 3000, max_global_rejects: 100_000, failure_persistence: None,
+        rng_seed: RngSeed::Fixed(20_240_611), ..ProptestConfig::default() })]
 
     #[test]
     fn values_and_gradients_match_the_naive_evaluator(
@@ -217,7 +224,8 @@ fn read(text: &str) -> Result<(), TestCaseError> {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 3000, failure_persistence: None, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig { cases: 3000, failure_persistence: None,
+        rng_seed: RngSeed::Fixed(20_240_611), ..ProptestConfig::default() })]
 
     #[test]
     fn no_heap_of_pieces_breaks_the_parser(pieces in proptest::collection::vec(0..PIECES.len(), 0..25)) {

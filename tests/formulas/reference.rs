@@ -1,7 +1,9 @@
 //! Values of the functions against references.
 
-use evenpoise::expression::{Scope, Wanted};
+use evenpoise::expression::{Program, Scope, Wanted};
 use evenpoise::numeric::Points;
+
+use crate::world::{program, scope};
 
 /// The value of `text`, in which no name is used, and that with its numbers as variables: the first is folded when
 /// the formula is read, the second evaluated with the point.
@@ -103,5 +105,91 @@ fn functions_match_mpmath() {
     ] {
         // The argument's own rounding is magnified most at normal_cdf(-8): 64 times.
         check(text, want, if text.starts_with("normal_cdf(-8") { 100.0 } else { 20.0 });
+    }
+}
+
+/// Every log density with data in front and parameters that vary; `k` stands for counts.
+const OF_COLUMNS: [&str; 13] = [
+    "log_density_normal(level, x, y)",
+    "log_density_normal(level, x*flow, y*flow)",
+    "log_density_student_t(level, y, x, 1 + effect[station]^2)",
+    "log_density_lognormal(flow, x*level, y)",
+    "log_density_gamma(flow, x, y*flow)",
+    "log_density_beta(flow/4, x, y)",
+    "log_density_exponential(flow, x*y)",
+    "log_density_cauchy(level, effect[station], y)",
+    "log_mass_poisson(4*flow, exp(x*level))",
+    "log_mass_binomial(4*flow, 12, logistic(x + effect[station]))",
+    "log_mass_bernoulli(if(flow > 1, 1, 0), logistic(x*level))",
+    "log_mass_bernoulli_odds(if(flow > 1, 1, 0), x*level + y)",
+    "log_mass_negative_binomial(4*flow, exp(y*level), x)",
+];
+
+const HERE: [f64; 5] = [0.75, 1.25, 0.5, -1.0, 0.25];
+
+/// Sums leave out of the rows what is the same in all of them: that must change nothing but the last digits. The
+/// rows themselves are those checked above.
+#[test]
+fn sums_of_log_densities_are_sums_of_their_rows() {
+    for text in OF_COLUMNS {
+        let sum = format!("sum({text})");
+        let outputs = [("rows", text, Wanted::Column), ("sum", sum.as_str(), Wanted::Number)];
+        let program = scope().compile(&outputs).unwrap_or_else(|errors| panic!("{text}: {errors:?}"));
+        let values = program.values(&Points::from_rows(5, &HERE));
+        let rows = values[0].point(0);
+        let (want, size) = rows.iter().fold((0.0, 0.0), |(sum, size), row| (sum + row, size + f64::abs(*row)));
+        let got = values[1].get(0, 0);
+        // Ten roundings a row of parts as large as the row.
+        assert!((got - want).abs() <= 10.0 * f64::EPSILON * size.max(1.0), "{text}: {got}, wanted {want}");
+        assert!(want.is_finite() && size > 1.0, "{text}: {rows:?}");
+    }
+}
+
+/// Central differences of the program's own values in input `i`, extrapolated, and what two steps disagree by.
+fn difference(program: &Program, i: usize) -> (f64, f64) {
+    let slope = |h: f64| {
+        let at = |x: f64| {
+            let mut moved = HERE;
+            moved[i] = x;
+            program.values(&Points::from_rows(5, &moved))[0].get(0, 0)
+        };
+        (at(HERE[i] + h) - at(HERE[i] - h)) / (2.0 * h)
+    };
+    let (wide, near) = (slope(2e-3), slope(1e-3));
+    ((4.0 * near - wide) / 3.0, (near - wide).abs())
+}
+
+/// The gradients of sums of log densities and of single special functions against central differences: what is left
+/// after extrapolation is below a thousandth of the correction, and rounding below 1e-12 over the step.
+#[test]
+fn gradients_of_log_densities_and_special_functions_are_exact() {
+    let special = [
+        "lgamma(x)*y",
+        "lgamma(-x)",
+        "erf(x) + y*erfc(y)",
+        "normal_cdf(x*y)",
+        "normal_quantile(x)",
+        "logit(x)*logit(y/4)",
+        "log_normal_tail(4*y) + log_normal_tail(5*y) + log_normal_tail(-x)",
+        "log_normal_below(-8*x) + log_normal_below(x)",
+        "log10(x) + tan(y) + sinh(x) + cosh(y) + asin(x/2)*acos(y/2)",
+        "atan2(x, -y) + atan2(-y, x)",
+        "x^y + y^x + x^-3 + y^2.5",
+        "log_density_student_t(x, 100*y, 0.5, y)",
+        "log_mass_negative_binomial(30, 20*y, x/100)",
+        "log_mass_negative_binomial(3, 20*y, x)",
+        "log_mass_binomial(3, 7, x)*log_density_beta(x, y, 3)",
+        "log_density_gamma(y, 3*x, x)",
+    ];
+    let sums: Vec<String> = OF_COLUMNS.iter().map(|text| format!("sum({text})")).collect();
+    for text in special.into_iter().chain(sums.iter().map(String::as_str)) {
+        let program = program(text, Wanted::Number);
+        let (value, gradient) = program.value_and_gradient(0, &Points::from_rows(5, &HERE));
+        for i in 0..5 {
+            let (want, correction) = difference(&program, i);
+            let got = gradient.get(0, i);
+            let bound = 1e-3 * correction + 1e-12 * value[0].abs().max(1.0) / 1e-3;
+            assert!((got - want).abs() <= bound, "{text}: derivative {i} is {got}, wanted {want} +- {bound}");
+        }
     }
 }
