@@ -5,5 +5,7 @@ mod built;
 mod documentation;
 mod mutations;
 mod right;
+mod starts;
 mod whole;
 mod wrong;
+mod wrong_tables;
