@@ -40,6 +40,15 @@ macro_rules! add_slope_of_two {
     };
 }
 
+/// Adds `g` to `to` where `picked` holds: where it does not, not even a NaN gets through.
+macro_rules! add_picked {
+    (($g:expr, $a:expr, $b:expr) => $to:expr, |$u:tt, $v:tt| $picked:expr) => {
+        for (((to, &g), &$u), &$v) in $to.iter_mut().zip($g).zip($a).zip($b) {
+            *to += if $picked { g } else { 0.0 };
+        }
+    };
+}
+
 /// Adjoint of the argument of `y = function(x)`.
 #[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx2", "x86_64+avx2"))]
 pub(super) fn unary_slope(function: Unary, g: &[f64], x: &[f64], y: &[f64], gx: &mut [f64]) {
@@ -126,11 +135,9 @@ pub(super) fn left_slope(
         Binary::Power => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b * libm::pow(a, b - 1.0)),
         Binary::Atan2 => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b / (a * a + b * b)),
         Binary::Hypot => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| if y == 0.0 { 0.0 } else { a / y }),
-        Binary::Minimum => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a <= b { 1.0 } else { 0.0 }),
-        Binary::Maximum => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a >= b { 1.0 } else { 0.0 }),
-        Binary::MinimumDefined => {
-            add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a <= b || b.is_nan() { 1.0 } else { 0.0 });
-        }
+        Binary::Minimum => add_picked!((g, a, b) => ga, |a, b| a <= b),
+        Binary::Maximum => add_picked!((g, a, b) => ga, |a, b| a >= b),
+        Binary::MinimumDefined => add_picked!((g, a, b) => ga, |a, b| a <= b || b.is_nan()),
         Binary::LogAddExp => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| share(a, y)),
         Binary::XLogY => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| ln(b)),
         Binary::XLog1pY => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| log1p(b)),
@@ -180,11 +187,10 @@ pub(super) fn right_slope(
         Binary::Power => add_slope_of_two!((g, a, b, y) => gb, |a, _, y| if y == 0.0 { 0.0 } else { y * ln(a) }),
         Binary::Atan2 => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| -a / (a * a + b * b)),
         Binary::Hypot => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| if y == 0.0 { 0.0 } else { b / y }),
-        Binary::Minimum => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a <= b { 0.0 } else { 1.0 }),
-        Binary::Maximum => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a >= b { 0.0 } else { 1.0 }),
-        Binary::MinimumDefined => {
-            add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a <= b || b.is_nan() { 0.0 } else { 1.0 });
-        }
+        // Of equal ones the first is picked.
+        Binary::Minimum => add_picked!((g, a, b) => gb, |a, b| b < a),
+        Binary::Maximum => add_picked!((g, a, b) => gb, |a, b| b > a),
+        Binary::MinimumDefined => add_picked!((g, a, b) => gb, |a, b| b < a || a.is_nan()),
         Binary::LogAddExp => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| share(b, y)),
         Binary::XLogY => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a == 0.0 { 0.0 } else { a / b }),
         Binary::XLog1pY => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a == 0.0 { 0.0 } else { a / (1.0 + b) }),

@@ -83,6 +83,10 @@ impl<'a> Lowering<'a> {
         self.faults.push(fault);
     }
 
+    pub(super) fn has_faults(&self) -> bool {
+        !self.faults.is_empty()
+    }
+
     pub(super) fn take_faults(&mut self) -> Vec<Fault> {
         std::mem::take(&mut self.faults)
     }
