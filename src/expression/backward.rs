@@ -8,11 +8,9 @@ use std::f64::consts::{FRAC_2_SQRT_PI, LN_10};
 use multiversion::multiversion;
 
 use super::forward::{Operand, Spare};
-use super::operations::{Binary, Reduction, Unary};
-use super::special::{
-    digamma, ln_gamma_half_step_slope, ln_rising_slopes, log_normal_tail_slope, log1p, logistic, logistic_slope,
-    normal_density, whole_power,
-};
+use super::gamma::{digamma, ln_gamma_half_step_slope, ln_rising_slopes};
+use super::kinds::{Binary, Reduction, Unary};
+use super::special::{log_normal_tail_slope, log1p, logistic, logistic_slope, normal_density, whole_power};
 use crate::numeric::{exp, ln};
 
 /// `g d`, with zero where `g` is zero.

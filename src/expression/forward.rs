@@ -4,10 +4,11 @@
 
 use multiversion::multiversion;
 
-use super::operations::{Binary, Reduction, Unary};
+use super::gamma::{ln_gamma, ln_gamma_half_step, ln_gamma_positive, ln_rising};
+use super::kinds::{Binary, Reduction, Unary};
 use super::special::{
-    ln_gamma, ln_gamma_half_step, ln_gamma_positive, ln_rising, log_add_exp, log_normal_tail, log1p, logistic, logit,
-    maximum, minimum, normal_cdf, normal_quantile, softplus, whole_power, x_log_y, x_log1p_y,
+    log_add_exp, log_normal_tail, log1p, logistic, logit, maximum, minimum, normal_cdf, normal_quantile, softplus,
+    whole_power, x_log_y, x_log1p_y,
 };
 use crate::numeric::{BLOCK, exp, ln};
 
