@@ -115,6 +115,7 @@ impl Operations {
     /// `a^b`, by multiplication and square roots where the exponent is a constant that allows it.
     pub(super) fn power(&mut self, a: Id, b: Id) -> Id {
         match self.as_constant(b) {
+            Some(0.0) => self.constant(1.0),
             Some(2.0) => self.unary(Unary::Square, a),
             Some(0.5) => self.unary(Unary::Sqrt, a),
             Some(n) if n == n.floor() && (1.0..=16.0).contains(&n.abs()) => self.unary(Unary::WholePower(n as i32), a),
