@@ -8,11 +8,9 @@ use std::f64::consts::{FRAC_2_SQRT_PI, LN_10};
 use multiversion::multiversion;
 
 use super::forward::{Operand, Spare};
-use super::operations::{Binary, Reduction, Unary};
-use super::special::{
-    digamma, ln_gamma_half_step_slope, ln_rising_slopes, log_normal_tail_slope, log1p, logistic, logistic_slope,
-    normal_density, whole_power,
-};
+use super::gamma::{digamma, ln_gamma_half_step_slope, ln_rising_slopes};
+use super::kinds::{Binary, Reduction, Unary};
+use super::special::{log_normal_tail_slope, log1p, logistic, logistic_slope, normal_density, whole_power};
 use crate::numeric::{exp, ln};
 
 /// `g d`, with zero where `g` is zero.
@@ -132,7 +130,7 @@ pub(super) fn left_slope(
     match function {
         Binary::Multiply => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| b),
         Binary::Divide => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| 1.0 / b),
-        Binary::Power => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b * libm::pow(a, b - 1.0)),
+        Binary::Power => add_slope_of_two!((g, a, b, y) => ga, |a, b, y| power_slope(a, b, y)),
         Binary::Atan2 => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b / (a * a + b * b)),
         Binary::Hypot => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| if y == 0.0 { 0.0 } else { a / y }),
         Binary::Minimum => add_picked!((g, a, b) => ga, |a, b| a <= b),
@@ -205,6 +203,18 @@ pub(super) fn right_slope(
 pub(super) fn add_all(g: &[f64], to: &mut [f64]) {
     for (to, &g) in to.iter_mut().zip(g) {
         *to += g;
+    }
+}
+
+/// `b a^(b - 1)`, by the value `y` itself where `a` is not zero.
+#[inline(always)]
+fn power_slope(a: f64, b: f64, y: f64) -> f64 {
+    if b == 0.0 {
+        0.0
+    } else if a == 0.0 {
+        b * libm::pow(a, b - 1.0)
+    } else {
+        b * (y / a)
     }
 }
 

@@ -1,8 +1,8 @@
 //! Events: how far a point is from one, and whether it is in it as written.
 
+use super::kinds::{Binary, Id};
 use super::lexer::Fault;
 use super::lower::{Lowering, Value};
-use super::operations::{Binary, Id};
 use super::parser::{Infix, Node, Place, Syntax};
 
 /// Margin and truth of the event that `lowering` lowered last, `syntax`; `None` after telling what is no event in it.

@@ -272,3 +272,18 @@ fn every_point_stands_for_itself() {
 fn rayon_pool<R: Send>(threads: usize, run: impl FnOnce() -> R + Send) -> R {
     rayon::ThreadPoolBuilder::new().num_threads(threads).build().unwrap().install(run)
 }
+
+#[test]
+fn programs_without_inputs_and_powers_at_zero_are_no_special_case() {
+    let mut scope = Scope::new();
+    scope.constant("two", 2.0);
+    let program = scope.compile(&[("four", "two^2", Wanted::Number)]).unwrap();
+    let points = Points::zeros(0, 3);
+    assert_eq!(program.values(&points)[0].coordinate(0), [4.0; 3]);
+    let (values, gradient) = program.value_and_gradient(0, &points);
+    assert_eq!((values, gradient.len(), gradient.dim()), (vec![4.0; 3], 3, 0));
+    let at_zero = [0.0, 0.0, 0.5, -1.0, 0.25];
+    check_gradient("x^0 + x^1 + x^1.5 + x^(y + 2) + sum(flow^0*x)", at_zero, [6.0, 0.0, 0.0, 0.0, 0.0]);
+    fn travels<T: Send + Sync>(_: &T) {}
+    travels(&program);
+}
