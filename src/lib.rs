@@ -12,7 +12,8 @@
 //! * [`refit`]: fits of a mixture to weighted points;
 //! * [`adapt`]: the loop: survey, rounds, choice, report;
 //! * [`store`]: files: whole or not at all, the journal, tables;
-//! * [`figures`]: data in, drawing out.
+//! * [`figures`]: data in, drawing out;
+//! * [`report`]: tables, summary and figures of a run.
 
 pub mod adapt;
 pub mod distribution;
@@ -23,6 +24,7 @@ pub mod numeric;
 pub mod problem;
 pub mod proposal;
 pub mod refit;
+pub mod report;
 pub mod store;
 pub mod weights;
 

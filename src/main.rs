@@ -1,2 +1,7 @@
 //! The evenpoise command.
-fn main() {}
+
+mod cli;
+
+fn main() -> std::process::ExitCode {
+    cli::main()
+}

@@ -28,6 +28,7 @@ use super::statement::Statement;
 use super::table::Reader;
 use super::target::Aim;
 use super::target::TargetKey;
+use super::tuning::TuningKeys;
 use super::variables_table::Each;
 use super::variables_table::NatureSpec;
 use super::variables_table::ParameterSpec;
@@ -53,6 +54,14 @@ impl Problem {
     /// Everything that is wrong with them, as far as it can be told at once, each with its place and what to write
     /// instead.
     pub fn read(path: &Path) -> Result<Self, ProblemErrors> {
+        Self::read_with(path, TuningKeys::clone)
+    }
+
+    /// Reads a problem file, with what `change` makes of the keys of its `[tuning]`.
+    ///
+    /// # Errors
+    /// As [`Problem::read`].
+    pub fn read_with(path: &Path, change: impl Fn(&TuningKeys) -> TuningKeys) -> Result<Self, ProblemErrors> {
         let shown = path.display().to_string();
         let refused = |message: String, help: &str| {
             let mut faults = Faults::default();
@@ -67,7 +76,7 @@ impl Problem {
             let line = 1 + error.as_bytes()[..valid].iter().filter(|&&byte| byte == b'\n').count();
             refused(format!("line {line} of `{shown}` is not UTF-8 text"), "save the file with the encoding UTF-8")
         })?;
-        Self::parse(&text, &shown, path.parent().unwrap_or(Path::new("")))
+        Self::parse_with(&text, &shown, path.parent().unwrap_or(Path::new("")), &change)
     }
 
     /// Reads the text of a problem file; messages call it `file_name`, and paths of data start from `folder`.
@@ -75,9 +84,13 @@ impl Problem {
     /// # Errors
     /// As [`Problem::read`].
     pub fn parse(text: &str, file_name: &str, folder: &Path) -> Result<Self, ProblemErrors> {
+        Self::parse_with(text, file_name, folder, &TuningKeys::clone)
+    }
+
+    fn parse_with(text: &str, file_name: &str, folder: &Path, change: KeysChange<'_>) -> Result<Self, ProblemErrors> {
         let text = text.strip_prefix('\u{feff}').unwrap_or(text);
         let mut reader = Reader::new(text);
-        let problem = assemble(&mut reader, folder);
+        let problem = assemble(&mut reader, folder, change);
         match problem {
             Some(problem) if reader.faults.is_empty() => Ok(problem),
             _ => {
@@ -100,11 +113,15 @@ impl Problem {
     }
 }
 
+/// What is made of the keys that a file has.
+type KeysChange<'a> = &'a dyn Fn(&TuningKeys) -> TuningKeys;
+
 /// None only where `reader` holds a fault that says why.
-fn assemble(reader: &mut Reader<'_>, folder: &Path) -> Option<Problem> {
+fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> Option<Problem> {
     let mut names = Names::default();
     let statement = statement::read(reader, &mut names);
-    let statement = statement?;
+    let mut statement = statement?;
+    statement.tuning = change(&statement.tuning);
     check_aim(reader, &statement);
     let before = reader.faults.len();
     let tables = load(reader, &mut names, &statement, folder)?;

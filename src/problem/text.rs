@@ -45,6 +45,17 @@ impl Problem {
         digest.finish()
     }
 
+    /// Every data file, as the problem names it, with 32 hexadecimal digits that stand for its contents.
+    #[must_use]
+    pub fn data_digests(&self) -> Vec<(String, String)> {
+        let of = |table: &DataTable| {
+            let mut digest = Digest::new();
+            digest.add(&table.raw.bytes);
+            (table.raw.spec.file.value.clone(), digest.finish())
+        };
+        self.data.iter().map(of).collect()
+    }
+
     fn written(&self, path: impl Fn(&DataTable) -> String) -> String {
         let mut out = format!("title = {}\n", quoted(&self.title));
         match &self.statement {

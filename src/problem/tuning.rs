@@ -140,28 +140,35 @@ impl TuningKeys {
         }
     }
 
-    /// The table as TOML, every key with its value or its default.
-    pub(crate) fn written(&self) -> String {
+    /// Every key with its value or its default, as TOML writes it, in the order in which the table is written.
+    #[must_use]
+    pub fn listed(&self) -> [(&'static str, String); 13] {
         let number = |value: Option<f64>| value.map_or("\"auto\"".into(), |x| format!("{x:?}"));
         let count = |value: Option<u64>| value.map_or("\"auto\"".into(), |n| n.to_string());
-        format!(
-            "[tuning]\nbudget = {}\nround_draws = {}\nrounds = {}\nreport_share = {}\nfamily = \"{}\"\ndf = {}\n\
-             components = {}\nstructure = \"{}\"\nmethod = \"{}\"\ncoordinates = \"{}\"\ndefensive = {}\n\
-             threads = {}\nseed = {}\n",
-            self.budget.unwrap_or(Self::BUDGET),
+        let quoted = |word: &str| format!("\"{word}\"");
+        let values = [
+            self.budget.unwrap_or(Self::BUDGET).to_string(),
             count(self.round_draws),
-            self.rounds.unwrap_or(Self::ROUNDS),
+            self.rounds.unwrap_or(Self::ROUNDS).to_string(),
             number(self.report_share),
-            word_of(self.family, &FAMILIES),
+            quoted(word_of(self.family, &FAMILIES)),
             number(self.df),
             count(self.components),
-            word_of(self.structure, &STRUCTURES),
-            word_of(self.method, &METHODS),
-            word_of(self.coordinates, &COORDINATES),
+            quoted(word_of(self.structure, &STRUCTURES)),
+            quoted(word_of(self.method, &METHODS)),
+            quoted(word_of(self.coordinates, &COORDINATES)),
             number(self.defensive),
             count(self.threads),
-            self.seed.unwrap_or(Self::SEED),
-        )
+            self.seed.unwrap_or(Self::SEED).to_string(),
+        ];
+        let mut values = values.into_iter();
+        KEYS.map(|key| (key, values.next().unwrap_or_default()))
+    }
+
+    /// The table as TOML, every key with its value or its default.
+    pub(crate) fn written(&self) -> String {
+        let lines: Vec<String> = self.listed().iter().map(|(key, value)| format!("{key} = {value}\n")).collect();
+        format!("[tuning]\n{}", lines.concat())
     }
 }
 

@@ -71,6 +71,18 @@ pub enum StoreError {
         /// What was given.
         now: String,
     },
+    /// The journal holds other points than the run asks for, though everything it was begun with is the same.
+    #[error(
+        "the journal {} holds other points than this run asks for, from record {record} on; it was written by another build of \
+         the program: start the run again (--force)",
+        path.display()
+    )]
+    Diverged {
+        /// The journal.
+        path: PathBuf,
+        /// The first record that differs, from 1.
+        record: u64,
+    },
     /// A table that cannot be read.
     #[error("{}: line {line}: {reason}", path.display())]
     Table {
@@ -78,6 +90,16 @@ pub enum StoreError {
         path: PathBuf,
         /// Line in it, from 1.
         line: u64,
+        /// What is wrong, and what was expected.
+        reason: String,
+    },
+    /// A JSON file that cannot be believed.
+    #[error("{}: {at}: {reason}", path.display())]
+    Json {
+        /// The file.
+        path: PathBuf,
+        /// The way to the place inside it: `components[0].scale`.
+        at: String,
         /// What is wrong, and what was expected.
         reason: String,
     },

@@ -92,25 +92,51 @@ impl Journal {
     /// Appends a batch. When this returns, the batch is on the disk.
     ///
     /// # Errors
+    /// As [`Journal::write`] and [`Journal::sync`].
+    ///
+    /// # Panics
+    /// When a column of the batch has another number of points than the batch.
+    pub fn append(&mut self, batch: &JournalBatch) -> Result<(), StoreError> {
+        self.write(batch)?;
+        self.sync()
+    }
+
+    /// Hands a batch to the system. From here on a kill of the process loses nothing of it; a power cut may, until
+    /// [`Journal::sync`] has returned.
+    ///
+    /// # Errors
     /// [`StoreError::Io`] with the path and the system's reason (the disk is full, ...). The torn record is taken back, so
     /// the journal is as it was before.
     ///
     /// # Panics
     /// When a column of the batch has another number of points than the batch.
-    pub fn append(&mut self, batch: &JournalBatch) -> Result<(), StoreError> {
+    pub fn write(&mut self, batch: &JournalBatch) -> Result<(), StoreError> {
         if self.broken {
             let source = io::Error::other("an earlier record could not be written whole, nor taken back");
             return Err(StoreError::io("write", &self.path)(source));
         }
         let record = encode(self.records, batch);
-        let written = self.file.write_all(&record).and_then(|()| self.file.sync_data());
-        if let Err(source) = written {
+        if let Err(source) = self.file.write_all(&record) {
             self.broken = self.file.set_len(self.length).is_err();
             return Err(StoreError::io("write", &self.path)(source));
         }
         self.length += record.len() as u64;
         self.records += 1;
         Ok(())
+    }
+
+    /// Waits until everything written is on the disk.
+    ///
+    /// # Errors
+    /// [`StoreError::Io`] with the path and the system's reason.
+    pub fn sync(&mut self) -> Result<(), StoreError> {
+        self.file.sync_data().map_err(StoreError::io("sync", &self.path))
+    }
+
+    /// Where it is.
+    #[must_use]
+    pub fn path(&self) -> &Path {
+        &self.path
     }
 
     /// Opens the journal of a run that was begun with `header`, gives back what it holds and cuts off what is not whole.

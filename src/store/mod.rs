@@ -2,7 +2,8 @@
 //!
 //! * [`write_atomically`], [`write_json`]: a file is there whole, or as it was before;
 //! * [`RunFolder`]: the folder of a run, held by one process at a time;
-//! * [`Journal`]: every evaluated point, written and synced before it is used, so that an interrupted run loses nothing;
+//! * [`Journal`], [`Recorder`]: every evaluated point, written and synced before it is used, so that an interrupted run loses nothing;
+//! * [`ProposalFile`], [`read_proposal`]: the proposal, checked as it is read;
 //! * [`Table`], [`TableWriter`]: points as CSV or NumPy files, numbers read back to the same bits.
 //!
 //! **Invariant:** nothing here computes. A file holds what it was given, or the caller is told, with the path, why not.
@@ -12,9 +13,13 @@ mod checksum;
 mod error;
 mod folder;
 mod journal;
+mod json;
 mod lock;
 mod npy;
+mod proposal;
+mod proposal_reader;
 mod record;
+mod recorder;
 mod table;
 
 pub use atomic::{write_atomically, write_json};
@@ -23,5 +28,10 @@ pub use folder::{RUN_ENTRIES, RunFolder};
 pub use journal::{Journal, JournalHeader, Replay};
 pub use lock::Lock;
 pub use npy::{NpyWriter, read_npy};
+pub use proposal::{
+    ComponentEntry, CorrelationEntry, MadeBy, PROPOSAL_FORMAT, ProposalFile, ScoresEntry, VariableEntry, finite,
+};
+pub use proposal_reader::read_proposal;
 pub use record::{JournalBatch, JournalColumn};
+pub use recorder::Recorder;
 pub use table::{Table, TableWriter, decimal};

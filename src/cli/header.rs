@@ -1,0 +1,46 @@
+//! What a run is begun with, and must be the same when it is resumed.
+
+use evenpoise::problem::Problem;
+use evenpoise::report::Provenance;
+use evenpoise::store::JournalHeader;
+use std::collections::BTreeMap;
+use std::path::Path;
+
+/// Program and version.
+pub(crate) const PROGRAM: &str = concat!("evenpoise ", env!("CARGO_PKG_VERSION"));
+
+/// The facts of a run: the data, each setting, the problem as a whole, the program.
+pub(crate) fn facts(problem: &Problem) -> JournalHeader {
+    let mut facts: BTreeMap<String, String> =
+        data(problem).map(|(name, digest)| (format!("the data file {name}"), digest)).collect();
+    let settings = problem.tuning().listed();
+    facts.extend(
+        settings
+            .into_iter()
+            .filter(|(key, _)| *key != "threads")
+            .map(|(key, value)| (format!("the setting {key}"), value)),
+    );
+    facts.insert("the problem".to_owned(), problem.digest());
+    facts.insert("the program".to_owned(), PROGRAM.to_owned());
+    JournalHeader { facts }
+}
+
+/// Seed, versions and digests of a run.
+pub(crate) fn provenance(problem: &Problem, seed: u64) -> Provenance {
+    let mut digests: BTreeMap<String, String> = data(problem).collect();
+    digests.insert("problem".to_owned(), problem.digest());
+    Provenance { seed, versions: [("program".to_owned(), PROGRAM.to_owned())].into(), digests }
+}
+
+/// Data files by their own names, wherever they lie; files of one name by their order.
+fn data(problem: &Problem) -> impl Iterator<Item = (String, String)> {
+    let mut seen: Vec<String> = Vec::new();
+    problem.data_digests().into_iter().map(move |(file, digest)| {
+        let mut name = Path::new(&file).file_name().unwrap_or_default().to_string_lossy().into_owned();
+        while seen.contains(&name) {
+            name.push('*');
+        }
+        seen.push(name.clone());
+        (name, digest)
+    })
+}

@@ -1,0 +1,54 @@
+//! The command line: one file a subcommand, each with its `Args` and its `run`.
+//!
+//! Results go to standard output, everything else to standard error. No arithmetic lives here: commands read, call the
+//! library, and write.
+
+mod ending;
+mod figures;
+mod header;
+mod layout;
+mod numbers;
+mod options;
+mod output;
+mod problem_file;
+mod run_files;
+mod screen;
+mod signals;
+mod tune;
+mod tune_report;
+mod watch;
+
+use clap::Parser;
+use clap::Subcommand;
+use ending::Ending;
+use std::process::ExitCode;
+
+/// Finds, proves and uses the distribution to sample from.
+///
+/// State an integral in a problem file (a normalising constant, a posterior, an expected cost, a failure probability);
+/// `tune` finds the proposal to sample from, shows how even its weights are, and says whether the numbers may be reported.
+#[derive(Debug, Parser)]
+#[command(name = "evenpoise", version, max_term_width = 100, disable_help_subcommand = true)]
+struct Cli {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    Tune(Box<tune::Args>),
+    Figures(figures::Args),
+}
+
+/// Parses, dispatches, tells the error if there was one, and gives the exit status.
+pub(crate) fn main() -> ExitCode {
+    let parsed = match Cli::try_parse() {
+        Ok(parsed) => parsed,
+        Err(error) => return ending::of_parsing(&error),
+    };
+    let ended = match &parsed.command {
+        Command::Tune(args) => tune::run(args),
+        Command::Figures(args) => figures::run(args),
+    };
+    ending::status(ended.unwrap_or_else(Ending::from))
+}

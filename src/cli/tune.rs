@@ -1,0 +1,131 @@
+//! `evenpoise tune`: from a problem to a proposal, its scores, verdict and figures.
+
+use super::ending::Ending;
+use super::header;
+use super::options;
+use super::options::TuningOptions;
+use super::output;
+use super::problem_file;
+use super::problem_file::Located;
+use super::run_files;
+use super::run_files::write_bytes;
+use super::screen::Screen;
+use super::signals::Signals;
+use super::tune_report;
+use super::watch::Watch;
+use anyhow::Context;
+use evenpoise::adapt;
+use evenpoise::adapt::Settings;
+use evenpoise::adapt::TuneError;
+use evenpoise::adapt::Tuning;
+use evenpoise::problem::Problem;
+use evenpoise::report::Summary;
+use evenpoise::store::Recorder;
+use evenpoise::store::RunFolder;
+use evenpoise::store::write_json;
+use evenpoise::weights::verdict::Word;
+use std::path::PathBuf;
+
+/// Tune a proposal for the integral in PROBLEM, and judge it.
+#[derive(Debug, clap::Args)]
+pub(crate) struct Args {
+    /// Problem file; with --resume, the folder of a run does as well.
+    problem: PathBuf,
+    /// Folder of the run [default: the problem file's name ending in .run, beside it].
+    #[arg(long, value_name = "DIR")]
+    out: Option<PathBuf>,
+    /// Replace the run that is in the folder.
+    #[arg(long, conflicts_with = "resume")]
+    force: bool,
+    /// Go on with a run that was interrupted: nothing that was evaluated is evaluated again.
+    #[arg(long)]
+    resume: bool,
+    /// Print the summary as JSON on standard output, and nothing else there.
+    #[arg(long)]
+    json: bool,
+    #[command(flatten)]
+    tuning: TuningOptions,
+}
+
+pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
+    let located = problem_file::locate(&args.problem, args.out.as_deref());
+    let problem = problem_file::read(&located.file, |keys| args.tuning.over(keys))?;
+    options::check(problem.tuning())?;
+    if let Some(threads) = args.tuning.threads(problem.tuning()) {
+        let threads = usize::try_from(threads)?;
+        rayon::ThreadPoolBuilder::new().num_threads(threads).build_global().context("starting the threads")?;
+    }
+    let settings = Settings::from_keys(problem.tuning());
+    let signals = Signals::listen().context("listening for signals")?;
+    let (folder, mut watch) = begin(args, &located, &problem, &settings, signals.clone())?;
+    let tuned = adapt::tune(&problem, &settings, &mut watch);
+    watch.screen.clear();
+    watch.recorder.sync()?;
+    match (tuned, watch.refused()) {
+        (Err(TuneError::Interrupted { evaluations }), _) => {
+            let resume = format!("evenpoise tune {} --resume", located.run.display());
+            watch
+                .screen
+                .keep(&format!("interrupted after {evaluations} evaluations; all are kept. Go on with\n  {resume}"));
+            Ok(Ending::Interrupted(signals.came().unwrap_or_default()))
+        }
+        (Err(error), _) => Err(error.into()),
+        (Ok(_), Some(error)) => Err(error.into()),
+        (Ok(tuning), None) => {
+            let summary = run_files::write(&folder, &problem, &tuning, settings.seed)?;
+            finish(args, &folder, watch, &tuning, &summary)
+        }
+    }
+}
+
+/// Takes the folder and its journal.
+fn begin(
+    args: &Args,
+    located: &Located,
+    problem: &Problem,
+    settings: &Settings,
+    signals: Signals,
+) -> anyhow::Result<(RunFolder, Watch)> {
+    let facts = header::facts(problem);
+    let (folder, recorder, dropped) = if args.resume {
+        let folder = RunFolder::open(&located.run)?;
+        let (recorder, dropped) = Recorder::resume(folder.path(), &facts)?;
+        (folder, recorder, dropped)
+    } else {
+        let folder = RunFolder::create(&located.run, args.force)?;
+        let recorder = Recorder::begin(folder.path(), &facts)?;
+        (folder, recorder, None)
+    };
+    let log = folder.join("log.txt");
+    let mut screen = Screen::new(&log).with_context(|| format!("cannot write {}", log.display()))?;
+    if !args.resume {
+        write_bytes(&folder.join(problem_file::COPY), problem.text_for(folder.path()).as_bytes())?;
+    }
+    screen.keep(&tune_report::opening(problem, settings.budget, settings.seed));
+    if args.resume {
+        screen.keep(&tune_report::resumed(recorder.found(), dropped.as_deref(), folder.stale_lock()));
+    }
+    let watch = Watch::new(recorder, screen, signals, folder.join("rounds.csv"), settings.budget);
+    Ok((folder, watch))
+}
+
+/// Shows the closing table, or the summary as JSON.
+fn finish(
+    args: &Args,
+    folder: &RunFolder,
+    mut watch: Watch,
+    tuning: &Tuning,
+    summary: &Summary,
+) -> anyhow::Result<Ending> {
+    watch.timings.end();
+    write_json(&folder.join("timings.json"), &watch.timings)?;
+    let closing = tune_report::closing(tuning) + &tune_report::whereabouts(&folder.path().display().to_string());
+    if args.json {
+        watch.screen.keep(&closing);
+        output::say(&format!("{}\n", serde_json::to_string_pretty(summary)?))?;
+    } else {
+        watch.screen.log(&closing);
+        output::say(&closing)?;
+    }
+    Ok(if tuning.verdict.word == Word::Unfit { Ending::Unfit } else { Ending::Done })
+}

@@ -1,0 +1,23 @@
+//! What a tuning is written down as: its tables, its summary, and the inputs of its figures.
+//!
+//! * [`DrawsTable`]: every report draw in natural units, as in `points.csv`;
+//! * [`round_rows`]: one row a round, as in `rounds.csv`;
+//! * [`Summary`]: scores, verdict, choices and provenance, as in `summary.json`;
+//! * [`RunData`]: what the figures are drawn from, out of a tuning or out of a run's files alike.
+//!
+//! **Invariant:** no clock is read here, and nothing depends on the number of threads.
+
+mod draws;
+mod figure_data;
+mod marginal;
+mod outline;
+mod rounds;
+mod summary;
+
+pub use draws::DrawsTable;
+pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};
+pub use rounds::{ROUND_COLUMNS, RoundRow, read_rounds, round_rows, write_rounds};
+pub use summary::{
+    CandidateSummary, Evaluations, FinalistSummary, NamedValues, ProposalSummary, Provenance, RoundCandidates,
+    SUMMARY_FORMAT, Summary, SummaryCheck, SurveySummary, ValueWithError, read_evaluations,
+};
