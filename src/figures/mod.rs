@@ -11,7 +11,7 @@
 //! * [`heavy`]: in which variables, and on which side, the heaviest draws lie.
 //!
 //! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`] with its [`ticks`], [`place`], [`canvas`] (marks and text boxes in points),
-//! [`panel`], [`key`], [`table`], [`columns`], and the two writers [`raster`] and [`svg`](mod@svg).
+//! [`panel`], [`key`], [`table`], [`columns`]. The page is drawn with `plotters`, by the two writers [`raster`] and [`svg`](mod@svg).
 //!
 //! **Sizes.** A figure is laid out anew for the width it is asked for. The text size follows the width between 8 and
 //! 16 cm, so a figure made 16 cm wide and printed 8 cm wide still has letters of 6 pt; no text is ever set below 6 pt,
@@ -30,6 +30,7 @@ pub mod key;
 pub mod numbers;
 pub mod panel;
 pub mod place;
+mod plot;
 pub mod progress;
 pub mod raster;
 pub mod svg;
