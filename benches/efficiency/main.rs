@@ -1,6 +1,8 @@
 //! The loop on every row, over its seeds: evaluations, ESS fraction on fresh draws, errors against exact answers.
 #![allow(clippy::print_stdout, clippy::unwrap_used, missing_docs, unreachable_pub, clippy::pedantic)]
 
+mod rare;
+mod rare_rows;
 mod targets;
 
 use evenpoise::adapt::{Settings, Silent, tune};
@@ -122,6 +124,9 @@ fn run(row: &Row, seed: u64) -> Outcome {
 
 fn main() {
     let args: Vec<String> = std::env::args().collect();
+    if args.iter().any(|a| a == "--rare") {
+        return rare::run(&args);
+    }
     let value = |name: &str| args.iter().position(|a| a == name).map(|i| args[i + 1].clone());
     let wanted = value("--rows");
     let seeds: u64 = value("--seeds").map_or(4, |v| v.parse().unwrap());

@@ -33,6 +33,8 @@ const ARMIJO: f64 = 1e-4;
 /// Steps are shortened by this until they rise enough, at most so many times.
 const BACKTRACK: f64 = 0.35;
 const BACKTRACKS: usize = 12;
+/// Steps grow by this after one along which the density was not concave.
+const LENGTHEN: f64 = 4.0;
 /// Expected rise below this (nats) is the top.
 const FLAT: f64 = 1e-6;
 /// A climb this far out, in units of the start, has run away.
@@ -47,18 +49,29 @@ pub(crate) fn climb(
     known: &[KnownMode],
     steps: u64,
     cap: u64,
-) -> Result<End, TuneError> {
+) -> Result<(End, Trail), TuneError> {
     let ascent = Ascent { target, cap };
-    let solver = Climb { known, metric: metric.to_vec(), first: metric.to_vec(), own_scale, end: None };
+    let solver = Climb {
+        known,
+        metric: metric.to_vec(),
+        first: metric.to_vec(),
+        own_scale,
+        end: None,
+        stride: 1.0,
+        trail: Vec::new(),
+    };
     let state = Executor::new(ascent, solver).configure(|s| s.param(x).max_iters(steps)).timer(false);
     match state.run() {
-        Ok(result) => Ok(result.solver.end.unwrap_or(End::Unfinished)),
+        Ok(result) => Ok((result.solver.end.unwrap_or(End::Unfinished), result.solver.trail)),
         Err(error) => match error.downcast::<TuneError>() {
             Ok(error) => Err(error),
             Err(other) => Err(TuneError::Survey(other.to_string())),
         },
     }
 }
+
+/// The places that a climb came through, with their log densities.
+pub(crate) type Trail = Vec<(Vec<f64>, f64)>;
 
 /// The operator handed to the driver: the target, and the count up to which it may be asked.
 struct Ascent<'a, 'b> {
@@ -83,6 +96,10 @@ struct Climb<'k> {
     /// Whether the first metric is replaced by the scale of the first step (it was only a guess).
     own_scale: bool,
     end: Option<End>,
+    /// Steps are lengthened by this where the density is not concave along them: there the metric learns nothing, and a
+    /// heavy tail would be walked in steps that shrink with its slope.
+    stride: f64,
+    trail: Trail,
 }
 
 type Position = IterState<Vec<f64>, Vec<f64>, (), (), (), f64>;
@@ -123,6 +140,7 @@ impl<'a, 'b> Solver<Ascent<'a, 'b>, Position> for Climb<'_> {
             self.end = Some(End::Known(j));
             return Ok((state.param(x).gradient(g).cost(-l), None));
         }
+        self.trail.push((x.clone(), l));
         let mut step = times(&self.metric, &g);
         let mut rise = dot(&g, &step);
         if !(rise > 0.0) {
@@ -133,6 +151,9 @@ impl<'a, 'b> Solver<Ascent<'a, 'b>, Position> for Climb<'_> {
         if rise < FLAT {
             self.end = Some(End::Top(x.clone(), self.metric.clone()));
             return Ok((state.param(x).gradient(g).cost(-l), None));
+        }
+        for s in &mut step {
+            *s *= self.stride;
         }
         self.shorten(&mut step);
         let slope = dot(&g, &step);
@@ -182,8 +203,10 @@ impl Climb<'_> {
         let dg: Vec<f64> = g.iter().zip(g_new).map(|(a, b)| a - b).collect();
         let curvature = dot(&dx, &dg);
         if !(curvature > 1e-12) {
+            self.stride *= LENGTHEN;
             return;
         }
+        self.stride = 1.0;
         if self.own_scale {
             let scale = curvature / dot(&dg, &dg);
             self.metric = vec![0.0; d * d];

@@ -1,6 +1,7 @@
 //! A mode that the survey knows, with the curvature there.
 
 use super::TuneError;
+use super::climb::Trail;
 use super::standard::Standard;
 use crate::numeric::linear::{compose, dot, eigen, times};
 use crate::numeric::ln;
@@ -16,21 +17,41 @@ pub(crate) struct KnownMode {
     /// Laplace's approximation of the log mass.
     pub(crate) log_mass: f64,
     pub(crate) hits: u32,
+    /// Places that earlier climbs came through on their way here.
+    pub(crate) trail: Trail,
 }
 
 /// A direction whose precision is below this is as wide as three starts or more: the start's own width is taken.
 const SOFT: f64 = 1.0 / 9.0;
 
+/// A climb is on the heels of an earlier one within this many standard deviations of the mode, and nats, of a place it came through.
+const HEELS: f64 = 0.5;
+/// Places kept for each mode.
+const LONGEST_TRAIL: usize = 2000;
+
 impl KnownMode {
-    /// Whether a climb at `x` with log density `l` is inside this mode's basin: near in its scale, and as high as its parabola says.
+    /// Whether a climb at `x` with log density `l` is inside this mode's basin: near in its scale, and as high as its parabola says;
+    /// or on the heels of an earlier climb that ended here.
     pub(crate) fn contains(&self, x: &[f64], l: f64) -> bool {
         let distance = self.distance(x);
-        distance < x.len() as f64 && (l - (self.log_density - 0.5 * distance)).abs() < 1.0 + 0.25 * distance
+        let near = distance < x.len() as f64 && (l - (self.log_density - 0.5 * distance)).abs() < 1.0 + 0.25 * distance;
+        near || self.trail.iter().any(|(p, lp)| (l - lp).abs() < HEELS && self.apart(x, p) < HEELS * HEELS)
+    }
+
+    /// Adds the places of a climb that ended here.
+    pub(crate) fn follow(&mut self, trail: Trail) {
+        if self.trail.len() < LONGEST_TRAIL {
+            self.trail.extend(trail);
+        }
+    }
+
+    fn apart(&self, a: &[f64], b: &[f64]) -> f64 {
+        let y: Vec<f64> = a.iter().zip(b).map(|(a, b)| a - b).collect();
+        dot(&y, &times(&self.precision, &y))
     }
 
     pub(crate) fn distance(&self, x: &[f64]) -> f64 {
-        let y: Vec<f64> = x.iter().zip(&self.x).map(|(a, b)| a - b).collect();
-        dot(&y, &times(&self.precision, &y))
+        self.apart(x, &self.x)
     }
 
     /// Whether two modes are one: within `sqrt(d)` of each other under the curvature of either.
@@ -86,5 +107,5 @@ pub(crate) fn examine(target: &Standard, x: &[f64], metric: &[f64], cap: u64) ->
     }
     let log_volume = -0.5 * values.iter().map(|&v| ln(v)).sum::<f64>();
     let log_mass = best + 0.5 * d as f64 * ln(2.0 * std::f64::consts::PI) + log_volume;
-    Ok(Some(KnownMode { x: at, log_density: best, scale, precision, log_mass, hits: 1 }))
+    Ok(Some(KnownMode { x: at, log_density: best, scale, precision, log_mass, hits: 1, trail: Vec::new() }))
 }

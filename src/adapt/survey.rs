@@ -47,17 +47,26 @@ pub(crate) fn survey(target: &Standard, seed: u64, least: u64, cap: u64) -> Resu
         let metric = borrowed.unwrap_or_else(|| identity.clone());
         let steps = if found.modes.is_empty() { 40 + 6 * d as u64 } else { 60 };
         found.starts += 1;
-        match climb(target, start, &metric, own_scale, &found.modes, steps, cap)? {
+        let (end, trail) = climb(target, start, &metric, own_scale, &found.modes, steps, cap)?;
+        match end {
             End::Known(j) => {
                 found.modes[j].hits += 1;
+                found.modes[j].follow(trail);
                 found.finished += 1;
             }
             End::Top(x, metric) => match examine(target, &x, &metric, cap)? {
                 Some(mode) => {
                     found.finished += 1;
+                    let new = found.modes.len();
                     match found.modes.iter_mut().find(|m| m.same(&mode)) {
-                        Some(old) => old.hits += 1,
-                        None => found.modes.push(mode),
+                        Some(old) => {
+                            old.hits += 1;
+                            old.follow(trail);
+                        }
+                        None => {
+                            found.modes.push(mode);
+                            found.modes[new].follow(trail);
+                        }
                     }
                 }
                 None => found.stuck += 1,

@@ -3,7 +3,7 @@
 use super::law::Law;
 use crate::numeric::special::LogTails;
 use crate::numeric::special::log_one_minus_exp;
-use crate::numeric::special::{beta_log_tails, beta_quantile, ln_beta};
+use crate::numeric::special::{beta_log_tails, beta_quantile, ln_beta, log_beta_front};
 use crate::numeric::{exp, ln};
 use std::f64::consts::LN_2;
 
@@ -80,6 +80,9 @@ impl Law for Uniform {
     }
 }
 
+/// Beyond this `a + b` logarithms times the parameters would lose more than the last two digits.
+const LARGE: f64 = 100.0;
+
 /// Beta with parameters `a` and `b`.
 #[derive(Debug, Clone, PartialEq)]
 pub(super) struct Beta {
@@ -109,6 +112,9 @@ impl Law for Beta {
         let (below, above) = self.interval.shares(x);
         if below < 0.0 || above < 0.0 {
             return f64::NEG_INFINITY;
+        }
+        if self.a + self.b > LARGE && below > 0.0 && above > 0.0 {
+            return log_beta_front(self.a, self.b, below, above) - ln(below) - ln(above) - self.interval.log_width;
         }
         self.constant + log_power(self.a - 1.0, below) + log_power(self.b - 1.0, above)
     }

@@ -1,6 +1,7 @@
 //! What can be wrong with the description of a distribution.
 
-use super::catalogue::{self, ParameterSet};
+use super::catalogue;
+use super::given::ParameterSet;
 use thiserror::Error;
 
 /// A distribution that was described wrongly; the text says what to write instead.

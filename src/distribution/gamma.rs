@@ -3,7 +3,10 @@
 use super::law::Law;
 use crate::numeric::ln;
 use crate::numeric::special::LogTails;
-use crate::numeric::special::{gamma_log_tails, gamma_quantile, log_gamma_front};
+use crate::numeric::special::{gamma_deviance, gamma_log_tails, gamma_quantile, log_gamma_front};
+
+/// From this shape on a logarithm times the shape would lose more than the last two digits.
+const LARGE: f64 = 50.0;
 
 /// Gamma with rate one.
 #[derive(Debug, Clone, PartialEq)]
@@ -21,7 +24,7 @@ impl Gamma {
 }
 
 impl Law for Gamma {
-    /// For shapes from one on `constant + (shape - 1) ln(x/shape) - (x - shape)`: no term is far larger than the result.
+    /// For shapes from one on `constant + (shape - 1) ln(x/shape) - (x - shape)`, for large ones with the deviance.
     #[inline]
     fn log_density(&self, x: f64) -> f64 {
         if x < 0.0 {
@@ -32,6 +35,9 @@ impl Law for Gamma {
         }
         if self.shape < 1.0 {
             return self.constant + (self.shape - 1.0) * ln(x) - x;
+        }
+        if self.shape > LARGE {
+            return self.constant + gamma_deviance(self.shape, x) - ln(x / self.shape);
         }
         self.constant + (self.shape - 1.0) * ln(x / self.shape) - (x - self.shape)
     }

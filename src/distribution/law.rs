@@ -38,7 +38,7 @@ pub(super) trait Law {
     }
 
     /// `F^-1(Phi(u))`, by way of the smaller tail.
-    fn from_score(&self, u: f64) -> f64 {
+    fn value_at_score(&self, u: f64) -> f64 {
         self.quantile(normal::log_upper_tail(u.abs()), u > 0.0)
     }
 
@@ -123,8 +123,8 @@ impl<L: Law> Law for Affine<L> {
         self.standard.sd().map(|sd| self.scale.abs() * sd)
     }
 
-    fn from_score(&self, u: f64) -> f64 {
-        self.origin + self.scale * self.standard.from_score(if self.scale < 0.0 { -u } else { u })
+    fn value_at_score(&self, u: f64) -> f64 {
+        self.origin + self.scale * self.standard.value_at_score(if self.scale < 0.0 { -u } else { u })
     }
 
     fn score(&self, x: f64) -> f64 {

@@ -13,14 +13,19 @@ mod discrete;
 mod error;
 mod exponential;
 mod family;
+mod form;
 mod gamma;
+mod given;
 mod law;
 mod normal;
 mod student_t;
 mod window;
 
-pub use catalogue::ParameterSet;
+pub mod correlation;
+
 pub use error::{DistributionError, nearest_name};
+pub use form::{Form, central_slope, from_score_parameter_slopes};
+pub use given::ParameterSet;
 
 use crate::numeric::exp;
 use crate::numeric::normal as standard;
@@ -65,10 +70,7 @@ impl Distribution {
     pub fn new(name: &str, parameters: &[(&str, f64)]) -> Result<Self, DistributionError> {
         let names: Vec<&str> = parameters.iter().map(|&(name, _)| name).collect();
         let values: Vec<f64> = parameters.iter().map(|&(_, value)| value).collect();
-        let entry = catalogue::find(name)?;
-        let set = entry.choose(&names)?;
-        let (family, parameters) = entry.build(set, &names, &values)?;
-        Ok(Self { name: entry.name, parameters, family, shift: 0.0, window: None })
+        Form::new(name, &names)?.build(&values)
     }
 
     /// The sets of parameters that the distribution of that name takes; `None` for an unknown name.
@@ -82,8 +84,7 @@ impl Distribution {
     /// # Errors
     /// Ends out of order or NaN, or no probability between them.
     pub fn truncated(&self, low: f64, high: f64) -> Result<Self, DistributionError> {
-        // Written so that NaN fails.
-        if !(low <= high) {
+        if low.is_nan() || high.is_nan() || low > high {
             return Err(DistributionError::Between { low, high });
         }
         let (least, greatest) = self.support();
@@ -211,7 +212,7 @@ impl Distribution {
     #[must_use]
     pub fn from_score(&self, u: f64) -> f64 {
         match &self.window {
-            None => self.law().from_score(u) + self.shift,
+            None => self.law().value_at_score(u) + self.shift,
             Some(window) => window.quantile(self.law(), standard::log_upper_tail(u.abs()), u > 0.0) + self.shift,
         }
     }

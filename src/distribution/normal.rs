@@ -41,7 +41,7 @@ impl Law for StandardNormal {
         Some(1.0)
     }
 
-    fn from_score(&self, u: f64) -> f64 {
+    fn value_at_score(&self, u: f64) -> f64 {
         u
     }
 
@@ -86,7 +86,7 @@ impl Law for Lognormal {
     }
 
     fn quantile(&self, log_tail: f64, upper: bool) -> f64 {
-        self.from_score(normal::quantile_of_log_tail(log_tail, upper))
+        self.value_at_score(normal::quantile_of_log_tail(log_tail, upper))
     }
 
     fn support(&self) -> (f64, f64) {
@@ -101,7 +101,7 @@ impl Law for Lognormal {
         Some(exp(self.log_mean + 0.5 * self.log_sd * self.log_sd) * libm::expm1(self.log_sd * self.log_sd).sqrt())
     }
 
-    fn from_score(&self, u: f64) -> f64 {
+    fn value_at_score(&self, u: f64) -> f64 {
         exp(self.log_mean + self.log_sd * u)
     }
 

@@ -8,11 +8,9 @@ use std::f64::consts::{FRAC_2_SQRT_PI, LN_10};
 use multiversion::multiversion;
 
 use super::forward::{Operand, Spare};
-use super::operations::{Binary, Reduction, Unary};
-use super::special::{
-    digamma, ln_gamma_half_step_slope, ln_rising_slopes, log_normal_tail_slope, log1p, logistic, logistic_slope,
-    normal_density, whole_power,
-};
+use super::gamma::{digamma, ln_gamma_half_step_slope, ln_rising_slopes};
+use super::kinds::{Binary, Reduction, Unary};
+use super::special::{log_normal_tail_slope, log1p, logistic, logistic_slope, normal_density, whole_power};
 use crate::numeric::{exp, ln};
 
 /// `g d`, with zero where `g` is zero.
@@ -36,6 +34,15 @@ macro_rules! add_slope_of_two {
     (($g:expr, $a:expr, $b:expr, $y:expr) => $to:expr, |$u:tt, $v:tt, $w:tt| $slope:expr) => {
         for ((((to, &g), &$u), &$v), &$w) in $to.iter_mut().zip($g).zip($a).zip($b).zip($y) {
             *to += masked(g, $slope);
+        }
+    };
+}
+
+/// Adds `g` to `to` where `picked` holds: where it does not, not even a NaN gets through.
+macro_rules! add_picked {
+    (($g:expr, $a:expr, $b:expr) => $to:expr, |$u:tt, $v:tt| $picked:expr) => {
+        for (((to, &g), &$u), &$v) in $to.iter_mut().zip($g).zip($a).zip($b) {
+            *to += if $picked { g } else { 0.0 };
         }
     };
 }
@@ -123,14 +130,12 @@ pub(super) fn left_slope(
     match function {
         Binary::Multiply => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| b),
         Binary::Divide => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| 1.0 / b),
-        Binary::Power => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b * libm::pow(a, b - 1.0)),
+        Binary::Power => add_slope_of_two!((g, a, b, y) => ga, |a, b, y| power_slope(a, b, y)),
         Binary::Atan2 => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| b / (a * a + b * b)),
         Binary::Hypot => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| if y == 0.0 { 0.0 } else { a / y }),
-        Binary::Minimum => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a <= b { 1.0 } else { 0.0 }),
-        Binary::Maximum => add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a >= b { 1.0 } else { 0.0 }),
-        Binary::MinimumDefined => {
-            add_slope_of_two!((g, a, b, y) => ga, |a, b, _| if a <= b || b.is_nan() { 1.0 } else { 0.0 });
-        }
+        Binary::Minimum => add_picked!((g, a, b) => ga, |a, b| a <= b),
+        Binary::Maximum => add_picked!((g, a, b) => ga, |a, b| a >= b),
+        Binary::MinimumDefined => add_picked!((g, a, b) => ga, |a, b| a <= b || b.is_nan()),
         Binary::LogAddExp => add_slope_of_two!((g, a, b, y) => ga, |a, _, y| share(a, y)),
         Binary::XLogY => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| ln(b)),
         Binary::XLog1pY => add_slope_of_two!((g, a, b, y) => ga, |_, b, _| log1p(b)),
@@ -180,11 +185,10 @@ pub(super) fn right_slope(
         Binary::Power => add_slope_of_two!((g, a, b, y) => gb, |a, _, y| if y == 0.0 { 0.0 } else { y * ln(a) }),
         Binary::Atan2 => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| -a / (a * a + b * b)),
         Binary::Hypot => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| if y == 0.0 { 0.0 } else { b / y }),
-        Binary::Minimum => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a <= b { 0.0 } else { 1.0 }),
-        Binary::Maximum => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a >= b { 0.0 } else { 1.0 }),
-        Binary::MinimumDefined => {
-            add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a <= b || b.is_nan() { 0.0 } else { 1.0 });
-        }
+        // Of equal ones the first is picked.
+        Binary::Minimum => add_picked!((g, a, b) => gb, |a, b| b < a),
+        Binary::Maximum => add_picked!((g, a, b) => gb, |a, b| b > a),
+        Binary::MinimumDefined => add_picked!((g, a, b) => gb, |a, b| b < a || a.is_nan()),
         Binary::LogAddExp => add_slope_of_two!((g, a, b, y) => gb, |_, b, y| share(b, y)),
         Binary::XLogY => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a == 0.0 { 0.0 } else { a / b }),
         Binary::XLog1pY => add_slope_of_two!((g, a, b, y) => gb, |a, b, _| if a == 0.0 { 0.0 } else { a / (1.0 + b) }),
@@ -199,6 +203,18 @@ pub(super) fn right_slope(
 pub(super) fn add_all(g: &[f64], to: &mut [f64]) {
     for (to, &g) in to.iter_mut().zip(g) {
         *to += g;
+    }
+}
+
+/// `b a^(b - 1)`, by the value `y` itself where `a` is not zero.
+#[inline(always)]
+fn power_slope(a: f64, b: f64, y: f64) -> f64 {
+    if b == 0.0 {
+        0.0
+    } else if a == 0.0 {
+        b * libm::pow(a, b - 1.0)
+    } else {
+        b * (y / a)
     }
 }
 

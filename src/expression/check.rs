@@ -3,10 +3,10 @@
 use std::ops::Range;
 
 use super::errors::FormulaError;
+use super::kinds::Id;
 use super::lexer::Fault;
 use super::lower::{Lowering, Value};
 use super::margin::event;
-use super::operations::Id;
 use super::parser::{Syntax, parse};
 use super::plan::Root;
 use super::program::{Output, Program};

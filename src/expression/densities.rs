@@ -6,13 +6,14 @@
 
 use std::f64::consts::PI;
 
-use super::operations::Binary::{
+use super::kinds::Binary::{
     Add, And, Differ, Divide, Less, LessEqual, LnRising, Multiply, Or, Subtract, XLog1pY, XLogY,
 };
-use super::operations::Unary::{
+use super::kinds::Id;
+use super::kinds::Unary::{
     IsFraction, Ln, LnGammaHalfStep, LnGammaPositive, Log1p, Negate, Softplus, Square, WholePower,
 };
-use super::operations::{Id, Operations};
+use super::operations::Operations;
 use super::special::LN_SQRT_2_PI;
 
 /// `core - normaliser`, of which a sum may be taken side by side.

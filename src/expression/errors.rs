@@ -27,11 +27,12 @@ impl FormulaError {
 }
 
 /// The name among `known` that is nearest to `name`: fewest letters added, left out, changed or swapped with their
-/// neighbour, and no more than a third of them. Of equally near ones the first.
+/// neighbour, and no more than a third of them (one of two). Of equally near ones the first.
 #[must_use]
 pub fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
     let letters: Vec<char> = name.to_lowercase().chars().collect();
-    let most = (letters.len() / 3).max(1);
+    // Every other single letter is one change away from a single letter: that is no nearness.
+    let most = if letters.len() == 2 { 1 } else { letters.len() / 3 };
     let mut best: Option<(usize, &str)> = None;
     for candidate in known {
         let other: Vec<char> = candidate.to_lowercase().chars().collect();

@@ -1,7 +1,8 @@
 //! The functions of the language: their names, their arguments, and the operations they are made of.
 
 use super::densities;
-use super::operations::{Binary, Id, Operations, Unary};
+use super::kinds::{Binary, Id, Unary};
+use super::operations::Operations;
 
 /// How a function is made.
 #[derive(Clone, Copy)]
@@ -140,4 +141,12 @@ pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 19] = [
 /// The function called `name`.
 pub(super) fn function(name: &str) -> Option<&'static Function> {
     FUNCTIONS.iter().find(|function| function.name == name)
+}
+
+/// A function as one writes it: `atan2(y, x)`.
+pub(super) fn written(function: &Function) -> String {
+    match function.body {
+        Body::Chain(..) => format!("{0}(column) or {0}(a, b, ...)", function.name),
+        _ => format!("{}({})", function.name, function.arguments.join(", ")),
+    }
 }

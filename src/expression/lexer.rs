@@ -38,7 +38,7 @@ pub(super) enum Token {
 const SIGNS: [&str; 16] = ["<=", ">=", "==", "!=", "<", ">", "+", "-", "*", "/", "^", "(", ")", "[", "]", ","];
 
 /// What people write when they mean something else, and what to write instead.
-const FOREIGN: [(&str, &str); 17] = [
+const FOREIGN: [(&str, &str); 19] = [
     ("**", "write ^ for a power"),
     ("&&", "write `and`"),
     ("||", "write `or`"),
@@ -56,6 +56,8 @@ const FOREIGN: [(&str, &str); 17] = [
     ("\u{2013}", "write the plain minus sign of the keyboard"),
     ("%", "write x - floor(x/m)*m for a remainder, x/100 for a percentage"),
     ("_", "a name begins with a letter"),
+    ("²", "write ^2"),
+    ("³", "write ^3"),
 ];
 
 /// Whether `c` may begin a name.
@@ -64,9 +66,10 @@ pub(super) fn begins_name(c: char) -> bool {
 }
 
 /// Whether `c` may stand inside a name: letters and digits of any script, `_`, and the accents that some systems
-/// write as characters of their own.
+/// write as characters of their own. Superscripts may not: `x²` is meant as a power.
 pub(super) fn continues_name(c: char) -> bool {
-    c.is_alphanumeric() || c == '_' || ('\u{300}'..='\u{36f}').contains(&c)
+    let superscript = matches!(c, '²' | '³' | '¹' | '⁰' | '⁴'..='⁹');
+    (c.is_alphanumeric() && !superscript) || c == '_' || ('\u{300}'..='\u{36f}').contains(&c)
 }
 
 /// All tokens of `text` with their byte spans; the last one is [`Token::End`].
@@ -192,12 +195,15 @@ mod tests {
 
     #[test]
     fn signs_from_elsewhere_are_explained() {
-        for (text, part) in [("a ** b", "^"), ("a && b", "and"), ("a = b", "=="), ("a ≤ b", "<="), ("a − b", "minus")]
+        for (text, part) in
+            [("a ** b", "^"), ("a && b", "and"), ("a = b", "=="), ("a ≤ b", "<="), ("a − b", "minus"), ("a ² ", "^2")]
         {
             let fault = tokens(text).unwrap_err();
             assert!(fault.help.unwrap().contains(part), "{text}");
             assert_eq!(fault.span.start, 2);
         }
+        assert_eq!(tokens("größe²").unwrap_err().span, 7..9);
+        assert_eq!(plain("Q₁₀₀"), vec![Token::Name("Q₁₀₀".into()), Token::End]);
         assert_eq!(plain("a != b").len(), 4);
         assert!(tokens("a $ b").unwrap_err().message.contains('$'));
         assert!(tokens("x == 'Alder").unwrap_err().message.contains("closing quote"));

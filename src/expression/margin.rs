@@ -1,8 +1,8 @@
 //! Events: how far a point is from one, and whether it is in it as written.
 
+use super::kinds::{Binary, Id};
 use super::lexer::Fault;
 use super::lower::{Lowering, Value};
-use super::operations::{Binary, Id};
 use super::parser::{Infix, Node, Place, Syntax};
 
 /// Margin and truth of the event that `lowering` lowered last, `syntax`; `None` after telling what is no event in it.
@@ -10,6 +10,9 @@ use super::parser::{Infix, Node, Place, Syntax};
 /// The margin of an inequality is negative or zero where it holds: `B - A` for `A >= B` and `A > B`, `A - B` for the
 /// others. `and` takes the largest, `or` the smallest of those that are defined. The truth is that of the text.
 pub(super) fn event(lowering: &mut Lowering<'_>, syntax: &Syntax) -> Option<(Id, Id)> {
+    if lowering.has_faults() {
+        return None;
+    }
     let mut inequalities = Vec::new();
     let mut open = vec![syntax.root()];
     let mut sound = true;

@@ -15,21 +15,26 @@
 //! operations and the data only: of a column that depends on the point one row exists at a time.
 
 mod backward;
+mod calls;
 mod check;
 mod columns;
 mod densities;
 mod errors;
 mod forward;
 mod functions;
+mod gamma;
+mod kinds;
 mod lexer;
 mod lower;
 mod margin;
+mod names;
 mod operations;
 mod parser;
 mod plan;
 mod program;
 mod scope;
 mod special;
+mod sums;
 mod sweep;
 
 pub use columns::{Rows, RowsId};

@@ -1,140 +1,21 @@
-//! The operations of which every formula is made, and the shared list in which each stands once.
+//! The shared list of operations, in which each stands once.
 
 use std::collections::HashMap;
 use std::collections::HashSet;
 
 use super::columns::RowsId;
-use super::forward::{Operand, Row, binary_long, finish_log_sum_exp, reduce_row, select, unary_long};
-
-/// Place of an operation in [`Operations`]; its arguments have smaller ones.
-pub(super) type Id = u32;
-
-/// Functions of one number.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
-pub(super) enum Unary {
-    Negate,
-    Not,
-    Square,
-    WholePower(i32),
-    Exp,
-    Ln,
-    Log10,
-    Log1p,
-    Expm1,
-    Sqrt,
-    Abs,
-    Floor,
-    Ceil,
-    Round,
-    Sin,
-    Cos,
-    Tan,
-    Asin,
-    Acos,
-    Atan,
-    Sinh,
-    Cosh,
-    Tanh,
-    LnGamma,
-    LnGammaPositive,
-    LnGammaHalfStep,
-    Erf,
-    Erfc,
-    NormalCdf,
-    NormalQuantile,
-    LogNormalTail,
-    Logistic,
-    Logit,
-    Softplus,
-    Present,
-    IsFraction,
-}
-
-/// Functions of two numbers. Conditions are 1 and 0; a comparison with an undefined side is 0.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
-pub(super) enum Binary {
-    Add,
-    Subtract,
-    Multiply,
-    Divide,
-    Power,
-    Atan2,
-    Hypot,
-    Minimum,
-    Maximum,
-    /// The smaller of the two that are defined: margins of events joined by `or`.
-    MinimumDefined,
-    LogAddExp,
-    XLogY,
-    XLog1pY,
-    LnRising,
-    Less,
-    LessEqual,
-    Equal,
-    Differ,
-    And,
-    Or,
-}
-
-/// Ways to make one number of a column.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
-pub(super) enum Reduction {
-    Sum,
-    Minimum,
-    Maximum,
-    LogSumExp,
-}
-
-/// One operation. Floating-point constants are told apart by their bits.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
-pub(super) enum Op {
-    Constant(u64),
-    /// A column of numbers known before any point is.
-    Data(u32),
-    /// An input of the program.
-    Input(u32),
-    /// In row `r`, input `first + r`.
-    InputRow {
-        first: u32,
-        rows: RowsId,
-    },
-    /// In row `r`, input `first + members[table][r]`.
-    InputMember {
-        first: u32,
-        table: u32,
-    },
-    Unary(Unary, Id),
-    Binary(Binary, Id, Id),
-    /// The second argument where the first is not zero, else the third.
-    Select(Id, Id, Id),
-    /// The value in the row before; in the first row `first`.
-    Lag {
-        of: Id,
-        first: Id,
-        rows: RowsId,
-    },
-    Reduce(Reduction, Id),
-}
-
-/// An operation and what is known of its result.
-#[derive(Debug, Clone, Copy)]
-pub(super) struct Entry {
-    pub(super) op: Op,
-    /// The rows it runs over; `None` for one number.
-    pub(super) rows: Option<RowsId>,
-    /// Whether it depends on the inputs.
-    pub(super) varies: bool,
-}
+use super::forward::{Operand, binary_long, select, unary_long};
+use super::kinds::{Binary, Entry, Id, Op, Unary};
 
 /// All operations of a program, each once (hash consing), arguments before results. What depends on no input is
 /// evaluated on entry: numbers become constants, columns become data.
 #[derive(Debug, Clone, Default)]
 pub(super) struct Operations {
     entries: Vec<Entry>,
-    seen: HashMap<Op, Id>,
-    separable: HashSet<Id>,
+    pub(super) seen: HashMap<Op, Id>,
+    pub(super) separable: HashSet<Id>,
     /// Length of every kind of rows.
-    pub(super) row_counts: Vec<usize>,
+    row_counts: Vec<usize>,
     /// Data columns; [`Op::Data`] points here.
     pub(super) data: Vec<Vec<f64>>,
     data_rows: Vec<RowsId>,
@@ -143,17 +24,12 @@ pub(super) struct Operations {
     member_rows: Vec<RowsId>,
 }
 
-/// What a sum was taken out of, to be put back around it.
-enum Outside {
-    Negated,
-    Times(Id),
-    Over(Id),
-    Plus(Id),
-    Minus(Id),
-    From(Id),
-}
-
 impl Operations {
+    /// No operations yet; `row_counts` are the lengths of all kinds of rows.
+    pub(super) fn new(row_counts: Vec<usize>) -> Self {
+        Self { row_counts, ..Self::default() }
+    }
+
     pub(super) fn len(&self) -> usize {
         self.entries.len()
     }
@@ -162,7 +38,7 @@ impl Operations {
         self.entries[id as usize]
     }
 
-    fn rows(&self, id: Id) -> Option<RowsId> {
+    pub(super) fn rows(&self, id: Id) -> Option<RowsId> {
         self.entry(id).rows
     }
 
@@ -239,6 +115,7 @@ impl Operations {
     /// `a^b`, by multiplication and square roots where the exponent is a constant that allows it.
     pub(super) fn power(&mut self, a: Id, b: Id) -> Id {
         match self.as_constant(b) {
+            Some(0.0) => self.constant(1.0),
             Some(2.0) => self.unary(Unary::Square, a),
             Some(0.5) => self.unary(Unary::Sqrt, a),
             Some(n) if n == n.floor() && (1.0..=16.0).contains(&n.abs()) => self.unary(Unary::WholePower(n as i32), a),
@@ -288,114 +165,8 @@ impl Operations {
         })
     }
 
-    /// One number of the column `of`, which runs over `rows` (or is the same in each of them).
-    ///
-    /// Factors that are the same in every row leave a sum, and so do the sides of what is [`Self::separable`].
-    pub(super) fn reduce(&mut self, reduction: Reduction, of: Id, rows: RowsId) -> Id {
-        let count = self.row_count(rows);
-        if count == 0 {
-            return self.constant(match reduction {
-                Reduction::Sum => 0.0,
-                Reduction::Minimum => f64::INFINITY,
-                Reduction::Maximum | Reduction::LogSumExp => f64::NEG_INFINITY,
-            });
-        }
-        if reduction != Reduction::Sum {
-            return self.reduce_plain(reduction, of, count);
-        }
-        let (inner, around) = self.peel(of, rows);
-        let mut sum = self.reduce_plain(Reduction::Sum, inner, count);
-        for outside in around.into_iter().rev() {
-            sum = match outside {
-                Outside::Negated => self.unary(Unary::Negate, sum),
-                Outside::Times(factor) => self.binary(Binary::Multiply, factor, sum),
-                Outside::Over(divisor) => self.binary(Binary::Divide, sum, divisor),
-                Outside::Plus(other) => self.binary(Binary::Add, sum, other),
-                Outside::Minus(other) => self.binary(Binary::Subtract, sum, other),
-                Outside::From(other) => self.binary(Binary::Subtract, other, sum),
-            };
-        }
-        sum
-    }
-
-    /// What is left of the summand `of` once everything that can is taken out, and that, outermost first.
-    fn peel(&mut self, of: Id, rows: RowsId) -> (Id, Vec<Outside>) {
-        let mut inner = of;
-        let mut around = Vec::new();
-        while let Some(all_rows) = self.rows(inner) {
-            debug_assert_eq!(all_rows, rows);
-            let (outside, next) = match self.entry(inner).op {
-                Op::Unary(Unary::Negate, a) => (Outside::Negated, a),
-                Op::Binary(Binary::Multiply, a, b) if self.rows(a).is_none() => (Outside::Times(a), b),
-                Op::Binary(Binary::Multiply, a, b) if self.rows(b).is_none() => (Outside::Times(b), a),
-                Op::Binary(Binary::Divide, a, b) if self.rows(b).is_none() => (Outside::Over(b), a),
-                Op::Binary(function @ (Binary::Add | Binary::Subtract), a, b) if self.separable.contains(&inner) => {
-                    // The simple side is a number or data: its own sum costs nothing a point.
-                    let simple = |id: Id| self.rows(id).is_none() || !self.entry(id).varies;
-                    let (apart, rest) = if simple(b) { (b, a) } else { (a, b) };
-                    if !simple(apart) {
-                        break;
-                    }
-                    let other = self.reduce(Reduction::Sum, apart, rows);
-                    let outside = match function {
-                        Binary::Add => Outside::Plus(other),
-                        _ if apart == b => Outside::Minus(other),
-                        _ => Outside::From(other),
-                    };
-                    (outside, rest)
-                }
-                _ => break,
-            };
-            around.push(outside);
-            inner = next;
-        }
-        (inner, around)
-    }
-
-    /// Says that a sum over the sum or difference `id` may be taken of its sides one by one.
-    ///
-    /// That is done for the normalising parts of log densities only: of `sum(level - mean)` it would make the
-    /// difference of two large sums and lose what the analyst took care to keep.
-    pub(super) fn separable(&mut self, id: Id) -> Id {
-        self.separable.insert(id);
-        id
-    }
-
-    fn reduce_plain(&mut self, reduction: Reduction, of: Id, count: usize) -> Id {
-        let entry = self.entry(of);
-        if entry.rows.is_none() {
-            // The same number in every row.
-            let n = self.constant(count as f64);
-            return match reduction {
-                Reduction::Sum => self.binary(Binary::Multiply, n, of),
-                Reduction::Minimum | Reduction::Maximum => of,
-                Reduction::LogSumExp => {
-                    let ln_n = self.unary(Unary::Ln, n);
-                    self.binary(Binary::Add, of, ln_n)
-                }
-            };
-        }
-        let op = Op::Reduce(reduction, of);
-        if let Some(&known) = self.seen.get(&op) {
-            return known;
-        }
-        if entry.varies {
-            return self.add(op, None, true);
-        }
-        self.fold(op, None, |list, out| {
-            let mut extra = [0.0];
-            let mut spare = [Row::ZERO; 2];
-            for r in 0..count {
-                reduce_row(reduction, r, Operand::Scalar(list.operand(of).at(r)), &mut spare, out, &mut extra);
-            }
-            if reduction == Reduction::LogSumExp {
-                finish_log_sum_exp(out, &extra);
-            }
-        })
-    }
-
     /// Evaluates `op` now, by `fill` over one number or all rows, and enters the result in its place.
-    fn fold(&mut self, op: Op, rows: Option<RowsId>, fill: impl FnOnce(&Self, &mut [f64])) -> Id {
+    pub(super) fn fold(&mut self, op: Op, rows: Option<RowsId>, fill: impl FnOnce(&Self, &mut [f64])) -> Id {
         let mut out = vec![0.0; rows.map_or(1, |rows| self.row_count(rows))];
         fill(self, &mut out);
         let id = match rows {
@@ -407,7 +178,7 @@ impl Operations {
     }
 
     /// A constant or a data column, for folding.
-    fn operand(&self, id: Id) -> Operand<'_> {
+    pub(super) fn operand(&self, id: Id) -> Operand<'_> {
         match self.entry(id).op {
             Op::Constant(bits) => Operand::Scalar(f64::from_bits(bits)),
             Op::Data(column) => Operand::Block(&self.data[column as usize]),
@@ -415,7 +186,7 @@ impl Operations {
         }
     }
 
-    fn add(&mut self, op: Op, rows: Option<RowsId>, varies: bool) -> Id {
+    pub(super) fn add(&mut self, op: Op, rows: Option<RowsId>, varies: bool) -> Id {
         if let Some(&known) = self.seen.get(&op) {
             return known;
         }
@@ -423,5 +194,80 @@ impl Operations {
         self.entries.push(Entry { op, rows, varies });
         self.seen.insert(op, id);
         id
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn list() -> Operations {
+        Operations::new(vec![3])
+    }
+
+    #[test]
+    fn equal_parts_are_one_and_order_of_sums_does_not_matter() {
+        let mut list = list();
+        let (x, y) = (list.input(0), list.input(1));
+        let sum = list.binary(Binary::Add, x, y);
+        assert_eq!(list.binary(Binary::Add, y, x), sum);
+        assert_ne!(list.binary(Binary::Subtract, x, y), list.binary(Binary::Subtract, y, x));
+        let before = list.len();
+        let (a, b) = (list.unary(Unary::Exp, sum), list.unary(Unary::Exp, sum));
+        assert_eq!((a, list.len()), (b, before + 1));
+    }
+
+    #[test]
+    fn what_no_input_changes_is_computed_at_once() {
+        let mut list = list();
+        let rows = RowsId(0);
+        let (two, column) = (list.constant(2.0), list.data(rows, vec![1.0, 2.0, 4.0]));
+        let eight = list.power(two, two);
+        let eight = list.binary(Binary::Multiply, eight, two);
+        assert_eq!(list.as_constant(eight), Some(8.0));
+        let product = list.binary(Binary::Multiply, eight, column);
+        let logs = list.unary(Unary::Ln, product);
+        let again = list.binary(Binary::Multiply, eight, column);
+        assert_eq!(list.unary(Unary::Ln, again), logs, "a folded column is shared like any other");
+        let Op::Data(made) = list.entry(product).op else { panic!("a column of numbers is data") };
+        assert_eq!(list.data[made as usize], [8.0, 16.0, 32.0]);
+        let before = list.lag(column, two, rows);
+        let Op::Data(made) = list.entry(before).op else { panic!("a lag of data is data") };
+        assert_eq!(list.data[made as usize], [2.0, 1.0, 2.0]);
+        assert!(!list.entry(logs).varies);
+    }
+
+    #[test]
+    fn known_conditions_choose_for_good() {
+        let mut list = list();
+        let rows = RowsId(0);
+        let (x, zero) = (list.input(0), list.constant(0.0));
+        let everywhere = list.data(rows, vec![1.0; 3]);
+        let nowhere = list.data(rows, vec![0.0; 3]);
+        let somewhere = list.data(rows, vec![1.0, 0.0, 1.0]);
+        assert_eq!(list.select(everywhere, x, zero), x);
+        assert_eq!(list.select(nowhere, x, zero), zero);
+        assert_eq!(list.select(somewhere, x, x), x);
+        let chosen = list.select(somewhere, x, zero);
+        assert_eq!(list.entry(chosen).rows, Some(rows));
+    }
+
+    #[test]
+    fn small_whole_powers_and_roots_need_no_logarithm() {
+        let mut list = list();
+        let x = list.input(0);
+        for (exponent, want) in [
+            (2.0, Op::Unary(Unary::Square, x)),
+            (3.0, Op::Unary(Unary::WholePower(3), x)),
+            (-16.0, Op::Unary(Unary::WholePower(-16), x)),
+            (0.5, Op::Unary(Unary::Sqrt, x)),
+        ] {
+            let n = list.constant(exponent);
+            let power = list.power(x, n);
+            assert_eq!(list.entry(power).op, want);
+        }
+        let n = list.constant(1.7);
+        let power = list.power(x, n);
+        assert_eq!(list.entry(power).op, Op::Binary(Binary::Power, x, n));
     }
 }

@@ -6,7 +6,8 @@
 //! `s + 1`.
 
 use super::columns::RowsId;
-use super::operations::{Binary, Id, Op, Operations, Reduction, Unary};
+use super::kinds::{Binary, Id, Op, Reduction, Unary};
+use super::operations::Operations;
 
 /// Place of a stretch of points' numbers in the work space.
 pub(super) type Slot = u32;
@@ -286,4 +287,45 @@ fn reached(operations: &Operations, starts: impl Iterator<Item = Id>, under_redu
         }
     }
     reached
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// The plan of `sum((c - mean(c))^2)` with `c = exp(x * data)`, and the operations.
+    fn variance() -> Plan {
+        let mut list = Operations::new(vec![4]);
+        let rows = RowsId(0);
+        let (x, data) = (list.input(0), list.data(rows, vec![1.0, 2.0, 3.0, 4.0]));
+        let product = list.binary(Binary::Multiply, x, data);
+        let column = list.unary(Unary::Exp, product);
+        let sum = list.reduce(Reduction::Sum, column, rows);
+        let n = list.constant(4.0);
+        let mean = list.binary(Binary::Divide, sum, n);
+        let difference = list.binary(Binary::Subtract, column, mean);
+        let square = list.unary(Unary::Square, difference);
+        let total = list.reduce(Reduction::Sum, square, rows);
+        let idle = list.unary(Unary::Sin, x);
+        assert!(idle > total);
+        Plan::new(&list, &[Root { output: 0, id: total, rows: None }])
+    }
+
+    #[test]
+    fn sums_over_sums_take_a_pass_each() {
+        let plan = variance();
+        let shape: Vec<(usize, Vec<(usize, usize)>)> = plan
+            .stages
+            .iter()
+            .map(|stage| {
+                let passes = stage.passes.iter().map(|pass| (pass.steps.len(), pass.folds.len())).collect();
+                (stage.steps.len(), passes)
+            })
+            .collect();
+        // Stage 0: product, exp and their sum in one pass; stage 1: the mean, then all four again for the squares.
+        assert_eq!(shape, [(0, vec![(2, 1)]), (1, vec![(4, 1)]), (0, vec![])]);
+        assert_eq!(plan.inputs, [0]);
+        // Two for each sum, one for each other operation that is needed.
+        assert_eq!(plan.n_slots, 2 * 2 + 5);
+    }
 }

@@ -2,7 +2,8 @@
 
 use super::backward::{add_all, branch_slope, left_slope, right_slope, row_slope, unary_slope};
 use super::forward::{Operand, Row, Spare, binary, finish_log_sum_exp, reduce_row, select, unary};
-use super::operations::{Operations, Reduction};
+use super::kinds::Reduction;
+use super::operations::Operations;
 use super::plan::{Action, Fold, Lag, Pass, Plan, Slot, Source, Step};
 use crate::numeric::BLOCK;
 

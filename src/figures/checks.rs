@@ -4,11 +4,12 @@ use super::Drawing;
 use super::Style;
 use super::table::Cell;
 
-/// Draws at several widths and checks each drawing; keeps the pictures in the temporary folder if the environment
-/// variable `EVENPOISE_KEEP_FIGURES` is set, to be looked at.
+/// Draws at several widths and checks each drawing. If the environment variable `EVENPOISE_KEEP_FIGURES` holds a width
+/// in centimetres, pictures of that width are kept in the temporary folder, to be looked at.
 pub(super) fn check(name: &str, draw: impl Fn(&Style) -> Vec<Drawing>) {
-    if std::env::var_os("EVENPOISE_KEEP_FIGURES").is_some() {
-        keep(name, &draw(&Style::default()));
+    if let Ok(width) = std::env::var("EVENPOISE_KEEP_FIGURES") {
+        let width: f64 = width.parse().expect("EVENPOISE_KEEP_FIGURES is a width in centimetres");
+        keep(name, &draw(&Style::new(width, 300.0).unwrap()));
     }
     for width in [8.0, 11.0, 16.0, 24.0] {
         let style = Style::new(width, 100.0).unwrap();

@@ -53,13 +53,6 @@ impl Colour {
         let (a, b) = (self.luminance() + 0.05, other.luminance() + 0.05);
         if a > b { a / b } else { b / a }
     }
-
-    /// The colour as `#rrggbb`.
-    #[must_use]
-    pub fn hex(self) -> String {
-        let [red, green, blue] = self.channels;
-        format!("#{red:02x}{green:02x}{blue:02x}")
-    }
 }
 
 #[cfg(test)]

@@ -81,10 +81,12 @@ pub fn range(column: &VariableColumn, weights: &[f64]) -> (f64, f64, Scale) {
     (floor, high + pad, Scale::Linear)
 }
 
-/// Weights that can be summed: negative ones and those that are not finite count as zero.
+/// Weights that can be summed: the largest is one, negative ones and those that are not finite count as zero.
 #[must_use]
 pub fn clean(weights: &[f64]) -> Vec<f64> {
-    weights.iter().map(|&w| if w.is_finite() && w > 0.0 { w } else { 0.0 }).collect()
+    let counts = |w: f64| w.is_finite() && w > 0.0;
+    let largest = weights.iter().copied().filter(|&w| counts(w)).fold(0.0, f64::max);
+    weights.iter().map(|&w| if counts(w) { w / largest } else { 0.0 }).collect()
 }
 
 /// The draws with weight and a finite value, in rising order of their values (ties in order of draws).
@@ -149,7 +151,7 @@ mod tests {
         assert_eq!(&positions[..4], &[0.875, 0.125, 0.5, 0.5]);
         assert!(positions[4].is_nan());
         assert_eq!(quantiles(&values, &[0.0; 5], [0.5]), None);
-        assert_eq!(clean(&[-1.0, f64::NAN, f64::INFINITY, 2.0]), [0.0, 0.0, 0.0, 2.0]);
+        assert_eq!(clean(&[-1.0, f64::NAN, f64::INFINITY, 1e308, 1e308]), [0.0, 0.0, 0.0, 1.0, 1.0]);
     }
 
     #[test]

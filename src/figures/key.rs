@@ -3,11 +3,11 @@
 use super::LINE;
 use super::Style;
 use super::canvas::Anchor;
-use super::canvas::Area;
 use super::canvas::Canvas;
 use super::canvas::Pen;
 use super::colour::Colour;
 use super::colour::INK;
+use super::place::Area;
 use super::text::Face;
 use super::text::shorten;
 use super::text::width;

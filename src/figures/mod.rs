@@ -10,8 +10,8 @@
 //!   ([`dependence`] finds them);
 //! * [`heavy`]: in which variables, and on which side, the heaviest draws lie.
 //!
-//! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`], [`canvas`] (marks and text boxes in points),
-//! [`panel`], [`key`], [`table`], [`columns`], and the two writers [`raster`] and [`svg`](mod@svg).
+//! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`] with its [`ticks`], [`place`], [`canvas`] (marks and text boxes in points),
+//! [`panel`], [`key`], [`table`], [`columns`]. The page is drawn with `plotters`, by the two writers [`raster`] and [`svg`](mod@svg).
 //!
 //! **Sizes.** A figure is laid out anew for the width it is asked for. The text size follows the width between 8 and
 //! 16 cm, so a figure made 16 cm wide and printed 8 cm wide still has letters of 6 pt; no text is ever set below 6 pt,
@@ -29,15 +29,15 @@ pub mod heavy;
 pub mod key;
 pub mod numbers;
 pub mod panel;
+pub mod place;
+mod plot;
 pub mod progress;
 pub mod raster;
 pub mod svg;
 pub mod table;
 pub mod text;
+pub mod ticks;
 pub mod variables;
-
-mod marginal;
-mod thinned;
 
 #[cfg(test)]
 mod checks;
@@ -45,12 +45,12 @@ mod checks;
 use thiserror::Error;
 
 use canvas::Anchor;
-use canvas::Area;
 use canvas::Canvas;
 use canvas::LabelBox;
 use canvas::TextStyle;
 use colour::Colour;
 use colour::INK;
+use place::Area;
 use table::Table;
 use text::Face;
 use text::Spot;

@@ -2,13 +2,13 @@
 
 use super::Style;
 use super::axis::Axis;
-use super::axis::Tick;
 use super::canvas::Anchor;
-use super::canvas::Area;
 use super::canvas::Canvas;
 use super::canvas::Pen;
 use super::colour::INK;
+use super::place::Area;
 use super::text::Spot;
+use super::ticks::Tick;
 
 /// A rectangle with two axes.
 #[derive(Debug, Clone, PartialEq)]

@@ -4,8 +4,8 @@ use super::gamma::{HALF_LN_TWO_PI, ln_gamma_1p, log1p_minus};
 use super::gamma::{nonzero, stirling_rest};
 use super::normal;
 use super::tails::LogTails;
+use super::tails::Search;
 use super::tails::log_one_minus_exp;
-use super::tails::newton_step;
 use super::{exp, ln};
 use std::f64::consts::LN_2;
 
@@ -169,13 +169,14 @@ pub fn beta_quantile(a: f64, b: f64, log_tail: f64, upper: bool) -> (f64, f64) {
     let z = normal::quantile_of_log_tail(log_tail, false);
     let logit = (ln(a / b) + z * (1.0 / a + 1.0 / b).sqrt()).clamp(-600.0, 600.0);
     let (mut x, mut y) = (1.0 / (1.0 + exp(-logit)), 1.0 / (1.0 + exp(logit)));
-    for _ in 0..100 {
-        let step =
-            newton_step(beta_log_tails(a, b, x, y).lower, log_tail, log_beta_front(a, b, x, y), a * y - b * x, false);
-        let factor = exp(step.change.clamp(-300.0, 300.0));
+    let mut search = Search::new(log_tail, false);
+    for _ in 0..200 {
+        let have = beta_log_tails(a, b, x, y).lower;
+        let (change, is_last) = search.step(have, log_beta_front(a, b, x, y), a * y - b * x);
+        let factor = exp(change.clamp(-300.0, 300.0));
         let whole = x * factor + y;
         (x, y) = ((x * factor / whole).max(f64::MIN_POSITIVE), (y / whole).max(f64::MIN_POSITIVE));
-        if step.is_last {
+        if is_last {
             break;
         }
     }

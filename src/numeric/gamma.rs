@@ -2,7 +2,7 @@
 
 use super::normal;
 use super::tails::LogTails;
-use super::tails::newton_step;
+use super::tails::Search;
 use super::{exp, ln};
 
 /// `ln |Gamma(x)|`, to a few units in the last place for `x > 0` (its zeros at 1 and 2 included).
@@ -115,8 +115,9 @@ pub fn log_gamma_front(a: f64, x: f64) -> f64 {
     gamma_deviance(a, x) + 0.5 * ln(a) - HALF_LN_TWO_PI - stirling_rest(a)
 }
 
-/// `a (ln(x/a) - x/a + 1)`: zero at `x = a`, negative elsewhere.
-pub(super) fn gamma_deviance(a: f64, x: f64) -> f64 {
+/// `a (ln(x/a) - x/a + 1)`: zero at `x = a`, negative elsewhere; nothing cancels.
+#[must_use]
+pub fn gamma_deviance(a: f64, x: f64) -> f64 {
     let excess = (x - a) / a;
     if excess < -0.4 { a * (ln(x / a) - excess) } else { a * log1p_minus(excess) }
 }
@@ -233,12 +234,13 @@ pub fn gamma_quantile(a: f64, log_tail: f64, upper: bool) -> f64 {
         return exp(log_power_law).max(f64::MIN_POSITIVE);
     }
     let mut x = start_of_quantile(a, log_tail, upper, log_power_law);
-    for _ in 0..100 {
+    let mut search = Search::new(log_tail, upper);
+    for _ in 0..200 {
         let tails = gamma_log_tails(a, x);
         let have = if upper { tails.upper } else { tails.lower };
-        let step = newton_step(have, log_tail, log_gamma_front(a, x), a - x, upper);
-        x *= exp(step.change);
-        if step.is_last {
+        let (change, is_last) = search.step(have, log_gamma_front(a, x), a - x);
+        x = (x * exp(change)).max(f64::MIN_POSITIVE);
+        if is_last {
             break;
         }
     }

@@ -46,30 +46,52 @@ pub fn log_one_minus_exp(x: f64) -> f64 {
     if x > -std::f64::consts::LN_2 { ln(-libm::expm1(x)) } else { libm::log1p(-exp(x)) }
 }
 
-/// One step of [`newton_step`].
-#[derive(Debug, Clone, Copy)]
-pub(super) struct Step {
-    /// What to add to the coordinate.
-    pub(super) change: f64,
-    /// After this step the coordinate is good to the last bits.
-    pub(super) is_last: bool,
+/// The way to `log_tail(h) = target` in a coordinate `h` in which the density is log-concave, from a start at `h = 0`.
+///
+/// A log-concave density has log-concave tails (Prekopa 1973), so Newton's step lands on the far side of the root or
+/// before it; Halley's correction speeds that up. What is known to be too far out and too far in bounds each step: where
+/// the tail is nearly one its logarithm is flat, and a step from there would leave the doubles.
+#[derive(Debug)]
+pub(super) struct Search {
+    target: f64,
+    upper: bool,
+    at: f64,
+    least: f64,
+    greatest: f64,
 }
 
-/// Halley's step towards `log_tail(h) = target` in a coordinate `h` in which the density is log-concave.
-///
-/// `log_density` is the log density of `h`, `slope` its derivative. A log-concave density has log-concave tails
-/// (Prekopa 1973), so Newton's step from anywhere lands on the far side of the root and proceeds from there without
-/// overshooting; the correction of Halley is bounded so that this stays true in effect.
-pub(super) fn newton_step(log_tail: f64, target: f64, log_density: f64, slope: f64, upper: bool) -> Step {
-    let hazard = exp(log_density - log_tail);
-    let derivative = if upper { -hazard } else { hazard };
-    let newton = -(log_tail - target) / derivative;
-    let bend = 1.0 + 0.5 * newton * (slope - derivative);
-    let change = newton / bend.clamp(0.5, 3.0);
-    if !change.is_finite() {
-        // The tail has left the doubles: come back by a factor of e^2.
-        return Step { change: if upper { -2.0 } else { 2.0 }, is_last: false };
+impl Search {
+    pub(super) fn new(target: f64, upper: bool) -> Self {
+        Self { target, upper, at: 0.0, least: f64::NEG_INFINITY, greatest: f64::INFINITY }
     }
-    // Cubic convergence: within 1e-5 widths of the root the next step would be below 1e-15 of them.
-    Step { change, is_last: change.abs() * hazard.max(1.0) < 1e-5 }
+
+    /// What to add to `h`, and whether it is good to the last bits after that.
+    ///
+    /// `log_tail` is the tail here, `log_density` the log density of `h`, `slope` its derivative.
+    pub(super) fn step(&mut self, log_tail: f64, log_density: f64, slope: f64) -> (f64, bool) {
+        if (log_tail < self.target) == self.upper {
+            self.greatest = self.at
+        } else {
+            self.least = self.at
+        }
+        let hazard = exp(log_density - log_tail);
+        let derivative = if self.upper { -hazard } else { hazard };
+        let newton = -(log_tail - self.target) / derivative;
+        let mut change = newton / (1.0 + 0.5 * newton * (slope - derivative)).clamp(0.5, 3.0);
+        let next = self.at + change;
+        // NaN, when the tail has left the doubles, is not inside either.
+        let is_inside = next >= self.least && next <= self.greatest;
+        if !is_inside {
+            change = if self.least.is_finite() && self.greatest.is_finite() {
+                0.5 * (self.least + self.greatest) - self.at
+            } else if self.greatest == self.at {
+                -2.0
+            } else {
+                2.0
+            };
+        }
+        self.at += change;
+        // Cubic convergence: within 1e-5 widths of the root the next step would be below 1e-15 of them.
+        (change, change.abs() * hazard.max(1.0) < 1e-5)
+    }
 }

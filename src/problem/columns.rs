@@ -140,16 +140,13 @@ fn read_cells(
 ) -> Option<Cells> {
     let cell = |row: usize| raw.records[row].1[at].as_str();
     let is_number = |row: usize| number(cell(row)).is_some();
-    if is_used {
-        if let Some(&row) = kept.iter().find(|&&row| raw.is_missing(cell(row))) {
-            if raw.spec.missing.is_none() {
-                let line = raw.records[row].0;
-                let message = format!("the column `{name}` has no value in line {line} of `{}`", raw.shown);
-                let fault = raw.cell_fault(row, at, message).label("empty");
-                reader.fault(fault.help("fill the cell, or write missing = [\"\"] under [data] to drop such rows"));
-                return None;
-            }
-        }
+    let missing = kept.iter().find(|&&row| raw.is_missing(cell(row)));
+    if let Some(&row) = missing.filter(|_| is_used && raw.spec.missing.is_none()) {
+        let line = raw.records[row].0;
+        let message = format!("the column `{name}` has no value in line {line} of `{}`", raw.shown);
+        let fault = raw.cell_fault(row, at, message).label("empty");
+        reader.fault(fault.help("fill the cell, or write missing = [\"\"] under [data] to drop such rows"));
+        return None;
     }
     let present = || kept.iter().copied().filter(|&row| !raw.is_missing(cell(row)));
     let texts = || kept.iter().map(|&row| if raw.is_missing(cell(row)) { String::new() } else { cell(row).to_owned() });

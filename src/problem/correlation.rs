@@ -17,6 +17,9 @@ use super::variable::Nature;
 use super::variable::Variable;
 use super::variables_table::NatureSpec;
 use crate::distribution::Distribution;
+use crate::distribution::correlation as copula;
+use crate::distribution::correlation::CorrelationError as PairError;
+use crate::distribution::correlation::LinearCorrelation;
 use crate::expression::nearest;
 use crate::numeric::linear;
 
@@ -49,22 +52,67 @@ pub enum CorrelationError {
         /// The variable.
         name: String,
     },
-    /// No copula gives that correlation to these two distributions.
-    #[error(
-        "`{first}` and `{second}` cannot have the linear correlation {given}: theirs is between {low:.4} and {high:.4}"
-    )]
-    OutOfReach {
+    /// The two distributions cannot be so correlated.
+    #[error("`{first}` and `{second}` cannot be correlated so")]
+    Pair {
         /// One of the pair.
         first: String,
         /// The other.
         second: String,
-        /// What was asked for.
-        given: f64,
-        /// The least that they can have.
-        low: f64,
-        /// The most.
-        high: f64,
+        /// Why.
+        #[source]
+        source: PairError,
     },
+}
+
+impl CorrelationError {
+    /// The whole story, and what to write instead.
+    pub(crate) fn explained(&self) -> (String, String) {
+        let own = self.to_string();
+        let Self::Pair { first, second, source } = self else {
+            let help = "bring the numbers nearer to zero, or check their signs";
+            return (own, help.into());
+        };
+        match source {
+            PairError::Unattainable { value, low, high, .. } => (
+                format!("`{first}` and `{second}` cannot have the linear correlation {value}"),
+                format!("give a number from {low:.4} to {high:.4}, or a `rank` or `score` correlation"),
+            ),
+            other => {
+                let text = other.to_string();
+                let (message, help) = text.split_once("; ").unwrap_or((&text, ""));
+                (format!("{own}: {message}"), help.to_owned())
+            }
+        }
+    }
+}
+
+impl Correlation {
+    /// Spearman's rank correlations that follow: the whole symmetric matrix, row by row.
+    #[must_use]
+    pub fn rank(&self) -> Vec<f64> {
+        self.score.iter().map(|&score| copula::rank_of_score(score).unwrap_or(f64::NAN)).collect()
+    }
+
+    /// The linear correlations that follow; NaN for a pair of which one has no standard deviation.
+    ///
+    /// `variables` are those of the problem.
+    #[must_use]
+    pub fn linear(&self, variables: &[Variable]) -> Vec<f64> {
+        let d = self.members.len();
+        let distribution = |i: usize| match &variables.get(self.members[i])?.nature {
+            Nature::Random(distribution) => Some(distribution),
+            _ => None,
+        };
+        let pair = |i: usize, j: usize| {
+            let link = LinearCorrelation::new(distribution(i)?, distribution(j)?).ok()?;
+            link.linear(self.score[i * d + j]).ok()
+        };
+        (0..d * d)
+            .map(|at| (at / d, at % d))
+            .map(|(i, j)| if i == j { 1.0 } else { pair(i.max(j), i.min(j)).unwrap_or(f64::NAN) })
+            .collect()
+    }
 }
 
 /// A pair with the correlation that is asked of it.
@@ -114,8 +162,8 @@ pub(crate) fn settle(
         match score_of_pair(variables, pair.places, pair.kind, pair.value) {
             Ok(score) => scores.push((pair.places, score)),
             Err(error) => {
-                let fault = Fault::new(pair.span.clone(), error.to_string());
-                reader.fault(fault.help("write a number between these, or say it as rank = ... or score = ..."));
+                let (message, help) = error.explained();
+                reader.fault(Fault::new(pair.span.clone(), message).help(help));
             }
         }
     }
@@ -130,8 +178,8 @@ pub(crate) fn settle(
         match group(members, &inside) {
             Ok(found) => groups.push(found),
             Err(error) => {
-                let fault = Fault::new(table, error.to_string());
-                reader.fault(fault.help("bring the numbers nearer to zero, or check their signs"));
+                let (message, help) = error.explained();
+                reader.fault(Fault::new(table, message).help(help));
             }
         }
     }
@@ -214,11 +262,18 @@ fn score_of_pair(
             _ => Err(CorrelationError::NotSettled { name: variables[k].name.clone() }),
         }
     };
-    let (_first, _second) = (settled(i)?, settled(j)?);
-    Ok(match kind {
-        CorrelationKind::Score => value,
-        CorrelationKind::Rank => 2.0 * libm::sin(std::f64::consts::PI * value / 6.0),
-        CorrelationKind::Linear => value,
+    let (first, second) = (settled(i)?, settled(j)?);
+    let score = match kind {
+        CorrelationKind::Score => Ok(value),
+        CorrelationKind::Rank => copula::score_of_rank(value),
+        // A pair that is uncorrelated needs no standard deviations.
+        CorrelationKind::Linear if value == 0.0 => Ok(0.0),
+        CorrelationKind::Linear => LinearCorrelation::new(first, second).and_then(|link| link.score(value)),
+    };
+    score.map_err(|source| CorrelationError::Pair {
+        first: variables[j].name.clone(),
+        second: variables[i].name.clone(),
+        source,
     })
 }
 

@@ -110,12 +110,9 @@ fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>)
         }
         [(_, first), (_, second), ..] => {
             reader.fault(
-                Fault::new(
-                    second.key_span.clone(),
-                    format!("`{}` and `{}` say the same thing twice", first.key, second.key),
-                )
-                .also(first.key_span.clone(), "and this one")
-                .help("keep one of them: the others follow from it and are shown by `check`"),
+                Fault::new(second.key_span.clone(), format!("`{}` and `{}` exclude each other", first.key, second.key))
+                    .also(first.key_span.clone(), "and this one")
+                    .help("keep one of them: the others follow from it and are shown by `check`"),
             );
             None
         }
@@ -156,9 +153,8 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
             reader.fault(
                 Fault::new(
                     row.span.clone(),
-                    format!("row {} of the lower triangle has {} numbers", i + 1, cells.len()),
+                    format!("row {} of the lower triangle has {} of {} numbers", i + 1, cells.len(), i + 1),
                 )
-                .label(format!("{} wanted", i + 1))
                 .help(format!("write {example}")),
             );
             return None;

@@ -1,5 +1,7 @@
 //! Values of a problem at points in the proposal's coordinates.
 
+use std::borrow::Cow;
+
 use thiserror::Error;
 
 use super::Problem;
@@ -62,7 +64,7 @@ impl Problem {
             }
             super::Target::Model(model) => {
                 let inside = inside(&base);
-                let answers = ask(model.as_ref(), &x.select(&inside))?;
+                let answers = ask(model.as_ref(), &chosen(&x, &inside))?;
                 Ok(self.evaluation_of_model(base, &inside, &answers))
             }
         }
@@ -90,7 +92,7 @@ impl Problem {
             }
             super::Target::Model(model) => {
                 let inside = inside(&base);
-                let chosen = x.select(&inside);
+                let chosen = chosen(&x, &inside);
                 let mut answers = vec![0.0; inside.len()];
                 let mut inner = Points::zeros(self.dim(), inside.len());
                 model.gradient(&chosen, &mut answers, &mut inner)?;
@@ -127,6 +129,17 @@ impl Problem {
     #[must_use]
     pub fn estimates(&self, points: &Points) -> Vec<Vec<f64>> {
         self.estimates_at(&self.space.to_natural(points))
+    }
+
+    /// Whether each point fulfils every inequality of `require`; true everywhere where there is none.
+    ///
+    /// # Errors
+    /// Points of another dimension.
+    pub fn fulfils(&self, points: &Points) -> Result<Vec<bool>, EvaluateError> {
+        self.check_dimension(points)?;
+        let super::Target::Formulas(target) = &self.target else { return Ok(vec![true; points.len()]) };
+        let outputs = target.program.values(&self.space.to_natural(points));
+        Ok((0..points.len()).map(|i| target.requires().all(|k| outputs[k].get(i, 0) == 1.0)).collect())
     }
 
     fn estimates_at(&self, x: &Points) -> Vec<Vec<f64>> {
@@ -186,7 +199,9 @@ impl Problem {
             Aim::Density => {
                 let mut log_density = vec![f64::NEG_INFINITY; base.len()];
                 for (&i, &answer) in inside.iter().zip(answers) {
-                    log_density[i] = if answer.is_nan() { f64::NAN } else { total(base[i], answer) };
+                    // +inf is no log factor: such an answer has failed.
+                    let failed = answer.is_nan() || answer == f64::INFINITY;
+                    log_density[i] = if failed { f64::NAN } else { total(base[i], answer) };
                 }
                 Evaluation { log_density, ..Evaluation::default() }
             }
@@ -213,6 +228,11 @@ fn total(base: f64, factor: f64) -> f64 {
 /// The points that have any density: a model is not asked about the others.
 fn inside(base: &[f64]) -> Vec<usize> {
     (0..base.len()).filter(|&i| base[i] > f64::NEG_INFINITY).collect()
+}
+
+/// Those points; no copy is made where it is all of them.
+fn chosen<'a>(x: &'a Points, inside: &[usize]) -> Cow<'a, Points> {
+    if inside.len() == x.len() { Cow::Borrowed(x) } else { Cow::Owned(x.select(inside)) }
 }
 
 fn ask(model: &dyn Model, x: &Points) -> Result<Vec<f64>, ModelError> {

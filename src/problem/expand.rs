@@ -41,6 +41,9 @@ impl Expanded<'_> {
     }
 }
 
+/// Members of a group, at most: a proposal of so many coordinates is beyond any search.
+const MOST_MEMBERS: u64 = 10_000;
+
 /// Spreads out every variable. A fault of one leaves the others.
 pub(crate) fn expand<'a>(
     reader: &mut Reader<'_>,
@@ -53,6 +56,11 @@ pub(crate) fn expand<'a>(
     for spec in &statement.variables {
         let labels = match &spec.each {
             None => None,
+            Some(Each::Count(n)) if *n > MOST_MEMBERS => {
+                let message = format!("`{}` would be {n} variables; at most {MOST_MEMBERS} can be searched", spec.name);
+                reader.fault(Fault::new(spec.name_span.clone(), message).help("write fewer"));
+                continue;
+            }
             Some(Each::Count(n)) => Some((1..=*n).map(|k| k.to_string()).collect()),
             Some(Each::Column(column)) => match labels_of(reader, column, tables) {
                 Some(labels) => Some(labels),

@@ -112,8 +112,10 @@ impl Problem {
             let message = format!("`{}` is correlated already; give one matrix for all", self.variables[place].name);
             return Err(ProblemErrors::of_code(message));
         }
-        let found = correlation::of_matrix(&self.variables, members, kind, matrix)
-            .map_err(|error| ProblemErrors::of_code(error.to_string()))?;
+        let found = correlation::of_matrix(&self.variables, members, kind, matrix).map_err(|error| {
+            let (message, help) = error.explained();
+            ProblemErrors::of_code(format!("{message}; {help}"))
+        })?;
         self.correlations.push(found);
         self.placed()
     }
@@ -162,7 +164,7 @@ fn check(variables: &[Variable], model: &dyn Model) -> Result<(), ProblemErrors>
             return refuse(format!("variable {} needs a name of its own, and is called `{}`", k + 1, variable.name));
         }
         match variable.nature {
-            Nature::Range { low, high } if !(low < high) => {
+            Nature::Range { low, high } if low.is_nan() || high.is_nan() || low >= high => {
                 return refuse(format!("the range of `{}` is empty: [{low:?}, {high:?}]", variable.name));
             }
             Nature::Dependent { .. } => {

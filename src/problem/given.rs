@@ -9,6 +9,8 @@ use std::ops::Range;
 use super::space::over_blocks;
 use crate::distribution::Distribution;
 use crate::distribution::DistributionError;
+use crate::distribution::Form;
+use crate::distribution::central_slope;
 use crate::expression::Program;
 use crate::numeric::BLOCK;
 use crate::numeric::Points;
@@ -24,8 +26,9 @@ pub(crate) enum Parameter {
 #[derive(Debug, Clone)]
 pub(crate) struct GivenGroup {
     pub(crate) members: Range<usize>,
-    pub(crate) family: String,
-    pub(crate) parameters: Vec<(String, Parameter)>,
+    pub(crate) form: Form,
+    /// In the order of the form's names.
+    pub(crate) parameters: Vec<Parameter>,
     pub(crate) program: Program,
     pub(crate) between: Option<(f64, f64)>,
     pub(crate) shift: Option<f64>,
@@ -40,7 +43,7 @@ impl GivenGroup {
 
     /// Parameters at point `i`.
     fn parameters_at(&self, values: &[Points], i: usize) -> Vec<f64> {
-        let number = |&(_, parameter): &(String, Parameter)| match parameter {
+        let number = |&parameter: &Parameter| match parameter {
             Parameter::Fixed(number) => number,
             Parameter::Output(k) => values[k].get(i, 0),
         };
@@ -53,9 +56,7 @@ impl GivenGroup {
     }
 
     fn settled(&self, parameters: &[f64]) -> Result<Distribution, DistributionError> {
-        let pairs: Vec<(&str, f64)> =
-            self.parameters.iter().zip(parameters).map(|((key, _), &value)| (key.as_str(), value)).collect();
-        settled(&self.family, &pairs, self.shift, self.between)
+        placed(self.form.build(parameters)?, self.shift, self.between)
     }
 
     /// The distribution of the members at point `i`, or why there is none.
@@ -93,16 +94,10 @@ impl GivenGroup {
         over_blocks(&mut owed, |b, block| {
             for i in 0..x.block_len(b) {
                 let parameters = self.parameters_at(&values, b * BLOCK + i);
-                for (k, (_, parameter)) in self.parameters.iter().enumerate() {
-                    if matches!(parameter, Parameter::Output(_)) {
-                        block[k * BLOCK + i] = self
-                            .members
-                            .clone()
-                            .map(|j| {
-                                let slope = natural.column(b, j)[i];
-                                slope * self.slope(&parameters, k, u.column(b, j)[i], x.column(b, j)[i])
-                            })
-                            .sum();
+                for j in self.members.clone() {
+                    let slope = natural.column(b, j)[i];
+                    for (k, moved) in self.slopes(&parameters, u.column(b, j)[i]).into_iter().enumerate() {
+                        block[k * BLOCK + i] += slope * moved;
                     }
                 }
             }
@@ -117,7 +112,7 @@ impl GivenGroup {
                 }
             }
         });
-        for (k, (_, parameter)) in self.parameters.iter().enumerate() {
+        for (k, parameter) in self.parameters.iter().enumerate() {
             if let Parameter::Output(output) = parameter {
                 let (_, slopes) = self.program.value_and_gradient(*output, x);
                 over_blocks(natural, |b, block| {
@@ -132,74 +127,49 @@ impl GivenGroup {
         }
     }
 
-    /// `dx / d parameter k` at a fixed score: exact where the parameter moves or stretches the distribution, else by
-    /// differences of fourth order, right to about twelve digits.
-    fn slope(&self, parameters: &[f64], k: usize, u: f64, x: f64) -> f64 {
+    /// `dx / d parameter` for every parameter, at a fixed score: in closed form where the distribution has one, else (and
+    /// where it is truncated) by differences of fourth order.
+    fn slopes(&self, parameters: &[f64], u: f64) -> Vec<f64> {
         if self.between.is_none() {
-            if let Some(slope) = self.exact_slope(parameters, k, u, x - self.shift.unwrap_or(0.0)) {
-                return slope;
-            }
+            let exact = self.form.from_score_slopes(parameters, u);
+            return exact.unwrap_or_else(|_| vec![f64::NAN; parameters.len()]);
         }
-        self.difference(parameters, k, u)
-    }
-
-    fn exact_slope(&self, parameters: &[f64], k: usize, u: f64, x: f64) -> Option<f64> {
-        let value = |key: &str| self.parameters.iter().position(|(name, _)| name == key).map(|at| parameters[at]);
-        if value("cv").is_some() {
-            return None; // The coefficient of variation ties spread to mean.
-        }
-        let scaled = |centre: f64| (x - centre) / parameters[k];
-        match (self.family.as_str(), self.parameters[k].0.as_str()) {
-            ("normal" | "logistic" | "gumbel" | "gumbel-min", "mean") => Some(1.0),
-            ("normal" | "logistic" | "gumbel" | "gumbel-min", "sd") => Some(scaled(value("mean")?)),
-            ("cauchy" | "student-t" | "gev" | "gumbel" | "gumbel-min" | "logistic", "location") => Some(1.0),
-            ("cauchy" | "student-t" | "gev" | "gumbel" | "gumbel-min" | "logistic", "scale") => {
-                Some(scaled(value("location").unwrap_or(0.0)))
-            }
-            ("half-normal" | "half-cauchy" | "weibull" | "inverse-gamma", "scale") => Some(scaled(0.0)),
-            ("exponential", "mean") | ("pareto", "minimum") => Some(scaled(0.0)),
-            ("exponential" | "gamma", "rate") => Some(-scaled(0.0)),
-            ("lognormal", "log_mean") => Some(x),
-            ("lognormal", "log_sd") => Some(x * u),
-            ("uniform", "low") => Some((value("high")? - x) / (value("high")? - value("low")?)),
-            ("uniform", "high") => Some((x - value("low")?) / (value("high")? - value("low")?)),
-            _ => None,
-        }
+        (0..parameters.len())
+            .map(|k| match self.parameters[k] {
+                Parameter::Fixed(_) => 0.0,
+                Parameter::Output(_) => self.difference(parameters, k, u),
+            })
+            .collect()
     }
 
     fn difference(&self, parameters: &[f64], k: usize, u: f64) -> f64 {
-        let key = self.parameters[k].0.as_str();
-        let moves = ["mean", "location", "low", "high", "mode"].contains(&key);
-        let size = match self.distribution(parameters) {
+        let Some(given) = self.distribution(parameters) else { return f64::NAN };
+        let size = match self.form.names()[k] {
             // A place is measured by the width of the distribution, a size by itself.
-            Some(given) if moves => given.from_score(0.7) - given.from_score(-0.7),
-            Some(_) if key == "log_mean" => 1.0,
-            Some(_) => parameters[k].abs(),
-            None => return f64::NAN,
+            "mean" | "location" | "low" | "high" | "mode" => given.from_score(0.7) - given.from_score(-0.7),
+            "log_mean" => 1.0,
+            _ => parameters[k].abs(),
         };
-        let h = 1e-3 * size;
-        let at = |step: f64| {
+        central_slope(parameters[k], 1e-3 * size, |value| {
             let mut moved = parameters.to_vec();
-            moved[k] += step;
-            self.distribution(&moved).map_or(f64::NAN, |given| given.from_score(u))
-        };
-        (8.0 * (at(h) - at(-h)) - (at(2.0 * h) - at(-2.0 * h))) / (12.0 * h)
+            moved[k] = value;
+            self.distribution(&moved).map(|moved| moved.from_score(u))
+        })
     }
 }
 
-/// The distribution with these parameters, moved by `shift` and kept `between`.
-pub(crate) fn settled(
-    family: &str,
-    parameters: &[(&str, f64)],
+/// A distribution moved by `shift` and kept `between`.
+pub(crate) fn placed(
+    distribution: Distribution,
     shift: Option<f64>,
     between: Option<(f64, f64)>,
 ) -> Result<Distribution, DistributionError> {
-    let mut distribution = Distribution::new(family, parameters)?;
-    if let Some(shift) = shift {
-        distribution = distribution.shifted(shift)?;
+    let moved = match shift {
+        Some(shift) => distribution.shifted(shift)?,
+        None => distribution,
+    };
+    match between {
+        Some((low, high)) => moved.truncated(low, high),
+        None => Ok(moved),
     }
-    if let Some((low, high)) = between {
-        distribution = distribution.truncated(low, high)?;
-    }
-    Ok(distribution)
 }

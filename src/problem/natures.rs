@@ -4,14 +4,18 @@ use super::expand::Expanded;
 use super::faults::Fault;
 use super::given::GivenGroup;
 use super::given::Parameter;
-use super::given::settled;
+use super::given::placed;
+use super::names::all_of;
 use super::table::Reader;
 use super::variable::Nature;
 use super::variable::Variable;
 use super::variables_table::NatureSpec;
 use super::variables_table::ParameterEntry;
 use super::variables_table::ParameterSpec;
+use crate::distribution::Distribution;
 use crate::distribution::DistributionError;
+use crate::distribution::Form;
+use crate::distribution::ParameterSet;
 use crate::expression::Program;
 use crate::numeric::Points;
 
@@ -52,6 +56,16 @@ pub(crate) fn settle(
     Some(Natures { variables, groups })
 }
 
+/// Checks the distributions whose parameters are numbers, where there is no program for the others.
+pub(crate) fn check_numbers(reader: &mut Reader<'_>, expanded: &[Expanded<'_>]) {
+    for variable in expanded {
+        let NatureSpec::Random { parameters, .. } = &variable.spec.nature else { continue };
+        if parameters.iter().all(|entry| matches!(entry.value, ParameterSpec::Number(_))) {
+            nature_of(reader, variable, None, 0);
+        }
+    }
+}
+
 fn nature_of(
     reader: &mut Reader<'_>,
     variable: &Expanded<'_>,
@@ -66,24 +80,29 @@ fn nature_of(
     };
     if let Some(program) = program.filter(|program| (0..dim).any(|input| program.uses_input(input))) {
         let mut output = 0;
-        let values: Vec<(String, Parameter)> = parameters
+        let keys: Vec<&str> = parameters.iter().map(|entry| entry.key.as_str()).collect();
+        let form = match Form::new(&family.value, &keys) {
+            Ok(form) => form,
+            Err(error) => {
+                refuse(reader, variable, &error, None);
+                return None;
+            }
+        };
+        let values = parameters
             .iter()
-            .map(|entry| {
-                let value = match &entry.value {
-                    ParameterSpec::Number(number) => Parameter::Fixed(*number),
-                    ParameterSpec::Formula(_) => {
-                        output += 1;
-                        Parameter::Output(output - 1)
-                    }
-                };
-                (entry.key.clone(), value)
+            .map(|entry| match &entry.value {
+                ParameterSpec::Number(number) => Parameter::Fixed(*number),
+                ParameterSpec::Formula(_) => {
+                    output += 1;
+                    Parameter::Output(output - 1)
+                }
             })
             .collect();
         let written = parameters.iter().map(|entry| (entry.key.clone(), as_written(entry))).collect();
         let nature = Nature::Dependent { family: family.value.clone(), parameters: written };
         let group = GivenGroup {
             members: variable.places.clone(),
-            family: family.value.clone(),
+            form,
             parameters: values,
             program: program.clone(),
             between,
@@ -105,7 +124,8 @@ fn nature_of(
             (entry.key.as_str(), value)
         })
         .collect();
-    match settled(&family.value, &values, shift, between) {
+    let settled = Distribution::new(&family.value, &values).and_then(|plain| placed(plain, shift, between));
+    match settled {
         Ok(distribution) => Some((Nature::Random(distribution), None)),
         Err(error) => {
             refuse(reader, variable, &error, None);
@@ -140,12 +160,51 @@ pub(crate) fn refuse(
         _ => None,
     };
     let span = placed.unwrap_or_else(|| family.span.clone());
-    let message = format!("`{}`: {error}", variable.spec.name);
-    let fault = Fault::new(span, message);
-    reader.fault(match circumstance {
-        Some(text) => fault.help(text),
-        None => fault,
-    });
+    let (message, help) = explained(error);
+    let fault = Fault::new(span, format!("`{}`: {message}", variable.spec.name));
+    let fault = if help.is_empty() { fault } else { fault.help(help) };
+    reader.fault(circumstance.into_iter().fold(fault, Fault::help));
+}
+
+/// What is wrong with a distribution, and what to write instead.
+fn explained(error: &DistributionError) -> (String, String) {
+    match error {
+        DistributionError::Incomplete { distribution, given, sets } => {
+            let message = match given.as_slice() {
+                [] => format!("the {distribution} distribution needs parameters"),
+                [one] => format!("`{one}` alone makes no {distribution} distribution"),
+                several => format!("{} together make no {distribution} distribution", all_of(several)),
+            };
+            let set = |set: &ParameterSet| {
+                let required = all_of(set.required);
+                let optional: Vec<&str> = set.optional.iter().map(|(name, _)| *name).collect();
+                if optional.is_empty() {
+                    required
+                } else {
+                    format!("{required} (and {} if need be)", all_of(&optional))
+                }
+            };
+            (message, format!("give {}", sets.iter().map(set).collect::<Vec<_>>().join(", or ")))
+        }
+        DistributionError::Value { distribution, parameter, value, allowed } => (
+            format!("`{parameter}` = {value} is not allowed in the {distribution} distribution"),
+            format!("give {allowed}"),
+        ),
+        DistributionError::NoMass { distribution, low, high, least, greatest } => (
+            format!("no value of the {distribution} distribution lies between {low} and {high}"),
+            format!("its values lie between {least} and {greatest}"),
+        ),
+        DistributionError::Shift { distribution, .. } => (
+            format!("the {distribution} distribution cannot be shifted"),
+            "`shift` moves what lives on a half-line from 0 on; give this one another place by its own parameters"
+                .into(),
+        ),
+        other => {
+            let text = other.to_string();
+            let (message, help) = text.split_once("; ").unwrap_or((&text, ""));
+            (message.to_owned(), help.to_owned())
+        }
+    }
 }
 
 /// Groups in an order in which each comes after those it depends on; a circle is a fault.
@@ -164,8 +223,14 @@ fn in_order(
             let names: Vec<&str> =
                 circle.iter().filter_map(|&k| spec(&waiting[k])).map(|v| v.spec.name.as_str()).collect();
             let first = spec(&waiting[circle[0]]).map_or(0..0, |variable| variable.spec.name_span.clone());
-            let around = names.join(" on ");
-            let message = format!("parameters go round in a circle: {around} on {}", names[0]);
+            let message = match names.as_slice() {
+                [one] => format!("a parameter of `{one}` depends on `{one}` itself"),
+                [head, rest @ ..] => {
+                    let steps: Vec<String> = rest.iter().map(|name| format!("on `{name}`, which depends")).collect();
+                    format!("`{head}` depends {} on `{head}`", steps.join(" "))
+                }
+                [] => "parameters depend on each other in a circle".into(),
+            };
             reader.fault(
                 Fault::new(first, message).label("depends on itself in the end").help(
                     "give one of them parameters that are numbers, or that depend on variables outside the circle",

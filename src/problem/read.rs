@@ -123,16 +123,23 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
     let mut statement = statement?;
     statement.tuning = change(&statement.tuning);
     check_aim(reader, &statement);
+    let before = reader.faults.len();
     let tables = load(reader, &mut names, &statement, folder)?;
-    if !reader.faults.is_empty() {
+    if !statement.names_known || reader.faults.len() > before {
         return None; // Names that are wrong or missing would be told again, less clearly, by the formulas.
     }
     let expanded = expand::expand(reader, &statement, &tables)?;
-    let programs = programs::compile(reader, &names, &statement, &expanded, &tables);
-    let Programs { target, estimates, estimate_labels, parameters } = programs?;
+    let Some(programs) = programs::compile(reader, &names, &statement, &expanded, &tables) else {
+        natures::check_numbers(reader, &expanded);
+        return None;
+    };
+    let Programs { target, estimates, estimate_labels, parameters } = programs;
     let settled = natures::settle(reader, &expanded, &parameters)?;
     let mut variables = settled.variables;
     let correlations = correlation::settle(reader, &statement.correlations, &expanded, &variables)?;
+    if !reader.faults.is_empty() {
+        return None;
+    }
     let aim = statement.target.aim;
     let choice = statement.tuning.coordinates;
     let placed = start::place(&mut variables, &settled.groups, &correlations, aim, choice);
@@ -153,9 +160,9 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
         failed: statement.target.failed,
         space,
         start,
-        target: Target::Formulas(target),
+        target: Target::Formulas(Box::new(target)),
         estimate_names,
-        estimates: estimates.map_or(Estimates::None, Estimates::Formulas),
+        estimates: estimates.map_or(Estimates::None, |program| Estimates::Formulas(Box::new(program))),
         tuning: statement.tuning.clone(),
         data: tables,
         variables,
@@ -227,8 +234,9 @@ fn misplaced(reader: &mut Reader<'_>, errors: &[Misplaced], expanded: &[Expanded
             .variable()
             .and_then(|name| expanded.iter().find(|variable| variable.names().iter().any(|(known, _)| known == name)));
         let span = about.map_or(0..0, |variable| match error {
-            Misplaced::NearOutside { .. } => {
-                variable.spec.near.as_ref().map_or(variable.spec.name_span.clone(), |(_, span)| span.clone())
+            Misplaced::NearOutside { .. } | Misplaced::StartOfDependent { .. } => {
+                let said = variable.spec.near.as_ref().or(variable.spec.spread.as_ref());
+                said.map_or(variable.spec.name_span.clone(), |(_, span)| span.clone())
             }
             _ => variable.spec.name_span.clone(),
         });

@@ -41,6 +41,8 @@ pub(crate) struct Statement {
     pub(crate) estimates: Vec<NamedFormula>,
     pub(crate) correlations: Vec<CorrelationSpec>,
     pub(crate) tuning: TuningKeys,
+    /// Whether all that bears a name in formulas was read: only then do formulas tell more than is known already.
+    pub(crate) names_known: bool,
 }
 
 const TABLES: [&str; 9] =
@@ -59,7 +61,9 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
         return None;
     }
     let file = Table::new("a problem file", document.get_ref(), document.span());
+    let before = reader.faults.len();
     check_top(reader, &file);
+    let tables_known = reader.faults.len() == before && file.entry("variables").is_some();
     let title = read_title(reader, &file);
     let mut statement = Statement {
         title: title.unwrap_or_default(),
@@ -71,6 +75,7 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
         estimates: Vec::new(),
         correlations: Vec::new(),
         tuning: TuningKeys::default(),
+        names_known: tables_known,
     };
     let mut target = None;
     // In the order of the text, so that the first of two equal names is the one that stands first.
@@ -78,24 +83,28 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
         let name = format!("[{}]", entry.key);
         match entry.key {
             "constants" | "variables" | "data" | "formulas" | "target" | "estimates" | "tuning" => {
-                let Some(table) = reader.table(entry, &name, &format!("a table: {name}, then its keys below")) else {
-                    continue;
-                };
-                match entry.key {
-                    "constants" => statement.constants = read_constants(reader, &table),
-                    "variables" => statement.variables = variables_table::read(reader, &table),
-                    "data" => statement.data = data::read_specs(reader, &table),
-                    "formulas" => statement.formulas = read_formulas(reader, &table),
-                    "target" => target = target::read(reader, &table),
-                    "estimates" => statement.estimates = read_formulas(reader, &table),
-                    _ => statement.tuning = tuning::read(reader, &table),
+                let before = reader.faults.len();
+                let table = reader.table(entry, &name, &format!("a table: {name}, then its keys below"));
+                match (entry.key, table) {
+                    (_, None) => {}
+                    ("constants", Some(table)) => statement.constants = read_constants(reader, &table),
+                    ("variables", Some(table)) => statement.variables = variables_table::read(reader, &table),
+                    ("data", Some(table)) => statement.data = data::read_specs(reader, &table),
+                    ("formulas", Some(table)) => statement.formulas = read_formulas(reader, &table),
+                    ("target", Some(table)) => target = target::read(reader, &table),
+                    ("estimates", Some(table)) => statement.estimates = read_formulas(reader, &table),
+                    (_, Some(table)) => statement.tuning = tuning::read(reader, &table),
                 }
+                let named = ["constants", "variables", "data", "formulas"].contains(&entry.key);
+                statement.names_known &= !named || reader.faults.len() == before;
             }
             "correlation" => statement.correlations = correlation_table::read(reader, entry),
             _ => {}
         }
     }
+    let before = reader.faults.len();
     give_names(reader, names, &statement);
+    statement.names_known &= reader.faults.len() == before;
     if statement.variables.is_empty() && reader.faults.is_empty() {
         let span = file.entry("variables").map_or(0..0, |entry| entry.key_span.clone());
         reader.fault(

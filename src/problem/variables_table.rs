@@ -97,14 +97,12 @@ fn read_one(reader: &mut Reader<'_>, entry: &Entry<'_>, table: &Table<'_>) -> Op
     let each = table.entry("each").and_then(|entry| read_each(reader, entry));
     let near = placed(reader, table, "near", "near = 5.0");
     let spread = placed(reader, table, "spread", "spread = 2.0");
-    if let Some((width, span)) = &spread {
-        if !(*width > 0.0 && width.is_finite()) {
-            reader.fault(
-                Fault::new(span.clone(), "`spread` must be above zero and finite")
-                    .help("it says how wide to look first, in the variable's own unit"),
-            );
-            return None;
-        }
+    if let Some((_, span)) = spread.as_ref().filter(|(width, _)| *width <= 0.0 || width.is_infinite()) {
+        reader.fault(
+            Fault::new(span.clone(), "`spread` must be above zero and finite")
+                .help("it says how wide to look first, in the variable's own unit"),
+        );
+        return None;
     }
     let nature = match (table.entry("distribution"), table.entry("range")) {
         (Some(_), Some(range)) => {
@@ -115,11 +113,7 @@ fn read_one(reader: &mut Reader<'_>, entry: &Entry<'_>, table: &Table<'_>) -> Op
             None
         }
         (None, None) => {
-            reader.fault(
-                Fault::new(entry.key_span.clone(), format!("`{}` has neither a `distribution` nor a `range`", entry.key))
-                    .help("write distribution = \"normal\", mean = 0.0, sd = 1.0, say, or range = [0.0, inf], near = 5.0, spread = 2.0"),
-            );
-            reader.only(table, &known_keys(None));
+            no_nature(reader, entry, table);
             None
         }
         (Some(family), None) => read_random(reader, table, family),
@@ -136,6 +130,18 @@ fn read_one(reader: &mut Reader<'_>, entry: &Entry<'_>, table: &Table<'_>) -> Op
         near,
         spread,
     })
+}
+
+/// Neither a distribution nor a range: a slip in the key itself is told as such.
+fn no_nature(reader: &mut Reader<'_>, variable: &Entry<'_>, table: &Table<'_>) {
+    let slip = table.entries.iter().find(|entry| nearest(entry.key, ["distribution", "range"]).is_some());
+    match slip {
+        Some(slip) => reader.unknown_key(slip, &table.name, &COMMON),
+        None => reader.fault(
+            Fault::new(variable.key_span.clone(), format!("`{}` has neither a `distribution` nor a `range`", variable.key))
+                .help("write distribution = \"normal\", mean = 0.0, sd = 1.0, say, or range = [0.0, inf], near = 5.0, spread = 2.0"),
+        ),
+    }
 }
 
 fn placed(reader: &mut Reader<'_>, table: &Table<'_>, key: &str, example: &str) -> Option<Placed> {
@@ -155,13 +161,9 @@ fn read_each(reader: &mut Reader<'_>, entry: &Entry<'_>) -> Option<Each> {
 }
 
 /// Keys that a variable with this distribution may have.
-fn known_keys(family: Option<&str>) -> Vec<&'static str> {
-    let mut known: Vec<&str> = COMMON.to_vec();
-    if let Some(family) = family {
-        known.retain(|key| *key != "range");
-        known.extend(parameter_keys(family));
-    }
-    known
+fn known_keys(family: &str) -> Vec<&'static str> {
+    let common = COMMON.into_iter().filter(|key| *key != "range");
+    common.chain(parameter_keys(family)).collect()
 }
 
 /// Every parameter that the distribution accepts in any of its forms.
@@ -215,7 +217,7 @@ fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) ->
 }
 
 fn unknown_parameter(reader: &mut Reader<'_>, entry: &Entry<'_>, family: &str, own: &[&'static str]) {
-    let known = known_keys(Some(family));
+    let known = known_keys(family);
     let fault =
         Fault::new(entry.key_span.clone(), format!("`{}` is no parameter of the {family} distribution", entry.key))
             .label("unknown key");

@@ -2,6 +2,7 @@
 
 use crate::numeric::linear::{cholesky, invert_lower};
 use crate::numeric::ln;
+use std::sync::Arc;
 use thiserror::Error;
 
 /// What is wrong with a proposal's numbers.
@@ -55,15 +56,30 @@ pub enum ProposalError {
 ///
 /// # Source
 /// Kotz & Nadarajah, "Multivariate t Distributions and Their Applications" (2004), equation (1.1).
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone)]
 pub struct Component {
-    location: Vec<f64>,
-    factor: Vec<f64>,
-    /// Rows of the inverse factor, lower triangle only, packed: row `i` at `i (i + 1) / 2`.
-    inverse: Vec<f64>,
-    log_det_factor: f64,
+    shape: Arc<Shape>,
+    /// The scale matrix is the shape's times this.
+    widening: f64,
     df: f64,
     log_constant: f64,
+}
+
+/// Location and factor, shared by components that differ in width and tails only: their distances are computed once.
+#[derive(Debug, PartialEq)]
+pub(crate) struct Shape {
+    pub(crate) location: Vec<f64>,
+    factor: Vec<f64>,
+    /// Rows of the inverse factor, lower triangle only, packed: row `i` at `i (i + 1) / 2`.
+    pub(crate) inverse: Vec<f64>,
+    log_det_factor: f64,
+}
+
+impl PartialEq for Component {
+    fn eq(&self, other: &Self) -> bool {
+        let shapes = Arc::ptr_eq(&self.shape, &other.shape) || self.shape == other.shape;
+        shapes && self.widening == other.widening && self.df == other.df
+    }
 }
 
 impl Component {
@@ -79,12 +95,7 @@ impl Component {
     /// ```
     pub fn new(location: Vec<f64>, scale: &[f64], df: f64) -> Result<Self, ProposalError> {
         let d = location.len();
-        if scale.len() != d * d || d == 0 {
-            return Err(ProposalError::WrongLength { component: 0, got: scale.len(), wanted: d * d });
-        }
-        if location.iter().chain(scale).any(|v| !v.is_finite()) {
-            return Err(ProposalError::NotFinite { component: 0 });
-        }
+        check(&location, scale, df)?;
         let factor = cholesky(scale, d).ok_or(ProposalError::NotPositiveDefinite { component: 0 })?;
         Self::from_factor(location, factor, df)
     }
@@ -95,15 +106,7 @@ impl Component {
     /// As [`Component::new`].
     pub fn from_factor(location: Vec<f64>, factor: Vec<f64>, df: f64) -> Result<Self, ProposalError> {
         let d = location.len();
-        if factor.len() != d * d || d == 0 {
-            return Err(ProposalError::WrongLength { component: 0, got: factor.len(), wanted: d * d });
-        }
-        if location.iter().chain(&factor).any(|v| !v.is_finite()) {
-            return Err(ProposalError::NotFinite { component: 0 });
-        }
-        if !(df > 0.0) {
-            return Err(ProposalError::Df { component: 0, df });
-        }
+        check(&location, &factor, df)?;
         if (0..d).any(|i| !(factor[i * d + i] > 0.0)) {
             return Err(ProposalError::NotPositiveDefinite { component: 0 });
         }
@@ -113,30 +116,25 @@ impl Component {
         }
         let inverse = (0..d).flat_map(|i| dense[i * d..=i * d + i].to_vec()).collect();
         let log_det_factor = (0..d).map(|i| ln(factor[i * d + i])).sum();
-        let log_constant = log_constant(d, log_det_factor, df);
-        Ok(Self { location, factor, inverse, log_det_factor, df, log_constant })
+        Ok(Self::of_shape(Arc::new(Shape { location, factor, inverse, log_det_factor }), 1.0, df))
+    }
+
+    fn of_shape(shape: Arc<Shape>, widening: f64, df: f64) -> Self {
+        let d = shape.location.len();
+        let log_det_factor = shape.log_det_factor + 0.5 * d as f64 * ln(widening);
+        Self { log_constant: log_constant(d, log_det_factor, df), shape, widening, df }
     }
 
     /// The same location and scale with other degrees of freedom (infinite: Gaussian).
     #[must_use]
     pub fn with_df(&self, df: f64) -> Self {
-        let log_constant = log_constant(self.dim(), self.log_det_factor, df);
-        Self { df, log_constant, ..self.clone() }
+        Self::of_shape(Arc::clone(&self.shape), self.widening, df)
     }
 
     /// The same shape with its scale matrix multiplied by `factor > 0`.
     #[must_use]
     pub fn widened(&self, factor: f64) -> Self {
-        let root = factor.sqrt();
-        let log_det_factor = self.log_det_factor + self.dim() as f64 * ln(root);
-        Self {
-            location: self.location.clone(),
-            factor: self.factor.iter().map(|v| v * root).collect(),
-            inverse: self.inverse.iter().map(|v| v / root).collect(),
-            log_det_factor,
-            df: self.df,
-            log_constant: log_constant(self.dim(), log_det_factor, self.df),
-        }
+        Self::of_shape(Arc::clone(&self.shape), self.widening * factor, self.df)
     }
 
     /// The component in the coordinates `near + spread * x`, coordinate by coordinate.
@@ -145,42 +143,44 @@ impl Component {
     /// [`ProposalError::NotFinite`] or [`ProposalError::NotPositiveDefinite`] where the numbers leave the range of a double.
     pub fn rescaled(&self, near: &[f64], spread: &[f64]) -> Result<Self, ProposalError> {
         let d = self.dim();
-        let location = (0..d).map(|i| near[i] + spread[i] * self.location[i]).collect();
-        let factor = (0..d * d).map(|at| spread[at / d] * self.factor[at]).collect();
+        let location = (0..d).map(|i| near[i] + spread[i] * self.location()[i]).collect();
+        let factor = self.factor().iter().enumerate().map(|(at, v)| spread[at / d] * v).collect();
         Self::from_factor(location, factor, self.df)
     }
 
     /// Dimension `d`.
     #[must_use]
     pub fn dim(&self) -> usize {
-        self.location.len()
+        self.shape.location.len()
     }
 
     /// Location: the mean, where there is one.
     #[must_use]
     pub fn location(&self) -> &[f64] {
-        &self.location
+        &self.shape.location
     }
 
     /// Lower Cholesky factor of the scale matrix, row by row.
     #[must_use]
-    pub fn factor(&self) -> &[f64] {
-        &self.factor
+    pub fn factor(&self) -> Vec<f64> {
+        let root = self.widening.sqrt();
+        self.shape.factor.iter().map(|v| v * root).collect()
     }
 
     /// Scale matrix, row by row: the covariance of a Gaussian, `(v-2)/v` times that of a Student-t.
     #[must_use]
     pub fn scale(&self) -> Vec<f64> {
         let d = self.dim();
+        let factor = &self.shape.factor;
         let mut scale = vec![0.0; d * d];
         for i in 0..d {
             for j in 0..=i {
                 let mut sum = 0.0;
                 for k in 0..=j {
-                    sum += self.factor[i * d + k] * self.factor[j * d + k];
+                    sum += factor[i * d + k] * factor[j * d + k];
                 }
-                scale[i * d + j] = sum;
-                scale[j * d + i] = sum;
+                scale[i * d + j] = sum * self.widening;
+                scale[j * d + i] = sum * self.widening;
             }
         }
         scale
@@ -195,12 +195,12 @@ impl Component {
     /// `ln |L|`, `L` the Cholesky factor of the scale.
     #[must_use]
     pub fn log_det_factor(&self) -> f64 {
-        self.log_det_factor
+        self.shape.log_det_factor + 0.5 * self.dim() as f64 * ln(self.widening)
     }
 
-    /// Rows of the inverse factor, packed.
-    pub(crate) fn inverse(&self) -> &[f64] {
-        &self.inverse
+    /// What it shares with others, and how much wider than that its scale is.
+    pub(crate) fn shape(&self) -> (&Arc<Shape>, f64) {
+        (&self.shape, self.widening)
     }
 
     /// The part of the log density that no point changes.
@@ -211,17 +211,18 @@ impl Component {
     /// Squared distance `(x - m)' S^-1 (x - m)` of one point.
     #[must_use]
     pub fn distance(&self, x: &[f64]) -> f64 {
+        let shape = &self.shape;
         let mut at = 0;
         let mut q = 0.0;
         for i in 0..self.dim() {
             let mut z = 0.0;
             for j in 0..=i {
-                z += self.inverse[at + j] * (x[j] - self.location[j]);
+                z += shape.inverse[at + j] * (x[j] - shape.location[j]);
             }
             at += i + 1;
             q += z * z;
         }
-        q
+        q / self.widening
     }
 
     /// Log density of one point, in nats.
@@ -229,6 +230,17 @@ impl Component {
     pub fn log_density(&self, x: &[f64]) -> f64 {
         log_density_at(self.log_constant, self.dim(), self.df, self.distance(x))
     }
+}
+
+fn check(location: &[f64], matrix: &[f64], df: f64) -> Result<(), ProposalError> {
+    let d = location.len();
+    if matrix.len() != d * d || d == 0 {
+        return Err(ProposalError::WrongLength { component: 0, got: matrix.len(), wanted: d * d });
+    }
+    if location.iter().chain(matrix).any(|v| !v.is_finite()) {
+        return Err(ProposalError::NotFinite { component: 0 });
+    }
+    if df > 0.0 { Ok(()) } else { Err(ProposalError::Df { component: 0, df }) }
 }
 
 /// Log density at squared distance `q`.

@@ -32,10 +32,33 @@ impl BlockTerms {
         self.distances.resize(components.len() * BLOCK, 0.0);
         self.scratch.resize(d * LANES, 0.0);
         for (k, component) in components.iter().enumerate() {
-            let at = k * BLOCK..(k + 1) * BLOCK;
-            let distances = &mut self.distances[at.clone()];
-            squared_distances(block, component.location(), component.inverse(), &mut self.scratch, distances);
-            finish(component, distances, &mut self.log_densities[at]);
+            let (before, rest) = self.distances.split_at_mut(k * BLOCK);
+            let distances = &mut rest[..BLOCK];
+            let (shape, widening) = component.shape();
+            match mixture.twin(k) {
+                // The same shape at another width: its distances are known up to a factor.
+                Some((j, factor)) => {
+                    for (q, base) in distances.iter_mut().zip(&before[j * BLOCK..]) {
+                        *q = base * factor;
+                    }
+                }
+                None => {
+                    squared_distances(block, &shape.location, &shape.inverse, &mut self.scratch, distances);
+                    if widening != 1.0 {
+                        distances.iter_mut().for_each(|q| *q /= widening);
+                    }
+                }
+            }
+            finish(component, distances, &mut self.log_densities[k * BLOCK..(k + 1) * BLOCK]);
+        }
+    }
+
+    /// Log densities that the components would have with `df` degrees of freedom at these squared distances.
+    pub fn with_tails(&mut self, mixture: &Mixture, df: f64, distances: &[f64]) {
+        self.log_densities.resize(distances.len(), 0.0);
+        let columns = distances.chunks_exact(BLOCK).zip(self.log_densities.chunks_exact_mut(BLOCK));
+        for ((q, out), component) in columns.zip(mixture.components()) {
+            finish(&component.with_df(df), q, out);
         }
     }
 

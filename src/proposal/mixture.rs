@@ -3,6 +3,7 @@
 use super::{BlockTerms, Component, ProposalError};
 use crate::numeric::{BLOCK, Points, Purpose, exp, ln, normal, stream, uniform};
 use rayon::prelude::*;
+use std::sync::Arc;
 
 /// `q(x) = sum_k share_k f_k(x)`.
 ///
@@ -12,6 +13,8 @@ pub struct Mixture {
     shares: Vec<f64>,
     log_shares: Vec<f64>,
     components: Vec<Component>,
+    /// For each component, an earlier one of the same shape and the factor between their squared distances.
+    twins: Vec<Option<(usize, f64)>>,
 }
 
 /// Points drawn from a mixture and the component that each came from.
@@ -54,13 +57,14 @@ impl Mixture {
             }
         }
         let log_shares = shares.iter().map(|&s| ln(s)).collect();
-        Ok(Self { shares, log_shares, components: kept })
+        let twins = (0..kept.len()).map(|k| twin_of(&kept, k)).collect();
+        Ok(Self { shares, log_shares, components: kept, twins })
     }
 
     /// A single component.
     #[must_use]
     pub fn single(component: Component) -> Self {
-        Self { shares: vec![1.0], log_shares: vec![0.0], components: vec![component] }
+        Self { shares: vec![1.0], log_shares: vec![0.0], components: vec![component], twins: vec![None] }
     }
 
     /// Mixtures mixed: part `i` with weight `parts[i].0 >= 0`.
@@ -133,6 +137,11 @@ impl Mixture {
     #[must_use]
     pub fn components(&self) -> &[Component] {
         &self.components
+    }
+
+    /// An earlier component whose distances, times a factor, are those of component `k`.
+    pub(crate) fn twin(&self, k: usize) -> Option<(usize, f64)> {
+        self.twins[k]
     }
 
     /// `ln q(x)` of one point, nats.
@@ -212,13 +221,14 @@ impl Mixture {
     pub fn draw_block(&self, labels: &[u32], rng: &mut crate::numeric::Stream, block: &mut [f64]) {
         let d = self.dim();
         let mut z = vec![0.0; d];
+        let mut factors: Vec<Option<Vec<f64>>> = vec![None; self.len()];
         for (t, &label) in labels.iter().enumerate() {
             let component = &self.components[label as usize];
             for v in &mut z {
                 *v = normal::draw(rng);
             }
             let stretch = heaviness(component.df(), rng);
-            let factor = component.factor();
+            let factor = factors[label as usize].get_or_insert_with(|| component.factor());
             for i in 0..d {
                 let mut sum = 0.0;
                 for j in 0..=i {
@@ -228,6 +238,14 @@ impl Mixture {
             }
         }
     }
+}
+
+fn twin_of(components: &[Component], k: usize) -> Option<(usize, f64)> {
+    let (shape, widening) = components[k].shape();
+    components[..k].iter().enumerate().find_map(|(j, earlier)| {
+        let (other, width) = earlier.shape();
+        Arc::ptr_eq(shape, other).then_some((j, width / widening))
+    })
 }
 
 /// `sqrt(v / chi2_v)`, the factor that makes a Gaussian draw a Student-t draw; one for a Gaussian.

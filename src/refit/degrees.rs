@@ -1,8 +1,8 @@
 //! Degrees of freedom of a mixture, shared by its components, by a golden-section search on the weighted log density.
 
 use super::GAUSSIAN_DF;
-use crate::numeric::{Points, exp, ln, log_sum_exp};
-use crate::proposal::Mixture;
+use crate::numeric::{BLOCK, Points, exp, ln};
+use crate::proposal::{BlockTerms, Mixture};
 use argmin::core::{CostFunction, Error, Executor, State};
 use argmin::solver::goldensectionsearch::GoldenSectionSearch;
 
@@ -29,11 +29,9 @@ pub(crate) fn best_df(mixture: &Mixture, points: &Points, weights: &[f64]) -> f6
 
 /// Squared distances of the sample to every component: all that the search needs.
 struct Search {
-    d: usize,
-    log_shares: Vec<f64>,
-    log_dets: Vec<f64>,
-    distances: Vec<Vec<f64>>,
-    weights: Vec<f64>,
+    mixture: Mixture,
+    /// Distances of a block of points, a column a component, and the points' weights.
+    blocks: Vec<(Vec<f64>, Vec<f64>)>,
 }
 
 impl Search {
@@ -41,21 +39,19 @@ impl Search {
         let n = points.len();
         let stride = n.div_ceil(SAMPLE).max(1);
         let rows: Vec<usize> = (0..n).step_by(stride).filter(|&i| weights[i] > 0.0).collect();
-        let mut x = vec![0.0; mixture.dim()];
-        let distances = rows
-            .iter()
-            .map(|&i| {
-                points.copy_point(i, &mut x);
-                mixture.components().iter().map(|c| c.distance(&x)).collect()
+        let sample = points.select(&rows);
+        let mut terms = BlockTerms::default();
+        let blocks = (0..sample.n_blocks())
+            .map(|b| {
+                terms.fill(mixture, sample.block(b));
+                let mut own = vec![0.0; BLOCK];
+                for (t, w) in own.iter_mut().enumerate().take(sample.block_len(b)) {
+                    *w = weights[rows[b * BLOCK + t]];
+                }
+                (terms.distances.clone(), own)
             })
             .collect();
-        Self {
-            d: mixture.dim(),
-            log_shares: mixture.log_shares().to_vec(),
-            log_dets: mixture.components().iter().map(crate::proposal::Component::log_det_factor).collect(),
-            distances,
-            weights: rows.iter().map(|&i| weights[i]).collect(),
-        }
+        Self { mixture: mixture.clone(), blocks }
     }
 }
 
@@ -65,16 +61,17 @@ impl CostFunction for Search {
 
     fn cost(&self, log_df: &f64) -> Result<f64, Error> {
         let df = exp(*log_df);
-        let half = 0.5 * self.d as f64;
-        let constant = libm::lgamma(0.5 * df + half) - libm::lgamma(0.5 * df) - half * ln(df * std::f64::consts::PI);
-        let mut terms = vec![0.0; self.log_shares.len()];
+        let mut terms = BlockTerms::default();
+        let mut log_sums = [0.0; BLOCK];
         let mut sum = 0.0;
-        for (distances, w) in self.distances.iter().zip(&self.weights) {
-            for (k, term) in terms.iter_mut().enumerate() {
-                *term =
-                    self.log_shares[k] + constant - self.log_dets[k] - (0.5 * df + half) * ln(1.0 + distances[k] / df);
+        for (distances, weights) in &self.blocks {
+            terms.with_tails(&self.mixture, df, distances);
+            terms.log_sum(self.mixture.log_shares(), &mut log_sums);
+            for (w, l) in weights.iter().zip(&log_sums) {
+                if *w > 0.0 {
+                    sum -= w * l;
+                }
             }
-            sum -= w * log_sum_exp(&terms);
         }
         Ok(sum)
     }

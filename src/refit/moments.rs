@@ -87,81 +87,102 @@ pub fn weighted_moments(mixture: &Mixture, points: &Points, weights: &[f64], hea
     (objective, moments)
 }
 
-/// Columns that the sums over one block need.
+/// Columns that the sums over one block need: only the points that weigh on the component, side by side.
 struct Work {
     shifted: Vec<f64>,
-    pulled: Vec<f64>,
+    pulls: Vec<f64>,
+    lanes: Vec<usize>,
 }
+
+/// Sums run over this many lanes at once.
+const LANES: usize = 8;
 
 impl Work {
     fn new(d: usize) -> Self {
-        Self { shifted: vec![0.0; d * BLOCK], pulled: vec![0.0; BLOCK] }
+        Self { shifted: vec![0.0; d * BLOCK], pulls: vec![0.0; BLOCK], lanes: Vec::with_capacity(BLOCK) }
     }
 
     fn add(&mut self, block: &[f64], location: &[f64], r: &[f64], distances: &[f64], df: f64, into: &mut Moments) {
         let d = location.len();
-        let mut u = [0.0; BLOCK];
+        self.lanes.clear();
         for t in 0..BLOCK {
-            into.mass += r[t];
-            into.mass_squares += r[t] * r[t];
             if r[t] > 0.0 {
+                let u = if df == f64::INFINITY { r[t] } else { r[t] * (df + d as f64) / (df + distances[t]) };
+                into.mass += r[t];
+                into.mass_squares += r[t] * r[t];
                 into.fourth += r[t] * distances[t] * distances[t];
-                u[t] = if df == f64::INFINITY { r[t] } else { r[t] * (df + d as f64) / (df + distances[t]) };
-                into.pull += u[t];
+                into.pull += u;
+                self.pulls[self.lanes.len()] = u;
+                self.lanes.push(t);
             }
         }
-        add_products(block, location, &u, &mut self.shifted, &mut self.pulled, &mut into.first, &mut into.second);
+        // Whole groups of lanes: the spare ones pull with nothing at the centre.
+        let n = self.lanes.len().next_multiple_of(LANES);
+        self.pulls[self.lanes.len()..n].fill(0.0);
+        for j in 0..d {
+            let column = &block[j * BLOCK..(j + 1) * BLOCK];
+            let to = &mut self.shifted[j * BLOCK..j * BLOCK + n];
+            for (slot, &t) in to.iter_mut().zip(&self.lanes) {
+                *slot = column[t] - location[j];
+            }
+            to[self.lanes.len()..].fill(0.0);
+        }
+        add_products(&self.shifted, &self.pulls[..n], d, &mut into.first, &mut into.second);
     }
 }
 
+/// `first_j += sum u y_j` and `second_jl += sum u y_j y_l` (lower triangle, packed), four columns `l` at a time.
 #[multiversion(targets("x86_64+avx512f+avx512dq+avx512vl+avx512bw+avx2", "x86_64+avx2", "aarch64+neon"))]
-fn add_products(
-    block: &[f64],
-    location: &[f64],
-    u: &[f64],
-    shifted: &mut [f64],
-    pulled: &mut [f64],
-    first: &mut [f64],
-    second: &mut [f64],
-) {
-    let d = location.len();
-    for j in 0..d {
-        for t in 0..BLOCK {
-            // A point without weight may be anything, infinity included: it must not touch the sums.
-            let y = block[j * BLOCK + t] - location[j];
-            shifted[j * BLOCK + t] = if u[t] > 0.0 { y } else { 0.0 };
-        }
-    }
+fn add_products(shifted: &[f64], u: &[f64], d: usize, first: &mut [f64], second: &mut [f64]) {
+    let n = u.len();
+    let mut pulled = [0.0; BLOCK];
     let mut at = 0;
     for j in 0..d {
-        let mut sum = [0.0; 16];
-        for from in (0..BLOCK).step_by(16) {
-            for t in 0..16 {
-                let v = u[from + t] * shifted[j * BLOCK + from + t];
+        let y = &shifted[j * BLOCK..j * BLOCK + n];
+        let mut sum = [0.0; LANES];
+        for from in (0..n).step_by(LANES) {
+            for t in 0..LANES {
+                let v = u[from + t] * y[from + t];
                 pulled[from + t] = v;
                 sum[t] += v;
             }
         }
         first[j] += total(&sum);
-        for l in 0..=j {
-            let mut sum = [0.0; 16];
-            let other = &shifted[l * BLOCK..(l + 1) * BLOCK];
-            for from in (0..BLOCK).step_by(16) {
-                for t in 0..16 {
-                    sum[t] += pulled[from + t] * other[from + t];
+        let mut l = 0;
+        while l + 4 <= j + 1 {
+            let mut sums = [[0.0; LANES]; 4];
+            let columns: [&[f64]; 4] = std::array::from_fn(|c| &shifted[(l + c) * BLOCK..(l + c) * BLOCK + n]);
+            for from in (0..n).step_by(LANES) {
+                let p = &pulled[from..from + LANES];
+                for c in 0..4 {
+                    let y = &columns[c][from..from + LANES];
+                    for t in 0..LANES {
+                        sums[c][t] += p[t] * y[t];
+                    }
+                }
+            }
+            for sum in &sums {
+                second[at] += total(sum);
+                at += 1;
+            }
+            l += 4;
+        }
+        while l <= j {
+            let y = &shifted[l * BLOCK..l * BLOCK + n];
+            let mut sum = [0.0; LANES];
+            for from in (0..n).step_by(LANES) {
+                for t in 0..LANES {
+                    sum[t] += pulled[from + t] * y[from + t];
                 }
             }
             second[at] += total(&sum);
             at += 1;
+            l += 1;
         }
     }
 }
 
 #[inline(always)]
-fn total(sum: &[f64; 16]) -> f64 {
-    let mut all = 0.0;
-    for v in sum {
-        all += v;
-    }
-    all
+fn total(sum: &[f64; LANES]) -> f64 {
+    ((sum[0] + sum[4]) + (sum[2] + sum[6])) + ((sum[1] + sum[5]) + (sum[3] + sum[7]))
 }

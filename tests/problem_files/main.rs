@@ -1,7 +1,11 @@
 //! Problem files, right and wrong: what they mean, checked against independent numbers, and how they are refused.
 #![allow(clippy::unwrap_used)]
 
+mod built;
 mod documentation;
+mod mutations;
 mod right;
+mod starts;
 mod whole;
 mod wrong;
+mod wrong_tables;

@@ -13,7 +13,7 @@ use crate::right::EFFECTS;
 use crate::right::TRACER;
 use crate::right::read;
 
-const SUPPORTS: &str = r#"
+pub(crate) const SUPPORTS: &str = r#"
 title = "Every support, correlated"
 [variables]
 a = { distribution = "gamma", shape = 2.0, rate = 1.5 }
@@ -33,7 +33,7 @@ require = ["a + b > 0.1"]
 "#;
 
 /// Dependent parameters of every way of differentiating: moved, stretched, by shape, truncated, in a chain.
-const CHAIN: &str = r#"
+pub(crate) const CHAIN: &str = r#"
 title = "Parameters that depend on others"
 [constants]
 crest = 4.0
@@ -54,7 +54,7 @@ log_factor = "-(t - m)^2/9 - w^2 + sum(g)*s/5 - u^2/8 - log(l)^2 + sin(h) - log(
 spread = "s"
 "#;
 
-const SCORES: &str = r#"
+pub(crate) const SCORES: &str = r#"
 title = "Correlated scores"
 [variables]
 load = { distribution = "gumbel", mean = 30.0, cv = 0.2 }
@@ -154,9 +154,8 @@ fn log_abs_determinant(mut a: Vec<Vec<f64>>) -> f64 {
         sum += a[k][k].abs().ln();
         for i in k + 1..d {
             let factor = a[i][k] / a[k][k];
-            for j in k..d {
-                a[i][j] -= factor * a[k][j];
-            }
+            let pivot = a[k].clone();
+            a[i].iter_mut().zip(pivot).for_each(|(entry, above)| *entry -= factor * above);
         }
     }
     sum
@@ -171,12 +170,12 @@ fn jacobians_match_differences() {
         let sides: Vec<(Points, Points)> = (0..problem.dim())
             .map(|j| (problem.to_natural(&moved(&points, j, h)), problem.to_natural(&moved(&points, j, -h))))
             .collect();
-        for i in 0..points.len() {
+        for (i, got) in got.into_iter().enumerate() {
             let column = |(up, down): &(Points, Points)| -> Vec<f64> {
                 (0..problem.dim()).map(|k| (up.get(i, k) - down.get(i, k)) / (2.0 * h)).collect()
             };
             let want = log_abs_determinant(sides.iter().map(column).collect());
-            assert!((got[i] - want).abs() <= 1e-5, "{}: {} against {want}", problem.title(), got[i]);
+            assert!((got - want).abs() <= 1e-5, "{}: {got} against {want}", problem.title());
         }
     }
 }

@@ -7,7 +7,7 @@ use std::path::Path;
 use evenpoise::problem::Problem;
 
 /// A file around the lines of one table, the other tables being right.
-fn file(constants: &str, variables: &str, rest: &str) -> String {
+pub(crate) fn file(constants: &str, variables: &str, rest: &str) -> String {
     let constants = if constants.is_empty() { String::new() } else { format!("\n[constants]\n{constants}\n") };
     format!("title = \"A weir of the Ellenmere feeder\"\n{constants}\n[variables]\n{variables}\n\n{rest}\n")
 }
@@ -23,11 +23,11 @@ fn constants(text: &str) -> String {
     file(text, DEPTH, TARGET)
 }
 
-fn rest(text: &str) -> String {
+pub(crate) fn rest(text: &str) -> String {
     file("", DEPTH, text)
 }
 
-fn with_target(text: &str) -> String {
+pub(crate) fn with_target(text: &str) -> String {
     rest(&format!("{TARGET}\n\n{text}"))
 }
 
@@ -36,7 +36,7 @@ fn data(text: &str, formula: &str) -> String {
 }
 
 /// The messages of several files, each under its name. Every file must be refused.
-fn gallery(files: &[(&str, String)]) -> String {
+pub(crate) fn gallery(files: &[(&str, String)]) -> String {
     let mut out = String::new();
     for (name, text) in files {
         let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/problem_files/data");
@@ -50,7 +50,7 @@ fn gallery(files: &[(&str, String)]) -> String {
     out
 }
 
-fn snapshot(name: &str, messages: &str) {
+pub(crate) fn snapshot(name: &str, messages: &str) {
     let mut settings = insta::Settings::clone_current();
     settings.set_omit_expression(true);
     settings.set_prepend_module_to_snapshot(false);
@@ -72,6 +72,28 @@ fn files_that_are_no_problem() {
             ("a model program", with_target("[program]\nrun = [\"python3\", \"tank.py\"]")),
             ("a title that is no text", variables(DEPTH).replace("\"A weir of the Ellenmere feeder\"", "7")),
             ("variables in a list", "title = \"A weir\"\nvariables = [1, 2]\n".to_owned() + TARGET),
+        ]),
+    );
+}
+
+#[test]
+fn several_at_once() {
+    snapshot(
+        "several_at_once",
+        &gallery(&[
+            ("slips in every table", {
+                "title = 3\n\n[variables]\ndepth = { distribution = \"normal\", mean = 2.0, sd = 0.5, unti = \"m\" }\n\
+                 flow = { range = [0.0, 1.0], near = 2.0, spread = 1.0 }\n\n[data]\nfile = \"typo.csv\"\n\n[formulas]\n\
+                 head = \"depth*level\"\n\n[target]\naim = \"density\"\nlog_factor = \"-sum(head)\"\nfailed = \"in\"\n\n\
+                 [tuning]\nrounds = 0\n"
+                    .into()
+            }),
+            ("several formulas beside a slip in the tuning", {
+                rest(
+                    "[formulas]\nhead = \"dept + 1\"\nwidth = \"sqroot(depth)\"\n\n[target]\naim = \"density\"\n\
+                     log_factor = \"-head^2 - width\"\n\n[estimates]\nanswer = \"head +\"\n\n[tuning]\nsede = 3",
+                )
+            }),
         ]),
     );
 }
@@ -294,66 +316,7 @@ fn targets_and_formulas() {
 }
 
 #[test]
-fn tuning_and_correlation() {
-    let two = "depth = { distribution = \"normal\", mean = 2.0, sd = 0.5 }\n\
-               flow = { distribution = \"exponential\", rate = 1.0 }\n\
-               other = { range = [0.0, inf], near = 1.0, spread = 1.0 }";
-    let correlation = |text: &str| {
-        file(
-            "",
-            two,
-            &format!("[[correlation]]\n{text}\n\n[target]\naim = \"density\"\nlog_factor = \"-depth*flow*other\""),
-        )
-    };
-    snapshot(
-        "tuning_and_correlation",
-        &gallery(&[
-            ("a misspelt key", with_target("[tuning]\nbudgett = 5000")),
-            ("half a budget", with_target("[tuning]\nbudget = 5000.5")),
-            ("an unknown family", with_target("[tuning]\nfamily = \"normal\"")),
-            ("a share above one", with_target("[tuning]\nreport_share = 1.5")),
-            ("degrees of freedom of a Gaussian", with_target("[tuning]\nfamily = \"gaussian\"\ndf = 5")),
-            ("natural coordinates on a half-line", {
-                file(
-                    "",
-                    two,
-                    "[target]\naim = \"density\"\nlog_factor = \"-depth*flow*other\"\n\n[tuning]\ncoordinates = \"natural\"",
-                )
-            }),
-            (
-                "several at once",
-                with_target("[tuning]\nbudget = \"much\"\nrounds = 0\nseed = -1\ncomponents = \"some\""),
-            ),
-            ("no kind", correlation("among = [\"depth\", \"flow\"]")),
-            ("two kinds", correlation("among = [\"depth\", \"flow\"]\nlinear = 0.5\nrank = 0.5")),
-            ("one variable", correlation("among = [\"depth\"]\nlinear = 0.5")),
-            ("an unknown variable", correlation("among = [\"depth\", \"flwo\"]\nlinear = 0.5")),
-            ("a variable twice", correlation("among = [\"depth\", \"depth\"]\nlinear = 0.5")),
-            ("a range", correlation("among = [\"depth\", \"other\"]\nlinear = 0.5")),
-            ("a correlation of one", correlation("among = [\"depth\", \"flow\"]\nscore = 1.0")),
-            ("out of reach", correlation("among = [\"depth\", \"flow\"]\nlinear = 0.95")),
-            ("a ragged triangle", correlation("among = [\"depth\", \"flow\"]\nlinear = [[1.0], [0.5]]")),
-            ("not positive definite", {
-                let three = "a = { distribution = \"normal\", mean = 0.0, sd = 1.0 }\n\
-                         b = { distribution = \"normal\", mean = 0.0, sd = 1.0 }\n\
-                         c = { distribution = \"normal\", mean = 0.0, sd = 1.0 }";
-                let rest = "[[correlation]]\namong = [\"a\", \"b\", \"c\"]\nscore = [[1.0], [0.9, 1.0], [-0.9, 0.9, 1.0]]\n\n\
-                        [target]\naim = \"probability\"\nevent = \"a + b + c > 9\"";
-                file("", three, rest)
-            }),
-            ("single brackets", {
-                file(
-                    "",
-                    two,
-                    "[correlation]\namong = [\"depth\", \"flow\"]\nlinear = 0.5\n\n[target]\naim = \"density\"\nlog_factor = \"-depth*flow*other\"",
-                )
-            }),
-        ]),
-    );
-}
-
-#[test]
 fn a_problem_file_that_is_not_there() {
     let error = Problem::read(Path::new("nowhere/weir.toml")).unwrap_err();
-    insta::assert_snapshot!(error.render(false), @"");
+    snapshot("a_problem_file_that_is_not_there", &error.render(false));
 }

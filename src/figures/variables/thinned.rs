@@ -1,6 +1,6 @@
 //! Weighted draws as dots of equal weight.
 
-use super::columns::clean;
+use crate::figures::columns::clean;
 
 /// Dots that stand for the whole weight in a panel.
 pub(super) const DOTS: usize = 500;

@@ -2,17 +2,17 @@
 
 use std::f64::consts::LN_10;
 
-use super::Style;
-use super::axis::Scale;
-use super::canvas::Canvas;
-use super::canvas::Pen;
-use super::colour::MEASURED;
-use super::colour::MEASURED_TINT;
-use super::colour::MODELLED;
-use super::columns::VariableColumn;
-use super::numbers::log10;
-use super::panel::Panel;
-use super::variables::VariableRow;
+use super::VariableRow;
+use crate::figures::Style;
+use crate::figures::axis::Scale;
+use crate::figures::canvas::Canvas;
+use crate::figures::canvas::Pen;
+use crate::figures::colour::MEASURED;
+use crate::figures::colour::MEASURED_TINT;
+use crate::figures::colour::MODELLED;
+use crate::figures::columns::VariableColumn;
+use crate::figures::numbers::log10;
+use crate::figures::panel::Panel;
 
 /// Fewest and most bins.
 const BINS: (f64, f64) = (8.0, 40.0);

@@ -4,14 +4,10 @@
 //! equal weight under the outlines of the components, in natural units throughout.
 
 use super::Drawing;
-use super::LINE;
 use super::Style;
 use super::axis::Along;
 use super::axis::Axis;
-use super::axis::Room;
-use super::axis::Scale;
 use super::canvas::Anchor;
-use super::canvas::Area;
 use super::canvas::Canvas;
 use super::canvas::Pen;
 use super::colour::INK;
@@ -20,27 +16,31 @@ use super::colour::MEASURED_TINT;
 use super::colour::MODELLED;
 use super::colour::REFERENCE;
 use super::columns::VariableColumn;
-use super::columns::range;
 use super::columns::title_lines;
 use super::heading;
 use super::key::Key;
 use super::key::Sample;
-use super::marginal::Marginal;
-use super::numbers::count;
-use super::numbers::percent;
 use super::panel::Panel;
 use super::panel::bottom_room;
-use super::panel::left_room;
-use super::table::Cell;
+use super::place::Area;
 use super::table::Table;
 use super::text::Face;
 use super::text::Spot;
 use super::text::width;
-use super::thinned::DOTS;
-use super::thinned::Thinned;
 
-/// Tallest page, in widths (a sheet of A4 with its caption).
-const TALLEST: f64 = 1.45;
+mod layout;
+mod marginal;
+mod thinned;
+mod words;
+
+use layout::Layout;
+use layout::Prepared;
+use layout::axis;
+use layout::title_start;
+use thinned::DOTS;
+use thinned::Thinned;
+use words::add_rows;
+use words::caption;
 
 /// Space at the edges of the page, in text sizes.
 const MARGIN: f64 = 0.3;
@@ -124,108 +124,6 @@ fn nothing(style: &Style) -> Drawing {
     Drawing { name, caption, table: Table::new(&COLUMNS), canvas, dpi: style.dpi() }
 }
 
-/// Sizes that all pages share.
-struct Layout<'a> {
-    rows: Vec<Prepared<'a>>,
-    /// Left and right edges of the panels of each column.
-    cells: Vec<(f64, f64)>,
-    /// Height of a panel, points.
-    height: f64,
-    /// Most lines of a title above a panel.
-    lines: usize,
-    rows_a_page: usize,
-}
-
-/// A row before it has a place.
-struct Prepared<'a> {
-    row: &'a VariableRow,
-    partners: Vec<&'a Partner>,
-    marginal: Marginal,
-    /// Vertical axes, first the density's.
-    y: Vec<Axis>,
-    /// Titles above the panels.
-    titles: Vec<Vec<String>>,
-}
-
-impl<'a> Layout<'a> {
-    fn new(data: &'a VariablesData, sample: &Thinned, style: &Style) -> Self {
-        let unit = style.unit();
-        let rows: Vec<&VariableRow> = data.rows.iter().filter(|row| row.variable < data.variables.len()).collect();
-        let columns = 1 + rows.iter().map(|row| partners(row, data).len()).max().unwrap_or(0);
-        let height = (0.45 * style.width() / columns as f64).clamp(5.5 * unit, 11.0 * unit);
-        let mut prepared: Vec<Prepared> =
-            rows.into_iter().map(|row| Prepared::new(data, row, sample, height, style)).collect();
-        let cells = cells(&prepared, columns, style);
-        for row in &mut prepared {
-            row.set_titles(data, &cells, style);
-        }
-        let lines = prepared.iter().flat_map(|row| &row.titles).map(Vec::len).max().unwrap_or(1);
-        let mut layout = Self { rows: prepared, cells, height, lines, rows_a_page: 1 };
-        let most = TALLEST * style.width() - 3.0 * unit;
-        layout.rows_a_page = ((most / layout.row_height(style)).floor() as usize).clamp(1, 8);
-        layout
-    }
-
-    fn head(&self, style: &Style) -> f64 {
-        (1.0 + LINE * self.lines as f64) * style.unit()
-    }
-
-    fn row_height(&self, style: &Style) -> f64 {
-        self.head(style) + self.height + bottom_room(style) + 1.9 * style.unit()
-    }
-}
-
-impl<'a> Prepared<'a> {
-    fn new(data: &'a VariablesData, row: &'a VariableRow, sample: &Thinned, height: f64, style: &Style) -> Self {
-        let column = &data.variables[row.variable];
-        let marginal = Marginal::new(column, row, &sample.weights, range(column, &sample.weights));
-        let room = Room { along: Along::Column, length: height, size: style.unit(), most: 4 };
-        let mut y = vec![Axis::new(0.0, marginal.highest() * 1.08, Scale::Linear, room)];
-        let partners = partners(row, data);
-        for partner in &partners {
-            y.push(axis(&data.variables[partner.variable], &sample.weights, Along::Column, height, style));
-        }
-        Self { row, partners, marginal, y, titles: Vec::new() }
-    }
-
-    /// Titles over the panels, starting above the labels of their axes.
-    fn set_titles(&mut self, data: &VariablesData, cells: &[(f64, f64)], style: &Style) {
-        let unit = style.unit();
-        for (k, (y, &(left, right))) in self.y.iter().zip(cells).enumerate() {
-            let room = right + 0.3 * unit - title_start(k, left, y, style);
-            let title = if k == 0 {
-                let column = &data.variables[self.row.variable];
-                let letter = width("a", unit, Face::Bold) + 0.5 * unit;
-                title_lines(y, self.marginal.name(), self.marginal.unit(column).as_deref(), room - letter, unit, 2)
-            } else {
-                let other = &data.variables[self.partners[k - 1].variable];
-                title_lines(y, other.title(), other.unit.as_deref(), room, unit, 2)
-            };
-            self.titles.push(title);
-        }
-    }
-}
-
-/// Where the title of a panel starts.
-fn title_start(k: usize, left: f64, y: &Axis, style: &Style) -> f64 {
-    if k == 0 { MARGIN * style.unit() } else { left - left_room(y, style) }
-}
-
-fn partners<'a>(row: &'a VariableRow, data: &VariablesData) -> Vec<&'a Partner> {
-    row.partners.iter().filter(|partner| partner.variable < data.variables.len()).take(2).collect()
-}
-
-fn axis(column: &VariableColumn, weights: &[f64], along: Along, length: f64, style: &Style) -> Axis {
-    let (low, high, scale) = range(column, weights);
-    let most = if along == Along::Page { 4 } else { 3 };
-    Axis::new(
-        low,
-        high,
-        scale,
-        Room { along, length, size: style.unit(), most: most + (length / (12.0 * style.unit())) as usize },
-    )
-}
-
 fn draw_page(data: &VariablesData, rows: &[Prepared], sample: &Thinned, layout: &Layout, style: &Style) -> Drawing {
     let unit = style.unit();
     let outline = Pen::solid(MODELLED, 0.09 * unit);
@@ -278,26 +176,6 @@ fn write_name(canvas: &mut Canvas, style: &Style, column: &VariableColumn, x: &A
     canvas.write(&title, (middle, baseline), Anchor::Middle, style.plain(INK));
 }
 
-/// Left and right edges of the panels of each column: the same for all rows.
-fn cells(rows: &[Prepared], columns: usize, style: &Style) -> Vec<(f64, f64)> {
-    let unit = style.unit();
-    let margins: Vec<f64> = (0..columns)
-        .map(|k| rows.iter().filter_map(|row| row.y.get(k)).map(|y| left_room(y, style)).fold(0.0, f64::max))
-        .collect();
-    let gap = 1.1 * unit;
-    let free = style.width() - MARGIN * unit - margins.iter().sum::<f64>() - gap * columns as f64;
-    let panel = free / columns as f64;
-    let mut at = MARGIN * unit;
-    margins
-        .iter()
-        .map(|margin| {
-            let left = at + margin;
-            at = left + panel + gap;
-            (left, left + panel)
-        })
-        .collect()
-}
-
 fn draw_pair(
     canvas: &mut Canvas,
     panel: &Panel,
@@ -318,61 +196,11 @@ fn draw_pair(
     }
 }
 
-fn caption(data: &VariablesData, rows: &[Prepared], sample: &Thinned) -> String {
-    let draws = sample.weights.iter().filter(|&&w| w > 0.0).count();
-    let mut outside: f64 = 0.0;
-    let total: f64 = sample.weights.iter().sum();
-    for row in rows {
-        let column = &data.variables[row.row.variable];
-        let (low, high, _) = range(column, &sample.weights);
-        let inside = column.values.iter().zip(&sample.weights).filter(|(v, _)| (low..=high).contains(*v));
-        outside = outside.max(1.0 - inside.map(|(_, w)| w).sum::<f64>() / total);
-    }
-    let pairs = rows.iter().any(|row| !row.partners.is_empty());
-    let mut text =
-        format!("Marginal distribution of the {} weighted draws, and marginal density of the proposal.", count(draws));
-    if pairs {
-        text = format!(
-            "{text} Right of it, the same draws over the variables that depend on it most: every dot stands for 1/{DOTS} of \
-             the weight (larger ones for several), lines for one standard deviation of each component."
-        );
-    }
-    if outside > 5e-4 {
-        text = format!("{text} At most {} of the weight lies outside an axis.", percent(outside));
-    }
-    text
-}
-
-fn add_rows(table: &mut Table, data: &VariablesData, row: &Prepared, sample: &Thinned) {
-    let column = &data.variables[row.row.variable];
-    let name = || Cell::Text(column.name.clone());
-    let none = || Cell::Number(f64::NAN);
-    for (series, points) in [("weighted draws", row.marginal.middles()), ("proposal", row.marginal.curve().to_vec())] {
-        for (x, y) in points {
-            table.push([name(), series.into(), "".into(), none(), x.into(), y.into(), none()]);
-        }
-    }
-    for partner in &row.partners {
-        let other = &data.variables[partner.variable];
-        for ((&x, &y), &dots) in column.values.iter().zip(&other.values).zip(&sample.dots) {
-            if dots > 0 {
-                let partner = Cell::Text(other.name.clone());
-                table.push([name(), "dots".into(), partner, none(), x.into(), y.into(), (dots as f64).into()]);
-            }
-        }
-        for line in &partner.outlines {
-            for (&x, &y) in line.x.iter().zip(&line.y) {
-                let (partner, component) = (Cell::Text(other.name.clone()), line.component as f64);
-                table.push([name(), "component".into(), partner, component.into(), x.into(), y.into(), none()]);
-            }
-        }
-    }
-}
-
 #[cfg(test)]
 mod tests {
     use super::super::checks;
     use super::super::dependence::strongest_partners;
+    use super::super::table::Cell;
     use super::*;
     use crate::numeric::normal;
     use crate::numeric::uniform;
@@ -381,15 +209,16 @@ mod tests {
     fn data(d: usize, name: impl Fn(usize) -> String, value: impl Fn(usize, f64) -> f64, heavy: bool) -> VariablesData {
         let n = 1500;
         let mut stream = crate::numeric::stream(7, crate::numeric::Purpose::Trial, 0, 0);
-        let mut scores = vec![vec![0.0; n]; d];
+        let mut scores: Vec<Vec<f64>> = vec![Vec::with_capacity(n); d];
         for i in 0..n {
             for j in 0..d {
                 let fresh = normal::draw(&mut stream);
-                scores[j][i] = match j {
+                let score = match j {
                     0 => fresh,
                     1 => 0.6 * (scores[0][i] * scores[0][i] - 1.0) + 0.4 * fresh,
                     _ => 0.7 * scores[j - 1][i] + 0.7 * fresh,
                 };
+                scores[j].push(score);
             }
         }
         let weights: Vec<f64> = (0..n)

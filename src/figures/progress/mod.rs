@@ -7,30 +7,30 @@ use super::axis::Axis;
 use super::axis::Room;
 use super::axis::Scale;
 use super::canvas::Anchor;
-use super::canvas::Area;
 use super::canvas::Canvas;
 use super::canvas::Pen;
-use super::canvas::spread;
 use super::colour::GROUND;
 use super::colour::INK;
 use super::colour::MEASURED;
 use super::colour::MODELLED;
 use super::colour::REFERENCE;
 use super::heading;
-use super::numbers::count;
-use super::numbers::significant;
 use super::panel::Panel;
 use super::panel::bottom_room;
 use super::panel::left_room;
-use super::table::Cell;
-use super::table::Table;
+use super::place::Area;
+use super::place::spread;
 use super::text;
 use super::text::Face;
 
-/// Half a 95 % interval in standard errors.
-const HALF_95: f64 = 1.959_964;
-/// Weight variances below this are drawn as if they were this: even weights have none at all, a log axis has no zero.
-const LEAST_VARIANCE: f64 = 1e-6;
+mod rows;
+mod words;
+
+use rows::Kind;
+use rows::Series;
+use rows::rows;
+use words::caption;
+use words::table;
 
 /// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
@@ -163,129 +163,6 @@ pub fn draw(data: &ProgressData, style: &Style) -> Drawing {
     Drawing { name: "progress".to_owned(), caption: caption(data), table: table(data), canvas, dpi: style.dpi() }
 }
 
-/// A panel to be: its title, axis and series.
-struct Row {
-    title: &'static str,
-    /// Height in text sizes.
-    height: f64,
-    low: f64,
-    high: f64,
-    scale: Scale,
-    ticks: usize,
-    series: Vec<Series>,
-}
-
-/// Points of one kind.
-struct Series {
-    name: &'static str,
-    kind: Kind,
-    points: Vec<Point>,
-}
-
-#[derive(Clone, Copy, PartialEq)]
-enum Kind {
-    /// Filled markers, unbroken line.
-    Fresh,
-    /// Open markers, dashed line.
-    Predicted,
-    /// A diamond.
-    Report,
-}
-
-/// A point with the ends of its interval.
-struct Point {
-    x: f64,
-    y: f64,
-    interval: Option<(f64, f64)>,
-}
-
-fn rows(data: &ProgressData) -> Vec<Row> {
-    let series = |name, kind, pick: &dyn Fn(&RoundScore) -> Option<Point>| Series {
-        name,
-        kind,
-        points: data.rounds.iter().filter_map(pick).filter(|p| p.x.is_finite() && p.y.is_finite()).collect(),
-    };
-    let plain = |round: &RoundScore, y: Option<f64>| y.map(|y| Point { x: round.evaluations, y, interval: None });
-    let mut rows = Vec::new();
-
-    let interval = |y: f64, se: Option<f64>| se.map(|se| ((y - HALF_95 * se).max(0.0), (y + HALF_95 * se).min(1.0)));
-    let mut ess = vec![
-        series("predicted", Kind::Predicted, &|round| plain(round, round.predicted_ess_fraction)),
-        series("fresh draws", Kind::Fresh, &|round| {
-            round.ess_fraction.map(|y| Point { x: round.evaluations, y, interval: interval(y, round.ess_fraction_se) })
-        }),
-    ];
-    if let Some(report) = &data.report {
-        let y = report.ess_fraction;
-        let point = Point { x: report.evaluations, y, interval: interval(y, report.ess_fraction_se) };
-        ess.push(Series { name: "report draws", kind: Kind::Report, points: vec![point] });
-    }
-    let tops = ess.iter().flat_map(|s| s.points.iter().map(|p| p.interval.map_or(p.y, |(_, top)| top)));
-    let most = tops.filter(|top| top.is_finite()).fold(0.0, f64::max);
-    let high = if most > 0.5 || most <= 0.0 { 1.0 } else { 1.25 * most };
-    push_row(
-        &mut rows,
-        Row { title: "ESS fraction", height: 9.0, low: 0.0, high, scale: Scale::Linear, ticks: 6, series: ess },
-    );
-
-    let floored = |y: f64| y.max(LEAST_VARIANCE);
-    let mut variance =
-        vec![series("fresh draws", Kind::Fresh, &|round| plain(round, round.weight_variance.map(floored)))];
-    if let Some(report) = &data.report {
-        let point = Point { x: report.evaluations, y: floored(report.weight_variance), interval: None };
-        variance.push(Series { name: "report draws", kind: Kind::Report, points: vec![point] });
-    }
-    let values: Vec<f64> =
-        variance.iter().flat_map(|s| s.points.iter().map(|p| p.y)).filter(|y| y.is_finite()).collect();
-    let (low, high) = values.iter().fold((f64::INFINITY, 0.0_f64), |(low, high), &y| (low.min(y), high.max(y)));
-    // At least one power of ten, so that noise does not fill the panel.
-    let widening = (10.0 * low / high).max(2.56).sqrt();
-    push_row(
-        &mut rows,
-        Row {
-            title: "weight variance",
-            height: 6.0,
-            low: low / widening,
-            high: high * widening,
-            scale: Scale::Log,
-            ticks: 5,
-            series: variance,
-        },
-    );
-
-    let steps = vec![series("", Kind::Fresh, &|round| plain(round, round.schedule))];
-    let most = steps[0].points.iter().map(|p| p.y).fold(0.0, f64::max);
-    let (title, high) = match data.schedule {
-        Schedule::Exponent => ("tempering exponent", 1.0),
-        Schedule::Smoothing => ("width of the smoothed event", if most > 0.0 { 1.1 * most } else { 1.0 }),
-    };
-    push_row(&mut rows, Row { title, height: 4.5, low: 0.0, high, scale: Scale::Linear, ticks: 3, series: steps });
-
-    let components = vec![series("", Kind::Fresh, &|round| plain(round, Some(round.components as f64)))];
-    let most = components[0].points.iter().map(|p| p.y).fold(1.0, f64::max);
-    push_row(
-        &mut rows,
-        Row {
-            title: "components",
-            height: 4.5,
-            low: 0.0,
-            high: most * 1.1 + 0.2,
-            scale: Scale::Whole,
-            ticks: 4,
-            series: components,
-        },
-    );
-    rows
-}
-
-/// Keeps a row that has something to show.
-fn push_row(rows: &mut Vec<Row>, mut row: Row) {
-    row.series.retain(|series| !series.points.is_empty());
-    if !row.series.is_empty() || rows.is_empty() {
-        rows.push(row);
-    }
-}
-
 /// Shades the spans through all panels and names them above.
 fn draw_phases(canvas: &mut Canvas, style: &Style, phases: &[Phase], panels: &[Panel], top: f64) {
     let (Some(first), Some(last)) = (panels.first(), panels.last()) else { return };
@@ -361,109 +238,10 @@ fn name_series(canvas: &mut Canvas, style: &Style, panel: &Panel, series: &Serie
     canvas.write(series.name, (area.left + 0.25 * unit, area.bottom - 0.3 * unit), Anchor::Start, style.plain(colour));
 }
 
-fn caption(data: &ProgressData) -> String {
-    let rounds = data.rounds.len();
-    let mut parts = vec![match rounds {
-        0 => "No round was finished.".to_owned(),
-        1 => "Scores of the only round against the evaluations spent.".to_owned(),
-        _ => format!("Scores of the {rounds} rounds against the evaluations spent."),
-    }];
-    if let Some(last) = data.rounds.last() {
-        let components =
-            if last.components == 1 { "1 component".to_owned() } else { format!("{} components", last.components) };
-        if let Some(ess) = last.ess_fraction {
-            let se =
-                last.ess_fraction_se.map_or(String::new(), |se| format!(" ± {} (standard error)", significant(se, 1)));
-            let predicted =
-                last.predicted_ess_fraction.map_or(String::new(), |p| format!(", predicted {}", significant(p, 3)));
-            let variance = last
-                .weight_variance
-                .map_or(String::new(), |v| format!(", at a weight variance of {}", significant(v, 2)));
-            parts.push(format!(
-                "Round {}, with {components}, reached an ESS fraction of {}{se} on its own fresh draws{predicted}{variance}.",
-                last.round,
-                significant(ess, 3)
-            ));
-        }
-    }
-    if let Some(report) = &data.report {
-        parts.push(format!(
-            "The report draws score {} (diamond), after {} evaluations in all.",
-            significant(report.ess_fraction, 3),
-            count(report.evaluations.max(0.0) as usize)
-        ));
-    }
-    if data.rounds.iter().any(|round| round.weight_variance.is_some_and(|variance| variance < LEAST_VARIANCE)) {
-        parts.push(format!("Weight variances below {} are drawn there.", significant(LEAST_VARIANCE, 1)));
-    }
-    if data.rounds.iter().any(|round| round.ess_fraction_se.is_some()) {
-        parts.push("Bars are 95 % intervals.".to_owned());
-    }
-    parts.join(" ")
-}
-
-fn table(data: &ProgressData) -> Table {
-    let mut table = Table::new(&[
-        "row",
-        "round",
-        "evaluations",
-        "predicted_ess_fraction",
-        "ess_fraction",
-        "ess_fraction_se",
-        "weight_variance",
-        match data.schedule {
-            Schedule::Exponent => "exponent",
-            Schedule::Smoothing => "smoothing",
-        },
-        "components",
-    ]);
-    for round in &data.rounds {
-        table.push([
-            "round".into(),
-            f64::from(round.round).into(),
-            round.evaluations.into(),
-            round.predicted_ess_fraction.into(),
-            round.ess_fraction.into(),
-            round.ess_fraction_se.into(),
-            round.weight_variance.into(),
-            round.schedule.into(),
-            (round.components as f64).into(),
-        ]);
-    }
-    for phase in &data.phases {
-        let none = || Cell::Number(f64::NAN);
-        table.push([
-            Cell::Text(format!("end of {}", phase.name)),
-            none(),
-            phase.to.into(),
-            none(),
-            none(),
-            none(),
-            none(),
-            none(),
-            none(),
-        ]);
-    }
-    if let Some(report) = &data.report {
-        let none = || Cell::Number(f64::NAN);
-        table.push([
-            "report draws".into(),
-            none(),
-            report.evaluations.into(),
-            none(),
-            report.ess_fraction.into(),
-            report.ess_fraction_se.into(),
-            report.weight_variance.into(),
-            none(),
-            none(),
-        ]);
-    }
-    table
-}
-
 #[cfg(test)]
 mod tests {
     use super::super::checks;
+    use super::super::table::Cell;
     use super::*;
 
     fn run(rounds: u32, best: f64, schedule: Schedule) -> ProgressData {

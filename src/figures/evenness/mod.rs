@@ -8,7 +8,6 @@ use super::axis::Axis;
 use super::axis::Room;
 use super::axis::Scale;
 use super::canvas::Anchor;
-use super::canvas::Area;
 use super::canvas::Canvas;
 use super::canvas::Pen;
 use super::colour::Colour;
@@ -17,18 +16,22 @@ use super::colour::MEASURED;
 use super::colour::MEASURED_TINT;
 use super::colour::MODELLED;
 use super::colour::REFERENCE;
+use super::columns::clean;
 use super::heading;
-use super::numbers::count;
 use super::numbers::fixed;
-use super::numbers::percent;
 use super::numbers::significant;
 use super::panel::Panel;
 use super::panel::bottom_room;
 use super::panel::left_room;
-use super::table::Table;
+use super::place::Area;
 use super::text;
 use super::text::Face;
 use super::text::wrap;
+
+mod words;
+
+use words::caption;
+use words::table;
 
 /// Fineness of the cumulative curve and of the table.
 const CURVE: usize = 100;
@@ -132,9 +135,9 @@ pub fn draw(data: &EvennessData, style: &Style) -> Drawing {
     }
 }
 
-/// Finite weights in falling order; anything else counts as zero.
+/// Weights over the largest, in falling order; what is not a positive number counts as zero.
 fn falling_weights(weights: &[f64]) -> Vec<f64> {
-    let mut falling: Vec<f64> = weights.iter().map(|&w| if w.is_finite() && w > 0.0 { w } else { 0.0 }).collect();
+    let mut falling = clean(weights);
     falling.sort_by(|a, b| b.total_cmp(a));
     falling
 }
@@ -272,57 +275,6 @@ fn draw_tail(canvas: &mut Canvas, style: &Style, panel: &Panel, data: &EvennessD
     write_lines(canvas, style, &lines, (area.right - 0.3 * unit, area.bottom - 0.4 * unit));
 }
 
-fn caption(data: &EvennessData, falling: &[f64]) -> String {
-    let total: f64 = falling.iter().sum();
-    if !(total > 0.0) {
-        return "No draw has weight.".to_owned();
-    }
-    let n = falling.len();
-    let half = shares(falling).iter().find(|&&(_, share)| share >= 0.5).map_or(1.0, |&(draws, _)| draws);
-    let mut parts = vec![format!(
-        "Cumulative share of the total weight against the share of draws (a): ESS fraction {}, perplexity {}.",
-        significant(data.ess_fraction, 3),
-        significant(data.perplexity, 3)
-    )];
-    let hundredth = n.div_ceil(100);
-    if hundredth > 1 {
-        let top: f64 = falling[..hundredth].iter().sum();
-        parts.push(format!(
-            "Half of the total rests on {} of the {} draws; the {hundredth} heaviest carry {}, the heaviest one {}.",
-            percent(half),
-            count(n),
-            percent(top / total),
-            percent(falling[0] / total)
-        ));
-    } else {
-        parts.push(format!("The heaviest of {} draws carries {}.", count(n), percent(falling[0] / total)));
-    }
-    parts.push(match &data.tail {
-        Some(fit) => format!(
-            "Share of draws above a weight (b), with the generalised Pareto fit to the heaviest {} of the draws: tail \
-             shape {}; dashed, the same at its upper bound {}, which has to stay below {}.",
-            percent(fit.share_above),
-            fixed(fit.shape, 2),
-            fixed(fit.shape_upper, 2),
-            significant(fit.limit, 1)
-        ),
-        None => "Share of draws above a weight (b); its tail was not fitted.".to_owned(),
-    });
-    parts.join(" ")
-}
-
-fn table(falling: &[f64], fit: Option<&TailFit>) -> Table {
-    let mut table = Table::new(&["rank", "share_of_draws", "share_of_total", "weight_over_mean", "fitted_share_above"]);
-    let n = falling.len() as f64;
-    let mean = falling.iter().sum::<f64>() / n;
-    for (rank, (draws, total)) in ranks(falling.len(), CURVE).into_iter().zip(shares(falling).into_iter().skip(1)) {
-        let w = falling[rank - 1] / mean;
-        let fitted = fit.filter(|fit| w >= fit.threshold).map(|fit| fit.share(w, fit.shape));
-        table.push([(rank as f64).into(), draws.into(), total.into(), w.into(), fitted.into()]);
-    }
-    table
-}
-
 #[cfg(test)]
 mod tests {
     use super::super::checks;
@@ -390,11 +342,11 @@ mod tests {
         }
     }
 
-    /// Two draws of weight 3 and two of weight 1: half the draws carry three quarters.
+    /// One draw of weight 4, one of 2, two of 1 and one that is no number: the heaviest fifth carries half.
     #[test]
     fn shares_accumulate_from_the_heaviest() {
-        let points = shares(&falling_weights(&[1.0, 3.0, f64::NAN, 1.0, 3.0]));
-        assert_eq!(points, vec![(0.0, 0.0), (0.2, 0.375), (0.4, 0.75), (0.6, 0.875), (0.8, 1.0), (1.0, 1.0)]);
+        let points = shares(&falling_weights(&[1.0, 4.0, f64::NAN, 1.0, 2.0]));
+        assert_eq!(points, vec![(0.0, 0.0), (0.2, 0.5), (0.4, 0.75), (0.6, 0.875), (0.8, 1.0), (1.0, 1.0)]);
     }
 
     /// The fitted column of the table is the distribution itself where the fit is the truth: ranks in the middle of

@@ -13,7 +13,6 @@ use super::axis::Axis;
 use super::axis::Room;
 use super::axis::Scale;
 use super::canvas::Anchor;
-use super::canvas::Area;
 use super::canvas::Canvas;
 use super::canvas::Pen;
 use super::colour::GROUND;
@@ -22,26 +21,27 @@ use super::colour::MEASURED;
 use super::colour::MODELLED;
 use super::colour::REFERENCE;
 use super::columns::VariableColumn;
-use super::columns::clean;
-use super::columns::positions;
 use super::key::Key;
 use super::key::Sample;
 use super::numbers::count;
 use super::numbers::percent;
 use super::panel::Panel;
 use super::panel::bottom_room;
+use super::place::Area;
 use super::table::Cell;
 use super::table::Table;
 use super::text::Face;
 use super::text::shorten;
 use super::text::width;
 use super::text::wrap;
-use crate::numeric::ln;
 
-/// Share of the draws that count as heaviest.
-const SHARE: f64 = 0.01;
-/// Fewest and most of them.
-const DRAWS: (usize, usize) = (5, 200);
+mod strips;
+
+use strips::Heavy;
+use strips::Strip;
+use strips::chance_distance;
+use strips::strips;
+
 /// Most strips of a figure.
 const STRIPS: usize = 30;
 /// Part of a strip's area that its discs may cover together.
@@ -54,17 +54,6 @@ pub struct HeavyData {
     pub variables: Vec<VariableColumn>,
     /// Weights of the draws on any common scale.
     pub weights: Vec<f64>,
-}
-
-/// A variable with the places of the heaviest draws.
-struct Strip<'a> {
-    column: &'a VariableColumn,
-    /// Places of the heaviest draws, heaviest first: quantiles of the draws.
-    places: Vec<f64>,
-    /// Share of their weight in the lowest and in the highest tenth.
-    ends: (f64, f64),
-    /// Largest difference between the distribution of their weight and an even one.
-    distance: f64,
 }
 
 /// Draws the figure.
@@ -120,81 +109,6 @@ pub fn draw(data: &HeavyData, style: &Style) -> Drawing {
     frame.bottom_axis(&mut canvas, style, true);
     write_titles(&mut canvas, style, &frame.area);
     drawing(canvas)
-}
-
-/// The heaviest draws.
-struct Heavy {
-    weights: Vec<f64>,
-    /// Their numbers, heaviest first.
-    draws: Vec<usize>,
-    /// Their shares of the total weight.
-    shares: Vec<f64>,
-    /// How many draws there are in all.
-    of: usize,
-}
-
-impl Heavy {
-    fn new(data: &HeavyData) -> Self {
-        let weights = clean(&data.weights);
-        let total: f64 = weights.iter().sum();
-        let mut draws: Vec<usize> = (0..weights.len()).filter(|&i| weights[i] > 0.0).collect();
-        draws.sort_by(|&a, &b| weights[b].total_cmp(&weights[a]).then(a.cmp(&b)));
-        let wanted = (SHARE * weights.len() as f64).ceil() as usize;
-        draws.truncate(wanted.clamp(DRAWS.0, DRAWS.1));
-        let shares = draws.iter().map(|&i| weights[i] / total).collect();
-        Self { of: weights.len(), weights, draws, shares }
-    }
-
-    fn share(&self) -> f64 {
-        self.shares.iter().sum()
-    }
-}
-
-/// All variables, those first in which the heaviest draws are furthest from even.
-fn strips<'a>(data: &'a HeavyData, heavy: &Heavy) -> Vec<Strip<'a>> {
-    let once: Vec<f64> = heavy.weights.iter().map(|&w| if w > 0.0 { 1.0 } else { 0.0 }).collect();
-    let mut strips: Vec<Strip> = data
-        .variables
-        .iter()
-        .map(|column| {
-            let all = positions(&column.values, &once);
-            let places: Vec<f64> = heavy.draws.iter().map(|&i| all.get(i).copied().unwrap_or(f64::NAN)).collect();
-            let total = heavy.share();
-            let share = |inside: &dyn Fn(f64) -> bool| -> f64 {
-                let pairs = places.iter().zip(&heavy.shares).filter(|(place, _)| inside(**place));
-                pairs.map(|(_, share)| share).sum::<f64>() / total
-            };
-            let ends = (share(&|place| place < 0.1), share(&|place| place > 0.9));
-            let distance = distance(&places, &heavy.shares);
-            Strip { column, places, ends, distance }
-        })
-        .collect();
-    strips.sort_by(|a, b| b.distance.total_cmp(&a.distance));
-    strips
-}
-
-/// Largest distance between the share of weight up to a place and that place (Kolmogorov's distance to an even
-/// distribution), between 0 and 1.
-///
-/// A draw counts with half of its weight on either side of its own place.
-fn distance(places: &[f64], shares: &[f64]) -> f64 {
-    let mut order: Vec<usize> = (0..places.len()).filter(|&i| places[i].is_finite()).collect();
-    order.sort_by(|&a, &b| places[a].total_cmp(&places[b]).then(a.cmp(&b)));
-    let total: f64 = order.iter().map(|&i| shares[i]).sum();
-    let (mut sum, mut most) = (0.0, 0.0_f64);
-    for &i in &order {
-        most = most.max(((sum + shares[i] / 2.0) / total - places[i]).abs());
-        sum += shares[i];
-    }
-    most
-}
-
-/// The distance that chance alone stays below in 19 of 20 figures, if the heaviest draws lay like all others: the
-/// inequality of Dvoretzky, Kiefer & Wolfowitz with Massart's constant (Ann. Probab. 18 (1990) 1269-1283), over all
-/// variables, for as many draws as the shares are worth.
-fn chance_distance(variables: usize, shares: &[f64]) -> f64 {
-    let (sum, squares) = shares.iter().fold((0.0, 0.0), |(sum, squares), s| (sum + s, squares + s * s));
-    (ln(2.0 * variables as f64 / 0.05) * squares / (2.0 * sum * sum)).sqrt()
 }
 
 fn entries(heavy: &Heavy, style: &Style) -> Vec<(Sample, String)> {
@@ -300,8 +214,7 @@ fn caption(strips: &[Strip], heavy: &Heavy) -> String {
     } else {
         format!("They differ most from the other draws in {name}, away from both ends (distance from an even spread {distance}).")
     });
-    let legend =
-        "Areas of the discs are shares of the total; the numbers at both ends, shares of the heaviest draws' weight.";
+    let legend = "Areas of the discs are shares of the total; the numbers at both ends are shares of the heaviest draws' weight.";
     parts.push(legend.to_owned());
     if strips.len() > STRIPS {
         parts.push(format!("The {} variables with the most even spread are left out.", strips.len() - STRIPS));
@@ -391,32 +304,5 @@ mod tests {
         assert!(strips[0].places.iter().sum::<f64>() / strips[0].places.len() as f64 > 0.6);
         assert!(strips[1].places.iter().sum::<f64>() / (strips[1].places.len() as f64) < 0.4);
         assert!(strips[2].distance < strips[1].distance);
-    }
-
-    /// Places in the middles of equal slices are as even as five draws can be; all at one place are as uneven as that
-    /// place is far from the middle.
-    #[test]
-    fn distances_of_known_places() {
-        assert!(distance(&[0.1, 0.3, 0.5, 0.7, 0.9], &[1.0; 5]).abs() < 1e-12);
-        assert!((distance(&[0.95; 4], &[1.0; 4]) - (0.95 - 0.125)).abs() < 1e-12);
-        assert_eq!(distance(&[0.5], &[0.7]), 0.0);
-        assert_eq!(distance(&[f64::NAN], &[0.7]), 0.0);
-    }
-
-    /// Equal weights are a false alarm in at most one of twenty seeds; all six variables of 40 seeds, draws taken from
-    /// one stream: at most 6 alarms has a probability of 0.986 under that rate.
-    #[test]
-    fn even_weights_rarely_seem_uneven() {
-        let mut stream = stream(3, Purpose::Trial, 1, 0);
-        let mut alarms = 0;
-        for _ in 0..40 {
-            let shares = [0.01; 40];
-            let far = (0..6).any(|_| {
-                let places: Vec<f64> = (0..40).map(|_| uniform(&mut stream)).collect();
-                distance(&places, &shares) > chance_distance(6, &shares)
-            });
-            alarms += usize::from(far);
-        }
-        assert!(alarms <= 6, "{alarms}");
     }
 }
