@@ -178,8 +178,14 @@ mod tests {
         let folder = tempdir().unwrap();
         let header = JournalHeader::default();
         let points = Points::from_rows(2, &[0.1, 0.2, 0.3, 0.4]);
-        let answers = Answers { log_density: vec![-1.0, f64::NEG_INFINITY], gradients: points.clone() };
-        let plain = Answers { log_density: vec![2.0, 3.0], gradients: Points::new(2) };
+        let answers = Answers {
+            log_density: vec![-1.0, f64::NEG_INFINITY],
+            gradients: points.clone(),
+            value: vec![0.5, -1.0],
+            hit: vec![true, false],
+        };
+        let plain =
+            Answers { log_density: vec![2.0, 3.0], gradients: Points::new(2), value: Vec::new(), hit: Vec::new() };
         let mut recorder = Recorder::begin(folder.path(), &header).unwrap();
         assert_eq!(recorder.recorded(&batch(&points, true)), None);
         recorder.record(&batch(&points, true), &answers, Duration::ZERO).unwrap();
