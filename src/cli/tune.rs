@@ -51,14 +51,17 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let located = problem_file::locate(&args.problem, args.out.as_deref());
     let problem = problem_file::read(&located.file, |keys| args.tuning.over(keys))?;
     options::check(problem.tuning())?;
-    if let Some(threads) = args.tuning.threads(problem.tuning()) {
-        let threads = usize::try_from(threads)?;
-        rayon::ThreadPoolBuilder::new().num_threads(threads).build_global().context("starting the threads")?;
-    }
+    // Zero threads: as many as the machine has cores.
+    let threads = usize::try_from(args.tuning.threads(problem.tuning()).unwrap_or(0))?;
+    let threads = rayon::ThreadPoolBuilder::new().num_threads(threads).build().context("starting the threads")?;
+    threads.install(|| tune(args, &located, &problem))
+}
+
+fn tune(args: &Args, located: &Located, problem: &Problem) -> anyhow::Result<Ending> {
     let settings = Settings::from_keys(problem.tuning());
     let signals = Signals::listen().context("listening for signals")?;
-    let (folder, mut watch) = begin(args, &located, &problem, &settings, signals.clone())?;
-    let tuned = adapt::tune(&problem, &settings, &mut watch);
+    let (folder, mut watch) = begin(args, located, problem, &settings, signals.clone())?;
+    let tuned = adapt::tune(problem, &settings, &mut watch);
     watch.screen.clear();
     watch.recorder.sync()?;
     match (tuned, watch.refused()) {
@@ -72,7 +75,7 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
         (Err(error), _) => Err(error.into()),
         (Ok(_), Some(error)) => Err(error.into()),
         (Ok(tuning), None) => {
-            let summary = run_files::write(&folder, &problem, &tuning, settings.seed)?;
+            let summary = run_files::write(&folder, problem, &tuning, settings.seed)?;
             finish(args, &folder, watch, &tuning, &summary)
         }
     }
@@ -98,8 +101,9 @@ fn begin(
     };
     let log = folder.join("log.txt");
     let mut screen = Screen::new(&log).with_context(|| format!("cannot write {}", log.display()))?;
-    if !args.resume {
-        write_bytes(&folder.join(problem_file::COPY), problem.text_for(folder.path()).as_bytes())?;
+    let copy = folder.join(problem_file::COPY);
+    if !copy.exists() {
+        write_bytes(&copy, problem.text_for(folder.path()).as_bytes())?;
     }
     screen.keep(&tune_report::opening(problem, settings.budget, settings.seed));
     if args.resume {

@@ -16,6 +16,7 @@ use evenpoise::problem::Problem;
 use evenpoise::weights::Estimate;
 use evenpoise::weights::Score;
 use evenpoise::weights::TailReason;
+use evenpoise::weights::verdict::Verdict;
 use evenpoise::weights::verdict::Word;
 use evenpoise::weights::verdict::checks::TAIL_SOUND;
 
@@ -38,7 +39,7 @@ pub(crate) fn closing(tuning: &Tuning) -> String {
     let mark = if unfit { ": NOT TO BE REPORTED" } else { "" };
     if let Some(score) = &tuning.score {
         out.push_str(&format!("\n{}\n", styled(&format!("{} report draws{mark}", count(score.draws as u64)), HEADING)));
-        out.push_str(&scores(score));
+        out.push_str(&scores(score, &tuning.verdict));
     }
     if !tuning.estimates.is_empty() {
         out.push_str(&format!("\n{}\n", styled(&format!("Estimates{mark}"), HEADING)));
@@ -62,17 +63,18 @@ fn proposal(tuning: &Tuning) -> String {
     hanging("Proposal  ", &format!("{parts} ({tails}), from {from}; {} evaluations in all", count(tuning.evaluations)))
 }
 
-fn scores(score: &Score) -> String {
+fn scores(score: &Score, verdict: &Verdict) -> String {
     let interval = score
         .ess_fraction_interval
         .map_or(String::new(), |[low, high]| format!(" ({} to {})", percent(low), percent(high)));
+    let ignored = verdict.checks.iter().any(|check| check.name == "tail shape" && check.word == Word::Sound);
     let tail = match score.tail.reason {
+        TailReason::Fitted if ignored && score.tail.upper > TAIL_SOUND => {
+            format!("{}; no draw is heavy enough for it to matter", significant(score.tail.shape, 2))
+        }
         TailReason::Fitted => {
-            format!(
-                "{}, at most {} with 90 %; sound up to {TAIL_SOUND}",
-                significant(score.tail.shape, 2),
-                significant(score.tail.upper, 2)
-            )
+            let [shape, upper] = [score.tail.shape, score.tail.upper].map(|shape| significant(shape, 2));
+            format!("{shape}, at most {upper} with 90 %; sound up to {TAIL_SOUND}")
         }
         TailReason::Bounded => "bounded: the largest weights are all equal".to_owned(),
         TailReason::TooFew => "not known: too few draws in the tail".to_owned(),

@@ -22,7 +22,7 @@ use std::time::Duration;
 use std::time::Instant;
 
 /// Columns of the bar of a round.
-const BAR: usize = 14;
+const BAR: usize = 9;
 
 /// Watches a tuning.
 pub(crate) struct Watch {
@@ -148,7 +148,8 @@ impl Observer for Watch {
 
     fn surveyed(&mut self, survey: &Survey) {
         self.screen.keep(&survey_lines(survey));
-        self.screen.keep(&format!("\n{}", styled(ROUND_HEADING, QUIET)));
+        self.screen.keep("");
+        ROUND_HEADING.iter().for_each(|line| self.screen.keep(&styled(line, QUIET)));
     }
 
     fn round(&mut self, round: &Round) {
@@ -166,7 +167,10 @@ impl Observer for Watch {
 }
 
 /// Titles of the columns of [`round_line`].
-const ROUND_HEADING: &str = "round  parts   ESS predicted > fresh                  variance    tail    spent   left";
+const ROUND_HEADING: [&str; 2] = [
+    "                      ESS fraction             weight    tail   evalua-     time",
+    "round components predicted   fresh           variance   shape     tions     left",
+];
 
 /// Climbs, modes, and what could have been missed.
 fn survey_lines(survey: &Survey) -> String {
@@ -200,7 +204,7 @@ fn round_line(round: &Round, seconds_left: Option<f64>) -> String {
         score.map(read).filter(|x| x.is_finite()).map_or("-".to_owned(), write)
     };
     format!(
-        "{:>5}  {:>5}   {:>7} > {:>7} {}  {:>8}  {:>6}  {:>7}  {:>5}",
+        "{:>5} {:>10} {:>9} {:>7} {} {:>8} {:>7} {:>9} {:>8}",
         round.index,
         round.components,
         predicted,
