@@ -107,8 +107,7 @@ fn inflated(fitted: &Directed) -> Result<Directed, ProposalError> {
     for part in &mut parts {
         let k = part.mean.len();
         part.covariance.iter_mut().for_each(|v| *v *= INFLATE);
-        let floor = crate::knob("FLOOR", INFLATED_FLOOR);
-        (0..k).for_each(|i| part.covariance[i * k + i] += floor);
+        (0..k).for_each(|i| part.covariance[i * k + i] += INFLATED_FLOOR);
         part.rest = (part.rest * INFLATE_REST).min(part.rest.max(1.0));
     }
     Directed::new(&parts, fitted.rest_dim())
