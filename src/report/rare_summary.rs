@@ -11,10 +11,13 @@ use crate::adapt::rare::RareSurvey;
 use crate::adapt::rare::RareTuning;
 use crate::adapt::rare::RareValue;
 use crate::adapt::rare::ValueWithError;
+use crate::numeric::ln;
 use crate::problem::Aim;
 use crate::problem::Problem;
+use crate::store::ScoresEntry;
 use crate::store::finite;
 use crate::weights::verdict::Word;
+use crate::weights::verdict::checks::TAIL_SOUND;
 use serde::Serialize;
 
 /// What every report of a probability says.
@@ -187,6 +190,27 @@ impl RareSummary {
             candidates: tuning.rounds.iter().map(RareRoundCandidates::of).collect(),
             components: tuning.chosen.len(),
             provenance,
+        }
+    }
+}
+
+impl RareSummary {
+    /// The scores that the proposal's file carries: of the draws that the answer rests on. The normalising constant of the
+    /// target is the answer.
+    #[must_use]
+    pub fn scores(&self, tuning: &RareTuning) -> ScoresEntry {
+        let value = tuning.answer.value();
+        ScoresEntry {
+            draws: self.draws,
+            ess_fraction: self.ess_fraction,
+            ess_fraction_interval: None,
+            weight_variance: self.weight_variance,
+            perplexity: None,
+            tail_shape: self.tail_shape,
+            tail_shape_limit: TAIL_SOUND,
+            largest_share: self.largest_share,
+            log_normaliser: value.and_then(|v| finite(ln(v.value.abs()))),
+            log_normaliser_se: value.and_then(|v| finite(v.cv)),
         }
     }
 }

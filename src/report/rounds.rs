@@ -135,7 +135,8 @@ pub fn read_rounds(path: &Path) -> Result<Vec<RoundRow>, StoreError> {
         None => column("exponent")?.iter().map(|&exponent| known(exponent)).collect(),
     };
     let (components, predicted) = (column("components")?, column("predicted_ess_fraction")?);
-    let (fresh, fresh_se, variance) = (column("ess_fraction")?, column("ess_fraction_se")?, column("weight_variance")?);
+    let (fresh, variance) = (column("ess_fraction")?, column("weight_variance")?);
+    let fresh_se = table.column("ess_fraction_se");
     Ok((0..table.len())
         .map(|i| RoundRow {
             round: rounds[i] as u32,
