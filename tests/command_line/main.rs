@@ -2,4 +2,6 @@
 
 mod common;
 mod endings;
+mod others;
+mod schema;
 mod tune;

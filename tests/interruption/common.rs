@@ -24,7 +24,7 @@ log_factor = "sum(log_density_normal(flow, offset + 0.05 * depth^1.67 / roughnes
 [estimates]
 conveyance = "0.05 / roughness"
 [tuning]
-budget = 2500
+budget = 2000
 "#;
 
 /// A folder with the problem, its data, and the run that nothing interrupted.
@@ -38,8 +38,8 @@ impl Case {
     pub(crate) fn new() -> Self {
         let folder = tempfile::tempdir().unwrap();
         let mut data = String::from("depth,flow\n");
-        for i in 0..1500_u32 {
-            let depth = 0.5 + f64::from(i) / 1000.0;
+        for i in 0..800_u32 {
+            let depth = 0.5 + f64::from(i) / 600.0;
             // A fixed scatter between -0.2 and 0.2.
             let scatter = f64::from((i * 7919) % 401) / 1000.0 - 0.2;
             data.push_str(&format!("{depth},{}\n", 1.7 * depth.powf(1.67) + scatter));
