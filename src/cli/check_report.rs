@@ -8,7 +8,9 @@ use super::layout::hanging;
 use super::layout::styled;
 use super::numbers::count;
 use super::numbers::percent;
+use super::numbers::rough;
 use super::numbers::significant;
+use super::numbers::trimmed;
 use evenpoise::distribution::Distribution;
 use evenpoise::distribution::correlation::LinearCorrelation;
 use evenpoise::distribution::correlation::rank_of_score;
@@ -62,7 +64,7 @@ fn variables(problem: &Problem) -> String {
     for (j, variable) in problem.variables().iter().enumerate().take(MOST) {
         let unit = variable.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
         let ends = [natural.get(1, j).min(natural.get(2, j)), natural.get(1, j).max(natural.get(2, j))];
-        let [near, low, high] = [natural.get(0, j), ends[0], ends[1]].map(|x| significant(x, 3));
+        let [near, low, high] = [natural.get(0, j), ends[0], ends[1]].map(|x| trimmed(x, 3));
         let text = format!(
             "{}; coordinate {}; start {near}{unit} (95 % within {low} to {high})",
             nature(variable),
@@ -83,13 +85,13 @@ fn nature(variable: &Variable) -> String {
             let parameters: Vec<String> = distribution
                 .parameters()
                 .iter()
-                .map(|(name, value)| format!("{name} {}", significant(*value, 4)))
+                .map(|(name, value)| format!("{name} {}", trimmed(*value, 4)))
                 .collect();
             let (low, high) = distribution.support();
             let shift = if distribution.shift() == 0.0 {
                 String::new()
             } else {
-                format!(", shifted by {}", significant(distribution.shift(), 4))
+                format!(", shifted by {}", trimmed(distribution.shift(), 4))
             };
             let kind = if distribution.is_discrete() { ", whole numbers" } else { "" };
             format!("{}: {}{shift}; on {}{kind}", distribution.family(), parameters.join(", "), interval(low, high))
@@ -104,9 +106,9 @@ fn nature(variable: &Variable) -> String {
 fn interval(low: f64, high: f64) -> String {
     match (low.is_finite(), high.is_finite()) {
         (false, false) => "the whole line".to_owned(),
-        (true, false) => format!("{} and above", significant(low, 4)),
-        (false, true) => format!("{} and below", significant(high, 4)),
-        (true, true) => format!("{} to {}", significant(low, 4), significant(high, 4)),
+        (true, false) => format!("{} and above", trimmed(low, 4)),
+        (false, true) => format!("{} and below", trimmed(high, 4)),
+        (true, true) => format!("{} to {}", trimmed(low, 4), trimmed(high, 4)),
     }
 }
 
@@ -223,7 +225,7 @@ pub(crate) fn tried(problem: &Problem, trial: &Trial, took: Duration) -> String 
     }
     let rate = n as f64 / took.as_secs_f64();
     let gradient = if problem.has_gradient() { ", with exact gradients" } else { "" };
-    out.push_str(&format!("  about {} evaluations a second{gradient}\n", significant(rate, 2)));
+    out.push_str(&format!("  about {} evaluations a second{gradient}\n", rough(rate)));
     out
 }
 

@@ -38,7 +38,7 @@ pub fn resample(weights: &[f64], n: usize, seed: u64) -> Vec<usize> {
             passed += remainder / sum * left as f64;
             // Rounding must not lose the last mark.
             let last = i + 1 == remainders.len();
-            while marks < left && (start + marks as f64) < passed || (last && marks < left) {
+            while marks < left && (last || start + (marks as f64) < passed) {
                 copies[i] += 1;
                 marks += 1;
             }
