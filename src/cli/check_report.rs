@@ -53,20 +53,13 @@ fn variables(problem: &Problem) -> String {
     let d = problem.dim();
     let title = if d == 1 { "One variable".to_owned() } else { format!("{d} variables") };
     let mut out = heading(&title);
-    let start = problem.start();
-    let mut corners = Points::new(d);
-    for side in [0.0, -CENTRAL_95, CENTRAL_95] {
-        let corner: Vec<f64> =
-            start.near.iter().zip(&start.spread).map(|(near, spread)| near + side * spread).collect();
-        corners.push(&corner);
-    }
-    let natural = problem.to_natural(&corners);
+    let natural = problem.to_natural(&start_corners(problem));
     for (j, variable) in problem.variables().iter().enumerate().take(MOST) {
         let unit = variable.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
-        let ends = [natural.get(1, j).min(natural.get(2, j)), natural.get(1, j).max(natural.get(2, j))];
-        let [near, low, high] = [natural.get(0, j), ends[0], ends[1]].map(|x| trimmed(x, 3));
+        let ends = [1 + 2 * j, 2 + 2 * j].map(|corner| natural.get(corner, j));
+        let [near, low, high] = [natural.get(0, j), ends[0].min(ends[1]), ends[0].max(ends[1])].map(|x| trimmed(x, 3));
         let text = format!(
-            "{}; coordinate {}; start {near}{unit} (95 % within {low} to {high})",
+            "{}; coordinate {}; start {near}{unit} (95 % from {low} to {high})",
             nature(variable),
             variable.coordinate.word()
         );
@@ -76,6 +69,20 @@ fn variables(problem: &Problem) -> String {
         out.push_str(&format!("  and {} more\n", d - MOST));
     }
     out
+}
+
+/// The centre of the start, and for every variable the two ends of its central 95 % with the others at their centres.
+fn start_corners(problem: &Problem) -> Points {
+    let start = problem.start();
+    let mut corners = Points::from_rows(problem.dim(), &start.near);
+    for j in 0..problem.dim() {
+        for side in [-CENTRAL_95, CENTRAL_95] {
+            let mut corner = start.near.clone();
+            corner[j] += side * start.spread[j];
+            corners.push(&corner);
+        }
+    }
+    corners
 }
 
 fn nature(variable: &Variable) -> String {
@@ -208,9 +215,8 @@ pub(crate) fn tried(problem: &Problem, trial: &Trial, took: Duration) -> String 
             let best = trial.best(problem).map_or("none".to_owned(), |(_, best)| significant(best, 6));
             let centre = trial.centre_log_density(problem);
             let centre = if centre.is_nan() { "failed".to_owned() } else { significant(centre, 6) };
-            out.push_str(&format!(
-                "  log density in natural units: {centre} at the centre, {best} at the best point\n"
-            ));
+            let text = format!("log density {centre} at the centre, {best} at the best point (natural units)");
+            out.push_str(&hanging("  ", &text));
         }
         Aim::Probability => out.push_str(&format!(
             "  in the event {}; margin at the centre {}\n",

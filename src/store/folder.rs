@@ -11,12 +11,14 @@ use std::path::PathBuf;
 
 /// Everything that a run writes into its folder. The journal makes it the folder of a run: it is written first
 /// ([`Journal::create`](super::Journal::create) before any other file), and removed last.
-pub const RUN_ENTRIES: [&str; 13] = [
+pub const RUN_ENTRIES: [&str; 15] = [
     "report.html",
     "summary.json",
     "proposal.json",
     "points.csv",
     "rounds.csv",
+    "even.csv",
+    "weighted.csv",
     "timings.json",
     "log.txt",
     "figures",

@@ -1,6 +1,6 @@
 //! Exit statuses, and what stands on which stream.
 
-use super::common::{evenpoise, folder};
+use super::common::{evenpoise, folder, tune};
 use predicates::prelude::PredicateBooleanExt;
 use predicates::str::contains;
 use serde_json::Value;
@@ -41,12 +41,12 @@ fn a_wrong_problem_is_shown_with_a_caret() {
 #[test]
 fn a_run_is_replaced_only_by_force() {
     let folder = folder();
-    evenpoise(folder.path()).args(["tune", "sill.toml"]).assert().success();
+    tune(folder.path(), &["sill.toml"]);
     let before = super::common::contents(&folder.path().join("sill.run"));
     let refused = evenpoise(folder.path()).args(["tune", "sill.toml", "--seed", "2"]).assert().code(1);
     refused.stderr(contains("--force").and(contains("--resume")));
     assert!(super::common::contents(&folder.path().join("sill.run")) == before);
-    evenpoise(folder.path()).args(["tune", "sill.toml", "--seed", "2", "--force"]).assert().success();
+    tune(folder.path(), &["sill.toml", "--seed", "2", "--force"]);
     assert!(super::common::contents(&folder.path().join("sill.run")) != before);
 }
 

@@ -1,6 +1,6 @@
 //! `check` and `points`.
 
-use super::common::{SILL, evenpoise, folder};
+use super::common::{SILL, evenpoise, folder, tune};
 use evenpoise::store::Table;
 use predicates::prelude::PredicateBooleanExt;
 use predicates::str::contains;
@@ -65,7 +65,7 @@ fn check_shows_the_problem_as_it_was_understood() {
 #[test]
 fn even_points_have_the_weighted_means() {
     let folder = folder();
-    evenpoise(folder.path()).args(["tune", "sill.toml"]).assert().success();
+    tune(folder.path(), &["sill.toml"]);
     let even = ["points", "sill.run", "--even", "4e3"];
     let said = evenpoise(folder.path())
         .args(even)

@@ -1,6 +1,6 @@
 //! `tune`: files, bytes, tables.
 
-use super::common::{assert_same, contents, evenpoise, folder};
+use super::common::{assert_same, contents, evenpoise, folder, tune};
 use evenpoise::store::{Table, read_proposal};
 use serde_json::Value;
 use std::fs;
@@ -46,7 +46,7 @@ fn a_tuning_writes_its_files_and_shows_its_verdict() {
 #[test]
 fn the_files_agree_with_each_other() {
     let folder = folder();
-    evenpoise(folder.path()).args(["tune", "sill.toml"]).assert().success();
+    tune(folder.path(), &["sill.toml"]);
     let run = folder.path().join("sill.run");
     let points = Table::read(&run.join("points.csv")).unwrap();
     assert_eq!(points.names, ["depth", "slope", "head", "weight_", "log_target", "log_proposal", "weight"]);
@@ -75,7 +75,7 @@ fn the_files_agree_with_each_other() {
 #[test]
 fn the_proposal_reads_back_bit_for_bit() {
     let folder = folder();
-    evenpoise(folder.path()).args(["tune", "sill.toml"]).assert().success();
+    tune(folder.path(), &["sill.toml"]);
     let path = folder.path().join("sill.run/proposal.json");
     let again = folder.path().join("again.json");
     read_proposal(&path).unwrap().write(&again).unwrap();
@@ -86,7 +86,7 @@ fn the_proposal_reads_back_bit_for_bit() {
 fn the_number_of_threads_changes_no_byte() {
     let folder = folder();
     for threads in ["1", "2"] {
-        evenpoise(folder.path()).args(["tune", "sill.toml", "--threads", threads, "--out", threads]).assert().success();
+        tune(folder.path(), &["sill.toml", "--threads", threads, "--out", threads]);
     }
     assert_same(&folder.path().join("1"), &folder.path().join("2"));
 }
@@ -97,8 +97,9 @@ fn options_win_over_the_file() {
     let folder = folder();
     let text = format!("{}df = 7.0\nseed = 3\n", super::common::SILL);
     fs::write(folder.path().join("heavy.toml"), text).unwrap();
-    let options = ["--budget", "2.5e3", "--df", "auto", "--family", "gaussian", "--coordinates", "standard-normal"];
-    evenpoise(folder.path()).args(["tune", "heavy.toml"]).args(options).assert().success();
+    let options =
+        ["heavy.toml", "--budget", "2.5e3", "--df", "auto", "--family", "gaussian", "--coordinates", "standard-normal"];
+    tune(folder.path(), &options);
     let copy = fs::read_to_string(folder.path().join("heavy.run/problem.toml")).unwrap();
     for line in
         ["budget = 2500", "df = \"auto\"", "family = \"gaussian\"", "seed = 3", "coordinates = \"standard-normal\""]
@@ -114,7 +115,7 @@ fn options_win_over_the_file() {
 #[test]
 fn figures_are_drawn_again_from_the_files() {
     let folder = folder();
-    evenpoise(folder.path()).args(["tune", "sill.toml"]).assert().success();
+    tune(folder.path(), &["sill.toml"]);
     let again = ["figures", "sill.run", "--out", "again"];
     evenpoise(folder.path()).args(again).assert().success();
     for (name, bytes) in contents(&folder.path().join("sill.run")) {

@@ -1,6 +1,6 @@
 //! Journals that were cut or damaged, and disks that refuse.
 
-use super::common::{Case, FLOOD, parts, said};
+use super::common::{Case, FLOOD, done, parts, said};
 use std::fs;
 use std::process::Command;
 
@@ -15,7 +15,7 @@ fn a_journal_that_was_cut_is_gone_on_with() {
         let at = 2000 + (part * (bytes.len() - 2000) as f64) as usize;
         fs::write(&journal, &bytes[..at]).unwrap();
         let output = case.run(&["tune", &run, "--resume"]);
-        assert!(output.status.success() && said(&output).contains("dropped"), "{}", said(&output));
+        assert!(done(&output) && said(&output).contains("dropped"), "{}", said(&output));
         case.assert_whole(&run);
     }
 }
@@ -31,7 +31,7 @@ fn a_probability_is_gone_on_with() {
         let at = 2000 + (part * (bytes.len() - 2000) as f64) as usize;
         fs::write(&journal, &bytes[..at]).unwrap();
         let output = case.run(&["tune", &run, "--resume"]);
-        assert!(output.status.success(), "{}", said(&output));
+        assert!(done(&output), "{}", said(&output));
         case.assert_whole(&run);
     }
 }
@@ -47,7 +47,7 @@ fn a_damaged_journal_is_never_believed() {
         bytes[at] ^= 0x10;
         fs::write(&journal, bytes).unwrap();
         let output = case.run(&["tune", &run, "--resume"]);
-        if output.status.success() {
+        if done(&output) {
             assert!(said(&output).contains("damaged"), "{}", said(&output));
             case.assert_whole(&run);
         } else {
