@@ -28,11 +28,12 @@ fn exact_log_integral((storms, waves): (f64, f64)) -> f64 {
 
 fn main() -> Result<(), Box<dyn std::error::Error>> {
     // Values and slopes in the variables' own units: the library takes care of coordinates and Jacobians.
-    let target = Closure::new(2, |x| log_likelihood(BEFORE, x[0]) + log_likelihood(AFTER, x[1])).with_gradient(|x, slope| {
-        slope[0] = BEFORE.1 / x[0] - BEFORE.0;
-        slope[1] = AFTER.1 / x[1] - AFTER.0;
-        log_likelihood(BEFORE, x[0]) + log_likelihood(AFTER, x[1])
-    });
+    let target =
+        Closure::new(2, |x| log_likelihood(BEFORE, x[0]) + log_likelihood(AFTER, x[1])).with_gradient(|x, slope| {
+            slope[0] = BEFORE.1 / x[0] - BEFORE.0;
+            slope[1] = AFTER.1 / x[1] - AFTER.0;
+            log_likelihood(BEFORE, x[0]) + log_likelihood(AFTER, x[1])
+        });
     let variables = vec![
         Variable::range("before", 0.0, f64::INFINITY, 3.0, 3.0).with_unit("waves a storm"),
         Variable::range("after", 0.0, f64::INFINITY, 3.0, 3.0).with_unit("waves a storm"),
