@@ -63,7 +63,7 @@ fn answers(data: &PageData) -> Vec<Block> {
         let value = if answer.value.is_finite() { format!("{value}{mark}") } else { UNKNOWN.to_owned() };
         let name =
             if answer.note.is_empty() { answer.name.clone() } else { format!("{} ({})", answer.name, answer.note) };
-        vec![name, value, se, interval, short(answer.effective_draws.round())]
+        vec![name, value, se, interval, effective(answer.effective_draws)]
     });
     blocks.push(Block::table(
         &format!("Answers from {} report draws{mark}", count(data.run.report_draws)),
@@ -143,9 +143,36 @@ fn problem(data: &PageData) -> Vec<Block> {
         ),
     ];
     blocks.extend(data.notes.iter().map(Block::text));
-    blocks.push(Block::Heading(3, "The problem as it was read".into()));
-    blocks.push(Block::Listing(data.statement.clone()));
+    let formulas = excerpt(&data.statement);
+    if !formulas.is_empty() {
+        blocks.push(Block::text(
+            "Constants, formulas and target, as the problem file states them (the whole file is at the end):",
+        ));
+        blocks.push(Block::Listing(formulas));
+    }
     blocks
+}
+
+/// Constants, formulas, target and estimates out of a problem file: its tables of other names are shown elsewhere.
+fn excerpt(statement: &str) -> String {
+    const SHOWN: [&str; 4] = ["[constants]", "[formulas]", "[target]", "[estimates]"];
+    let mut out = String::new();
+    let mut shown = false;
+    for line in statement.lines() {
+        if line.starts_with('[') {
+            shown = SHOWN.contains(&line);
+        }
+        if shown && line != "require = []" {
+            out.push_str(line);
+            out.push('\n');
+        }
+    }
+    out.trim().to_owned()
+}
+
+/// Independent draws that would do as well.
+fn effective(draws: f64) -> String {
+    if (0.0..1e15).contains(&draws) { count(draws.round() as u64) } else { short(draws) }
 }
 
 fn survey(data: &PageData) -> Vec<Block> {
@@ -305,13 +332,16 @@ fn checks(data: &PageData) -> Vec<Block> {
         let row = |name: &str, value: String| vec![name.to_owned(), value];
         let rows = vec![
             row("report draws", count(score.draws as u64)),
-            row("effective sample size", format!("{} = {}{interval}", number(score.ess), share(score.ess_fraction))),
+            row(
+                "effective sample size",
+                format!("{} draws = {}{interval}", effective(score.ess), share(score.ess_fraction)),
+            ),
             row("weight variance", short(score.weight_variance)),
             row("perplexity", short(score.perplexity)),
             row("tail shape", tail),
             row("largest share of one draw", share(score.largest_share)),
         ];
-        blocks.push(Block::table("Scores of the report draws", &["score", "value#"], rows));
+        blocks.push(Block::table("Scores of the report draws", &["score", "value"], rows));
     }
     let rows = data.verdict.checks.iter().map(|check| {
         vec![
@@ -371,5 +401,7 @@ fn provenance(data: &PageData) -> Vec<Block> {
             "The same program version, problem, data and seed give the same bytes, whatever the machine's number of threads: digests that agree \
              with those above mean that the inputs are the same.",
         ),
+        Block::Heading(3, "The problem as it was read".into()),
+        Block::Listing(data.statement.clone()),
     ]
 }
