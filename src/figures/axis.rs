@@ -151,6 +151,15 @@ impl Axis {
         }
     }
 
+    /// The axis with all ticks beyond `last` replaced by one at `at` that says `label`: a value out of the row.
+    #[must_use]
+    pub fn with_far_tick(mut self, last: f64, at: f64, label: &str) -> Self {
+        self.marking.ticks.retain(|tick| tick.at <= last);
+        self.marking.minor.retain(|&minor| minor <= last);
+        self.marking.ticks.push(Tick { at, label: label.to_owned() });
+        self
+    }
+
     /// Width of the widest label, points.
     #[must_use]
     pub fn label_width(&self, size: f64) -> f64 {
