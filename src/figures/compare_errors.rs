@@ -58,15 +58,21 @@ pub fn draw(data: &ErrorsData, style: &Style) -> Drawing {
     let y = Side { name: &name, unit: data.unit.as_deref(), range: (errors.0 / 1.6, errors.1 * 1.3, Scale::Log) };
     let lines = data.contestants.iter().enumerate();
     let entries: Vec<(Sample, String)> =
-        lines.map(|(k, c)| (Sample::Line(look(k, style).pen), c.name.clone())).collect();
+        lines.map(|(k, c)| (Sample::Marked(look(k, style), 0.8 * style.marker()), c.name.clone())).collect();
     let mut frame = Frame::new(&x, &[(y, SINGLE)], &entries, style);
     let guide = guide(data);
     if let Some(level) = guide {
         let pen = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.3 * style.unit(), 0.3 * style.unit());
-        frame.curve(0, [draws.0, draws.1].map(|n| (n, level / n.sqrt())), pen);
+        let x = &frame.panels[0].x;
+        let ends = [x.low(), x.high()].map(|n| (n, level / n.sqrt()));
+        frame.curve(0, ends, pen);
     }
     for (k, contestant) in data.contestants.iter().enumerate() {
-        frame.curve(0, contestant.points(), look(k, style).pen);
+        let look = look(k, style);
+        frame.curve(0, contestant.points(), look.pen);
+        if let Some((n, se)) = contestant.points().last() {
+            look.shape.draw(&mut frame.canvas, frame.panels[0].spot(n, se), 0.8 * style.marker(), look.pen.colour);
+        }
     }
     match guide {
         Some(level) => {
@@ -96,7 +102,7 @@ fn caption(data: &ErrorsData) -> String {
     let mut caption = format!("Standard error of {} against the draws spent.", data.quantity);
     if !ends.is_empty() {
         caption.push_str(&format!(
-            " At the ends: {}. Where the weights have a finite variance, lines fall along the guide; a jump is a draw that the proposal had made too rare.",
+            " At their ends (markers): {}. Where the weights have a finite variance, lines fall along the guide; a jump is a draw that the proposal had made too rare.",
             ends.join("; ")
         ));
     }
@@ -162,7 +168,7 @@ mod tests {
         }
     }
 
-    /// Errors that fall as 3/√n have a guide at 0.8 times 3, and the caption says their end, 3/√864,793... draws.
+    /// Errors that fall as 3/√n have a guide at 0.8 times 3, and the caption says where they end.
     #[test]
     fn the_guide_has_the_slope_of_the_root() {
         let data = data(vec![course("tuned", 3.0, -0.5, false), course("wide", 30.0, -0.5, false)]);

@@ -61,12 +61,12 @@ pub fn draw(data: &RadialData, style: &Style) -> Drawing {
         points.fold((f64::INFINITY, 0.0_f64), |(low, high), v| (low.min(v), high.max(v)))
     };
     let tails = || std::iter::once(&data.target).chain(&data.proposals);
-    // Nearer than where a tenth has been left behind, all are alike.
-    let far = ends(&mut tails().flat_map(|tail| tail.points().filter(|p| p.1 <= 0.9).map(|p| p.0)));
-    let far = if far.0 > far.1 { (0.1, 10.0) } else { far };
     let target = ends(&mut data.target.points().map(|p| p.1));
     // One power of ten below the target's last point: beyond, there is nothing to compare with.
     let least = if target.0 > target.1 { 1e-4 } else { target.0.min(0.1) / 10.0 };
+    // Nearer than where a tenth has been left behind, all are alike.
+    let far = ends(&mut tails().flat_map(|tail| tail.points().filter(|p| (least..=0.9).contains(&p.1)).map(|p| p.0)));
+    let far = if far.0 > far.1 { (0.1, 10.0) } else { far };
     let entries: Vec<(Sample, String)> = tails()
         .enumerate()
         .map(|(k, tail)| {
