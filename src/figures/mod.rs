@@ -20,6 +20,7 @@
 //! **Invariant:** the bytes of a drawing depend on its data and style alone.
 
 pub mod axis;
+pub mod bands;
 pub mod canvas;
 pub mod colour;
 pub mod columns;
@@ -28,6 +29,7 @@ pub mod compare_errors;
 pub mod compare_radial;
 pub mod compare_tails;
 pub mod contestants;
+pub mod course;
 pub mod dependence;
 pub mod evenness;
 mod frame;

@@ -87,8 +87,8 @@ pub fn draw(data: &MarginData, style: &Style) -> Drawing {
     }
     if let Some(first) = nearest.reduce(f64::min) {
         let (x, y) = frame.panels[0].spot(first, high);
-        let text = format!("nearest {}", significant(first, 3));
-        frame.note(0, &text, (x - 3.5 * style.unit(), y + style.unit()), MODELLED);
+        let text = format!("nearest point {}", significant(first, 3));
+        frame.note(0, &text, (x - 4.6 * style.unit(), y + style.unit()), MODELLED);
     }
     if draws.is_empty() {
         frame.say(0, "no draw");
@@ -111,7 +111,7 @@ fn thinned<T: Copy>(draws: Vec<T>) -> Vec<T> {
 fn caption(data: &MarginData, draws: &[(f64, f64, bool)]) -> String {
     let hits = draws.iter().filter(|d| d.2).count();
     let mut parts = vec![format!(
-        "{} of {} draws against their distance from the origin of the standard normal scores; {} of them lie in the event.",
+        "Margin ({}) of {} draws against their distance from the origin of the standard normal scores; {} of them lie in the event.",
         data.margin_name,
         count(draws.len()),
         count(hits)
@@ -124,8 +124,10 @@ fn caption(data: &MarginData, draws: &[(f64, f64, bool)]) -> String {
         parts.push(format!("Dashed: the nearest points of the event that the search found, at {}.", found.join(", ")));
     }
     let failed = data.distance.len() - draws.len();
-    if failed > 0 {
-        parts.push(format!("{} draws have no margin.", count(failed)));
+    match failed {
+        0 => {}
+        1 => parts.push("One draw has no margin.".to_owned()),
+        _ => parts.push(format!("{} draws have no margin.", count(failed))),
     }
     parts.join(" ")
 }
@@ -187,7 +189,7 @@ mod tests {
         let mut data = data(300, 1.0);
         data.margin[7] = f64::NAN;
         let drawing = draw(&data, &Style::default());
-        assert!(drawing.caption.contains("299 draws") && drawing.caption.contains("1 draws have no margin"));
+        assert!(drawing.caption.contains("299 draws") && drawing.caption.contains("One draw has no margin"));
         assert_eq!(drawing.table.rows().len(), 299);
         assert_eq!(thinned((0..5000).collect()).len(), DOTS);
     }

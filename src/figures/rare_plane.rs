@@ -13,6 +13,7 @@ use super::frame::Side;
 use super::key::Sample;
 use super::numbers::count;
 use super::numbers::significant;
+use super::place::Area;
 use super::table::Table;
 
 /// Height of the panel in text sizes: about as high as wide.
@@ -22,9 +23,11 @@ const DOTS: usize = 1500;
 /// Radius of a dot, in text sizes.
 const DOT: f64 = 0.13;
 
-/// What the figure shows, all in standard normal scores or all in natural units.
+/// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct PlaneData {
+    /// What all values are.
+    pub space: Space,
     /// The variable along the bottom.
     pub x: PlaneSide,
     /// The variable along the left side.
@@ -37,6 +40,15 @@ pub struct PlaneData {
     pub nominal: Vec<PlaneOutline>,
     /// Points of the event of the highest nominal density, found by the search.
     pub design_points: Vec<(f64, f64)>,
+}
+
+/// What the axes measure.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Space {
+    /// Standard normal scores: both axes get the same scale, circles are round.
+    Scores,
+    /// Natural units: each axis has its own scale.
+    Natural,
 }
 
 /// A variable of the plane.
@@ -86,8 +98,6 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     };
     let range = |pick: fn((f64, f64)) -> f64| padded_range(spots().map(pick), 0.04).unwrap_or((-1.0, 1.0));
     let (xs, ys) = (range(|p| p.0), range(|p| p.1));
-    let x = Side { name: &data.x.name, unit: data.x.unit.as_deref(), range: (xs.0, xs.1, Scale::Linear) };
-    let y = Side { name: &data.y.name, unit: data.y.unit.as_deref(), range: (ys.0, ys.1, Scale::Linear) };
     let dot = DOT * unit;
     let nominal = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.4 * unit, 0.3 * unit);
     let component = Pen::solid(MODELLED, 0.09 * unit);
@@ -101,7 +111,18 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     if !data.nominal.is_empty() {
         entries.push((Sample::Outline(nominal), "nominal density".to_owned()));
     }
-    let mut frame = Frame::new(&x, &[(y, HEIGHT)], &entries, style);
+    let framed = |xs: (f64, f64), ys: (f64, f64)| {
+        let x = Side { name: &data.x.name, unit: data.x.unit.as_deref(), range: (xs.0, xs.1, Scale::Linear) };
+        let y = Side { name: &data.y.name, unit: data.y.unit.as_deref(), range: (ys.0, ys.1, Scale::Linear) };
+        Frame::new(&x, &[(y, HEIGHT)], &entries, style)
+    };
+    let mut frame = framed(xs, ys);
+    if data.space == Space::Scores {
+        // The axis with room to spare shows more than it has to.
+        let Area { left, top, right, bottom } = frame.panels[0].area;
+        let a_point = ((xs.1 - xs.0) / (right - left)).max((ys.1 - ys.0) / (bottom - top));
+        frame = framed(around(xs, a_point * (right - left)), around(ys, a_point * (bottom - top)));
+    }
     for (hit, colour, opacity) in [(false, REFERENCE, 0.35), (true, MEASURED, 0.5)] {
         let kind: Vec<&(f64, f64, bool)> = draws.iter().filter(|d| d.2 == hit).collect();
         let shown = kind.len().min(DOTS);
@@ -127,6 +148,12 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         frame.say(0, "no draw");
     }
     frame.finish("event", caption(data, &draws), table(data, &draws))
+}
+
+/// The range of `length` with the same middle.
+fn around(range: (f64, f64), length: f64) -> (f64, f64) {
+    let middle = f64::midpoint(range.0, range.1);
+    (middle - length / 2.0, middle + length / 2.0)
 }
 
 fn caption(data: &PlaneData, draws: &[(f64, f64, bool)]) -> String {
@@ -196,6 +223,7 @@ mod tests {
             values: vec![],
         };
         let mut data = PlaneData {
+            space: Space::Scores,
             x: side("score of inflow", 0.61),
             y: side("score of gate_friction", 0.3),
             hit: vec![],
@@ -218,6 +246,7 @@ mod tests {
         let mut bare = data(60);
         bare.components.clear();
         bare.nominal.clear();
+        bare.space = Space::Natural;
         bare.x.unit = Some("m³/s".into());
         bare.x.values[3] = f64::NAN;
         let mut empty = data(0);
