@@ -139,11 +139,10 @@ fn caption(data: &BandsData, entries: &[&BandEntry]) -> String {
     if entries.is_empty() {
         return format!("There is no estimate of {}.", data.quantity);
     }
+    let values = if entries.len() == 1 { "one value".to_owned() } else { format!("{} values", count(entries.len())) };
     let mut parts = vec![format!(
-        "Median of {} and the bands that hold 50 % and 90 % of its mass, for {} values of {}.",
-        data.quantity,
-        count(entries.len()),
-        data.index_name
+        "Median of {} and the bands that hold 50 % and 90 % of its mass, for {values} of {}.",
+        data.quantity, data.index_name
     )];
     let widest = entries.iter().max_by(|a, b| width(a).total_cmp(&width(b)));
     if let Some(entry) = widest {
@@ -152,7 +151,7 @@ fn caption(data: &BandsData, entries: &[&BandEntry]) -> String {
             "The widest 90 % band, {}{}, is at {}{}.",
             significant(width(entry), 3),
             unit(&data.unit),
-            significant(entry.index, 4),
+            significant(entry.index, 3),
             unit(&data.index_unit)
         ));
     }
@@ -239,7 +238,7 @@ mod tests {
         let mut data = data(100, 1.0, 1.0, true);
         let caption_of = |data: &BandsData| draw(data, &Style::default()).caption;
         assert!(caption_of(&data).contains("100 % of the observed"), "{}", caption_of(&data));
-        assert!(caption_of(&data).contains("10.2 m³/s, is at 100.0 h"), "{}", caption_of(&data));
+        assert!(caption_of(&data).contains("10.2 m³/s, is at 100 h"), "{}", caption_of(&data));
         for entry in &mut data.entries[..25] {
             entry.observed = Some(entry.nine_tenths.1 + 0.1);
         }

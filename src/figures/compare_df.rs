@@ -48,6 +48,15 @@ impl DfScore {
 }
 
 /// Draws the figure. Gaussian components stand apart, at the right end of the axis.
+///
+/// ```
+/// use evenpoise::figures::Style;
+/// use evenpoise::figures::compare_df::{DfData, DfScore, draw};
+/// let score = |df, ess_fraction| DfScore { df, ess_fraction, ess_fraction_se: Some(0.01) };
+/// let data = DfData { scores: vec![score(Some(8.0), 0.84), score(None, 0.61)], fitted: Some(9.2) };
+/// let drawing = draw(&data, &Style::default());
+/// assert!(drawing.caption.contains("The highest, 0.840, belongs to 8.0 degrees of freedom."));
+/// ```
 #[must_use]
 pub fn draw(data: &DfData, style: &Style) -> Drawing {
     let mut scores: Vec<&DfScore> = data.scores.iter().filter(|score| score.is_sound()).collect();

@@ -102,7 +102,8 @@ fn caption(data: &ErrorsData) -> String {
     let mut caption = format!("Standard error of {} against the draws spent.", data.quantity);
     if !ends.is_empty() {
         caption.push_str(&format!(
-            " At their ends (markers): {}. Where the weights have a finite variance, lines fall along the guide; a jump is a draw that the proposal had made too rare.",
+            " At their ends (markers): {}. Where the weights have a finite variance, lines fall along \
+             the guide; a jump is a draw that the proposal had made too rare.",
             ends.join("; ")
         ));
     }

@@ -111,7 +111,8 @@ fn caption(data: &RadialData) -> String {
         .collect();
     if !ratios.is_empty() {
         caption.push_str(&format!(
-            " Beyond {}, where {} has {} of its mass, lies: {}. A proposal whose line dips below the markers has tails too light for bounded weights.",
+            " Beyond {}, where {} has {} of its mass, lies: {}. A proposal \
+             whose line dips below the markers has tails too light for bounded weights.",
             significant(r, 3),
             data.target.name,
             significant(share, 2),

@@ -116,7 +116,8 @@ fn caption(drawn: &[Drawn]) -> String {
     let mut caption = "Share of draws whose weight exceeds a multiple of the mean weight (markers).".to_owned();
     if !fits.is_empty() {
         caption.push_str(&format!(
-            " Lines are generalised Pareto fits, with the tail shapes: {}. The steeper a tail falls, the safer its proposal.",
+            " Lines are generalised Pareto fits, with the tail shapes: {}. The \
+             steeper a tail falls, the safer its proposal.",
             fits.join("; ")
         ));
     }

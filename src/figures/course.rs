@@ -13,6 +13,7 @@ use super::frame::Frame;
 use super::frame::Side;
 use super::key::Sample;
 use super::numbers::count;
+use super::numbers::exponent_of;
 use super::numbers::percent;
 use super::numbers::significant;
 use super::table::Table;
@@ -83,6 +84,27 @@ impl CourseData {
 }
 
 /// Draws the figure: the estimate in its interval above, the standard error with the slope of `1 / √n` below.
+///
+/// ```
+/// use evenpoise::figures::Style;
+/// use evenpoise::figures::course::{CourseData, CoursePoint, Kind, draw};
+/// let point = |spent: f64, estimate: f64, standard_error: f64| CoursePoint {
+///     spent,
+///     estimate,
+///     standard_error,
+///     interval: (estimate - 1.96 * standard_error, estimate + 1.96 * standard_error),
+/// };
+/// let data = CourseData {
+///     name: "course".to_owned(),
+///     quantity: "mean level".to_owned(),
+///     unit: Some("m".to_owned()),
+///     spent: "draws".to_owned(),
+///     kind: Kind::Mean,
+///     points: vec![point(1e3, 12.3, 0.2), point(1e5, 12.12, 0.02)],
+///     known: None,
+/// };
+/// assert!(draw(&data, &Style::default()).caption.contains("After 100,000 draws: 12.120 m"));
+/// ```
 #[must_use]
 pub fn draw(data: &CourseData, style: &Style) -> Drawing {
     let points = data.sound();
@@ -108,29 +130,36 @@ pub fn draw(data: &CourseData, style: &Style) -> Drawing {
     let mut frame = Frame::new(&x, &rows, &entries, style);
     draw_band(&mut frame, &points);
     frame.curve(0, points.iter().map(|p| (p.spent, p.estimate)), line);
+    if let Some(last) = points.last().filter(|last| frame.panels[0].shows(last.spent, last.estimate)) {
+        let ends = [(last.spent, last.interval.0), (last.spent, last.interval.1)];
+        frame.curve(0, ends, Pen::solid(MEASURED, 1.4 * style.hairline()));
+        frame.canvas.disc(frame.panels[0].spot(last.spent, last.estimate), style.marker(), MEASURED, 1.0);
+    }
     if let Some(value) = data.known {
         let x = &frame.panels[0].x;
         let ends = [(x.low(), value), (x.high(), value)];
         frame.curve(0, ends, known);
     }
-    if let Some(&(n, error)) = errors.last() {
-        let guide = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.3 * style.unit(), 0.3 * style.unit());
-        let level = 0.8 * error * n.sqrt();
-        let x = &frame.panels[1].x;
-        let ends = [x.low(), x.high()].map(|n| (n, level / n.sqrt()));
-        frame.curve(1, ends, guide);
-        frame.curve(1, errors.iter().copied(), line);
-        frame.canvas.disc(frame.panels[1].spot(n, error), style.marker(), MEASURED, 1.0);
-        let n = (ends[0].0 * ends[1].0).sqrt();
-        let (x, y) = frame.panels[1].spot(n, level / n.sqrt());
-        frame.note(1, "slope of 1/√n", (x - 2.5 * style.unit(), y + 1.2 * style.unit()), REFERENCE);
-    } else {
-        frame.say(1, "no standard error");
-    }
+    draw_errors(&mut frame, &errors, line, style);
     if points.is_empty() {
         frame.say(0, "no estimate");
     }
     frame.finish(&data.name, caption(data, &points), table(data))
+}
+
+/// Draws the lower panel with a guide below the last point.
+fn draw_errors(frame: &mut Frame, errors: &[(f64, f64)], line: Pen, style: &Style) {
+    let Some(&(n, error)) = errors.last() else { return frame.say(1, "no standard error") };
+    let guide = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.3 * style.unit(), 0.3 * style.unit());
+    let level = 0.8 * error * n.sqrt();
+    let x = &frame.panels[1].x;
+    let ends = [x.low(), x.high()].map(|n| (n, level / n.sqrt()));
+    frame.curve(1, ends, guide);
+    frame.curve(1, errors.iter().copied(), line);
+    frame.canvas.disc(frame.panels[1].spot(n, error), style.marker(), MEASURED, 1.0);
+    let middle = (ends[0].0 * ends[1].0).sqrt();
+    let (x, y) = frame.panels[1].spot(middle, level / middle.sqrt());
+    frame.note(1, "slope of 1/√n", (x - 2.5 * style.unit(), y + 1.2 * style.unit()), REFERENCE);
 }
 
 /// The vertical axis of the estimate: the intervals of the later half of the course, on the scale of the other axis.
@@ -173,18 +202,28 @@ fn caption(data: &CourseData, points: &[&CoursePoint]) -> String {
     let relative = last.standard_error / last.estimate.abs();
     let part =
         if relative.is_finite() { format!(", a standard error of {} of it", percent(relative)) } else { String::new() };
+    let digits = digits(last);
     parts.push(format!(
         "After {} {}: {}{unit}, between {} and {}{part}.",
         count(last.spent as usize),
         data.spent,
-        significant(last.estimate, 4),
-        significant(last.interval.0, 4),
-        significant(last.interval.1, 4)
+        significant(last.estimate, digits),
+        significant(last.interval.0, digits),
+        significant(last.interval.1, digits)
     ));
     if let Some(known) = data.known {
-        parts.push(format!("The known value is {}{unit}.", significant(known, 4)));
+        parts.push(format!("The known value is {}{unit}.", significant(known, digits)));
     }
     parts.join(" ")
+}
+
+/// Digits that end with the second one of the standard error.
+fn digits(point: &CoursePoint) -> usize {
+    if !(point.standard_error > 0.0 && point.standard_error.is_finite()) || point.estimate == 0.0 {
+        return 4;
+    }
+    let apart = exponent_of(point.estimate) - exponent_of(point.standard_error);
+    (apart + 2).clamp(2, 15) as usize
 }
 
 fn table(data: &CourseData) -> Table {
@@ -233,7 +272,7 @@ mod tests {
         let mut broken = course(Kind::Mean, 1e9, 3e4);
         broken.points[0].interval = (f64::NEG_INFINITY, f64::INFINITY);
         broken.points[5].estimate = f64::NAN;
-        broken.points[49].standard_error = 0.0;
+        broken.points[48].standard_error = 0.0;
         broken.known = None;
         let mut one = course(Kind::Probability, 1e-9, 1e-8);
         one.points.truncate(1);
@@ -262,6 +301,7 @@ mod tests {
         let last = &data.points[49];
         let drawing = draw(&data, &Style::default());
         let want = format!("After {} draws: {} m³", count(last.spent as usize), significant(last.estimate, 4));
+        assert_eq!(digits(last), 4, "412.8 with an error of 2.3");
         assert!(drawing.caption.contains(&want), "{}", drawing.caption);
         assert_eq!(drawing.table.rows()[49][1], Cell::Number(last.estimate));
     }

@@ -26,6 +26,10 @@ use super::text::width;
 
 /// Most bars.
 const BARS: usize = 25;
+/// Distance of bars, in text sizes.
+const ROW: f64 = 1.6;
+/// Space at the edges of the page, in text sizes.
+const MARGIN: f64 = 0.3;
 /// Largest part of the page that names may take.
 const NAMES: f64 = 0.34;
 
@@ -55,73 +59,84 @@ struct Bar {
 
 /// Draws the figure: bars to the right for variables whose large values lead to the event, to the left for those
 /// whose small values do.
+///
+/// ```
+/// use evenpoise::figures::Style;
+/// use evenpoise::figures::rare_importance::{Importance, ImportanceData, draw};
+/// let variable = |name: &str, cosine| Importance { name: name.to_owned(), cosine };
+/// let data = ImportanceData { variables: vec![variable("gate", -0.28), variable("inflow", 0.96)] };
+/// let drawing = draw(&data, &Style::default());
+/// assert!(drawing.caption.ends_with("Nine tenths of it rest on inflow."));
+/// ```
 #[must_use]
 pub fn draw(data: &ImportanceData, style: &Style) -> Drawing {
     let bars = bars(data);
-    let (unit, margin) = (style.unit(), 0.3 * style.unit());
+    let (unit, margin) = (style.unit(), MARGIN * style.unit());
     let entries = [
         (Sample::Field(MEASURED, Pen::solid(MEASURED, style.hairline())), "larger values lead to the event".to_owned()),
         (Sample::Field(MODELLED, Pen::solid(MODELLED, style.hairline())), "smaller values do".to_owned()),
     ];
     let key = Key::new(&entries, style.width() - 2.0 * margin, style);
-    let (top, row) = (key.height(style) + 0.9 * unit, 1.6 * unit);
-    let bottom = top + row * bars.len().max(2) as f64;
+    let top = key.height(style) + 0.9 * unit;
+    let bottom = top + ROW * unit * bars.len().max(2) as f64;
     let mut canvas = Canvas::new(style.width(), bottom + bottom_room(style) + 1.9 * unit);
     key.draw(&mut canvas, style, (margin, 0.2 * unit));
-
-    let names: Vec<String> =
-        bars.iter().map(|bar| shorten(&bar.name, NAMES * style.width(), unit, Face::Regular)).collect();
-    let names_end = margin + names.iter().map(|name| width(name, unit, Face::Regular)).fold(0.0, f64::max);
-    // Each bar has its number beyond its end, on either side.
-    let number = width("0.000", unit, Face::Regular) + 0.6 * unit;
-    let (low, high) =
-        bars.iter().fold((0.0_f64, 0.0_f64), |(low, high), bar| (low.min(bar.signed), high.max(bar.signed)));
-    let (low, high) = if high - low > 0.0 { (low, high) } else { (0.0, 1.0) };
-    let left = names_end + 0.6 * unit + if low < 0.0 { number } else { 0.0 };
-    let right = style.width() - margin - number;
-    let room = Room { along: Along::Page, length: right - left, size: unit, most: 7 };
-    let axis = Axis::new(low, high, Scale::Linear, room);
-    let area = Area { left, top, right, bottom };
-    let panel = Panel { area, x: axis.clone(), y: axis };
-    let zero = left + panel.x.place(0.0) * area.width();
-    for (i, (bar, name)) in bars.iter().zip(&names).enumerate() {
-        let middle = top + row * (i as f64 + 0.5);
-        let baseline = middle + 0.36 * unit;
-        canvas.write(name, (names_end, baseline), Anchor::End, style.plain(if bar.others { REFERENCE } else { INK }));
-        let end = left + panel.x.place(bar.signed) * area.width();
-        let colour = if bar.others {
-            REFERENCE
-        } else if bar.signed < 0.0 {
-            MODELLED
-        } else {
-            MEASURED
-        };
-        let (from, to) = (zero.min(end), zero.max(end));
-        let half = 0.32 * row;
-        canvas.fill(
-            vec![(from, middle - half), (to, middle - half), (to, middle + half), (from, middle + half)],
-            colour,
-            1.0,
-        );
-        let text = significant(bar.signed.abs(), 2);
-        let text = if bar.signed.abs() < 0.001 { "< 0.001".to_owned() } else { text };
-        let (x, anchor) =
-            if bar.signed < 0.0 { (end - 0.3 * unit, Anchor::End) } else { (end + 0.3 * unit, Anchor::Start) };
-        canvas.write(&text, (x, baseline), anchor, style.plain(colour));
+    let panel = panel(&bars, (top, bottom), style);
+    for (i, bar) in bars.iter().enumerate() {
+        draw_bar(&mut canvas, &panel, bar, top + ROW * unit * (i as f64 + 0.5), style);
     }
+    let middle = f64::midpoint(panel.area.left, panel.area.right);
     if bars.is_empty() {
-        let middle = (f64::midpoint(left, right), f64::midpoint(top, bottom));
-        canvas.write("no variable", middle, Anchor::Middle, style.plain(REFERENCE));
+        let spot = (middle, f64::midpoint(top, bottom));
+        canvas.write("no variable", spot, Anchor::Middle, style.plain(REFERENCE));
     }
+    let zero = panel.spot(0.0, 0.0).0;
     canvas.line(vec![(zero, top), (zero, bottom)], Pen::solid(INK, style.hairline()));
     panel.bottom_axis(&mut canvas, style, true);
     let title = "signed square of the direction cosine";
     let half = width(title, unit, Face::Regular) / 2.0 + margin;
-    let middle = f64::midpoint(left, right).min(style.width() - half).max(half);
-    let baseline = canvas.height() - 0.5 * unit;
-    canvas.write(title, (middle, baseline), Anchor::Middle, style.plain(INK));
+    let spot = (middle.min(style.width() - half).max(half), canvas.height() - 0.5 * unit);
+    canvas.write(title, spot, Anchor::Middle, style.plain(INK));
     let (name, caption, table) = ("importance".to_owned(), caption(data), table(data));
     Drawing { name, caption, table, canvas, dpi: style.dpi() }
+}
+
+/// The panel of the bars: names stand to its left, numbers beyond the ends of bars on either side.
+fn panel(bars: &[Bar], (top, bottom): (f64, f64), style: &Style) -> Panel {
+    let unit = style.unit();
+    let names = bars.iter().map(|bar| width(&short_name(bar, style), unit, Face::Regular)).fold(0.0, f64::max);
+    let number = width("0.000", unit, Face::Regular) + 0.6 * unit;
+    let ends = bars.iter().fold((0.0_f64, 0.0_f64), |(low, high), bar| (low.min(bar.signed), high.max(bar.signed)));
+    let (low, high) = if ends.1 - ends.0 > 0.0 { ends } else { (0.0, 1.0) };
+    let left = (MARGIN + 0.6) * unit + names + if low < 0.0 { number } else { 0.0 };
+    let right = style.width() - MARGIN * unit - number;
+    let room = Room { along: Along::Page, length: right - left, size: unit, most: 7 };
+    let axis = Axis::new(low, high, Scale::Linear, room);
+    Panel { area: Area { left, top, right, bottom }, x: axis.clone(), y: axis }
+}
+
+fn short_name(bar: &Bar, style: &Style) -> String {
+    shorten(&bar.name, NAMES * style.width(), style.unit(), Face::Regular)
+}
+
+fn draw_bar(canvas: &mut Canvas, panel: &Panel, bar: &Bar, middle: f64, style: &Style) {
+    let (unit, baseline) = (style.unit(), middle + 0.36 * style.unit());
+    let colour = match bar.signed {
+        _ if bar.others => REFERENCE,
+        signed if signed < 0.0 => MODELLED,
+        _ => MEASURED,
+    };
+    let (zero, end) = (panel.spot(0.0, 0.0).0, panel.spot(bar.signed, 0.0).0);
+    let half = 0.32 * ROW * unit;
+    let (top, bottom) = (middle - half, middle + half);
+    canvas.fill(vec![(zero, top), (end, top), (end, bottom), (zero, bottom)], colour, 1.0);
+    let size = bar.signed.abs();
+    let number = if size < 0.001 { "< 0.001".to_owned() } else { significant(size, 2) };
+    let (x, anchor) =
+        if bar.signed < 0.0 { (end - 0.3 * unit, Anchor::End) } else { (end + 0.3 * unit, Anchor::Start) };
+    canvas.write(&number, (x, baseline), anchor, style.plain(colour));
+    let ink = if bar.others { REFERENCE } else { INK };
+    canvas.write(&short_name(bar, style), (MARGIN * unit, baseline), Anchor::Start, style.plain(ink));
 }
 
 /// All variables with a finite cosine, the most important one first.
@@ -147,7 +162,9 @@ fn bars(data: &ImportanceData) -> Vec<Bar> {
 fn caption(data: &ImportanceData) -> String {
     let sorted = sorted(data);
     let mut parts = vec![
-        "Squared direction cosines of the most likely point of the event: the share of each variable in its distance from the origin of the scores.".to_owned(),
+        "Squared direction cosines of the most likely point of the event: the share of each variable in its \
+         distance from the origin of the scores."
+            .to_owned(),
     ];
     let (mut sum, mut most) = (0.0, 0);
     let total: f64 = sorted.iter().map(|v| v.cosine * v.cosine).sum();

@@ -111,7 +111,8 @@ fn thinned<T: Copy>(draws: Vec<T>) -> Vec<T> {
 fn caption(data: &MarginData, draws: &[(f64, f64, bool)]) -> String {
     let hits = draws.iter().filter(|d| d.2).count();
     let mut parts = vec![format!(
-        "Margin ({}) of {} draws against their distance from the origin of the standard normal scores; {} of them lie in the event.",
+        "Margin ({}) of {} draws against their distance from the origin of the standard normal scores; {} of \
+         them lie in the event.",
         data.margin_name,
         count(draws.len()),
         count(hits)

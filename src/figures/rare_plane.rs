@@ -64,6 +64,9 @@ pub struct PlaneSide {
     pub values: Vec<f64>,
 }
 
+/// The ends of an axis.
+type Range = (f64, f64);
+
 /// A closed line.
 #[derive(Debug, Clone, PartialEq)]
 pub struct PlaneOutline {
@@ -111,18 +114,7 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     if !data.nominal.is_empty() {
         entries.push((Sample::Outline(nominal), "nominal density".to_owned()));
     }
-    let framed = |xs: (f64, f64), ys: (f64, f64)| {
-        let x = Side { name: &data.x.name, unit: data.x.unit.as_deref(), range: (xs.0, xs.1, Scale::Linear) };
-        let y = Side { name: &data.y.name, unit: data.y.unit.as_deref(), range: (ys.0, ys.1, Scale::Linear) };
-        Frame::new(&x, &[(y, HEIGHT)], &entries, style)
-    };
-    let mut frame = framed(xs, ys);
-    if data.space == Space::Scores {
-        // The axis with room to spare shows more than it has to.
-        let Area { left, top, right, bottom } = frame.panels[0].area;
-        let a_point = ((xs.1 - xs.0) / (right - left)).max((ys.1 - ys.0) / (bottom - top));
-        frame = framed(around(xs, a_point * (right - left)), around(ys, a_point * (bottom - top)));
-    }
+    let mut frame = frame(data, (xs, ys), &entries, style);
     for (hit, colour, opacity) in [(false, REFERENCE, 0.35), (true, MEASURED, 0.5)] {
         let kind: Vec<&(f64, f64, bool)> = draws.iter().filter(|d| d.2 == hit).collect();
         let shown = kind.len().min(DOTS);
@@ -138,11 +130,7 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         frame.curve(0, line.points(), component);
     }
     for &(x, y) in data.design_points.iter().filter(|p| p.0.is_finite() && p.1.is_finite()) {
-        let (x, y) = frame.panels[0].spot(x, y);
-        let arm = 0.45 * unit;
-        let pen = Pen::solid(MODELLED, 0.14 * unit);
-        frame.canvas.curve(vec![(x - arm, y), (x + arm, y)], pen);
-        frame.canvas.curve(vec![(x, y - arm), (x, y + arm)], pen);
+        draw_cross(&mut frame, (x, y), style);
     }
     if draws.is_empty() {
         frame.say(0, "no draw");
@@ -150,8 +138,33 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     frame.finish("event", caption(data, &draws), table(data, &draws))
 }
 
+fn draw_cross(frame: &mut Frame, (x, y): (f64, f64), style: &Style) {
+    let (x, y) = frame.panels[0].spot(x, y);
+    let (arm, pen) = (0.45 * style.unit(), Pen::solid(MODELLED, 0.14 * style.unit()));
+    frame.canvas.curve(vec![(x - arm, y), (x + arm, y)], pen);
+    frame.canvas.curve(vec![(x, y - arm), (x, y + arm)], pen);
+}
+
+/// The panel that shows at least the ranges along both axes.
+fn frame<'a>(data: &PlaneData, ranges: (Range, Range), entries: &[(Sample, String)], style: &'a Style) -> Frame<'a> {
+    let framed = |xs: Range, ys: Range| {
+        let x = Side { name: &data.x.name, unit: data.x.unit.as_deref(), range: (xs.0, xs.1, Scale::Linear) };
+        let y = Side { name: &data.y.name, unit: data.y.unit.as_deref(), range: (ys.0, ys.1, Scale::Linear) };
+        Frame::new(&x, &[(y, HEIGHT)], entries, style)
+    };
+    let (xs, ys) = ranges;
+    let frame = framed(xs, ys);
+    if data.space == Space::Natural {
+        return frame;
+    }
+    // The axis with room to spare shows more than it has to.
+    let Area { left, top, right, bottom } = frame.panels[0].area;
+    let a_point = ((xs.1 - xs.0) / (right - left)).max((ys.1 - ys.0) / (bottom - top));
+    framed(around(xs, a_point * (right - left)), around(ys, a_point * (bottom - top)))
+}
+
 /// The range of `length` with the same middle.
-fn around(range: (f64, f64), length: f64) -> (f64, f64) {
+fn around(range: Range, length: f64) -> Range {
     let middle = f64::midpoint(range.0, range.1);
     (middle - length / 2.0, middle + length / 2.0)
 }
@@ -167,7 +180,8 @@ fn caption(data: &PlaneData, draws: &[(f64, f64, bool)]) -> String {
     )];
     if let (Some(x), Some(y)) = (data.x.importance, data.y.importance) {
         parts.push(format!(
-            "Their shares of the squared direction cosines are {} and {}; the other variables blur the limit of the event.",
+            "Their shares of the squared direction cosines are {} and {}; the other variables blur \
+             the limit of the event.",
             significant(x, 2),
             significant(y, 2)
         ));

@@ -72,7 +72,7 @@ fn linear(low: f64, high: f64, most: usize, whole: bool) -> Marking {
     }
     let (values, finest) = best.unwrap_or_else(|| {
         let only = if whole { low.ceil() } else { low };
-        (vec![only.min(high)], around - 1)
+        (vec![only.min(high)], if whole { 0 } else { around - 1 })
     });
     let mut marking = labelled(&values, finest);
     let last = marking.ticks.len() - 1;
