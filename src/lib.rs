@@ -30,10 +30,3 @@ pub mod weights;
 
 /// An error of any kind that can cross threads.
 pub type BoxError = Box<dyn std::error::Error + Send + Sync>;
-
-/// Experiments only.
-#[doc(hidden)]
-#[must_use]
-pub fn knob(name: &str, default: f64) -> f64 {
-    std::env::var(name).ok().and_then(|v| v.parse().ok()).unwrap_or(default)
-}

@@ -20,6 +20,8 @@ mod standard;
 mod survey;
 mod tuning;
 
+pub mod rare;
+
 pub use observer::{Answers, Batch, Observer, Silent, Stage};
 pub use settings::Settings;
 pub use tuning::{CandidateScore, Finalist, Mode, ReportDraws, Round, StopReason, Survey, Tuning};
@@ -54,6 +56,17 @@ pub enum TuneError {
         "the log density of the target is +inf at a point: it is unbounded there; bound it, or cut the point out with `require`"
     )]
     Unbounded,
+    /// The integrand is infinite at a point.
+    #[error(
+        "the integrand is infinite at a point: its mean does not exist unless it is bounded there; cut the point out with `require`"
+    )]
+    UnboundedIntegrand,
+    /// The problem asks for something else.
+    #[error("the aim of this problem is {aim}; it is tuned by another loop")]
+    Aim {
+        /// The problem's aim.
+        aim: &'static str,
+    },
     /// The survey's optimiser failed.
     #[error("the survey failed: {0}")]
     Survey(String),

@@ -49,10 +49,14 @@ pub struct Batch<'a> {
 /// Answers to a batch.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Answers {
-    /// Log density of every point; `-inf` outside, NaN where the model failed.
+    /// Log density of every point; `-inf` outside, NaN where the model failed. For a probability or an expectation: the log nominal density.
     pub log_density: Vec<f64>,
     /// Gradients, a row a point; no rows where none were asked for.
     pub gradients: Points,
+    /// Margin or integrand of every point, NaN where the model failed; empty for the aim density.
+    pub value: Vec<f64>,
+    /// Whether the point is in the event; empty for the other aims.
+    pub hit: Vec<bool>,
 }
 
 /// Watches a tuning. The numeric rooms print nothing, read no clock and touch no file: all of that happens here.
@@ -78,6 +82,12 @@ pub trait Observer {
 
     /// A round is over.
     fn round(&mut self, _round: &Round) {}
+
+    /// The survey of a probability or an expectation is over.
+    fn rare_surveyed(&mut self, _survey: &super::rare::RareSurvey) {}
+
+    /// A round of a probability or an expectation is over.
+    fn rare_round(&mut self, _round: &super::rare::RareRound) {}
 
     /// Whether to stop before the next batch.
     fn interrupted(&self) -> bool {

@@ -252,10 +252,11 @@ impl<'a> Standard<'a> {
     fn evaluate(&self, x: &Points, gradient: bool) -> Result<Answers, TuneError> {
         if gradient {
             let (evaluation, gradients) = self.source.evaluate_with_gradient(x)?;
-            Ok(Answers { log_density: evaluation.log_density, gradients })
+            Ok(Answers { log_density: evaluation.log_density, gradients, value: Vec::new(), hit: Vec::new() })
         } else {
             let evaluation = self.source.evaluate(x)?;
-            Ok(Answers { log_density: evaluation.log_density, gradients: Points::new(x.dim()) })
+            let gradients = Points::new(x.dim());
+            Ok(Answers { log_density: evaluation.log_density, gradients, value: Vec::new(), hit: Vec::new() })
         }
     }
 }

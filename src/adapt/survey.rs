@@ -25,18 +25,32 @@ const MOST: u32 = 300;
 /// Climbs without any mode after which there is none.
 const HOPELESS: u32 = 6;
 
-/// Climbs until every mode repeats itself or the evaluations up to `cap` are spent; `least` evaluations are spent looking for
-/// thin basins even when nothing new turns up.
-pub(crate) fn survey(target: &Standard, seed: u64, least: u64, cap: u64) -> Result<Found, TuneError> {
+/// How far the survey may go, in evaluations.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Limits {
+    /// Spent looking for thin basins even when nothing new turns up.
+    pub(crate) least: u64,
+    /// The end, whatever was found.
+    pub(crate) all: u64,
+    /// The end as long as no mode was found.
+    pub(crate) first_mode: u64,
+}
+
+/// Climbs until every mode repeats itself or the limits are reached.
+pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Found, TuneError> {
     let d = target.dim();
     let mut found = Found::default();
     let identity = identity(d);
-    while found.starts < MOST && target.spent() + 2 * target.gradient_cost() < cap {
+    while found.starts < MOST {
+        let cap = if found.modes.is_empty() { limits.first_mode } else { limits.all };
+        if target.spent() + 2 * target.gradient_cost() >= cap {
+            break;
+        }
         let failed = found.starts - found.finished;
         if found.modes.is_empty() && failed >= HOPELESS {
             break;
         }
-        if found.starts >= ENOUGH && target.spent() >= least && found.modes.iter().all(|m| m.hits > 1) {
+        if found.starts >= ENOUGH && target.spent() >= limits.least && found.modes.iter().all(|m| m.hits > 1) {
             break;
         }
         let radius = RADII[found.starts as usize % RADII.len()];

@@ -3,6 +3,7 @@
 use evenpoise::problem::Problem;
 use evenpoise::report::Provenance;
 use evenpoise::store::JournalHeader;
+use evenpoise::store::MadeBy;
 use std::collections::BTreeMap;
 use std::path::Path;
 
@@ -30,6 +31,11 @@ pub(crate) fn provenance(problem: &Problem, seed: u64) -> Provenance {
     let mut digests: BTreeMap<String, String> = data(problem).collect();
     digests.insert("problem".to_owned(), problem.digest());
     Provenance { seed, versions: [("program".to_owned(), PROGRAM.to_owned())].into(), digests }
+}
+
+/// What a proposal says of its making.
+pub(crate) fn made_by(provenance: &Provenance, evaluations: u64) -> MadeBy {
+    MadeBy { program: PROGRAM.to_owned(), digests: provenance.digests.clone(), seed: provenance.seed, evaluations }
 }
 
 /// Data files by their own names, wherever they lie; files of one name by their order.

@@ -11,6 +11,8 @@ mod numbers;
 mod options;
 mod output;
 mod problem_file;
+mod rare_report;
+mod round_lines;
 mod run_files;
 mod screen;
 mod signals;

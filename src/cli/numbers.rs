@@ -7,7 +7,7 @@ use evenpoise::figures::numbers::power_of_ten;
 /// What stands where a number is not known.
 pub(crate) const UNKNOWN: &str = "not known";
 /// Sizes that are written without a power of ten.
-const PLAIN: std::ops::RangeInclusive<i32> = -4..=6;
+const PLAIN: std::ops::RangeInclusive<i32> = -3..=6;
 /// Most decimals of a plain number.
 const MOST_DECIMALS: i32 = 9;
 

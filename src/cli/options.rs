@@ -89,11 +89,6 @@ impl TuningOptions {
     pub(crate) fn threads(&self, keys: &TuningKeys) -> Option<u64> {
         chosen(self.threads, keys.threads)
     }
-
-    /// Whether anything but the number of threads is said.
-    pub(crate) fn says_something(&self) -> bool {
-        self.over(&TuningKeys::default()) != TuningKeys::default()
-    }
 }
 
 /// Refuses degrees of freedom for Gaussian components, wherever each was said.

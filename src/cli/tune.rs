@@ -7,6 +7,7 @@ use super::options::TuningOptions;
 use super::output;
 use super::problem_file;
 use super::problem_file::Located;
+use super::rare_report;
 use super::run_files;
 use super::run_files::write_bytes;
 use super::screen::Screen;
@@ -18,12 +19,15 @@ use evenpoise::adapt;
 use evenpoise::adapt::Settings;
 use evenpoise::adapt::TuneError;
 use evenpoise::adapt::Tuning;
+use evenpoise::adapt::rare::RareTuning;
+use evenpoise::adapt::rare::tune_rare;
+use evenpoise::problem::Aim;
 use evenpoise::problem::Problem;
-use evenpoise::report::Summary;
 use evenpoise::store::Recorder;
 use evenpoise::store::RunFolder;
 use evenpoise::store::write_json;
 use evenpoise::weights::verdict::Word;
+use serde::Serialize;
 use std::path::PathBuf;
 
 /// Tune a proposal for the integral in PROBLEM, and judge it.
@@ -51,31 +55,46 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let located = problem_file::locate(&args.problem, args.out.as_deref());
     let problem = problem_file::read(&located.file, |keys| args.tuning.over(keys))?;
     options::check(problem.tuning())?;
-    if let Some(threads) = args.tuning.threads(problem.tuning()) {
-        let threads = usize::try_from(threads)?;
-        rayon::ThreadPoolBuilder::new().num_threads(threads).build_global().context("starting the threads")?;
-    }
+    // Zero threads: as many as the machine has cores.
+    let threads = usize::try_from(args.tuning.threads(problem.tuning()).unwrap_or(0))?;
+    let threads = rayon::ThreadPoolBuilder::new().num_threads(threads).build().context("starting the threads")?;
+    threads.install(|| tune(args, &located, &problem))
+}
+
+fn tune(args: &Args, located: &Located, problem: &Problem) -> anyhow::Result<Ending> {
     let settings = Settings::from_keys(problem.tuning());
     let signals = Signals::listen().context("listening for signals")?;
-    let (folder, mut watch) = begin(args, &located, &problem, &settings, signals.clone())?;
-    let tuned = adapt::tune(&problem, &settings, &mut watch);
+    let (folder, mut watch) = begin(args, located, problem, &settings, signals.clone())?;
+    let tuned = match problem.aim() {
+        Aim::Density => adapt::tune(problem, &settings, &mut watch).map(|tuning| Tuned::Density(Box::new(tuning))),
+        _ => tune_rare(problem, &settings, &mut watch).map(|tuning| Tuned::Rare(Box::new(tuning))),
+    };
     watch.screen.clear();
     watch.recorder.sync()?;
     match (tuned, watch.refused()) {
         (Err(TuneError::Interrupted { evaluations }), _) => {
             let resume = format!("evenpoise tune {} --resume", located.run.display());
-            watch
-                .screen
-                .keep(&format!("interrupted after {evaluations} evaluations; all are kept. Go on with\n  {resume}"));
+            let kept = format!("interrupted after {evaluations} evaluations; all are kept. Go on with\n  {resume}");
+            watch.screen.keep(&kept);
             Ok(Ending::Interrupted(signals.came().unwrap_or_default()))
         }
         (Err(error), _) => Err(error.into()),
         (Ok(_), Some(error)) => Err(error.into()),
-        (Ok(tuning), None) => {
-            let summary = run_files::write(&folder, &problem, &tuning, settings.seed)?;
-            finish(args, &folder, watch, &tuning, &summary)
+        (Ok(Tuned::Density(tuning)), None) => {
+            let summary = run_files::write(&folder, problem, &tuning, settings.seed)?;
+            finish(args, &folder, watch, &tune_report::closing(&tuning), tuning.verdict.word, &summary)
+        }
+        (Ok(Tuned::Rare(tuning)), None) => {
+            let summary = run_files::write_rare(&folder, problem, &tuning, settings.seed)?;
+            finish(args, &folder, watch, &rare_report::closing(problem, &tuning), tuning.verdict.word, &summary)
         }
     }
+}
+
+/// What came out, by the kind of aim.
+enum Tuned {
+    Density(Box<Tuning>),
+    Rare(Box<RareTuning>),
 }
 
 /// Takes the folder and its journal.
@@ -98,14 +117,16 @@ fn begin(
     };
     let log = folder.join("log.txt");
     let mut screen = Screen::new(&log).with_context(|| format!("cannot write {}", log.display()))?;
-    if !args.resume {
-        write_bytes(&folder.join(problem_file::COPY), problem.text_for(folder.path()).as_bytes())?;
+    let copy = folder.join(problem_file::COPY);
+    if !copy.exists() {
+        write_bytes(&copy, problem.text_for(folder.path()).as_bytes())?;
     }
     screen.keep(&tune_report::opening(problem, settings.budget, settings.seed));
     if args.resume {
         screen.keep(&tune_report::resumed(recorder.found(), dropped.as_deref(), folder.stale_lock()));
     }
-    let watch = Watch::new(recorder, screen, signals, folder.join("rounds.csv"), settings.budget);
+    let about = (problem.aim(), settings.budget);
+    let watch = Watch::new((recorder, screen, signals), folder.join("rounds.csv"), about);
     Ok((folder, watch))
 }
 
@@ -114,12 +135,13 @@ fn finish(
     args: &Args,
     folder: &RunFolder,
     mut watch: Watch,
-    tuning: &Tuning,
-    summary: &Summary,
+    closing: &str,
+    word: Word,
+    summary: &impl Serialize,
 ) -> anyhow::Result<Ending> {
     watch.timings.end();
     write_json(&folder.join("timings.json"), &watch.timings)?;
-    let closing = tune_report::closing(tuning) + &tune_report::whereabouts(&folder.path().display().to_string());
+    let closing = format!("{closing}{}", tune_report::whereabouts(&folder.path().display().to_string()));
     if args.json {
         watch.screen.keep(&closing);
         output::say(&format!("{}\n", serde_json::to_string_pretty(summary)?))?;
@@ -127,5 +149,5 @@ fn finish(
         watch.screen.log(&closing);
         output::say(&closing)?;
     }
-    Ok(if tuning.verdict.word == Word::Unfit { Ending::Unfit } else { Ending::Done })
+    Ok(if word == Word::Unfit { Ending::Unfit } else { Ending::Done })
 }

@@ -16,6 +16,7 @@ use evenpoise::problem::Problem;
 use evenpoise::weights::Estimate;
 use evenpoise::weights::Score;
 use evenpoise::weights::TailReason;
+use evenpoise::weights::verdict::Verdict;
 use evenpoise::weights::verdict::Word;
 use evenpoise::weights::verdict::checks::TAIL_SOUND;
 
@@ -32,20 +33,19 @@ pub(crate) fn opening(problem: &Problem, budget: u64, seed: u64) -> String {
 
 /// Scores, estimates and verdict.
 pub(crate) fn closing(tuning: &Tuning) -> String {
-    let unfit = tuning.verdict.word == Word::Unfit;
     let mut out = String::from("\n");
     out.push_str(&proposal(tuning));
-    let mark = if unfit { ": NOT TO BE REPORTED" } else { "" };
+    let mark = mark(&tuning.verdict);
     if let Some(score) = &tuning.score {
         out.push_str(&format!("\n{}\n", styled(&format!("{} report draws{mark}", count(score.draws as u64)), HEADING)));
-        out.push_str(&scores(score));
+        out.push_str(&scores(score, &tuning.verdict));
     }
     if !tuning.estimates.is_empty() {
         out.push_str(&format!("\n{}\n", styled(&format!("Estimates{mark}"), HEADING)));
         out.push_str(&estimates(&tuning.estimates));
     }
     out.push('\n');
-    out.push_str(&verdict(tuning));
+    out.push_str(&verdict(&tuning.verdict));
     out
 }
 
@@ -62,17 +62,18 @@ fn proposal(tuning: &Tuning) -> String {
     hanging("Proposal  ", &format!("{parts} ({tails}), from {from}; {} evaluations in all", count(tuning.evaluations)))
 }
 
-fn scores(score: &Score) -> String {
+fn scores(score: &Score, verdict: &Verdict) -> String {
     let interval = score
         .ess_fraction_interval
         .map_or(String::new(), |[low, high]| format!(" ({} to {})", percent(low), percent(high)));
+    let ignored = verdict.checks.iter().any(|check| check.name == "tail shape" && check.word == Word::Sound);
     let tail = match score.tail.reason {
+        TailReason::Fitted if ignored && score.tail.upper > TAIL_SOUND => {
+            format!("{}; no draw is heavy enough for it to matter", significant(score.tail.shape, 2))
+        }
         TailReason::Fitted => {
-            format!(
-                "{}, at most {} with 90 %; sound up to {TAIL_SOUND}",
-                significant(score.tail.shape, 2),
-                significant(score.tail.upper, 2)
-            )
+            let [shape, upper] = [score.tail.shape, score.tail.upper].map(|shape| significant(shape, 2));
+            format!("{shape}, at most {upper} with 90 %; sound up to {TAIL_SOUND}")
         }
         TailReason::Bounded => "bounded: the largest weights are all equal".to_owned(),
         TailReason::TooFew => "not known: too few draws in the tail".to_owned(),
@@ -118,25 +119,35 @@ fn estimates(estimates: &[(String, Estimate)]) -> String {
     out
 }
 
-fn verdict(tuning: &Tuning) -> String {
-    let verdict = &tuning.verdict;
+/// The word, its reasons, and what no check can see.
+pub(crate) fn verdict(verdict: &Verdict) -> String {
     let meaning = match verdict.word {
-        Word::Sound => "report these numbers.",
-        Word::Strained => "usable, with the caution stated here.",
-        Word::Unfit => "do not report numbers from this.",
+        Word::Sound => "report these numbers",
+        Word::Strained => "usable with the caution stated",
+        Word::Unfit => "do not report numbers from this",
     };
     let passed = verdict.checks.iter().filter(|check| check.word == Word::Sound).count();
     let mut out = format!(
-        "Verdict   {}: {meaning} {passed} of {} checks are sound.\n",
+        "Verdict   {}: {meaning} ({passed} of {} checks are sound)\n",
         styled(&verdict.word.to_string().to_uppercase(), of_word(verdict.word)),
         verdict.checks.len()
     );
     for reason in &verdict.reasons {
         out.push_str(&hanging("        - ", reason));
     }
-    out.push_str(&styled(hanging("          ", &verdict.caution).trim_end_matches('\n'), QUIET));
-    out.push('\n');
+    out.push_str(&quiet(&verdict.caution));
     out
+}
+
+/// A remark below the verdict.
+pub(crate) fn quiet(remark: &str) -> String {
+    let lines = hanging("          ", remark);
+    lines.lines().map(|line| format!("{}\n", styled(line, QUIET))).collect()
+}
+
+/// What a heading says of numbers that must not be used.
+pub(crate) fn mark(verdict: &Verdict) -> &'static str {
+    if verdict.word == Word::Unfit { ": NOT TO BE REPORTED" } else { "" }
 }
 
 /// Where everything is, and what to do next.

@@ -1,9 +1,7 @@
 //! The observer of a tuning: journal, signals, clock and screen in one.
 
-use super::layout;
-use super::layout::QUIET;
-use super::layout::styled;
 use super::numbers;
+use super::round_lines;
 use super::screen::Screen;
 use super::signals::Signals;
 use evenpoise::BoxError;
@@ -13,6 +11,10 @@ use evenpoise::adapt::Observer;
 use evenpoise::adapt::Round;
 use evenpoise::adapt::Stage;
 use evenpoise::adapt::Survey;
+use evenpoise::adapt::rare::RareRound;
+use evenpoise::adapt::rare::RareSurvey;
+use evenpoise::problem::Aim;
+use evenpoise::report::write_rare_rounds;
 use evenpoise::report::write_rounds;
 use evenpoise::store::Recorder;
 use evenpoise::store::StoreError;
@@ -21,9 +23,6 @@ use std::path::PathBuf;
 use std::time::Duration;
 use std::time::Instant;
 
-/// Columns of the bar of a round.
-const BAR: usize = 14;
-
 /// Watches a tuning.
 pub(crate) struct Watch {
     pub(crate) recorder: Recorder,
@@ -31,7 +30,9 @@ pub(crate) struct Watch {
     pub(crate) timings: Timings,
     signals: Signals,
     rounds_file: PathBuf,
+    aim: Aim,
     rounds: Vec<Round>,
+    rare_rounds: Vec<RareRound>,
     budget: u64,
     stage: Stage,
     /// When the batch at hand was asked for.
@@ -61,14 +62,21 @@ struct StageTime {
 }
 
 impl Watch {
-    pub(crate) fn new(recorder: Recorder, screen: Screen, signals: Signals, rounds_file: PathBuf, budget: u64) -> Self {
+    /// Watches a tuning of that aim and budget; the rounds go to `rounds_file`.
+    pub(crate) fn new(
+        (recorder, screen, signals): (Recorder, Screen, Signals),
+        rounds_file: PathBuf,
+        (aim, budget): (Aim, u64),
+    ) -> Self {
         Self {
             recorder,
             screen,
             timings: Timings::default(),
             signals,
             rounds_file,
+            aim,
             rounds: Vec::new(),
+            rare_rounds: Vec::new(),
             budget,
             stage: Stage::Survey,
             asked: Instant::now(),
@@ -147,68 +155,28 @@ impl Observer for Watch {
     }
 
     fn surveyed(&mut self, survey: &Survey) {
-        self.screen.keep(&survey_lines(survey));
-        self.screen.keep(&format!("\n{}", styled(ROUND_HEADING, QUIET)));
+        self.screen.keep(&round_lines::survey(survey));
     }
 
     fn round(&mut self, round: &Round) {
         self.rounds.push(round.clone());
-        if let Err(error) = write_rounds(&self.rounds_file, &self.rounds) {
-            self.refused = Some(error);
-        }
+        self.refused = write_rounds(&self.rounds_file, &self.rounds).err();
         let left = self.seconds_left(round.evaluations);
-        self.screen.keep(&round_line(round, left));
+        self.screen.keep(&round_lines::round(round, left));
+    }
+
+    fn rare_surveyed(&mut self, survey: &RareSurvey) {
+        self.screen.keep(&round_lines::rare_survey(survey, self.aim));
+    }
+
+    fn rare_round(&mut self, round: &RareRound) {
+        self.rare_rounds.push(round.clone());
+        self.refused = write_rare_rounds(&self.rounds_file, self.aim, &self.rare_rounds).err();
+        let left = self.seconds_left(round.evaluations);
+        self.screen.keep(&round_lines::rare_round(round, left));
     }
 
     fn interrupted(&self) -> bool {
         self.signals.came().is_some()
     }
-}
-
-/// Titles of the columns of [`round_line`].
-const ROUND_HEADING: &str = "round  parts   ESS predicted > fresh                  variance    tail    spent   left";
-
-/// Climbs, modes, and what could have been missed.
-fn survey_lines(survey: &Survey) -> String {
-    let modes = match survey.modes.len() {
-        0 => "no mode inside the support".to_owned(),
-        1 => format!("one mode, reached {} times", survey.modes[0].hits),
-        n => {
-            let hits: Vec<String> = survey.modes.iter().map(|mode| mode.hits.to_string()).collect();
-            format!("{n} modes, reached {} times", layout::cut(&hits.join(", "), 40))
-        }
-    };
-    let missed = if survey.finished == 0 {
-        "No climb ended in a mode: what lies elsewhere is not known.".to_owned()
-    } else {
-        format!(
-            "A mode whose basin takes {} of the start would have been met with 95 %; a smaller one could have been missed.",
-            numbers::percent(survey.basin_share)
-        )
-    };
-    let found =
-        format!("{} climbs in {} evaluations: {modes}. {missed}", survey.starts, numbers::count(survey.evaluations));
-    layout::hanging("Survey    ", &found)
-}
-
-/// One round in a line.
-fn round_line(round: &Round, seconds_left: Option<f64>) -> String {
-    let score = round.score.as_ref();
-    let predicted = round.predicted_ess_fraction.map_or("-".to_owned(), |share| numbers::percent_fixed(share.min(1.0)));
-    let fresh = score.map_or(f64::NAN, |score| score.ess_fraction);
-    let known = |read: &dyn Fn(&evenpoise::weights::Score) -> f64, write: &dyn Fn(f64) -> String| {
-        score.map(read).filter(|x| x.is_finite()).map_or("-".to_owned(), write)
-    };
-    format!(
-        "{:>5}  {:>5}   {:>7} > {:>7} {}  {:>8}  {:>6}  {:>7}  {:>5}",
-        round.index,
-        round.components,
-        predicted,
-        numbers::percent_fixed(fresh),
-        layout::bar(fresh, BAR),
-        known(&|s| s.weight_variance, &|x| numbers::significant(x, 3)),
-        known(&|s| s.tail.shape, &|x| format!("{x:.2}")),
-        numbers::count(round.evaluations),
-        seconds_left.map_or("-".to_owned(), numbers::duration),
-    )
 }

@@ -1,20 +1,46 @@
-//! The page as PNG: every shape covers each pixel by the share of its area, to a sixteenth.
+//! The page as PNG: a backend of `plotters` on which every shape covers each pixel by the share of its area, to a
+//! sixteenth.
 //!
 //! A shape is a set of closed contours. Each edge adds, row by row, the signed area between itself and the right end
 //! of the row; a running sum along the row then is the share of the pixel that the shape covers. Inner contours run
 //! the other way round and take away. No grid of sub-pixels, so slanted lines and letters are smooth at any size.
 
+use std::convert::Infallible;
+
+use plotters::drawing::IntoDrawingArea as _;
+use plotters::style::FontStyle;
+use plotters::style::text_anchor::HPos;
+use plotters::style::text_anchor::VPos;
+use plotters_backend::BackendColor;
+use plotters_backend::BackendCoord;
+use plotters_backend::BackendStyle;
+use plotters_backend::BackendTextStyle;
+use plotters_backend::DrawingBackend;
+use plotters_backend::DrawingErrorKind;
+
 use super::canvas::Canvas;
-use super::canvas::Mark;
-use super::canvas::Pen;
-use super::colour::Colour;
+use super::plot::FONT_SIZE;
+use super::plot::TOP;
+use super::plot::plot;
 use super::text;
+use super::text::Face;
 use super::text::Spot;
 
+mod cover;
+mod outline;
+
+use cover::Cover;
+use outline::circle;
+use outline::thicken;
+
+/// Steps of the drawing area to a pixel. With fewer, the directions of short pieces of a curve would waver.
+const STEPS: f64 = 256.0;
 /// Steps of the covered share. No eye tells finer ones at printing resolutions, and files are half as large.
 const COVER_STEPS: f64 = 16.0;
-/// Corners of the polygon that stands for a circle.
-const CIRCLE_CORNERS: u32 = 48;
+/// Vertices of a line closer than this, in pixels, have no direction worth drawing.
+const NEAREST: f64 = 0.05;
+/// Half of the height of an `x` in ems: where `plotters` takes the middle of a text to be.
+const HALF_X: f64 = 0.27;
 
 /// A picture of three bytes a pixel.
 struct Raster {
@@ -29,7 +55,9 @@ struct Raster {
 #[must_use]
 pub fn png(canvas: &Canvas, dpi: f64) -> Vec<u8> {
     let scale = dpi / 72.0;
-    let raster = paint(canvas, scale);
+    let size = |points: f64| ((points * scale).round() as usize).max(1);
+    let mut raster = Raster::new(size(canvas.width()), size(canvas.height()));
+    plot(canvas, &(&mut raster).into_drawing_area(), scale * STEPS).expect("nothing can fail on a picture in memory");
     let dots_per_metre = (dpi / 0.0254).round() as u32;
     let mut bytes = Vec::new();
     let mut encoder = png::Encoder::new(&mut bytes, raster.width as u32, raster.height as u32);
@@ -49,38 +77,14 @@ pub fn png(canvas: &Canvas, dpi: f64) -> Vec<u8> {
     bytes
 }
 
-/// Draws marks, then texts, at `scale` pixels a point.
-fn paint(canvas: &Canvas, scale: f64) -> Raster {
-    let size = |points: f64| ((points * scale).round() as usize).max(1);
-    let (width, height) = (size(canvas.width()), size(canvas.height()));
-    let mut raster = Raster { width, height, pixels: vec![255; width * height * 3] };
-    let pixel = |&(x, y): &Spot| (x * scale, y * scale);
-    for mark in canvas.marks() {
-        match mark {
-            Mark::Fill { corners, colour, opacity } => {
-                raster.fill(&[corners.iter().map(pixel).collect()], *colour, *opacity);
-            }
-            Mark::Line { spots, pen } => {
-                let spots: Vec<Spot> = spots.iter().map(pixel).collect();
-                let pen = Pen { width: pen.width * scale, dash: pen.dash.map(|(a, b)| (a * scale, b * scale)), ..*pen };
-                raster.fill(&stroke(&spots, pen), pen.colour, pen.opacity);
-            }
-            Mark::Disc { centre, radius, colour, opacity } => {
-                raster.fill(&[circle(pixel(centre), radius * scale)], *colour, *opacity);
-            }
-        }
-    }
-    for label in canvas.labels() {
-        let contours = text::outline(&label.text, (label.left, label.baseline), label.size, label.face);
-        let contours: Vec<Vec<Spot>> = contours.iter().map(|contour| contour.iter().map(pixel).collect()).collect();
-        raster.fill(&contours, label.colour, 1.0);
-    }
-    raster
-}
-
 impl Raster {
+    /// A white picture.
+    fn new(width: usize, height: usize) -> Self {
+        Self { width, height, pixels: vec![255; width * height * 3] }
+    }
+
     /// Blends `colour` into the pixels by the share that the contours cover.
-    fn fill(&mut self, contours: &[Vec<Spot>], colour: Colour, opacity: f64) {
+    fn fill(&mut self, contours: &[Vec<Spot>], colour: BackendColor) {
         let spots = || contours.iter().flatten();
         let edge = |pick: fn(&Spot) -> f64, high: bool, most: usize| -> usize {
             let extreme =
@@ -94,18 +98,16 @@ impl Raster {
         }
         let mut cover = Cover::new(left, top, right - left, bottom - top);
         for contour in contours {
-            for (i, &from) in contour.iter().enumerate() {
-                cover.edge(from, contour[(i + 1) % contour.len()]);
-            }
+            cover.outline(contour);
         }
-        for row in 0..cover.height {
-            let mut sum = 0.0;
+        let inks = [colour.rgb.0, colour.rgb.1, colour.rgb.2];
+        for row in 0..bottom - top {
             let start = ((top + row) * self.width + left) * 3;
-            for (column, pixel) in self.pixels[start..start + cover.width * 3].chunks_exact_mut(3).enumerate() {
-                sum += cover.sums[row * (cover.width + 2) + column];
-                let share = (sum.abs().min(1.0) * COVER_STEPS).round() / COVER_STEPS * opacity;
+            let pixels = self.pixels[start..start + (right - left) * 3].chunks_exact_mut(3);
+            for (pixel, share) in pixels.zip(cover.shares(row)) {
+                let share = (share * COVER_STEPS).round() / COVER_STEPS * colour.alpha;
                 if share > 0.0 {
-                    for (channel, &ink) in pixel.iter_mut().zip(&colour.channels) {
+                    for (channel, ink) in pixel.iter_mut().zip(inks) {
                         let mixed = f64::from(*channel) + share * (f64::from(ink) - f64::from(*channel));
                         *channel = (mixed + 0.5) as u8;
                     }
@@ -113,179 +115,125 @@ impl Raster {
             }
         }
     }
-}
 
-/// Signed areas of a window of the picture, as differences along each row.
-struct Cover {
-    left: f64,
-    top: f64,
-    width: usize,
-    height: usize,
-    /// Rows of `width + 2`: what falls to the right of the window lands in the last two.
-    sums: Vec<f64>,
-}
-
-impl Cover {
-    fn new(left: usize, top: usize, width: usize, height: usize) -> Self {
-        Self { left: left as f64, top: top as f64, width, height, sums: vec![0.0; (width + 2) * height] }
-    }
-
-    /// Adds the edge from `a` to `b`.
-    fn edge(&mut self, a: Spot, b: Spot) {
-        let (a, b) = ((a.0 - self.left, a.1 - self.top), (b.0 - self.left, b.1 - self.top));
-        if a.1 == b.1 {
-            return;
-        }
-        let (sign, (x0, y0), (x1, y1)) = if a.1 < b.1 { (1.0, a, b) } else { (-1.0, b, a) };
-        let slope = (x1 - x0) / (y1 - y0);
-        let (from, to) = (y0.max(0.0), y1.min(self.height as f64));
-        let mut y = from;
-        while y < to {
-            let row = (y.floor() as usize).min(self.height - 1);
-            let next = ((row + 1) as f64).min(to);
-            self.piece(row, sign * (next - y), x0 + (y - y0) * slope, x0 + (next - y0) * slope);
-            y = next;
-        }
-    }
-
-    /// Adds a piece within one row: it runs from `x0` to `x1` and is `rise` high (signed).
-    fn piece(&mut self, row: usize, rise: f64, x0: f64, x1: f64) {
-        let most = self.width as f64;
-        let (low, high) = if x0 < x1 {
-            (x0.clamp(0.0, most), x1.clamp(0.0, most))
-        } else {
-            (x1.clamp(0.0, most), x0.clamp(0.0, most))
-        };
-        let row = &mut self.sums[row * (self.width + 2)..(row + 1) * (self.width + 2)];
-        let mut add = |column: usize, rise: f64, middle: f64| {
-            let inside = middle - column as f64;
-            row[column] += rise * (1.0 - inside);
-            row[column + 1] += rise * inside;
-        };
-        let (first, last) = (low.floor() as usize, high.floor() as usize);
-        if first == last {
-            add(first, rise, f64::midpoint(low, high));
-            return;
-        }
-        let per_column = rise / (high - low);
-        let mut x = low;
-        for column in first..=last {
-            let next = ((column + 1) as f64).min(high);
-            add(column, per_column * (next - x), f64::midpoint(x, next));
-            x = next;
-        }
-    }
-}
-
-/// A circle as a polygon.
-fn circle(centre: Spot, radius: f64) -> Vec<Spot> {
-    (0..CIRCLE_CORNERS)
-        .map(|i| {
-            let angle = f64::from(i) * std::f64::consts::TAU / f64::from(CIRCLE_CORNERS);
-            (centre.0 + radius * libm::cos(angle), centre.1 + radius * libm::sin(angle))
-        })
-        .collect()
-}
-
-/// The outline of a line of `pen`: one quadrilateral a piece, meeting without overlap where the line bends gently,
-/// with a wedge where it bends sharply. All run the same way round, so their areas add up.
-fn stroke(spots: &[Spot], pen: Pen) -> Vec<Vec<Spot>> {
-    let mut contours = Vec::new();
-    for piece in dashes(spots, pen.dash) {
-        thicken(&piece, pen.width / 2.0, &mut contours);
-    }
-    contours
-}
-
-/// The visible pieces of a line.
-fn dashes(spots: &[Spot], dash: Option<(f64, f64)>) -> Vec<Vec<Spot>> {
-    let mut distinct: Vec<Spot> = Vec::with_capacity(spots.len());
-    for &spot in spots {
-        // Vertices closer than a twentieth of a pixel have no direction worth drawing.
-        if distinct.last().is_none_or(|last| (spot.0 - last.0).abs() + (spot.1 - last.1).abs() > 0.05) {
-            distinct.push(spot);
-        }
-    }
-    let Some((on, off)) = dash.filter(|(on, off)| *on > 0.0 && *off > 0.0) else { return vec![distinct] };
-    let (mut pieces, mut drawing, mut left) = (Vec::new(), true, on);
-    let mut piece: Vec<Spot> = distinct.first().copied().into_iter().collect();
-    for pair in distinct.windows(2) {
-        let (dx, dy) = (pair[1].0 - pair[0].0, pair[1].1 - pair[0].1);
-        let length = (dx * dx + dy * dy).sqrt();
-        let mut gone = 0.0;
-        while length - gone > left {
-            gone += left;
-            let spot = (pair[0].0 + dx * gone / length, pair[0].1 + dy * gone / length);
-            if drawing {
-                piece.push(spot);
-                pieces.push(std::mem::take(&mut piece));
-            } else {
-                piece = vec![spot];
+    /// Draws a line of `width` pixels.
+    fn stroke(&mut self, spots: impl IntoIterator<Item = Spot>, width: f64, colour: BackendColor) {
+        let mut distinct: Vec<Spot> = Vec::new();
+        for spot in spots {
+            if distinct.last().is_none_or(|last| (spot.0 - last.0).abs() + (spot.1 - last.1).abs() > NEAREST) {
+                distinct.push(spot);
             }
-            drawing = !drawing;
-            left = if drawing { on } else { off };
         }
-        left -= length - gone;
-        if drawing {
-            piece.push(pair[1]);
-        }
+        self.fill(&thicken(&distinct, width / 2.0), colour);
     }
-    if piece.len() > 1 {
-        pieces.push(piece);
-    }
-    pieces
 }
 
-/// Adds the outline of one unbroken line, `half` its width.
-fn thicken(spots: &[Spot], half: f64, contours: &mut Vec<Vec<Spot>>) {
-    let normals: Vec<Spot> = spots
-        .windows(2)
-        .map(|pair| {
-            let (dx, dy) = (pair[1].0 - pair[0].0, pair[1].1 - pair[0].1);
-            let length = (dx * dx + dy * dy).sqrt();
-            (-dy / length * half, dx / length * half)
-        })
-        .collect();
-    let closed = spots.len() > 2 && spots.first() == spots.last();
-    // The offset at a vertex between two pieces: their common corner if they bend by less than 60 degrees.
-    let corner = |a: Spot, b: Spot| {
-        let dot = (a.0 * b.0 + a.1 * b.1) / (half * half);
-        (dot > 0.5).then(|| ((a.0 + b.0) / (1.0 + dot), (a.1 + b.1) / (1.0 + dot)))
-    };
-    for (i, &normal) in normals.iter().enumerate() {
-        let before = if i > 0 { Some(normals[i - 1]) } else { closed.then(|| normals[normals.len() - 1]) };
-        let after = if i + 1 < normals.len() { Some(normals[i + 1]) } else { closed.then(|| normals[0]) };
-        let start = before.and_then(|other| corner(other, normal)).unwrap_or(normal);
-        let end = after.and_then(|other| corner(normal, other)).unwrap_or(normal);
-        let (a, b) = (spots[i], spots[i + 1]);
-        contours.push(vec![
-            (a.0 + start.0, a.1 + start.1),
-            (b.0 + end.0, b.1 + end.1),
-            (b.0 - end.0, b.1 - end.1),
-            (a.0 - start.0, a.1 - start.1),
-        ]);
-        if let Some(other) = after.filter(|&other| corner(normal, other).is_none()) {
-            let turn = normal.0 * other.1 - normal.1 * other.0;
-            let side = if turn > 0.0 { -1.0 } else { 1.0 };
-            let (p, q) = ((b.0 + side * normal.0, b.1 + side * normal.1), (b.0 + side * other.0, b.1 + side * other.1));
-            contours.push(if side > 0.0 { vec![b, p, q] } else { vec![b, q, p] });
+/// The place of steps on the picture, in pixels.
+fn spot((x, y): BackendCoord) -> Spot {
+    (f64::from(x) / STEPS, f64::from(y) / STEPS)
+}
+
+/// The corners of a rectangle.
+fn corners((left, top): Spot, (right, bottom): Spot) -> Vec<Spot> {
+    vec![(left, top), (right, top), (right, bottom), (left, bottom)]
+}
+
+type Drawn = Result<(), DrawingErrorKind<Infallible>>;
+
+/// Coordinates, line widths, radii and font sizes count steps, 256 to a pixel. Texts are set in the faces of the
+/// crate, whatever their family; they cannot be turned.
+impl DrawingBackend for &mut Raster {
+    type ErrorType = Infallible;
+
+    fn get_size(&self) -> (u32, u32) {
+        ((self.width as f64 * STEPS) as u32, (self.height as f64 * STEPS) as u32)
+    }
+
+    fn ensure_prepared(&mut self) -> Drawn {
+        Ok(())
+    }
+
+    fn present(&mut self) -> Drawn {
+        Ok(())
+    }
+
+    fn draw_pixel(&mut self, point: BackendCoord, colour: BackendColor) -> Drawn {
+        self.draw_rect(point, (point.0 + 1, point.1 + 1), &colour, true)
+    }
+
+    fn draw_line<S: BackendStyle>(&mut self, from: BackendCoord, to: BackendCoord, style: &S) -> Drawn {
+        self.draw_path([from, to], style)
+    }
+
+    fn draw_rect<S: BackendStyle>(&mut self, start: BackendCoord, end: BackendCoord, style: &S, fill: bool) -> Drawn {
+        let mut corners = corners(spot(start), spot(end));
+        if fill {
+            self.fill(&[corners], style.color());
+        } else {
+            corners.push(corners[0]);
+            self.stroke(corners, f64::from(style.stroke_width()) / STEPS, style.color());
         }
+        Ok(())
+    }
+
+    fn draw_path<S: BackendStyle, I: IntoIterator<Item = BackendCoord>>(&mut self, path: I, style: &S) -> Drawn {
+        self.stroke(path.into_iter().map(spot), f64::from(style.stroke_width()) / STEPS, style.color());
+        Ok(())
+    }
+
+    fn fill_polygon<S: BackendStyle, I: IntoIterator<Item = BackendCoord>>(&mut self, path: I, style: &S) -> Drawn {
+        self.fill(&[path.into_iter().map(spot).collect()], style.color());
+        Ok(())
+    }
+
+    fn draw_circle<S: BackendStyle>(&mut self, centre: BackendCoord, radius: u32, style: &S, fill: bool) -> Drawn {
+        let mut rim = circle(spot(centre), f64::from(radius) / STEPS);
+        if fill {
+            self.fill(&[rim], style.color());
+        } else {
+            rim.push(rim[0]);
+            self.stroke(rim, f64::from(style.stroke_width()) / STEPS, style.color());
+        }
+        Ok(())
+    }
+
+    fn draw_text<S: BackendTextStyle>(&mut self, text: &str, style: &S, at: BackendCoord) -> Drawn {
+        let em = style.size() / FONT_SIZE / STEPS;
+        let face = if matches!(style.style(), FontStyle::Bold) { Face::Bold } else { Face::Regular };
+        let (x, y) = spot(at);
+        let left = match style.anchor().h_pos {
+            HPos::Left => x,
+            HPos::Center => x - text::width(text, em, face) / 2.0,
+            HPos::Right => x - text::width(text, em, face),
+        };
+        let baseline = match style.anchor().v_pos {
+            VPos::Top => y + TOP * em,
+            VPos::Center => y + HALF_X * em,
+            VPos::Bottom => y - HALF_X * em,
+        };
+        self.fill(&text::outline(text, (left, baseline), em, face), style.color());
+        Ok(())
     }
 }
 
 #[cfg(test)]
 mod tests {
+    use plotters::backend::BitMapBackend;
+    use plotters::style::BLACK;
+    use plotters::style::FontDesc;
+    use plotters::style::FontFamily;
+    use plotters::style::ShapeStyle;
+    use plotters::style::text_anchor::Pos;
+
+    use super::super::canvas::Pen;
     use super::super::colour::INK;
+    use super::super::colour::MODELLED;
     use super::*;
 
-    const BLACK: Colour = Colour { channels: [0, 0, 0] };
+    const INKED: BackendColor = BackendColor { alpha: 1.0, rgb: (0, 0, 0) };
 
     fn darkness(raster: &Raster) -> f64 {
         raster.pixels.iter().map(|&v| 255.0 - f64::from(v)).sum::<f64>() / (3.0 * 255.0)
-    }
-
-    fn blank(width: usize, height: usize) -> Raster {
-        Raster { width, height, pixels: vec![255; width * height * 3] }
     }
 
     /// Covered areas are those of geometry: a slanted square, a line with a gentle bend, one with a right angle (its
@@ -293,40 +241,89 @@ mod tests {
     /// 1/32 of a pixel at most; over the rim the errors cancel to less than a third of that.
     #[test]
     fn shapes_cover_their_area() {
-        let check = |contours: &[Vec<Spot>], area: f64, rim: f64| {
-            let mut raster = blank(40, 40);
-            raster.fill(contours, BLACK, 1.0);
+        let check = |draw: &dyn Fn(&mut Raster), area: f64, rim: f64| {
+            let mut raster = Raster::new(40, 40);
+            draw(&mut raster);
             assert!((darkness(&raster) - area).abs() < rim / 96.0, "{} {area}", darkness(&raster));
         };
         let square = vec![(20.0, 3.3), (36.7, 20.0), (20.0, 36.7), (3.3, 20.0)];
-        check(&[square], 2.0 * 16.7 * 16.7, 8.0 * 16.7);
-        let pen = Pen::solid(BLACK, 3.0);
+        check(&|raster| raster.fill(std::slice::from_ref(&square), INKED), 2.0 * 16.7 * 16.7, 8.0 * 16.7);
         let length = (15.0_f64 * 15.0 + 81.0).sqrt() + (15.0_f64 * 15.0 + 16.0).sqrt();
-        check(&stroke(&[(5.0, 5.0), (20.0, 14.0), (35.0, 18.0)], pen), 3.0 * length, 2.0 * length);
+        let bend = [(5.0, 5.0), (20.0, 14.0), (35.0, 18.0)];
+        check(&|raster| raster.stroke(bend, 3.0, INKED), 3.0 * length, 2.0 * length);
         // Two arms of 20.3 share a square of 1.5 x 1.5; the wedge outside is half of another one.
         let arms = 2.0 * 3.0 * 20.3 - 1.5 * 1.5 + 1.5 * 1.5 / 2.0;
-        check(&stroke(&[(5.2, 5.4), (25.5, 5.4), (25.5, 25.7)], pen), arms, 4.0 * 20.3);
+        let angle = [(5.2, 5.4), (25.5, 5.4), (25.5, 25.7)];
+        check(&|raster| raster.stroke(angle, 3.0, INKED), arms, 4.0 * 20.3);
         let disc = std::f64::consts::PI * 12.3 * 12.3;
-        check(&[circle((20.3, 19.6), 12.3)], 0.997_15 * disc, 2.0 * disc / 12.3);
+        check(&|raster| raster.fill(&[circle((20.3, 19.6), 12.3)], INKED), 0.997_15 * disc, 2.0 * disc / 12.3);
     }
 
     #[test]
     fn shapes_may_leave_the_picture_on_every_side() {
-        let mut raster = blank(10, 10);
-        raster.fill(&[vec![(-50.0, -50.0), (50.0, -50.0), (50.0, 50.0), (-50.0, 50.0)]], BLACK, 1.0);
+        let mut raster = Raster::new(10, 10);
+        raster.fill(&[corners((-50.0, -50.0), (50.0, 50.0))], INKED);
         assert!((darkness(&raster) - 100.0).abs() < 1e-9);
-        let mut raster = blank(10, 10);
-        raster.fill(&[vec![(20.0, 1.0), (30.0, 1.0), (30.0, 8.0)]], BLACK, 1.0);
+        let mut raster = Raster::new(10, 10);
+        raster.fill(&[vec![(20.0, 1.0), (30.0, 1.0), (30.0, 8.0)]], INKED);
+        raster.stroke([(3.0, 3.0)], 1.0, INKED);
         assert_eq!(darkness(&raster), 0.0);
     }
 
+    /// The same page on the bitmap of `plotters` itself, drawn eight times as large and averaged: no pixel without
+    /// text differs by more than the jagged rims of that bitmap allow, and very few come near that.
     #[test]
-    fn dashes_leave_gaps() {
-        let line = [(0.0, 5.0), (10.0, 5.0), (30.0, 5.0)];
-        let pieces = dashes(&line, Some((4.0, 2.0)));
-        assert_eq!(pieces.len(), 5);
-        let inked: f64 = pieces.iter().map(|piece| piece[piece.len() - 1].0 - piece[0].0).sum();
-        assert!((inked - 20.0).abs() < 1e-9, "{inked}");
+    fn shapes_are_those_of_the_bitmap_of_plotters() {
+        const TIMES: usize = 8;
+        let mut canvas = Canvas::new(48.0, 36.0);
+        canvas.fill(vec![(3.0, 4.0), (20.3, 9.0), (12.0, 30.7)], MODELLED, 0.5);
+        canvas.line(vec![(5.0, 33.0), (30.0, 2.5), (44.0, 8.0)], Pen::solid(INK, 2.0));
+        canvas.line(vec![(2.0, 20.0), (46.0, 26.0)], Pen::solid(INK, 1.5).dashed(4.0, 3.0));
+        canvas.disc((33.0, 24.0), 6.5, MODELLED, 1.0);
+        let mut raster = Raster::new(48, 36);
+        plot(&canvas, &(&mut raster).into_drawing_area(), STEPS).unwrap();
+        let mut large = vec![0; 48 * 36 * 3 * TIMES * TIMES];
+        let backend = BitMapBackend::with_buffer(&mut large, (48 * TIMES as u32, 36 * TIMES as u32));
+        plot(&canvas, &backend.into_drawing_area(), TIMES as f64).unwrap();
+        let averaged = |row: usize, column: usize, channel: usize| -> f64 {
+            let cells = (0..TIMES * TIMES).map(|i| (row * TIMES + i / TIMES, column * TIMES + i % TIMES));
+            let sum: u32 = cells.map(|(y, x)| u32::from(large[(y * 48 * TIMES + x) * 3 + channel])).sum();
+            f64::from(sum) / (TIMES * TIMES) as f64
+        };
+        let differences: Vec<f64> = (0..48 * 36 * 3)
+            .map(|i| (f64::from(raster.pixels[i]) - averaged(i / 144, i % 144 / 3, i % 3)).abs() / 255.0)
+            .collect();
+        let most = differences.iter().copied().fold(0.0, f64::max);
+        let mean = differences.iter().sum::<f64>() / differences.len() as f64;
+        assert!(darkness(&raster) > 200.0 && most < 0.3 && mean < 0.01, "{most} {mean}");
+    }
+
+    /// Wherever it hangs from, a text lies where its anchor says, and rings and frames are hollow.
+    #[test]
+    fn anchors_and_outlines_are_those_of_plotters() {
+        let dark_columns = |raster: &Raster| -> Vec<usize> {
+            (0..raster.width)
+                .filter(|x| (0..raster.height).any(|y| raster.pixels[(y * raster.width + x) * 3] < 128))
+                .collect()
+        };
+        let step = STEPS as i32;
+        for (anchor, first) in [(HPos::Left, 40), (HPos::Center, 20), (HPos::Right, 0)] {
+            let mut raster = Raster::new(100, 30);
+            // As large as makes the letter 40 pixels wide.
+            let size = 40.0 / text::width("H", 1.0, Face::Regular) * FONT_SIZE * STEPS;
+            let font = FontDesc::new(FontFamily::SansSerif, size, FontStyle::Normal);
+            let style = font.color(&BLACK).pos(Pos::new(anchor, VPos::Center));
+            (&mut raster).into_drawing_area().draw_text("H", &style, (40 * step, 15 * step)).unwrap();
+            let dark = dark_columns(&raster);
+            assert!(dark[0] >= first && dark[dark.len() - 1] < first + 40, "{first}: {dark:?}");
+        }
+        let mut raster = Raster::new(40, 40);
+        let mut backend = &mut raster;
+        let style = ShapeStyle::from(BLACK).stroke_width(2 * step as u32);
+        backend.draw_circle((20 * step, 20 * step), 10 * step as u32, &style, false).unwrap();
+        backend.draw_rect((5 * step, 5 * step), (35 * step, 35 * step), &style, false).unwrap();
+        let (ring, frame) = (std::f64::consts::PI * (11.0 * 11.0 - 9.0 * 9.0), 4.0 * 30.0 * 2.0);
+        assert!((darkness(&raster) / (ring + frame) - 1.0).abs() < 0.02, "{}", darkness(&raster));
     }
 
     #[test]

@@ -23,6 +23,7 @@ use crate::figures::variables::VariablesData;
 use crate::figures::{evenness, heavy, progress, variables};
 use crate::numeric::exp;
 use crate::numeric::linear::cholesky;
+use crate::problem::Aim;
 use crate::problem::Coordinate;
 use crate::problem::Nature;
 use crate::problem::Problem;
@@ -80,20 +81,24 @@ fn progress_data(run: &RunData, score: Option<&Score>) -> ProgressData {
         ess_fraction: row.ess_fraction,
         ess_fraction_se: row.ess_fraction_se,
         weight_variance: row.weight_variance,
-        schedule: row.exponent,
+        schedule: row.schedule,
         components: row.components,
     });
     let (all, survey) = (run.evaluations as f64, run.survey_evaluations as f64);
+    let phase = |name: &str, from: f64, to: f64, shaded| Phase { name: name.to_owned(), from, to, shaded };
+    let mut phases = vec![phase(SURVEY_PHASE, 0.0, survey, true)];
+    if run.problem.aim() != Aim::Density {
+        // All that follows are rounds, and the answer rests on them.
+        phases.push(phase("rounds", survey, all, false));
+        return ProgressData { phases, rounds: rounds.collect(), schedule: Schedule::Smoothing, report: None };
+    }
     let report_from = all - run.draws.len() as f64;
     let last_round = run.rounds.last().map_or(survey, |row| row.evaluations);
-    let phase = |name: &str, from: f64, to: f64, shaded| Phase { name: name.to_owned(), from, to, shaded };
+    phases.push(phase("rounds", survey, last_round, false));
+    phases.push(phase("confirm", last_round, report_from, true));
+    phases.push(phase("report", report_from, all, true));
     ProgressData {
-        phases: vec![
-            phase(SURVEY_PHASE, 0.0, survey, true),
-            phase("rounds", survey, last_round, false),
-            phase("confirm", last_round, report_from, true),
-            phase("report", report_from, all, true),
-        ],
+        phases,
         rounds: rounds.collect(),
         schedule: Schedule::Exponent,
         report: score.map(|score| ReportScore {

@@ -2,7 +2,7 @@
 //!
 //! * [`DrawsTable`]: every report draw in natural units, as in `points.csv`;
 //! * [`round_rows`]: one row a round, as in `rounds.csv`;
-//! * [`Summary`]: scores, verdict, choices and provenance, as in `summary.json`;
+//! * [`Summary`], [`RareSummary`]: scores, verdict, choices and provenance, as in `summary.json`;
 //! * [`page`]: the page and its Markdown twin;
 //! * [`RunData`]: what the figures are drawn from, out of a tuning or out of a run's files alike.
 //!
@@ -12,6 +12,7 @@ mod draws;
 mod figure_data;
 mod marginal;
 mod outline;
+mod rare_summary;
 mod rounds;
 mod summary;
 
@@ -19,7 +20,12 @@ pub mod page;
 
 pub use draws::DrawsTable;
 pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};
-pub use rounds::{ROUND_COLUMNS, RoundRow, read_rounds, round_rows, write_rounds};
+pub use rare_summary::{
+    NoHit, PROBABILITY_NOTE, Pooled, RareCandidateSummary, RareRoundCandidates, RareSummary, RareSurveySummary,
+};
+pub use rounds::{
+    RARE_ROUND_COLUMNS, ROUND_COLUMNS, RoundRow, read_rounds, round_rows, write_rare_rounds, write_rounds,
+};
 pub use summary::{
     CandidateSummary, Evaluations, FinalistSummary, NamedValues, ProposalSummary, Provenance, RoundCandidates,
     SUMMARY_FORMAT, Summary, SummaryCheck, SurveySummary, ValueWithError, read_evaluations,

@@ -36,7 +36,8 @@ fn outline(problem: &Problem, component: &Component, k: usize, rows: [(usize, &D
     let pair = [dot(rows[0].1, &towards[0]), between, between, dot(rows[1].1, &towards[1])];
     let factor = cholesky(&pair, 2)?;
     let mut around = Points::new(d);
-    for corner in 0..CORNERS {
+    // The line closes where it begins.
+    for corner in (0..CORNERS).chain([0]) {
         let angle = std::f64::consts::TAU * corner as f64 / CORNERS as f64;
         // C^-T (cos, sin) by back substitution.
         let second = libm::sin(angle) / factor[3];

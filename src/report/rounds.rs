@@ -1,6 +1,9 @@
 //! One row a round: `rounds.csv`.
 
 use crate::adapt::Round;
+use crate::adapt::rare::RareRound;
+use crate::adapt::rare::RareStep;
+use crate::problem::Aim;
 use crate::store::StoreError;
 use crate::store::Table;
 use crate::store::decimal;
@@ -32,6 +35,27 @@ pub const ROUND_COLUMNS: [&str; 20] = [
     "wide_share",
 ];
 
+/// The first columns where the aim is a probability or an expectation; `smoothing` is empty where the event itself was
+/// aimed at. The value of the round, its standard error and its coefficient of variation follow.
+pub const RARE_ROUND_COLUMNS: [&str; 14] = [
+    "round",
+    "draws",
+    "evaluations",
+    "failed",
+    "smoothing",
+    "components",
+    "step",
+    "predicted_ess_fraction",
+    "ess_fraction",
+    "weight_variance",
+    "largest_share",
+    "hits",
+    "share",
+    "outside_share",
+];
+const PROBABILITY_COLUMNS: [&str; 3] = ["probability", "probability_se", "probability_cv"];
+const EXPECTATION_COLUMNS: [&str; 3] = ["expectation", "expectation_se", "expectation_cv"];
+
 /// What the figures need of a round.
 #[derive(Debug, Clone, PartialEq)]
 pub struct RoundRow {
@@ -39,8 +63,8 @@ pub struct RoundRow {
     pub round: u32,
     /// Evaluations spent at its end.
     pub evaluations: f64,
-    /// Tempering exponent.
-    pub exponent: Option<f64>,
+    /// Tempering exponent, or width of smoothing.
+    pub schedule: Option<f64>,
     /// Components.
     pub components: usize,
     /// ESS fraction that was predicted.
@@ -64,10 +88,24 @@ pub fn round_rows(rounds: &[Round]) -> Vec<Vec<String>> {
 /// # Errors
 /// [`StoreError::Io`] with the path.
 pub fn write_rounds(path: &Path, rounds: &[Round]) -> Result<(), StoreError> {
+    write_rows(path, &ROUND_COLUMNS, &round_rows(rounds))
+}
+
+/// Writes the rounds of a probability or an expectation, whole or not at all.
+///
+/// # Errors
+/// [`StoreError::Io`] with the path.
+pub fn write_rare_rounds(path: &Path, aim: Aim, rounds: &[RareRound]) -> Result<(), StoreError> {
+    let mut columns = RARE_ROUND_COLUMNS.to_vec();
+    columns.extend(if aim == Aim::Probability { PROBABILITY_COLUMNS } else { EXPECTATION_COLUMNS });
+    write_rows(path, &columns, &rounds.iter().map(rare_cells).collect::<Vec<_>>())
+}
+
+fn write_rows(path: &Path, columns: &[&str], rows: &[Vec<String>]) -> Result<(), StoreError> {
     write_atomically(path, |out| {
         let mut writer = csv::Writer::from_writer(out);
-        writer.write_record(ROUND_COLUMNS).map_err(io::Error::from)?;
-        for row in round_rows(rounds) {
+        writer.write_record(columns).map_err(io::Error::from)?;
+        for row in rows {
             writer.write_record(row).map_err(io::Error::from)?;
         }
         writer.flush()
@@ -90,18 +128,24 @@ pub fn read_rounds(path: &Path) -> Result<Vec<RoundRow>, StoreError> {
         })
     };
     let known = |x: f64| x.is_finite().then_some(x);
-    let (rounds, evaluations, exponent) = (column("round")?, column("evaluations")?, column("exponent")?);
+    let (rounds, evaluations) = (column("round")?, column("evaluations")?);
+    // At the event itself nothing is smoothed, and the cell is empty.
+    let schedule: Vec<Option<f64>> = match table.column("smoothing") {
+        Some(smoothing) => smoothing.iter().map(|&width| Some(if width.is_nan() { 0.0 } else { width })).collect(),
+        None => column("exponent")?.iter().map(|&exponent| known(exponent)).collect(),
+    };
     let (components, predicted) = (column("components")?, column("predicted_ess_fraction")?);
-    let (fresh, fresh_se, variance) = (column("ess_fraction")?, column("ess_fraction_se")?, column("weight_variance")?);
+    let (fresh, variance) = (column("ess_fraction")?, column("weight_variance")?);
+    let fresh_se = table.column("ess_fraction_se");
     Ok((0..table.len())
         .map(|i| RoundRow {
             round: rounds[i] as u32,
             evaluations: evaluations[i],
-            exponent: known(exponent[i]),
+            schedule: schedule[i],
             components: components[i] as usize,
             predicted_ess_fraction: known(predicted[i]),
             ess_fraction: known(fresh[i]),
-            ess_fraction_se: known(fresh_se[i]),
+            ess_fraction_se: fresh_se.map(|se| se[i]).and_then(known),
             weight_variance: known(variance[i]),
         })
         .collect())
@@ -114,7 +158,7 @@ impl From<&Round> for RoundRow {
         Self {
             round: round.index,
             evaluations: round.evaluations as f64,
-            exponent: known(round.exponent),
+            schedule: known(round.exponent),
             components: round.components,
             predicted_ess_fraction: round.predicted_ess_fraction.and_then(known),
             ess_fraction: score.and_then(|s| known(s.ess_fraction)),
@@ -124,8 +168,69 @@ impl From<&Round> for RoundRow {
     }
 }
 
+impl From<&RareRound> for RoundRow {
+    fn from(round: &RareRound) -> Self {
+        let known = |x: f64| x.is_finite().then_some(x);
+        Self {
+            round: round.index,
+            evaluations: round.evaluations as f64,
+            schedule: Some(round.smoothing.unwrap_or(0.0)),
+            components: round.components,
+            predicted_ess_fraction: round.predicted_ess_fraction.and_then(known),
+            ess_fraction: known(round.ess_fraction),
+            ess_fraction_se: None,
+            weight_variance: known(variance_of(round.ess_fraction)),
+        }
+    }
+}
+
+/// Variance of weights of mean one whose ESS fraction is given.
+fn variance_of(ess_fraction: f64) -> f64 {
+    1.0 / ess_fraction - 1.0
+}
+
+/// A number in a cell, nothing where it is not known.
+fn number(x: f64) -> String {
+    if x.is_nan() { String::new() } else { decimal(x) }
+}
+
+fn rare_cells(round: &RareRound) -> Vec<String> {
+    vec![
+        round.index.to_string(),
+        round.draws.to_string(),
+        round.evaluations.to_string(),
+        round.failed.to_string(),
+        number(round.smoothing.unwrap_or(f64::NAN)),
+        round.components.to_string(),
+        rare_step(round.step).to_owned(),
+        number(round.predicted_ess_fraction.unwrap_or(f64::NAN)),
+        number(round.ess_fraction),
+        number(variance_of(round.ess_fraction)),
+        number(round.largest_share),
+        round.hits.to_string(),
+        number(round.share),
+        number(round.outside_share),
+        number(round.value),
+        number(round.se),
+        number(round.cv),
+    ]
+}
+
+/// The kind of refit in a word.
+pub(super) fn rare_step(step: RareStep) -> &'static str {
+    match step {
+        RareStep::Survey => "survey",
+        RareStep::Kept => "kept",
+        RareStep::Earlier => "earlier",
+        RareStep::CrossEntropy => "cross-entropy",
+        RareStep::Shift => "shift",
+        RareStep::Variance => "variance",
+        RareStep::Seeded => "seeded",
+        RareStep::Split => "split",
+    }
+}
+
 fn cells(round: &Round) -> Vec<String> {
-    let number = |x: f64| if x.is_nan() { String::new() } else { decimal(x) };
     let of =
         |read: &dyn Fn(&crate::weights::Score) -> f64| round.score.as_ref().map_or(String::new(), |s| number(read(s)));
     vec![
@@ -156,9 +261,10 @@ fn cells(round: &Round) -> Vec<String> {
 fn without_texts(bytes: &[u8]) -> Vec<u8> {
     let mut reader = csv::ReaderBuilder::new().has_headers(false).from_reader(bytes);
     let mut writer = csv::Writer::from_writer(Vec::new());
+    let mut texts = None;
     for record in reader.records().map_while(Result::ok) {
-        let kept =
-            record.iter().enumerate().filter(|(k, _)| ROUND_COLUMNS.get(*k) != Some(&"step")).map(|(_, cell)| cell);
+        let texts = *texts.get_or_insert_with(|| record.iter().position(|title| title == "step"));
+        let kept = record.iter().enumerate().filter(|(k, _)| Some(*k) != texts).map(|(_, cell)| cell);
         // Writing to memory cannot fail, and a table that misses a row is told by whoever reads it.
         let _ = writer.write_record(kept);
     }

@@ -237,7 +237,7 @@ impl Summary {
 }
 
 impl SummaryCheck {
-    fn of(check: &Check) -> Self {
+    pub(super) fn of(check: &Check) -> Self {
         Self {
             name: check.name,
             value: finite(check.value),

@@ -24,6 +24,9 @@ use std::time::Duration;
 const SYNC_AFTER: Duration = Duration::from_millis(50);
 /// Name of the gradients among a record's columns.
 const GRADIENT: &str = "gradient";
+/// Columns of the margins or integrands, and of the hits (1 or 0).
+const VALUE: &str = "value";
+const HIT: &str = "hit";
 
 /// Records batches; when a run is resumed, first gives back those that were recorded before.
 #[derive(Debug)]
@@ -81,11 +84,14 @@ impl Recorder {
             self.diverged = true;
             return None;
         }
-        let gradients = match record.columns.into_iter().find(|column| column.name == GRADIENT) {
-            Some(column) => column.values,
-            None => Points::new(batch.points.dim()),
-        };
-        Some(Answers { log_density: record.log_density, gradients })
+        let column = |name: &str| record.columns.iter().find(|column| column.name == name).map(|c| c.values.clone());
+        let numbers = |name: &str| column(name).map(|c| c.coordinate(0)).unwrap_or_default();
+        Some(Answers {
+            gradients: column(GRADIENT).unwrap_or_else(|| Points::new(batch.points.dim())),
+            value: numbers(VALUE),
+            hit: numbers(HIT).iter().map(|&h| h > 0.0).collect(),
+            log_density: record.log_density,
+        })
     }
 
     /// Records answers that the model worked `worked` for.
@@ -97,13 +103,12 @@ impl Recorder {
             return Err(StoreError::Diverged { path: self.journal.path().to_path_buf(), record: self.given });
         }
         let (purpose, round) = place(batch.stage);
-        let gradient = || JournalColumn { name: GRADIENT.to_owned(), values: answers.gradients.clone() };
         self.journal.write(&JournalBatch {
             purpose,
             round,
             points: batch.points.clone(),
             log_density: answers.log_density.clone(),
-            columns: if batch.gradient { vec![gradient()] } else { Vec::new() },
+            columns: columns_of(batch, answers),
         })?;
         self.unsynced += worked;
         if self.unsynced >= SYNC_AFTER { self.sync() } else { Ok(()) }
@@ -117,6 +122,23 @@ impl Recorder {
         self.unsynced = Duration::ZERO;
         self.journal.sync()
     }
+}
+
+/// What was answered beside the log densities.
+fn columns_of(batch: &Batch, answers: &Answers) -> Vec<JournalColumn> {
+    let column = |name: &str, values: Points| JournalColumn { name: name.to_owned(), values };
+    let mut columns = Vec::new();
+    if batch.gradient {
+        columns.push(column(GRADIENT, answers.gradients.clone()));
+    }
+    if !answers.value.is_empty() {
+        columns.push(column(VALUE, Points::from_rows(1, &answers.value)));
+    }
+    if !answers.hit.is_empty() {
+        let flags: Vec<f64> = answers.hit.iter().map(|&h| f64::from(u8::from(h))).collect();
+        columns.push(column(HIT, Points::from_rows(1, &flags)));
+    }
+    columns
 }
 
 /// Where in a tuning a batch belongs.
@@ -156,8 +178,14 @@ mod tests {
         let folder = tempdir().unwrap();
         let header = JournalHeader::default();
         let points = Points::from_rows(2, &[0.1, 0.2, 0.3, 0.4]);
-        let answers = Answers { log_density: vec![-1.0, f64::NEG_INFINITY], gradients: points.clone() };
-        let plain = Answers { log_density: vec![2.0, 3.0], gradients: Points::new(2) };
+        let answers = Answers {
+            log_density: vec![-1.0, f64::NEG_INFINITY],
+            gradients: points.clone(),
+            value: vec![0.5, -1.0],
+            hit: vec![true, false],
+        };
+        let plain =
+            Answers { log_density: vec![2.0, 3.0], gradients: Points::new(2), value: Vec::new(), hit: Vec::new() };
         let mut recorder = Recorder::begin(folder.path(), &header).unwrap();
         assert_eq!(recorder.recorded(&batch(&points, true)), None);
         recorder.record(&batch(&points, true), &answers, Duration::ZERO).unwrap();

@@ -1,0 +1,141 @@
+//! The layers of every proposal: the fitted mixture, and what keeps its weights bounded where it is wrong.
+
+use super::directed::{Directed, Part, scaled_identity};
+use super::plan::Plan;
+use crate::proposal::ProposalError;
+
+/// Share of the wide scouts.
+const WIDE: f64 = 0.04;
+/// Share of the unit copies: unit covariance at the components' means. With one at the design point the weight over a half-space
+/// is bounded, so the fitted component may take the small variance along the normal that it wants: relative variance per draw over a
+/// half-line at distance 5: unit shift alone 5.68, fitted with 10 % unit .60.
+const UNIT: f64 = 0.05;
+/// Share of the inflated copies: every fitted component again, its covariance times `INFLATE`. They take the place of
+/// heavy tails and follow the directions of each component (best of nine settings).
+const INFLATED: f64 = 0.20;
+const INFLATE: f64 = 3.0;
+/// Added to the variances of inflated copies: without it the copies of a strip of width .02 cover nothing where the strip bends.
+const INFLATED_FLOOR: f64 = 0.02;
+/// The rest's variance is inflated by this, or to one where it is smaller.
+const INFLATE_REST: f64 = 1.1;
+/// Unit copies nearer than this are one.
+const MERGED: f64 = 1.0;
+/// Wide scouts' standard deviation in the directions, where only a few are told from the rest.
+const WIDE_IN_DIRECTIONS: f64 = 1.5;
+
+/// The layers that do not change, and the shares.
+#[derive(Debug, Clone)]
+pub(crate) struct Layers {
+    k: usize,
+    rest_dim: usize,
+    nominal_share: f64,
+    nominal: Directed,
+    wide: Directed,
+}
+
+/// Which layer a component of the whole proposal belongs to.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(crate) enum Layer {
+    Fitted,
+    Nominal,
+    Defensive,
+}
+
+impl Layers {
+    pub(crate) fn new(plan: &Plan, k: usize, rest_dim: usize, scouts_sd: f64) -> Result<Self, ProposalError> {
+        let sd = if rest_dim > 0 { WIDE_IN_DIRECTIONS } else { scouts_sd };
+        Ok(Self {
+            k,
+            rest_dim,
+            nominal_share: plan.nominal,
+            nominal: Directed::central(k, rest_dim, 1.0, 1.0)?,
+            wide: Directed::central(k, rest_dim, sd * sd, 1.0)?,
+        })
+    }
+
+    /// The whole proposal: fitted components first, then nominal, wide, unit copies, inflated copies.
+    pub(crate) fn whole(&self, fitted: &Directed) -> Result<Directed, ProposalError> {
+        let rest = 1.0 - self.nominal_share;
+        let others = WIDE + UNIT + INFLATED;
+        // Together with a nominal share of .03 the fitted components have .68.
+        let scale = rest.min(0.97) / 0.97;
+        Directed::union(&[
+            (rest - others * scale, fitted),
+            (self.nominal_share, &self.nominal),
+            (WIDE * scale, &self.wide),
+            (UNIT * scale, &self.unit_copies(fitted)?),
+            (INFLATED * scale, &inflated(fitted)?),
+        ])
+    }
+
+    /// The layer of component `i` of the whole proposal around `fitted` components.
+    pub(crate) fn layer_of(&self, i: usize, fitted: usize) -> Layer {
+        let nominal = usize::from(self.nominal_share > 0.0);
+        if i < fitted {
+            Layer::Fitted
+        } else if i < fitted + nominal {
+            Layer::Nominal
+        } else {
+            Layer::Defensive
+        }
+    }
+
+    /// Unit covariance at the components' means, the heaviest first, near ones merged.
+    fn unit_copies(&self, fitted: &Directed) -> Result<Directed, ProposalError> {
+        let mut parts = fitted.parts();
+        parts.sort_by(|a, b| b.mass.total_cmp(&a.mass));
+        let mut kept: Vec<Part> = Vec::new();
+        for part in parts {
+            let near = kept.iter_mut().find(|other| squared_distance(&other.mean, &part.mean) < MERGED * MERGED);
+            match near {
+                Some(other) => other.mass += part.mass,
+                None => kept.push(part),
+            }
+        }
+        for part in &mut kept {
+            // Light components too get a copy that is drawn from.
+            part.mass += 0.02;
+            part.covariance = scaled_identity(self.k, 1.0);
+            part.rest = 1.0;
+        }
+        Directed::new(&kept, self.rest_dim)
+    }
+}
+
+fn inflated(fitted: &Directed) -> Result<Directed, ProposalError> {
+    let mut parts = fitted.parts();
+    for part in &mut parts {
+        let k = part.mean.len();
+        part.covariance.iter_mut().for_each(|v| *v *= INFLATE);
+        (0..k).for_each(|i| part.covariance[i * k + i] += INFLATED_FLOOR);
+        part.rest = (part.rest * INFLATE_REST).min(part.rest.max(1.0));
+    }
+    Directed::new(&parts, fitted.rest_dim())
+}
+
+pub(crate) fn squared_distance(a: &[f64], b: &[f64]) -> f64 {
+    a.iter().zip(b).map(|(x, y)| (x - y) * (x - y)).sum()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::adapt::Settings;
+
+    #[test]
+    fn shares_and_order_are_as_said() {
+        let plan = Plan::new(&Settings::new(5000, 1), 2).unwrap();
+        let layers = Layers::new(&plan, 2, 0, 3.0).unwrap();
+        let part =
+            |x: f64, mass: f64| Part { mass, mean: vec![x, 0.0], covariance: vec![0.1, 0.0, 0.0, 1.0], rest: 1.0 };
+        let fitted = Directed::new(&[part(2.0, 0.3), part(2.5, 0.5), part(-3.0, 0.2)], 0).unwrap();
+        let whole = layers.whole(&fitted).unwrap();
+        // Three fitted, nominal, wide, two unit copies (two means are within 1), three inflated.
+        assert_eq!(whole.len(), 10);
+        let shares = whole.mixture().shares();
+        assert!((shares[..3].iter().sum::<f64>() - 0.68).abs() < 1e-12 && (shares[3] - 0.03).abs() < 1e-12);
+        assert!((shares[7..].iter().sum::<f64>() - 0.20).abs() < 1e-12);
+        assert_eq!(whole.mixture().components()[5].location(), &[2.5, 0.0]);
+        assert_eq!([2, 3, 4].map(|i| layers.layer_of(i, 3)), [Layer::Fitted, Layer::Nominal, Layer::Defensive]);
+    }
+}

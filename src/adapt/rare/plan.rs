@@ -1,0 +1,133 @@
+//! How a budget is spent, and every constant of the loop.
+
+use crate::adapt::TuneError;
+use crate::adapt::settings::Settings;
+use crate::problem::Structure;
+
+/// Share of the budget for the scouts, and their number at least (or a fifth of the budget) and at most.
+const SCOUTS: f64 = 0.05;
+const SCOUTS_LEAST: usize = 60;
+const SCOUTS_MOST: usize = 500;
+/// Share of the budget that searches may spend, below and from ten dimensions on. With .05 in ten dimensions and more no
+/// search of a quadratic margin in 100 dimensions completes (differences for gradients).
+const SEARCHES: f64 = 0.08;
+const SEARCHES_MANY: f64 = 0.12;
+const MANY: usize = 10;
+/// Up to this dimension covariances are full; above, a few directions are.
+pub(crate) const FULL: usize = 12;
+/// Round while the event is smoothed, as a share of the budget; at least 100 draws or a tenth.
+const SMOOTH_ROUND: f64 = 0.04;
+const ROUND_LEAST: usize = 100;
+/// Rounds at the event itself, as shares of the budget; then all that is left, which a rest under `LAST_LEAST` joins.
+const SCHEDULE: [f64; 4] = [0.06, 0.08, 0.14, 0.24];
+const LAST_LEAST: f64 = 0.12;
+/// Effective pooled draws that a smoothing must leave: a share of a round, and so many a coordinate.
+const EFFECTIVE_SHARE: f64 = 0.15;
+const EFFECTIVE_PER_COORDINATE: usize = 5;
+/// Components at most.
+const COMPONENTS: usize = 16;
+/// The least budget that makes sense.
+const LEAST_BUDGET: u64 = 200;
+/// Share of the nominal density in every proposal.
+const NOMINAL: f64 = 0.03;
+
+/// The plan of one run.
+#[derive(Debug, Clone)]
+pub(crate) struct Plan {
+    pub(crate) budget: u64,
+    pub(crate) seed: u64,
+    pub(crate) scouts: usize,
+    /// Evaluations that searches may spend beyond the scouts.
+    pub(crate) search_cap: u64,
+    /// Draws of a round while the event is smoothed.
+    pub(crate) smooth_round: usize,
+    /// Whether a few directions are told from the rest.
+    pub(crate) directions: bool,
+    pub(crate) most_components: usize,
+    /// Share of the nominal density.
+    pub(crate) nominal: f64,
+    /// Rounds at most.
+    pub(crate) rounds: u32,
+}
+
+impl Plan {
+    pub(crate) fn new(settings: &Settings, dim: usize) -> Result<Self, TuneError> {
+        let budget = settings.budget;
+        let least = LEAST_BUDGET.max(4 * (dim as u64 + 1));
+        if budget < least {
+            return Err(TuneError::Budget { budget, dim, least });
+        }
+        let n = budget as f64;
+        let searches = if dim < MANY { SEARCHES } else { SEARCHES_MANY };
+        let round = settings.round_draws.map_or(SMOOTH_ROUND * n, |r| (r as f64).min(0.25 * n));
+        Ok(Self {
+            budget,
+            seed: settings.seed,
+            scouts: ((SCOUTS * n) as usize).clamp(SCOUTS_LEAST.min(budget as usize / 5), SCOUTS_MOST),
+            search_cap: (searches * n) as u64,
+            smooth_round: (round as usize).max(ROUND_LEAST.min(budget as usize / 10)),
+            directions: match settings.structure {
+                Some(Structure::Directions) => dim > 1,
+                Some(Structure::Full | Structure::Diagonal) => false,
+                None => dim > FULL,
+            },
+            most_components: settings.components.unwrap_or(COMPONENTS).max(1),
+            nominal: settings.defensive.unwrap_or(NOMINAL).clamp(0.0, 0.5),
+            rounds: settings.rounds.max(2),
+        })
+    }
+
+    /// Draws of the next round: `at_event` rounds were drawn at the event itself, none while it is smoothed (`None`).
+    pub(crate) fn next_round(&self, at_event: Option<usize>, spent: u64, drawn: u32) -> usize {
+        let left = self.budget.saturating_sub(spent) as usize;
+        let wanted = match at_event {
+            None => self.smooth_round,
+            Some(t) => SCHEDULE.get(t).map_or(left, |share| (share * self.budget as f64) as usize),
+        };
+        let last = drawn + 1 >= self.rounds || left < wanted + (LAST_LEAST * self.budget as f64) as usize;
+        if last { left } else { wanted }
+    }
+
+    /// Effective pooled draws that a smoothed event must have, in `k` directions.
+    pub(crate) fn effective(&self, k: usize) -> f64 {
+        (EFFECTIVE_SHARE * self.smooth_round as f64).max((EFFECTIVE_PER_COORDINATE * (k + 1)) as f64)
+    }
+}
+
+/// Standard deviation of the wide scouts in `d` dimensions: wide enough to meet events ten orders of magnitude rare in few dimensions,
+/// narrow enough to stay near the shell where the nominal density lives in many.
+pub(crate) fn wide_sd(d: usize) -> f64 {
+    match d {
+        2 => 3.0,
+        3 => 2.6,
+        4..=20 => (1.0 + 3.2 / (d as f64).sqrt()).max(1.15),
+        0 | 1 => 4.2,
+        _ => 1.3,
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_rounds_spend_the_budget_and_no_more() {
+        let plan = Plan::new(&Settings::new(10_000, 1), 5).unwrap();
+        assert_eq!((plan.scouts, plan.smooth_round, plan.search_cap), (500, 400, 800));
+        let mut spent = 1300;
+        let mut sizes = Vec::new();
+        for t in 0.. {
+            let n = plan.next_round(Some(t), spent, t as u32);
+            spent += n as u64;
+            sizes.push(n);
+            if spent >= plan.budget {
+                break;
+            }
+        }
+        assert_eq!(sizes, [600, 800, 1400, 2400, 3500]);
+        assert_eq!(spent, plan.budget);
+        assert!(matches!(Plan::new(&Settings::new(100, 1), 2), Err(TuneError::Budget { .. })));
+        let small = Plan::new(&Settings::new(400, 1), 2).unwrap();
+        assert_eq!((small.scouts, small.smooth_round), (60, 40));
+    }
+}

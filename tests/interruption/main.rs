@@ -1,0 +1,6 @@
+//! Runs that are killed, stopped, starved or damaged: what was paid for is kept, and the end is the same to the last byte.
+
+mod common;
+mod damage;
+mod kills;
+mod refusals;
