@@ -252,7 +252,10 @@ pub(crate) fn refit_kind(name: &str) -> &'static str {
         "variance" => "expectation maximisation half-way towards the least weight variance",
         "merged" => "the two nearest components merged",
         "split" => "large components split",
-        "seeded" => "all components started afresh",
+        "seeded" => "components started afresh",
+        "survey" => "the first proposal, from the survey",
+        "earlier" => "the proposal of the round before",
+        "shift" => "means only, scales those of the variables' own distribution",
         "born" => "components added where the proposal lacks mass",
         _ => "a refit of its own kind",
     }
