@@ -51,3 +51,26 @@ fn the_rating_curve_is_sound() {
     let (flow, se) = estimate(&tuning, "flood_flow");
     assert!((flow - 64.2).abs() < 0.1 * 64.2 && se < 0.2, "{flow} +- {se}");
 }
+
+/// What the README shows to be typed or written is there.
+#[test]
+fn the_readme_says_what_is_so() {
+    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let readme = std::fs::read_to_string(root.join("README.md")).unwrap();
+    let example = readme.split_once("```toml\n").unwrap().1.split_once("```").unwrap().0;
+    let problem =
+        Problem::parse(example, "README.md", root).unwrap_or_else(|errors| panic!("{}", errors.render(false)));
+    let tuning = tune(&problem, &Settings::new(5000, 1), &mut Silent).unwrap();
+    assert!(tuning.verdict.word < Word::Unfit, "{:?}", tuning.verdict.reasons);
+    let mut links = 0;
+    for piece in readme.split("](").skip(1) {
+        let target = piece.split_once(')').unwrap().0;
+        assert!(root.join(target).exists(), "{target}");
+        links += 1;
+    }
+    assert!(links > 5);
+    for named in readme.split_whitespace().filter(|word| word.trim_matches('`').starts_with("examples/")) {
+        let path = named.trim_matches(|letter: char| !letter.is_alphanumeric());
+        assert!(path.ends_with(".run") || root.join(path).exists(), "{path}");
+    }
+}

@@ -165,8 +165,8 @@ fn density(b: &mut Bibliography) -> Vec<Vec<Span>> {
 
 fn rare(aim: Aim, b: &mut Bibliography) -> Vec<Vec<Span>> {
     use Source::{
-        DerKiureghianDakessian, FayFeuer, HasoferLind, Hesterberg, Kong, LiuDerKiureghian, Marin, OwenZhou,
-        PapaioannouGeyerStraub, Rosenblatt, Vehtari, ZhangStephens,
+        DerKiureghianDakessian, FayFeuer, HasoferLind, Hesterberg, Kong, LiuDerKiureghian, Marin,
+        PapaioannouGeyerStraub, Rosenblatt, SquareRootRule, Vehtari, ZhangStephens,
     };
     let event = aim == Aim::Probability;
     let mut steps = vec![
@@ -227,7 +227,7 @@ fn rare(aim: Aim, b: &mut Bibliography) -> Vec<Vec<Span>> {
              bounds", &[Hesterberg]), (".", &[])]),
         step(b, "The answer", &[(
             "Every round that was drawn after the event was first reached counts, with a weight that was fixed before it was drawn, so that the \
-             combination is unbiased", &[OwenZhou]), (
+             combination is unbiased", &[SquareRootRule]), (
             ". A value pooled over all rounds is adapted to the very points it is made from; its bias has no general bound", &[Marin]), (
             ", so where it is shown it is labelled as such and decides nothing.", &[])]),
         step(b, "Errors", &[(
