@@ -3,6 +3,7 @@
 // Helpers of tests.
 #![allow(clippy::unwrap_used)]
 
+use evenpoise::adapt::rare::tune_rare;
 use evenpoise::adapt::{Settings, Silent, Tuning, tune};
 use evenpoise::problem::{Aim, Problem};
 use evenpoise::report::page::{PageData, PageFigure, RunFacts, html, markdown};
@@ -197,4 +198,40 @@ fn a_probability_carries_its_caution() {
         assert_eq!(markdown(&data).contains(caution), says);
         tags(&html(&data));
     }
+}
+
+/// An event with two branches.
+#[test]
+fn a_probability_shows_its_design_points_and_rounds() {
+    let text = r#"
+title = "Over the crest"
+[variables]
+inflow = { distribution = "normal", mean = 0.0, sd = 1.0 }
+level = { distribution = "normal", mean = 0.0, sd = 1.0 }
+[target]
+aim = "probability"
+event = "inflow + level >= 5 or inflow - level >= 5"
+"#;
+    let problem = Problem::parse(text, "crest.toml", Path::new(".")).unwrap();
+    let tuning = tune_rare(&problem, &Settings::new(4000, 3), &mut Silent).unwrap();
+    let facts = RunFacts { report_draws: tuning.draws.points.len() as u64, evaluations: 4000, ..page().run };
+    let data = PageData::of_rare(&problem, &tuning, Vec::new(), facts);
+    let (page, text) = (html(&data), markdown(&data));
+    tags(&page);
+    let levels: Vec<&str> = text.lines().filter(|line| line.starts_with('#')).collect();
+    assert!(levels.contains(&"## Answers") && levels.contains(&"## Cautions"));
+    assert_eq!(tuning.survey.points.len(), 2, "both ways");
+    for needed in [
+        "Every design point found",
+        "first-order probability",
+        "smoothing",
+        "only ground for a decision",
+        "Plain sampling",
+    ] {
+        assert!(page.contains(needed) && text.contains(needed), "{needed}");
+    }
+    // Nothing is known of degrees of freedom or tails of single rounds here: no empty columns.
+    assert!(!page.contains("degrees of freedom</th>") && !page.contains("tail shape</th>"));
+    let value = tuning.answer.value().unwrap();
+    assert_eq!((data.answers[0].value, data.answers[0].se), (value.value, value.se));
 }

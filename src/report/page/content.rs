@@ -1,19 +1,18 @@
 //! What the page says, in order, before it has a form.
 
-use super::blocks::{Block, Span, plain};
-use super::data::{PageData, ScheduleKind};
+use super::blocks::{Block, plain};
+use super::course::{survey, tuning};
+use super::data::PageData;
 use super::method;
-use super::numbers::{UNKNOWN, column, count, measured, number, share, share_column, short};
+use super::numbers::{UNKNOWN, count, measured, number, share, short};
 use super::sources::Bibliography;
 use crate::problem::Aim;
+use crate::report::PROBABILITY_NOTE;
 use crate::weights::TailReason;
 use crate::weights::verdict::Word;
 
 /// The mark that numbers of an unfit run bear.
 pub(crate) const MARK: &str = "not to be reported";
-/// Points of the survey and variables of a point that are shown.
-const MOST_POINTS: usize = 12;
-const MOST_COORDINATES: usize = 6;
 
 /// What the word means for the reader.
 pub(crate) fn meaning(word: Word) -> &'static str {
@@ -23,11 +22,6 @@ pub(crate) fn meaning(word: Word) -> &'static str {
         Word::Unfit => "Do not report numbers from this run. They stand here so that the fault can be found.",
     }
 }
-
-/// The caution that goes with every computed probability.
-pub(crate) const PROBABILITY_CAUTION: &str = "A computed probability depends on the model and on the distributions put in. It is no substitute \
-     for the applicable code of practice or for review by a licensed professional, and it must not be the only ground for a decision that can \
-     hurt people.";
 
 /// All blocks below the title and the verdict.
 pub(crate) fn blocks(data: &PageData) -> Vec<Block> {
@@ -66,14 +60,15 @@ fn answers(data: &PageData) -> Vec<Block> {
         vec![name, value, se, interval, effective(answer.effective_draws)]
     });
     blocks.push(Block::table(
-        &format!("Answers from {} report draws{mark}", count(data.run.report_draws)),
+        &format!("Answers from {} {}{mark}", count(data.run.report_draws), drawn(data.aim)),
         &["quantity", "value#", "standard error#", "95 % interval#", "effective draws#"],
         rows.collect(),
     ));
     let mut methods: Vec<&str> = Vec::new();
     for answer in &data.answers {
-        if !methods.contains(&answer.interval_method.as_str()) {
-            methods.push(&answer.interval_method);
+        let method = answer.interval_method.as_str();
+        if !method.is_empty() && !methods.contains(&method) {
+            methods.push(method);
         }
     }
     let aim = match data.aim {
@@ -87,7 +82,16 @@ fn answers(data: &PageData) -> Vec<Block> {
         "{aim} Effective draws: how many independent draws would know the quantity as well. Intervals: {}.",
         methods.join(", ")
     )));
+    blocks.extend(data.remarks.iter().map(Block::text));
     blocks
+}
+
+/// What the draws are called that the answers rest on.
+pub(crate) fn drawn(aim: Aim) -> &'static str {
+    match aim {
+        Aim::Density => "report draws",
+        Aim::Probability | Aim::Expectation => "draws of the counted rounds",
+    }
 }
 
 fn problem(data: &PageData) -> Vec<Block> {
@@ -175,149 +179,6 @@ fn effective(draws: f64) -> String {
     if (0.0..1e15).contains(&draws) { count(draws.round() as u64) } else { short(draws) }
 }
 
-fn survey(data: &PageData) -> Vec<Block> {
-    let survey = &data.survey;
-    let mut blocks = vec![Block::Heading(2, "Survey".into()), Block::text(survey.sentences.join(" "))];
-    if !survey.points.is_empty() {
-        let rows = survey.points.iter().take(MOST_POINTS).enumerate().map(|(k, point)| {
-            let mut place: Vec<String> = data
-                .variables
-                .iter()
-                .zip(&point.location)
-                .take(MOST_COORDINATES)
-                .map(|(v, x)| format!("{} = {}", v.name, short(*x)))
-                .collect();
-            if point.location.len() > MOST_COORDINATES {
-                place.push("…".into());
-            }
-            vec![(k + 1).to_string(), place.join(", "), share(point.share), count(u64::from(point.hits))]
-        });
-        let caption = match survey.points.len() {
-            n if n > MOST_POINTS => format!("The first {MOST_POINTS} of {n} {}s found", survey.point_name),
-            _ => format!("Every {} found", survey.point_name),
-        };
-        blocks.push(Block::table(
-            &caption,
-            &[survey.point_name, "place", "share of the mass by curvature#", "searches that ended there#"],
-            rows.collect(),
-        ));
-    }
-    blocks.push(Block::Paragraph(vec![
-        Span::Strong("What could have been missed: ".into()),
-        plain(format!(
-            "one that attracts {} of the start or less may have been missed with a chance of 5 % and more (1 − 0.05^(1/searches)).",
-            share(survey.basin_share)
-        )),
-    ]));
-    blocks
-}
-
-fn tuning(data: &PageData) -> Vec<Block> {
-    let mut blocks = vec![Block::Heading(2, "Tuning".into())];
-    if data.rounds.is_empty() {
-        blocks.push(Block::text("No round was made."));
-        return blocks;
-    }
-    let estimates = data.rounds.iter().any(|r| r.estimate.is_some());
-    let mut titles = vec![
-        "round",
-        "draws#",
-        "evaluations#",
-        "components#",
-        "degrees of freedom#",
-        "ESS predicted#",
-        "ESS fresh#",
-        "weight variance#",
-        "tail shape#",
-        "largest share#",
-    ];
-    if estimates {
-        titles.extend(["estimate#", "its variation#"]);
-    }
-    let rows = data.rounds.iter().map(|r| {
-        let mut row = vec![
-            r.index.to_string(),
-            count(u64::from(r.draws)),
-            count(r.evaluations),
-            count(r.components as u64),
-            column(r.df),
-            share_column(r.predicted_ess_fraction),
-            share_column(r.ess_fraction),
-            column(r.weight_variance),
-            column(r.tail_shape),
-            share_column(r.largest_share),
-        ];
-        if estimates {
-            let [value, variation] = r.estimate.unwrap_or([f64::NAN; 2]);
-            row.extend([column(value), share_column(variation)]);
-        }
-        row
-    });
-    blocks.push(Block::text(
-        "Every round is scored on its own draws, which had no part in making the proposal they come from. ESS: effective sample size as a share of \
-         the draws. Infinite degrees of freedom are Gaussian components.",
-    ));
-    blocks.push(Block::table("Rounds", &titles, rows.collect()));
-    blocks.push(Block::text(format!("The rounds ended because {}.", data.stop)));
-    blocks.extend(winners(data));
-    if !data.finalists.is_empty() {
-        let rows = data.finalists.iter().map(|f| {
-            vec![
-                f.name.clone(),
-                share_column(f.predicted_ess_fraction),
-                share_column(f.ess_fraction),
-                if f.chosen { "chosen" } else { "not chosen" }.to_owned(),
-            ]
-        });
-        blocks.push(Block::table("Finalists", &["proposal", "ESS predicted#", "ESS fresh#", "choice"], rows.collect()));
-    }
-    blocks.push(Block::text(data.proposal.clone()));
-    blocks
-}
-
-fn winners(data: &PageData) -> Vec<Block> {
-    let fitted: Vec<_> = data.rounds.iter().filter(|r| r.tried > 0).collect();
-    if fitted.is_empty() {
-        return Vec::new();
-    }
-    let schedule = match data.schedule {
-        ScheduleKind::Exponent => "exponent#",
-        ScheduleKind::Smoothing => "smoothing#",
-    };
-    let rows = fitted.iter().map(|r| {
-        vec![
-            r.index.to_string(),
-            column(r.schedule),
-            count(r.tried as u64),
-            r.winner.clone(),
-            column(r.gain),
-            count(u64::from(r.births)),
-        ]
-    });
-    let mut blocks = vec![Block::table(
-        "Refits after the rounds, and who won",
-        &["after round", schedule, "candidates#", "winner", "gain, nats#", "births#"],
-        rows.collect(),
-    )];
-    let mut kinds: Vec<&str> = Vec::new();
-    for round in fitted {
-        if !kinds.contains(&round.winner.as_str()) {
-            kinds.push(&round.winner);
-        }
-    }
-    let explained: Vec<String> = kinds.iter().map(|kind| format!("{kind}, {}", method::refit_kind(kind))).collect();
-    let what = match data.schedule {
-        ScheduleKind::Exponent => "Exponent: the power of the target that the fit aimed at; 1 is the target itself.",
-        ScheduleKind::Smoothing => "Smoothing: the width of the smoothed event; 0 is the event itself.",
-    };
-    blocks.push(Block::text(format!(
-        "{what} Gain: weighted log density on held-out points over the present proposal's. Births: components added at heavy draws. \
-         Winners: {}.",
-        explained.join("; ")
-    )));
-    blocks
-}
-
 fn checks(data: &PageData) -> Vec<Block> {
     let mut blocks = vec![Block::Heading(2, "Checks".into())];
     if let Some(score) = &data.score {
@@ -369,7 +230,7 @@ fn figures(data: &PageData) -> Vec<Block> {
 fn cautions(data: &PageData) -> Vec<Block> {
     let mut blocks = vec![Block::Heading(2, "Cautions".into())];
     if data.aim == Aim::Probability {
-        blocks.push(Block::Caution(vec![plain(PROBABILITY_CAUTION)]));
+        blocks.push(Block::Caution(vec![plain(PROBABILITY_NOTE)]));
     }
     blocks.push(Block::List(vec![
         vec![plain(data.verdict.caution.clone())],
@@ -389,7 +250,7 @@ fn provenance(data: &PageData) -> Vec<Block> {
         row("seed", run.seed.to_string()),
         row("evaluations", format!("{}, of which {} failed", count(run.evaluations), count(run.failed))),
         row("of these, survey", count(data.survey.evaluations)),
-        row("of these, report draws", count(run.report_draws)),
+        row(&format!("of these, {}", drawn(data.aim)), count(run.report_draws)),
     ];
     rows.extend(run.digests.iter().map(|(name, digest)| row(&format!("digest of {name}"), digest.clone())));
     vec![

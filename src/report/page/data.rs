@@ -36,6 +36,8 @@ pub struct PageData {
     pub score: Option<Score>,
     /// The answers: the integral itself first, then the estimates.
     pub answers: Vec<AnswerLine>,
+    /// What else is to be said about them, a sentence each.
+    pub remarks: Vec<String>,
     /// Figures, in the order in which they are shown.
     pub figures: Vec<PageFigure>,
     /// Seed, versions, digests, evaluations.
@@ -72,6 +74,8 @@ pub struct SurveyLine {
     pub sentences: Vec<String>,
     /// What its points are called: `mode`, `design point`.
     pub point_name: &'static str,
+    /// Titles of the facts about each; those of numbers end in `#`.
+    pub fact_titles: Vec<&'static str>,
     /// The points found.
     pub points: Vec<PointLine>,
     /// Share of the start whose basin could have been missed with a chance of 5 %.
@@ -85,10 +89,8 @@ pub struct SurveyLine {
 pub struct PointLine {
     /// Where, one number a variable, natural units.
     pub location: Vec<f64>,
-    /// Share of the mass that its curvature implies, of all points found.
-    pub share: f64,
-    /// Searches that ended there.
-    pub hits: u32,
+    /// Facts about it, one for every title.
+    pub facts: Vec<String>,
 }
 
 /// What a round adapts besides the proposal.
@@ -131,8 +133,9 @@ pub struct RoundLine {
     pub tried: usize,
     /// The kind of refit that won.
     pub winner: String,
-    /// Held-out log density of the winner less that of the present proposal, nats.
-    pub gain: f64,
+    /// With [`ScheduleKind::Exponent`] the held-out log density of the winner less that of the present proposal, nats; with
+    /// [`ScheduleKind::Smoothing`] the relative variance per draw that the held-out draws predict for it.
+    pub merit: f64,
     /// Components added at heavy draws.
     pub births: u32,
 }

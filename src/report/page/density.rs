@@ -39,6 +39,7 @@ impl PageData {
             proposal: proposal(tuning),
             score: tuning.score.clone(),
             answers,
+            remarks: Vec::new(),
             figures,
             run,
         }
@@ -149,12 +150,12 @@ fn surveyed(problem: &Problem, survey: &Survey) -> SurveyLine {
     let all = log_sum_exp(&log_masses);
     let points = survey.modes.iter().map(|mode| PointLine {
         location: problem.to_natural(&Points::from_rows(mode.location.len(), &mode.location)).point(0),
-        share: exp(mode.log_mass - all),
-        hits: mode.hits,
+        facts: vec![share(exp(mode.log_mass - all)), count(u64::from(mode.hits))],
     });
     SurveyLine {
         sentences,
         point_name: "mode",
+        fact_titles: vec!["share of the mass by curvature#", "searches that ended there#"],
         points: points.collect(),
         basin_share: survey.basin_share,
         evaluations: survey.evaluations,
@@ -179,7 +180,7 @@ fn round(round: &Round) -> RoundLine {
         estimate: None,
         tried: round.candidates.len(),
         winner: round.step.to_string(),
-        gain: winner.map_or(f64::NAN, |c| c.gain),
+        merit: winner.map_or(f64::NAN, |c| c.gain),
         births: round.births,
     }
 }

@@ -165,8 +165,8 @@ fn density(b: &mut Bibliography) -> Vec<Vec<Span>> {
 
 fn rare(aim: Aim, b: &mut Bibliography) -> Vec<Vec<Span>> {
     use Source::{
-        DerKiureghianDakessian, FayFeuer, HasoferLind, Hesterberg, Kong, LiuDerKiureghian, Marin, OwenZhou,
-        PapaioannouGeyerStraub, Rosenblatt, Vehtari, ZhangStephens,
+        DerKiureghianDakessian, FayFeuer, HasoferLind, Hesterberg, Kong, LiuDerKiureghian, Marin,
+        PapaioannouGeyerStraub, Rosenblatt, SquareRootRule, Vehtari, ZhangStephens,
     };
     let event = aim == Aim::Probability;
     let mut steps = vec![
@@ -227,7 +227,7 @@ fn rare(aim: Aim, b: &mut Bibliography) -> Vec<Vec<Span>> {
              bounds", &[Hesterberg]), (".", &[])]),
         step(b, "The answer", &[(
             "Every round that was drawn after the event was first reached counts, with a weight that was fixed before it was drawn, so that the \
-             combination is unbiased", &[OwenZhou]), (
+             combination is unbiased", &[SquareRootRule]), (
             ". A value pooled over all rounds is adapted to the very points it is made from; its bias has no general bound", &[Marin]), (
             ", so where it is shown it is labelled as such and decides nothing.", &[])]),
         step(b, "Errors", &[(
@@ -252,7 +252,10 @@ pub(crate) fn refit_kind(name: &str) -> &'static str {
         "variance" => "expectation maximisation half-way towards the least weight variance",
         "merged" => "the two nearest components merged",
         "split" => "large components split",
-        "seeded" => "all components started afresh",
+        "seeded" => "components started afresh",
+        "survey" => "the first proposal, from the survey",
+        "earlier" => "the proposal of the round before",
+        "shift" => "means only, scales those of the variables' own distribution",
         "born" => "components added where the proposal lacks mass",
         _ => "a refit of its own kind",
     }

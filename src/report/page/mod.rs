@@ -9,12 +9,14 @@
 mod base64;
 mod blocks;
 mod content;
+mod course;
 mod data;
 mod density;
 mod html;
 mod markdown;
 mod method;
 mod numbers;
+mod rare;
 mod sources;
 
 pub use data::{

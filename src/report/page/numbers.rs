@@ -5,6 +5,9 @@ use crate::figures::numbers::{exponent_of, fixed, fixed_grouped, power_of_ten, s
 /// What stands where a number is not known.
 pub(crate) const UNKNOWN: &str = "not known";
 
+/// What stands in a column where there is no number.
+pub(crate) const NOTHING: &str = "–";
+
 /// A whole number with commas.
 pub(crate) fn count(n: u64) -> String {
     crate::figures::numbers::count(usize::try_from(n).unwrap_or(usize::MAX))
@@ -36,12 +39,12 @@ pub(crate) fn share(x: f64) -> String {
 
 /// A share in per cent with one decimal, for a column; a dash where there is none.
 pub(crate) fn share_column(x: f64) -> String {
-    if x.is_nan() { "–".to_owned() } else { format!("{} %", fixed(100.0 * x, 1)) }
+    if x.is_nan() { NOTHING.to_owned() } else { format!("{} %", fixed(100.0 * x, 1)) }
 }
 
 /// A number for a column; a dash where there is none.
 pub(crate) fn column(x: f64) -> String {
-    if x.is_nan() { "–".to_owned() } else { short(x) }
+    if x.is_nan() { NOTHING.to_owned() } else { short(x) }
 }
 
 /// A value, its standard error and its interval, all to the second digit of the error.

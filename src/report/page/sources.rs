@@ -23,6 +23,7 @@ pub(crate) enum Source {
     Rosenblatt,
     LiuDerKiureghian,
     Marin,
+    SquareRootRule,
 }
 
 impl Source {
@@ -78,6 +79,9 @@ impl Source {
             }
             Self::LiuDerKiureghian => {
                 "P.-L. Liu, A. Der Kiureghian, Multivariate distribution models with prescribed marginals and covariances, Probabilistic Engineering Mechanics 1 (1986) 105–112."
+            }
+            Self::SquareRootRule => {
+                "A. B. Owen, Y. Zhou, The square root rule for adaptive importance sampling, ACM Transactions on Modeling and Computer Simulation 30 (2020) article 13."
             }
             Self::Marin => {
                 "J.-M. Marin, P. Pudlo, M. Sedki, Consistency of adaptive importance sampling and recycling schemes, Bernoulli 25 (2019) 1977–1998."
