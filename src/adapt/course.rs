@@ -9,7 +9,7 @@ use super::pool::Pool;
 use super::refine::{Fit, Refined, births, has_mass, join, refine};
 use super::settings::Settings;
 use super::standard::Standard;
-use super::survey::{Found, identity, survey};
+use super::survey::{Found, Limits, identity, survey};
 use super::tuning::{Mode, Round, StopReason, Survey};
 use crate::numeric::{Purpose, exp, log_sum_exp};
 use crate::proposal::{Component, Drawn, Mixture};
@@ -42,7 +42,14 @@ const PROBED: f64 = 0.4;
 /// Surveys and makes the first proposal from what was found.
 pub(crate) fn first_proposal(target: &Standard, settings: &Settings, plan: &Plan) -> Result<(Fit, Survey), TuneError> {
     target.enter(Stage::Survey);
-    let found = survey(target, settings.seed, plan.survey_least, plan.survey_cap)?;
+    let exact = target.gradient_cost() == 1;
+    let limits = Limits {
+        least: plan.survey_least,
+        all: plan.survey_cap,
+        enough: plan.survey_enough,
+        first_mode: if exact { plan.survey_cap } else { plan.first_mode_cap },
+    };
+    let found = survey(target, settings.seed, limits)?;
     let df = settings.first_df();
     let mut probed = 0;
     let main = if found.modes.is_empty() {
@@ -76,6 +83,7 @@ fn summary(target: &Standard, found: &Found, probed: u32) -> Survey {
         starts: found.starts,
         finished: found.finished,
         runaways: found.runaways,
+        walls: found.walls,
         stuck: found.stuck,
         void: found.void,
         modes: modes.collect(),

@@ -13,6 +13,7 @@ pub(crate) struct Found {
     pub(crate) starts: u32,
     pub(crate) finished: u32,
     pub(crate) runaways: u32,
+    pub(crate) walls: u32,
     pub(crate) stuck: u32,
     pub(crate) void: u32,
 }
@@ -25,24 +26,45 @@ const MOST: u32 = 300;
 /// Climbs without any mode after which there is none.
 const HOPELESS: u32 = 6;
 
-/// Climbs until every mode repeats itself or the evaluations up to `cap` are spent; `least` evaluations are spent looking for
-/// thin basins even when nothing new turns up.
-pub(crate) fn survey(target: &Standard, seed: u64, least: u64, cap: u64) -> Result<Found, TuneError> {
+/// How far the survey may go, in evaluations.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Limits {
+    /// Spent looking for thin basins even when nothing new turns up.
+    pub(crate) least: u64,
+    /// The end, whatever was found.
+    pub(crate) all: u64,
+    /// The end as long as fewer climbs were made than are enough.
+    pub(crate) enough: u64,
+    /// The end as long as no mode was found.
+    pub(crate) first_mode: u64,
+}
+
+/// Climbs until every mode repeats itself or the limits are reached.
+pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Found, TuneError> {
     let d = target.dim();
     let mut found = Found::default();
     let identity = identity(d);
-    while found.starts < MOST && target.spent() + 2 * target.gradient_cost() < cap {
+    while found.starts < MOST {
+        let cap = match (found.modes.is_empty(), found.starts < ENOUGH) {
+            (true, _) => limits.first_mode,
+            (false, true) => limits.enough,
+            (false, false) => limits.all,
+        };
+        if target.spent() + 2 * target.gradient_cost() >= cap {
+            break;
+        }
         let failed = found.starts - found.finished;
         if found.modes.is_empty() && failed >= HOPELESS {
             break;
         }
-        if found.starts >= ENOUGH && target.spent() >= least && found.modes.iter().all(|m| m.hits > 1) {
+        if found.starts >= ENOUGH && target.spent() >= limits.least && found.modes.iter().all(|m| m.hits > 1) {
             break;
         }
         let radius = RADII[found.starts as usize % RADII.len()];
         let mut rng = stream(seed, Purpose::Survey, found.starts, 0);
         let start: Vec<f64> = (0..d).map(|_| radius * normal::draw(&mut rng)).collect();
-        let borrowed = found.modes.first().filter(|_| found.starts % 2 == 1).map(|m| m.scale.clone());
+        // Three climbs of four walk in the scale of the first mode, the fourth in the start's, for what that scale would step over.
+        let borrowed = found.modes.first().filter(|_| found.starts % 4 != 0).map(|m| m.scale.clone());
         let own_scale = borrowed.is_none();
         let metric = borrowed.unwrap_or_else(|| identity.clone());
         let steps = if found.modes.is_empty() { 40 + 6 * d as u64 } else { 60 };
@@ -71,6 +93,10 @@ pub(crate) fn survey(target: &Standard, seed: u64, least: u64, cap: u64) -> Resu
                 }
                 None => found.stuck += 1,
             },
+            End::Wall => {
+                found.walls += 1;
+                found.finished += 1;
+            }
             End::Stuck | End::Unfinished => found.stuck += 1,
             End::Away => found.runaways += 1,
             End::Void => found.void += 1,

@@ -151,6 +151,15 @@ impl Axis {
         }
     }
 
+    /// The axis with all ticks beyond `last` replaced by one at `at` that says `label`: a value out of the row.
+    #[must_use]
+    pub fn with_far_tick(mut self, last: f64, at: f64, label: &str) -> Self {
+        self.marking.ticks.retain(|tick| tick.at <= last);
+        self.marking.minor.retain(|&minor| minor <= last);
+        self.marking.ticks.push(Tick { at, label: label.to_owned() });
+        self
+    }
+
     /// Width of the widest label, points.
     #[must_use]
     pub fn label_width(&self, size: f64) -> f64 {
@@ -246,6 +255,8 @@ mod tests {
         assert_eq!(labels(&axis(0.0, 20_000.0, Scale::Linear)), ["0", "5000", "10,000", "15,000", "20,000"]);
         assert_eq!(labels(&axis(0.7, 4.3, Scale::Whole)), ["1", "2", "3", "4"]);
         assert_eq!(labels(&axis(1.0, 1e5, Scale::Log)), ["10⁰", "10¹", "10²", "10³", "10⁴", "10⁵"]);
+        assert_eq!(labels(&axis(1e-196, 1.0, Scale::Log)), ["10⁻¹⁵⁰", "10⁻¹⁰⁰", "10⁻⁵⁰", "10⁰"]);
+        assert_eq!(axis(1e-196, 1.0, Scale::Log).ticks().len(), 4, "no tick for every power");
         assert_eq!(labels(&axis(0.3, 7.0, Scale::Log)), ["0.5", "1", "2", "5"]);
         assert_eq!(labels(&axis(0.9, 1.1, Scale::Log)), ["0.90", "0.95", "1.00", "1.05", "1.10"]);
     }

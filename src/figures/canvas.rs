@@ -211,10 +211,15 @@ impl Canvas {
         if !is_finite(&centre) {
             return;
         }
+        self.keep_clear(centre, radius);
+        self.marks.push(Mark::Disc { centre, radius, colour, opacity });
+    }
+
+    /// Keeps labels clear of a circle.
+    pub fn keep_clear(&mut self, centre: Spot, radius: f64) {
         for (dx, dy) in [(-1.0, 0.0), (1.0, 0.0), (0.0, -1.0), (0.0, 1.0), (0.0, 0.0)] {
             self.busy.push((centre.0 + dx * radius, centre.1 + dy * radius));
         }
-        self.marks.push(Mark::Disc { centre, radius, colour, opacity });
     }
 
     /// Draws an open circle: a marker of paper colour with a rim.

@@ -23,6 +23,8 @@ pub const MODELLED: Colour = Colour { channels: [186, 68, 8] };
 pub const REFERENCE: Colour = Colour { channels: [96, 102, 111] };
 /// A light tone of [`MEASURED`], for areas.
 pub const MEASURED_TINT: Colour = Colour { channels: [203, 216, 236] };
+/// A middle tone of [`MEASURED`], for areas within those.
+pub const MEASURED_SHADE: Colour = Colour { channels: [142, 168, 212] };
 /// Ground of a span of the horizontal axis or of a strip.
 pub const GROUND: Colour = Colour { channels: [240, 241, 243] };
 
@@ -75,6 +77,7 @@ mod tests {
         assert!(MEASURED.contrast(MODELLED) >= 2.2);
         assert!(MEASURED.contrast(REFERENCE) >= 2.0);
         assert!(MEASURED_TINT.contrast(MODELLED) >= 2.2);
+        assert!(MEASURED_TINT.contrast(MEASURED_SHADE) >= 1.5 && MEASURED_SHADE.contrast(MEASURED) >= 3.0);
     }
 
     /// Source: the example of WCAG technique G18: #777777 on white is 4.48.

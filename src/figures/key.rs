@@ -7,6 +7,7 @@ use super::canvas::Canvas;
 use super::canvas::Pen;
 use super::colour::Colour;
 use super::colour::INK;
+use super::contestants::Look;
 use super::place::Area;
 use super::text::Face;
 use super::text::shorten;
@@ -23,6 +24,10 @@ pub enum Sample {
     Dot(f64, Colour, f64),
     /// A closed outline.
     Outline(Pen),
+    /// A line with a marker of a radius in points.
+    Marked(Look, f64),
+    /// A marker alone.
+    Marker(Look, f64),
 }
 
 /// Marks and what they stand for.
@@ -102,6 +107,11 @@ fn draw_sample(canvas: &mut Canvas, style: &Style, sample: Sample, (x, y): super
             canvas.fill_area(area, colour);
             canvas.line(vec![(area.left, area.top), (area.right, area.top)], pen);
         }
+        Sample::Marked(look, radius) => {
+            canvas.line(vec![(x, y), (x + 1.5 * unit, y)], look.pen);
+            look.shape.draw(canvas, middle, radius, look.pen.colour);
+        }
+        Sample::Marker(look, radius) => look.shape.draw(canvas, middle, radius, look.pen.colour),
         Sample::Dot(radius, colour, opacity) => canvas.disc(middle, radius, colour, opacity),
         Sample::Outline(pen) => {
             let ellipse = (0..=40).map(|i| {

@@ -10,8 +10,19 @@
 //!   ([`dependence`] finds them);
 //! * [`heavy`]: in which variables, and on which side, the heaviest draws lie.
 //!
-//! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`] with its [`ticks`], [`place`], [`canvas`] (marks and text boxes in points),
-//! [`panel`], [`key`], [`table`], [`columns`]. The page is drawn with `plotters`, by the two writers [`raster`] and [`svg`](mod@svg).
+//! Proposals compared: [`compare_tails`] (upper tails of their weights), [`compare_df`] (ESS fraction against degrees
+//! of freedom), [`compare_errors`] (running standard errors), [`compare_radial`] (tails of target and proposals), each
+//! contestant with its look of [`contestants`].
+//!
+//! Rare events: [`rare_margin`] (margin against the distance in score space), [`rare_plane`] (the event in the plane of
+//! two variables), [`rare_importance`] (the part of each variable).
+//!
+//! Production: [`course`] (an estimate with its interval and error against what was spent; for probabilities too) and
+//! [`bands`] (a column of estimates with its bands).
+//!
+//! The toolkit below them: [`colour`], [`text`], [`numbers`], [`axis`] with its [`ticks`], [`place`], [`canvas`] (marks
+//! and text boxes in points), [`panel`], [`key`], [`table`], [`columns`]. The page is drawn with `plotters`, by the two
+//! writers [`raster`] and [`svg`](mod@svg).
 //!
 //! **Sizes.** A figure is laid out anew for the width it is asked for. The text size follows the width between 8 and
 //! 16 cm, so a figure made 16 cm wide and printed 8 cm wide still has letters of 6 pt; no text is ever set below 6 pt,
@@ -20,11 +31,19 @@
 //! **Invariant:** the bytes of a drawing depend on its data and style alone.
 
 pub mod axis;
+pub mod bands;
 pub mod canvas;
 pub mod colour;
 pub mod columns;
+pub mod compare_df;
+pub mod compare_errors;
+pub mod compare_radial;
+pub mod compare_tails;
+pub mod contestants;
+pub mod course;
 pub mod dependence;
 pub mod evenness;
+mod frame;
 pub mod heavy;
 pub mod key;
 pub mod numbers;
@@ -32,6 +51,9 @@ pub mod panel;
 pub mod place;
 mod plot;
 pub mod progress;
+pub mod rare_importance;
+pub mod rare_margin;
+pub mod rare_plane;
 pub mod raster;
 pub mod svg;
 pub mod table;

@@ -247,7 +247,7 @@ mod tests {
             assert!((darkness(&raster) - area).abs() < rim / 96.0, "{} {area}", darkness(&raster));
         };
         let square = vec![(20.0, 3.3), (36.7, 20.0), (20.0, 36.7), (3.3, 20.0)];
-        check(&|raster| raster.fill(&[square.clone()], INKED), 2.0 * 16.7 * 16.7, 8.0 * 16.7);
+        check(&|raster| raster.fill(std::slice::from_ref(&square), INKED), 2.0 * 16.7 * 16.7, 8.0 * 16.7);
         let length = (15.0_f64 * 15.0 + 81.0).sqrt() + (15.0_f64 * 15.0 + 16.0).sqrt();
         let bend = [(5.0, 5.0), (20.0, 14.0), (35.0, 18.0)];
         check(&|raster| raster.stroke(bend, 3.0, INKED), 3.0 * length, 2.0 * length);

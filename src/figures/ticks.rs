@@ -29,6 +29,9 @@ pub(super) struct Marking {
     pub(super) offset: f64,
 }
 
+/// Most powers of ten in a range that all get a tick.
+const MOST_POWERS: i32 = 30;
+
 /// Ticks of the range, at most `most` of them labelled.
 pub(super) fn marking(low: f64, high: f64, scale: Scale, most: usize) -> Marking {
     match scale {
@@ -69,7 +72,7 @@ fn linear(low: f64, high: f64, most: usize, whole: bool) -> Marking {
     }
     let (values, finest) = best.unwrap_or_else(|| {
         let only = if whole { low.ceil() } else { low };
-        (vec![only.min(high)], around - 1)
+        (vec![only.min(high)], if whole { 0 } else { around - 1 })
     });
     let mut marking = labelled(&values, finest);
     let last = marking.ticks.len() - 1;
@@ -113,14 +116,18 @@ fn logarithmic(low: f64, high: f64, most: usize) -> Marking {
             .into_iter()
             .find(|stride| ((last - first) / stride) < most as i32)
             .unwrap_or(500);
-        let powers: Vec<i32> = (first..=last).collect();
+        let powers = first..=last;
         let plain = first >= -2 && last <= 3;
+        // Wide strides stand at round powers, 0, −50, −100, without small ticks between.
+        let start = if stride > 3 { 0 } else { first };
+        let is_said = |power: i32| (power - start).rem_euclid(stride) == 0;
         let say = |power: i32| match power {
-            _ if power.rem_euclid(stride) != first.rem_euclid(stride) => String::new(),
+            _ if !is_said(power) => String::new(),
             _ if plain => fixed(power_of_ten(power), (-power).max(0) as usize),
             _ => ten_to(power),
         };
-        let ticks = powers.iter().map(|&power| Tick { at: power_of_ten(power), label: say(power) }).collect();
+        let shown = powers.filter(|&power| last - first <= MOST_POWERS || is_said(power));
+        let ticks = shown.map(|power| Tick { at: power_of_ten(power), label: say(power) }).collect();
         let mut minor = Vec::new();
         if last - first <= 7 {
             let between = (first - 1..=last).flat_map(|power| (2..10).map(move |m| f64::from(m) * power_of_ten(power)));

@@ -3,6 +3,7 @@
 //! * [`DrawsTable`]: every report draw in natural units, as in `points.csv`;
 //! * [`round_rows`]: one row a round, as in `rounds.csv`;
 //! * [`Summary`], [`RareSummary`]: scores, verdict, choices and provenance, as in `summary.json`;
+//! * [`page`]: the page and its Markdown twin;
 //! * [`trial`]: a look at a problem before it is tuned;
 //! * [`RunData`]: what the figures are drawn from, out of a tuning or out of a run's files alike.
 //!
@@ -17,6 +18,8 @@ mod outline;
 mod rare_summary;
 mod rounds;
 mod summary;
+
+pub mod page;
 
 pub use draws::DrawsTable;
 pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};

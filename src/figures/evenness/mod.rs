@@ -72,7 +72,7 @@ pub struct TailFit {
 
 impl TailFit {
     /// Share of draws above `w` (in units of the mean weight) if the shape were `shape`; `w` is at least the threshold.
-    fn share(&self, w: f64, shape: f64) -> f64 {
+    pub(super) fn share(&self, w: f64, shape: f64) -> f64 {
         let excess = (w - self.threshold) / self.scale;
         if shape.abs() < 1e-9 {
             return self.share_above * crate::numeric::exp(-excess);
@@ -136,14 +136,14 @@ pub fn draw(data: &EvennessData, style: &Style) -> Drawing {
 }
 
 /// Weights over the largest, in falling order; what is not a positive number counts as zero.
-fn falling_weights(weights: &[f64]) -> Vec<f64> {
+pub(super) fn falling_weights(weights: &[f64]) -> Vec<f64> {
     let mut falling = clean(weights);
     falling.sort_by(|a, b| b.total_cmp(a));
     falling
 }
 
 /// The ranks (from 1) that are drawn, ever sparser: neighbours differ by one, or by one part in `fineness`.
-fn ranks(n: usize, fineness: usize) -> Vec<usize> {
+pub(super) fn ranks(n: usize, fineness: usize) -> Vec<usize> {
     let mut ranks = Vec::new();
     let mut rank = 1;
     while rank < n {
