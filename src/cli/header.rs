@@ -2,6 +2,7 @@
 
 use evenpoise::problem::Problem;
 use evenpoise::report::Provenance;
+use evenpoise::report::page::RunFacts;
 use evenpoise::store::JournalHeader;
 use evenpoise::store::MadeBy;
 use std::collections::BTreeMap;
@@ -36,6 +37,20 @@ pub(crate) fn provenance(problem: &Problem, seed: u64) -> Provenance {
 /// What a proposal says of its making.
 pub(crate) fn made_by(provenance: &Provenance, evaluations: u64) -> MadeBy {
     MadeBy { program: PROGRAM.to_owned(), digests: provenance.digests.clone(), seed: provenance.seed, evaluations }
+}
+
+/// What the report says of a run.
+pub(crate) fn facts_of_run(provenance: &Provenance, evaluations: u64, failed: u64, draws: usize) -> RunFacts {
+    RunFacts {
+        program: PROGRAM.to_owned(),
+        seed: provenance.seed,
+        digests: provenance.digests.clone().into_iter().collect(),
+        evaluations,
+        failed,
+        report_draws: draws as u64,
+        // The copy of the problem in the run's folder holds every setting.
+        command: "evenpoise tune problem.toml --out again.run".to_owned(),
+    }
 }
 
 /// Data files by their own names, wherever they lie; files of one name by their order.

@@ -14,6 +14,9 @@ use evenpoise::report::RoundRow;
 use evenpoise::report::RunData;
 use evenpoise::report::Summary;
 use evenpoise::report::draw_figures;
+use evenpoise::report::page::PageData;
+use evenpoise::report::page::PageFigure;
+use evenpoise::report::page::html;
 use evenpoise::report::write_rare_rounds;
 use evenpoise::report::write_rounds;
 use evenpoise::store::ProposalFile;
@@ -22,6 +25,7 @@ use evenpoise::store::ScoresEntry;
 use evenpoise::store::StoreError;
 use evenpoise::store::write_atomically;
 use evenpoise::store::write_json;
+use rayon::prelude::*;
 use std::path::Path;
 
 /// Form of a figure's file.
@@ -44,7 +48,9 @@ pub(crate) fn write(folder: &RunFolder, problem: &Problem, tuning: &Tuning, seed
     let rounds: Vec<RoundRow> = tuning.rounds.iter().map(RoundRow::from).collect();
     let draws = DrawsTable::of(problem, tuning);
     let evaluations = Evaluations { all: tuning.evaluations, survey: tuning.survey.evaluations };
-    write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
+    let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
+    let facts = header::facts_of_run(&provenance, evaluations.all, tuning.failed, draws.len());
+    write_page(folder, &PageData::of_density(problem, tuning, figures, facts))?;
     let summary = Summary::of(problem, tuning, provenance);
     write_json(&folder.join("summary.json"), &summary)?;
     Ok(summary)
@@ -59,6 +65,7 @@ pub(crate) fn write_rare(
 ) -> anyhow::Result<RareSummary> {
     let provenance = header::provenance(problem, seed);
     let made_by = header::made_by(&provenance, tuning.evaluations);
+    let facts = header::facts_of_run(&provenance, tuning.evaluations, tuning.failed, tuning.draws.log_nominal.len());
     let summary = RareSummary::of(problem, tuning, provenance);
     let mut proposal = ProposalFile::new(problem, &tuning.chosen, made_by);
     proposal.scores = Some(summary.scores(tuning));
@@ -67,7 +74,8 @@ pub(crate) fn write_rare(
     let rounds: Vec<RoundRow> = tuning.rounds.iter().map(RoundRow::from).collect();
     let draws = DrawsTable::of_rare(problem, &tuning.draws);
     let evaluations = Evaluations { all: tuning.evaluations, survey: tuning.survey.evaluations };
-    write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
+    let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
+    write_page(folder, &PageData::of_rare(problem, tuning, figures, facts))?;
     write_json(&folder.join("summary.json"), &summary)?;
     Ok(summary)
 }
@@ -79,7 +87,7 @@ fn write_common(
     draws: &DrawsTable,
     rounds: &[RoundRow],
     evaluations: Evaluations,
-) -> anyhow::Result<()> {
+) -> anyhow::Result<Vec<PageFigure>> {
     draws.write(&folder.join("points.csv"))?;
     proposal.write(&folder.join("proposal.json"))?;
     let mixture = proposal.mixture().context("the chosen proposal, as its file gives it")?;
@@ -91,18 +99,37 @@ fn write_common(
         survey_evaluations: evaluations.survey,
         evaluations: evaluations.all,
     };
-    let figures = folder.create_inside("figures")?;
-    write_figures(&figures, &draw_figures(&data, &[], &Style::default()), Form::Png)
+    let drawings = draw_figures(&data, &[], &Style::default());
+    let figures: Vec<PageFigure> = drawings.par_iter().map(PageFigure::of).collect();
+    let inside = folder.create_inside("figures")?;
+    write_tables(&inside, &drawings)?;
+    for figure in &figures {
+        write_bytes(&inside.join(format!("{}.png", figure.name)), &figure.png)?;
+    }
+    Ok(figures)
+}
+
+/// The report, as a page.
+fn write_page(folder: &RunFolder, data: &PageData) -> Result<(), StoreError> {
+    write_bytes(&folder.join("report.html"), html(data).as_bytes())
 }
 
 /// Writes figures, the numbers behind each, and their captions.
 pub(crate) fn write_figures(folder: &Path, drawings: &[Drawing], form: Form) -> anyhow::Result<()> {
+    let drawn: Vec<(String, Vec<u8>)> = match form {
+        Form::Png => drawings.par_iter().map(|d| (format!("{}.png", d.name), d.png())).collect(),
+        Form::Svg => drawings.par_iter().map(|d| (format!("{}.svg", d.name), d.svg().into_bytes())).collect(),
+    };
+    for (name, bytes) in drawn {
+        write_bytes(&folder.join(name), &bytes)?;
+    }
+    write_tables(folder, drawings)
+}
+
+/// Writes the numbers behind figures, and their captions.
+fn write_tables(folder: &Path, drawings: &[Drawing]) -> anyhow::Result<()> {
     let mut captions = String::from("# Captions\n");
     for drawing in drawings {
-        match form {
-            Form::Png => write_bytes(&folder.join(format!("{}.png", drawing.name)), &drawing.png())?,
-            Form::Svg => write_bytes(&folder.join(format!("{}.svg", drawing.name)), drawing.svg().as_bytes())?,
-        }
         write_bytes(&folder.join(format!("{}.csv", drawing.name)), drawing.table.to_csv()?.as_bytes())?;
         captions.push_str(&format!("\n## {}\n\n{}\n", drawing.name, drawing.caption));
     }

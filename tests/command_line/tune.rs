@@ -18,6 +18,7 @@ fn a_tuning_writes_its_files_and_shows_its_verdict() {
         "proposal.json",
         "points.csv",
         "summary.json",
+        "report.html",
         "figures/captions.md",
         "figures/progress.png",
         "figures/progress.csv",
