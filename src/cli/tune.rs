@@ -78,7 +78,14 @@ fn tune(args: &Args, located: &Located, problem: &Problem) -> anyhow::Result<End
             watch.screen.keep(&kept);
             Ok(Ending::Interrupted(signals.came().unwrap_or_default()))
         }
-        (Err(error), _) => Err(error.into()),
+        (Err(error), _) => {
+            // Nothing was evaluated, so nothing is kept that would stand in the way of the next try.
+            if watch.recorder.is_empty() {
+                drop(watch);
+                folder.discard()?;
+            }
+            Err(error.into())
+        }
         (Ok(_), Some(error)) => Err(error.into()),
         (Ok(Tuned::Density(tuning)), None) => {
             let summary = run_files::write(&folder, problem, &tuning, settings.seed)?;

@@ -76,6 +76,20 @@ impl RunFolder {
         Ok(Self { path: path.to_path_buf(), lock })
     }
 
+    /// Removes what the run has written, and the folder where nothing else is in it: for a run that never began.
+    ///
+    /// # Errors
+    /// [`StoreError::Io`].
+    pub fn discard(self) -> Result<(), StoreError> {
+        for name in RUN_ENTRIES.into_iter().filter(|name| is_there(&self.path.join(name))) {
+            remove(&self.path.join(name))?;
+        }
+        drop(self.lock);
+        // Fails, as it should, when the folder holds anything else.
+        let _ = fs::remove_dir(&self.path);
+        Ok(())
+    }
+
     /// Where it is.
     #[must_use]
     pub fn path(&self) -> &Path {
@@ -164,6 +178,21 @@ mod tests {
             !path.join("figures").exists() && !path.join("evaluations").exists() && !path.join("problem.toml").exists()
         );
         assert_eq!(fs::read_to_string(run.join("notes.txt")).unwrap(), "mine");
+    }
+
+    #[test]
+    fn a_run_that_never_began_leaves_nothing() {
+        let folder = tempdir().unwrap();
+        let (own, shared) = (folder.path().join("own.run"), folder.path().join("shared.run"));
+        fs::create_dir(&shared).unwrap();
+        fs::write(shared.join("notes.txt"), "mine").unwrap();
+        for path in [&own, &shared] {
+            let run = RunFolder::create(path, false).unwrap();
+            pretend_run(path);
+            run.discard().unwrap();
+        }
+        assert!(!own.exists());
+        assert_eq!(fs::read_dir(&shared).unwrap().count(), 1);
     }
 
     #[test]

@@ -133,6 +133,12 @@ impl Journal {
         self.file.sync_data().map_err(StoreError::io("sync", &self.path))
     }
 
+    /// Whether nothing was recorded.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.records == 0
+    }
+
     /// Where it is.
     #[must_use]
     pub fn path(&self) -> &Path {

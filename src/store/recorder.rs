@@ -70,6 +70,12 @@ impl Recorder {
         self.found
     }
 
+    /// Whether nothing was recorded, now or before.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.journal.is_empty()
+    }
+
     /// Whether recorded batches are still to be given back.
     #[must_use]
     pub fn replaying(&self) -> bool {

@@ -38,6 +38,38 @@ fn a_wrong_problem_is_shown_with_a_caret() {
     absent.stderr(contains("absent.toml"));
 }
 
+/// A tuning that could not begin leaves no folder behind; one that spent evaluations in vain keeps them.
+#[test]
+fn a_tuning_that_cannot_begin_leaves_nothing() {
+    let folder = folder();
+    let assert = evenpoise(folder.path()).args(["tune", "sill.toml", "--budget", "120"]).assert().code(1);
+    assert.stderr(contains("too small"));
+    assert!(!folder.path().join("sill.run").exists());
+    let nowhere = super::common::SILL.replace("[estimates]", "require = [\"slope > 1e6\"]\n[estimates]");
+    fs::write(folder.path().join("nowhere.toml"), nowhere).unwrap();
+    evenpoise(folder.path()).args(["tune", "nowhere.toml"]).assert().code(1).stderr(contains("missed the target"));
+    assert!(folder.path().join("nowhere.run/evaluations/journal").is_file());
+}
+
+/// A standard output that takes nothing is an error; one that nobody reads is not.
+#[cfg(target_os = "linux")]
+#[test]
+fn an_output_that_cannot_be_written_is_told() {
+    let folder = folder();
+    let full = fs::File::options().write(true).open("/dev/full").unwrap();
+    let program = assert_cmd::cargo::cargo_bin!("evenpoise");
+    let child = std::process::Command::new(program)
+        .args(["check", "sill.toml"])
+        .current_dir(folder.path())
+        .stdout(full)
+        .stderr(std::process::Stdio::piped())
+        .spawn()
+        .unwrap();
+    let output = child.wait_with_output().unwrap();
+    assert_eq!(output.status.code(), Some(1));
+    assert!(String::from_utf8(output.stderr).unwrap().contains("standard output: No space left"));
+}
+
 #[test]
 fn a_run_is_replaced_only_by_force() {
     let folder = folder();
