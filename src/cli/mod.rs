@@ -34,7 +34,7 @@ use std::process::ExitCode;
 /// State an integral in a problem file (a normalising constant, a posterior, an expected cost, a failure probability);
 /// `tune` finds the proposal to sample from, shows how even its weights are, and says whether the numbers may be reported.
 #[derive(Debug, Parser)]
-#[command(name = "evenpoise", version, max_term_width = 100, disable_help_subcommand = true)]
+#[command(name = "evenpoise", version, max_term_width = 80, disable_help_subcommand = true)]
 struct Cli {
     #[command(subcommand)]
     command: Command,

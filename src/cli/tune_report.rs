@@ -153,7 +153,7 @@ pub(crate) fn mark(verdict: &Verdict) -> &'static str {
 /// Where everything is, and what to do next.
 pub(crate) fn whereabouts(run: &str) -> String {
     format!(
-        "\nReport    {run}/report.html\n          beside it proposal.json, points.csv, summary.json, rounds.csv, figures/\n\
+        "\nReport    {run}/report.html\n          with proposal.json, points.csv, summary.json, rounds.csv, figures\n\
          Next      evenpoise points {run} --even 4000\n"
     )
 }
