@@ -18,7 +18,9 @@ pub(crate) enum End {
     Known(usize),
     /// It left for infinity.
     Away,
-    /// No step along an uphill direction goes up: a wall of the support, a kink, or rounding on a ridge.
+    /// No step along an uphill direction goes up, because the support ends there.
+    Wall,
+    /// No step along an uphill direction goes up: a kink, or rounding on a ridge.
     Stuck,
     /// Its steps ran out.
     Unfinished,
@@ -158,6 +160,7 @@ impl<'a, 'b> Solver<Ascent<'a, 'b>, Position> for Climb<'_> {
         self.shorten(&mut step);
         let slope = dot(&g, &step);
         let mut t = 1.0;
+        let mut outside = false;
         for _ in 0..BACKTRACKS {
             let trial: Vec<f64> = x.iter().zip(&step).map(|(a, s)| a + t * s).collect();
             let Some((l_new, g_new)) = problem.problem("evaluations", |p| p.at(&trial))? else {
@@ -170,10 +173,15 @@ impl<'a, 'b> Solver<Ascent<'a, 'b>, Position> for Climb<'_> {
                 self.look(&trial, l, l_new, state.get_iter());
                 return Ok((state.param(trial).gradient(g_new).cost(-l_new), None));
             }
+            outside |= l_new == f64::NEG_INFINITY;
             t *= BACKTRACK;
         }
-        // Nothing along the step rises: the top to within rounding, or a wall.
-        self.end = Some(if rise < 1e-2 { End::Top(x.clone(), self.metric.clone()) } else { End::Stuck });
+        // Nothing along the step rises: the top to within rounding, a wall, or a kink.
+        self.end = Some(match (rise < 1e-2, outside) {
+            (true, _) => End::Top(x.clone(), self.metric.clone()),
+            (false, true) => End::Wall,
+            (false, false) => End::Stuck,
+        });
         Ok((state.param(x).gradient(g).cost(-l), None))
     }
 

@@ -46,6 +46,7 @@ pub(crate) fn first_proposal(target: &Standard, settings: &Settings, plan: &Plan
     let limits = Limits {
         least: plan.survey_least,
         all: plan.survey_cap,
+        enough: plan.survey_enough,
         first_mode: if exact { plan.survey_cap } else { plan.first_mode_cap },
     };
     let found = survey(target, settings.seed, limits)?;
@@ -82,6 +83,7 @@ fn summary(target: &Standard, found: &Found, probed: u32) -> Survey {
         starts: found.starts,
         finished: found.finished,
         runaways: found.runaways,
+        walls: found.walls,
         stuck: found.stuck,
         void: found.void,
         modes: modes.collect(),

@@ -4,6 +4,7 @@ use super::course::Course;
 use super::standard::Standard;
 use super::tuning::{Finalist, ReportDraws, Round, Survey};
 use crate::numeric::exp;
+use crate::problem::{Coordinate, Problem, Variable};
 use crate::proposal::Mixture;
 use crate::weights::verdict::{self, Check, DensityEvidence, RoundFacts, SurveyFacts, Verdict, Word};
 use crate::weights::{Estimate, LogWeights, Score, Strata, ratio_estimate};
@@ -20,6 +21,8 @@ pub(crate) struct Evidence<'a> {
     pub(crate) estimate_values: &'a [Vec<f64>],
     pub(crate) late_modes: &'a [f64],
     pub(crate) failed_share: f64,
+    /// Whether light tails meet a half-line or an interval without a heavy-tailed layer behind them.
+    pub(crate) unguarded_tails: bool,
 }
 
 /// Self-normalised estimates from the report draws; none where no draw met the target.
@@ -29,6 +32,13 @@ pub(crate) fn estimates(names: Vec<String>, values: &[Vec<f64>], report: &Report
     };
     let strata = Strata::for_draws(&report.labels, weights.len());
     names.into_iter().zip(values).map(|(name, column)| (name, ratio_estimate(&weights, column, &strata))).collect()
+}
+
+/// Whether a proposal of Gaussian components alone stands for variables in log or logit coordinates: a density that is finite at
+/// the end of its support has an exponential tail there, and a Gaussian falls faster.
+pub(crate) fn unguarded_tails(problem: &Problem, chosen: &Mixture) -> bool {
+    let ended = |v: &Variable| matches!(v.coordinate, Coordinate::Log { .. } | Coordinate::Logit { .. });
+    problem.variables().iter().any(ended) && chosen.components().iter().all(|c| c.df() == f64::INFINITY)
 }
 
 /// Judges the report draws.
@@ -65,10 +75,11 @@ pub(crate) fn judge(evidence: &Evidence) -> Verdict {
         survey: SurveyFacts {
             climbs_finished: evidence.survey.finished as usize,
             modes: evidence.survey.modes.len(),
-            interior_maximum: !evidence.survey.modes.is_empty(),
+            walls: evidence.survey.walls as usize,
             modes_hit_once: evidence.survey.modes.iter().filter(|m| m.hits == 1).count(),
         },
         rounds: &rounds,
+        unguarded_tails: evidence.unguarded_tails,
     })
 }
 

@@ -143,6 +143,7 @@ pub fn tune(problem: &Problem, settings: &Settings, observer: &mut dyn Observer)
         estimate_values: &estimate_values,
         late_modes: &late_modes,
         failed_share: failed as f64 / evaluations.max(1) as f64,
+        unguarded_tails: judgement::unguarded_tails(problem, &chosen),
     };
     let verdict = judgement::judge(&evidence);
     Ok(Tuning {

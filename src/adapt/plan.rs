@@ -12,6 +12,8 @@ pub(crate) struct Plan {
     pub(crate) survey_cap: u64,
     /// The survey looks for thin basins up to this count even when nothing new turns up.
     pub(crate) survey_least: u64,
+    /// It may go on up to this count as long as it made fewer climbs than it takes to speak of other modes.
+    pub(crate) survey_enough: u64,
     /// As long as no mode was found and every gradient costs differences, it may go on up to this count: a fit without a mode to
     /// begin with is worth less than the draws saved.
     pub(crate) first_mode_cap: u64,
@@ -35,6 +37,7 @@ pub(crate) struct Plan {
 /// mode of the trial problems; the others are what the loop needs on them (`docs/experiments.md`).
 const SURVEY: f64 = 0.15;
 const SURVEY_LEAST: f64 = 0.06;
+const SURVEY_ENOUGH: f64 = 0.22;
 const FIRST_MODE_BY_DIFFERENCES: f64 = 0.4;
 const PROBE: f64 = 0.04;
 const BIRTHS: f64 = 0.15;
@@ -56,6 +59,7 @@ impl Plan {
             budget,
             survey_cap: of(SURVEY),
             survey_least: of(SURVEY_LEAST),
+            survey_enough: of(SURVEY_ENOUGH),
             first_mode_cap: of(FIRST_MODE_BY_DIFFERENCES),
             probe: of(PROBE),
             births: of(BIRTHS),

@@ -13,6 +13,7 @@ pub(crate) struct Found {
     pub(crate) starts: u32,
     pub(crate) finished: u32,
     pub(crate) runaways: u32,
+    pub(crate) walls: u32,
     pub(crate) stuck: u32,
     pub(crate) void: u32,
 }
@@ -32,6 +33,8 @@ pub(crate) struct Limits {
     pub(crate) least: u64,
     /// The end, whatever was found.
     pub(crate) all: u64,
+    /// The end as long as fewer climbs were made than are enough.
+    pub(crate) enough: u64,
     /// The end as long as no mode was found.
     pub(crate) first_mode: u64,
 }
@@ -42,7 +45,11 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
     let mut found = Found::default();
     let identity = identity(d);
     while found.starts < MOST {
-        let cap = if found.modes.is_empty() { limits.first_mode } else { limits.all };
+        let cap = match (found.modes.is_empty(), found.starts < ENOUGH) {
+            (true, _) => limits.first_mode,
+            (false, true) => limits.enough,
+            (false, false) => limits.all,
+        };
         if target.spent() + 2 * target.gradient_cost() >= cap {
             break;
         }
@@ -56,7 +63,8 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
         let radius = RADII[found.starts as usize % RADII.len()];
         let mut rng = stream(seed, Purpose::Survey, found.starts, 0);
         let start: Vec<f64> = (0..d).map(|_| radius * normal::draw(&mut rng)).collect();
-        let borrowed = found.modes.first().filter(|_| found.starts % 2 == 1).map(|m| m.scale.clone());
+        // Three climbs of four walk in the scale of the first mode, the fourth in the start's, for what that scale would step over.
+        let borrowed = found.modes.first().filter(|_| found.starts % 4 != 0).map(|m| m.scale.clone());
         let own_scale = borrowed.is_none();
         let metric = borrowed.unwrap_or_else(|| identity.clone());
         let steps = if found.modes.is_empty() { 40 + 6 * d as u64 } else { 60 };
@@ -85,6 +93,10 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
                 }
                 None => found.stuck += 1,
             },
+            End::Wall => {
+                found.walls += 1;
+                found.finished += 1;
+            }
             End::Stuck | End::Unfinished => found.stuck += 1,
             End::Away => found.runaways += 1,
             End::Void => found.void += 1,

@@ -29,7 +29,9 @@ pub struct Survey {
     pub finished: u32,
     /// Climbs that ran away from the start without end.
     pub runaways: u32,
-    /// Climbs that got stuck, at a wall or on a ridge, or ran out of steps.
+    /// Climbs that ended at a wall, where the support ends.
+    pub walls: u32,
+    /// Climbs that got stuck on a ridge or a kink, or ran out of steps.
     pub stuck: u32,
     /// Climbs whose start had no density or whose target failed.
     pub void: u32,

@@ -21,7 +21,7 @@ pub(crate) fn facts(problem: &Problem) -> JournalHeader {
             .filter(|(key, _)| *key != "threads")
             .map(|(key, value)| (format!("the setting {key}"), value)),
     );
-    facts.insert("the problem".to_owned(), problem.digest());
+    facts.insert("the statement of the problem".to_owned(), problem.digest());
     facts.insert("the program".to_owned(), PROGRAM.to_owned());
     JournalHeader { facts }
 }

@@ -67,7 +67,7 @@ pub(crate) fn cut(text: &str, width: usize) -> String {
     format!("{kept}…")
 }
 
-/// A share as a bar of `width` characters, in eighths.
+/// A share as a bar of `width` characters, in eighths, on a light ground.
 pub(crate) fn bar(share: f64, width: usize) -> String {
     const EIGHTHS: [char; 8] = [' ', '▏', '▎', '▍', '▌', '▋', '▊', '▉'];
     let filled = if share.is_finite() { (share.clamp(0.0, 1.0) * 8.0 * width as f64).round() as usize } else { 0 };
@@ -75,7 +75,7 @@ pub(crate) fn bar(share: f64, width: usize) -> String {
     if filled % 8 > 0 {
         bar.push(EIGHTHS[filled % 8]);
     }
-    format!("{bar:<width$}")
+    format!("{bar:░<width$}")
 }
 
 #[cfg(test)]
@@ -98,7 +98,7 @@ mod tests {
     #[test]
     fn bars_have_one_width() {
         for (share, want) in
-            [(0.0, "    "), (1.0, "████"), (0.5, "██  "), (0.53, "██▏ "), (f64::NAN, "    "), (7.0, "████")]
+            [(0.0, "░░░░"), (1.0, "████"), (0.5, "██░░"), (0.53, "██▏░"), (f64::NAN, "░░░░"), (7.0, "████")]
         {
             assert_eq!(bar(share, 4), want);
         }

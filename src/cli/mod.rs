@@ -3,6 +3,8 @@
 //! Results go to standard output, everything else to standard error. No arithmetic lives here: commands read, call the
 //! library, and write.
 
+mod check;
+mod check_report;
 mod ending;
 mod figures;
 mod header;
@@ -10,10 +12,12 @@ mod layout;
 mod numbers;
 mod options;
 mod output;
+mod points;
 mod problem_file;
 mod rare_report;
 mod round_lines;
 mod run_files;
+mod schema;
 mod screen;
 mod signals;
 mod tune;
@@ -39,7 +43,10 @@ struct Cli {
 #[derive(Debug, Subcommand)]
 enum Command {
     Tune(Box<tune::Args>),
+    Check(check::Args),
+    Points(points::Args),
     Figures(figures::Args),
+    Schema(schema::Args),
 }
 
 /// Parses, dispatches, tells the error if there was one, and gives the exit status.
@@ -50,7 +57,10 @@ pub(crate) fn main() -> ExitCode {
     };
     let ended = match &parsed.command {
         Command::Tune(args) => tune::run(args),
+        Command::Check(args) => check::run(args),
+        Command::Points(args) => points::run(args),
         Command::Figures(args) => figures::run(args),
+        Command::Schema(args) => schema::run(args),
     };
     ending::status(ended.unwrap_or_else(Ending::from))
 }

@@ -32,6 +32,21 @@ pub(crate) fn significant(x: f64, digits: i32) -> String {
     }
 }
 
+/// `x` with at most `digits` significant digits and no zeros that say nothing.
+pub(crate) fn trimmed(x: f64, digits: i32) -> String {
+    let text = significant(x, digits);
+    if !text.contains('.') || text.contains('e') {
+        return text;
+    }
+    text.trim_end_matches('0').trim_end_matches('.').to_owned()
+}
+
+/// A rough number: two digits, and zeros.
+pub(crate) fn rough(x: f64) -> String {
+    let rounded = format!("{x:.1e}").parse().unwrap_or(x);
+    trimmed(rounded, 2)
+}
+
 /// `x` with that many decimals (fewer than zero: none), commas in its whole part.
 fn fixed(x: f64, decimals: i32) -> String {
     let text = format!("{x:.*}", decimals.clamp(0, MOST_DECIMALS) as usize);

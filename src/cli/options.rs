@@ -114,7 +114,7 @@ fn setting<T>(read: fn(&str) -> Result<T, String>) -> impl Fn(&str) -> Result<Se
 
 /// A whole number, also as `2e4`.
 pub(crate) fn count(text: &str) -> Result<u64, String> {
-    let whole = |x: f64| x >= 0.0 && x <= 9_007_199_254_740_992.0 && x.floor() == x;
+    let whole = |x: f64| (0.0..=9_007_199_254_740_992.0).contains(&x) && x.floor() == x;
     let rounded = || f64::from_str(text).ok().filter(|&x| whole(x)).map(|x| x as u64);
     text.parse().ok().or_else(rounded).ok_or_else(|| "expected a whole number, as 20000 or 2e4".to_owned())
 }

@@ -2,6 +2,7 @@
 
 use super::Drawing;
 use super::Style;
+use super::TEXT_PART;
 use super::axis::Along;
 use super::axis::Axis;
 use super::axis::Room;
@@ -49,15 +50,17 @@ pub(super) struct Frame<'a> {
 }
 
 impl<'a> Frame<'a> {
-    /// The panels `rows`, each with its height in text sizes, under the key of `entries`.
+    /// The panels `rows`, each with its height in text sizes, under the key of `entries`; on pages whose text has
+    /// stopped growing with their width, heights go on growing.
     pub(super) fn new(x: &Side, rows: &[(Side, f64)], entries: &[(Sample, String)], style: &'a Style) -> Self {
         let (unit, page) = (style.unit(), style.width() - 2.0 * MARGIN * style.unit());
         let key = Key::new(entries, page, style);
         let head = 2.2 * unit;
+        let grown = (style.width() * TEXT_PART / unit).max(1.0);
         let axis = |side: &Side, room: Room| Axis::new(side.range.0, side.range.1, side.range.2, room);
         let column = |height: f64| Room {
             along: Along::Column,
-            length: height * unit,
+            length: height * grown * unit,
             size: unit,
             most: (height / 2.2).clamp(3.0, 8.0) as usize,
         };
@@ -73,7 +76,7 @@ impl<'a> Frame<'a> {
         let (mut panels, mut titles) = (Vec::new(), Vec::new());
         let letter = if rows.len() > 1 { text::width("m", unit, Face::Bold) + 0.5 * unit } else { 0.0 };
         for ((side, height), y) in rows.iter().zip(ys) {
-            let area = Area { left, top: at + head, right, bottom: at + head + height * unit };
+            let area = Area { left, top: at + head, right, bottom: at + head + height * grown * unit };
             titles.push(title_lines(&y, side.name, side.unit, page - letter, unit, 1).concat());
             panels.push(Panel { area, x: x_axis.clone(), y });
             at = area.bottom + 0.9 * unit;

@@ -1,6 +1,7 @@
 //! Importance of the variables for an event: the squared direction cosines of its most likely point.
 
 use super::Drawing;
+use super::LINE;
 use super::Style;
 use super::axis::Along;
 use super::axis::Axis;
@@ -21,12 +22,14 @@ use super::panel::bottom_room;
 use super::place::Area;
 use super::table::Table;
 use super::text::Face;
-use super::text::shorten;
 use super::text::width;
+use super::text::wrap;
 
 /// Most bars.
 const BARS: usize = 25;
-/// Distance of bars, in text sizes.
+/// Up to as many variables, names may take two lines.
+const TWO_LINES: usize = 15;
+/// Distance of bars with names of one line, in text sizes.
 const ROW: f64 = 1.6;
 /// Space at the edges of the page, in text sizes.
 const MARGIN: f64 = 0.3;
@@ -50,9 +53,9 @@ pub struct Importance {
     pub cosine: f64,
 }
 
-/// A bar: its name, signed square, whether it stands for several variables.
+/// A bar: the lines of its name, its signed square, whether it stands for several variables.
 struct Bar {
-    name: String,
+    name: Vec<String>,
     signed: f64,
     others: bool,
 }
@@ -70,7 +73,7 @@ struct Bar {
 /// ```
 #[must_use]
 pub fn draw(data: &ImportanceData, style: &Style) -> Drawing {
-    let bars = bars(data);
+    let bars = bars(data, style);
     let (unit, margin) = (style.unit(), MARGIN * style.unit());
     let entries = [
         (Sample::Field(MEASURED, Pen::solid(MEASURED, style.hairline())), "larger values lead to the event".to_owned()),
@@ -78,12 +81,13 @@ pub fn draw(data: &ImportanceData, style: &Style) -> Drawing {
     ];
     let key = Key::new(&entries, style.width() - 2.0 * margin, style);
     let top = key.height(style) + 0.9 * unit;
-    let bottom = top + ROW * unit * bars.len().max(2) as f64;
+    let row = if bars.iter().any(|bar| bar.name.len() > 1) { 2.0 * LINE + 0.4 } else { ROW } * unit;
+    let bottom = top + row * bars.len().max(2) as f64;
     let mut canvas = Canvas::new(style.width(), bottom + bottom_room(style) + 1.9 * unit);
     key.draw(&mut canvas, style, (margin, 0.2 * unit));
     let panel = panel(&bars, (top, bottom), style);
     for (i, bar) in bars.iter().enumerate() {
-        draw_bar(&mut canvas, &panel, bar, top + ROW * unit * (i as f64 + 0.5), style);
+        draw_bar(&mut canvas, &panel, bar, top + row * (i as f64 + 0.5), style);
     }
     let middle = f64::midpoint(panel.area.left, panel.area.right);
     if bars.is_empty() {
@@ -104,7 +108,8 @@ pub fn draw(data: &ImportanceData, style: &Style) -> Drawing {
 /// The panel of the bars: names stand to its left, numbers beyond the ends of bars on either side.
 fn panel(bars: &[Bar], (top, bottom): (f64, f64), style: &Style) -> Panel {
     let unit = style.unit();
-    let names = bars.iter().map(|bar| width(&short_name(bar, style), unit, Face::Regular)).fold(0.0, f64::max);
+    let names = bars.iter().flat_map(|bar| &bar.name);
+    let names = names.map(|line| width(line, unit, Face::Regular)).fold(0.0, f64::max);
     let number = width("0.000", unit, Face::Regular) + 0.6 * unit;
     let ends = bars.iter().fold((0.0_f64, 0.0_f64), |(low, high), bar| (low.min(bar.signed), high.max(bar.signed)));
     let (low, high) = if ends.1 - ends.0 > 0.0 { ends } else { (0.0, 1.0) };
@@ -113,10 +118,6 @@ fn panel(bars: &[Bar], (top, bottom): (f64, f64), style: &Style) -> Panel {
     let room = Room { along: Along::Page, length: right - left, size: unit, most: 7 };
     let axis = Axis::new(low, high, Scale::Linear, room);
     Panel { area: Area { left, top, right, bottom }, x: axis.clone(), y: axis }
-}
-
-fn short_name(bar: &Bar, style: &Style) -> String {
-    shorten(&bar.name, NAMES * style.width(), style.unit(), Face::Regular)
 }
 
 fn draw_bar(canvas: &mut Canvas, panel: &Panel, bar: &Bar, middle: f64, style: &Style) {
@@ -136,7 +137,10 @@ fn draw_bar(canvas: &mut Canvas, panel: &Panel, bar: &Bar, middle: f64, style: &
         if bar.signed < 0.0 { (end - 0.3 * unit, Anchor::End) } else { (end + 0.3 * unit, Anchor::Start) };
     canvas.write(&number, (x, baseline), anchor, style.plain(colour));
     let ink = if bar.others { REFERENCE } else { INK };
-    canvas.write(&short_name(bar, style), (MARGIN * unit, baseline), Anchor::Start, style.plain(ink));
+    for (i, line) in bar.name.iter().enumerate() {
+        let baseline = baseline + LINE * unit * (i as f64 - (bar.name.len() - 1) as f64 / 2.0);
+        canvas.write(line, (MARGIN * unit, baseline), Anchor::Start, style.plain(ink));
+    }
 }
 
 /// All variables with a finite cosine, the most important one first.
@@ -146,15 +150,17 @@ fn sorted(data: &ImportanceData) -> Vec<&Importance> {
     sorted
 }
 
-fn bars(data: &ImportanceData) -> Vec<Bar> {
+fn bars(data: &ImportanceData, style: &Style) -> Vec<Bar> {
     let sorted = sorted(data);
+    let lines = if sorted.len() <= TWO_LINES { 2 } else { 1 };
+    let name = |name: &str| wrap(name, NAMES * style.width(), style.unit(), Face::Regular, lines);
     let shown = if sorted.len() > BARS { BARS - 1 } else { sorted.len() };
-    let bar = |v: &&Importance| Bar { name: v.name.clone(), signed: v.cosine * v.cosine.abs(), others: false };
+    let bar = |v: &&Importance| Bar { name: name(&v.name), signed: v.cosine * v.cosine.abs(), others: false };
     let mut bars: Vec<Bar> = sorted[..shown].iter().map(bar).collect();
     if sorted.len() > shown {
         let rest = &sorted[shown..];
         let signed = rest.iter().map(|v| v.cosine * v.cosine).sum();
-        bars.push(Bar { name: format!("{} others", rest.len()), signed, others: true });
+        bars.push(Bar { name: name(&format!("{} others", rest.len())), signed, others: true });
     }
     bars
 }
@@ -225,8 +231,11 @@ mod tests {
     #[test]
     fn bars_add_up_to_one() {
         let cosines: Vec<f64> = (0..60).map(|i| f64::from(i) - 20.0).collect();
-        let bars = bars(&data(&cosines, |i| format!("v{i}")));
-        assert_eq!((bars.len(), bars[0].name.as_str(), bars[24].name.as_str()), (BARS, "v59", "36 others"));
+        let bars = bars(&data(&cosines, |i| format!("v{i}")), &Style::default());
+        assert_eq!(
+            (bars.len(), &bars[0].name[..], &bars[24].name[..]),
+            (BARS, &["v59".to_owned()][..], &["36 others".to_owned()][..])
+        );
         assert!((bars.iter().map(|bar| bar.signed.abs()).sum::<f64>() - 1.0).abs() < 1e-12);
         assert!(bars.iter().any(|bar| bar.signed < 0.0));
     }

@@ -7,6 +7,7 @@ use super::axis::padded_range;
 use super::canvas::Pen;
 use super::colour::MEASURED;
 use super::colour::MODELLED;
+use super::colour::PAPER;
 use super::colour::REFERENCE;
 use super::frame::Frame;
 use super::frame::Side;
@@ -103,7 +104,7 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     let (xs, ys) = (range(|p| p.0), range(|p| p.1));
     let dot = DOT * unit;
     let nominal = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.4 * unit, 0.3 * unit);
-    let component = Pen::solid(MODELLED, 0.09 * unit);
+    let component = Pen::solid(MODELLED, 0.12 * unit);
     let mut entries = vec![
         (Sample::Dot(1.3 * dot, MEASURED, 0.8), "in the event".to_owned()),
         (Sample::Dot(1.3 * dot, REFERENCE, 0.6), "outside".to_owned()),
@@ -127,6 +128,8 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         frame.curve(0, line.points(), nominal);
     }
     for line in &data.components {
+        // A rim of paper keeps the line apart from the dots.
+        frame.curve(0, line.points(), Pen::solid(PAPER, 0.3 * unit).faint(0.7));
         frame.curve(0, line.points(), component);
     }
     for &(x, y) in data.design_points.iter().filter(|p| p.0.is_finite() && p.1.is_finite()) {

@@ -124,6 +124,13 @@ impl Problem {
         }
     }
 
+    /// What the variables' own distributions contribute to the log density at `points` in coordinates, Jacobians
+    /// included; flat ranges contribute their Jacobians alone.
+    #[must_use]
+    pub fn log_prior(&self, points: &Points) -> Vec<f64> {
+        self.space.log_base(points, &self.space.to_natural(points))
+    }
+
     /// Values of the estimates at `points` in coordinates: one column of `points.len()` numbers for each of
     /// [`Problem::estimate_names`]. NaN where an estimate is undefined.
     #[must_use]

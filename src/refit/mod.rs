@@ -1,7 +1,7 @@
 //! Fits of a mixture to weighted points: what the next proposal could be.
 //!
 //! Cross-entropy (Kullback-Leibler) fits by weighted EM ([`em`]), moment matching ([`moments_fit`]), new components seeded,
-//! split, merged or born where the proposal lacks mass ([`births`]), and shares set by convex minimisation of the
+//! split, merged or born where the proposal lacks mass ([`seed`], [`split()`], [`merge_nearest`], [`residual`]), and shares set by convex minimisation of the
 //! predicted weight variance ([`minimise_variance`]). [`candidates`] makes the list that a round ranks.
 
 mod births;

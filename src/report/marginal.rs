@@ -98,9 +98,10 @@ impl Line {
     /// Location `a'm` and scale `|L'a|` of `a'z`, with the same degrees of freedom: exact for both families.
     pub(super) fn of(component: &Component, direction: &Direction) -> Self {
         let d = component.dim();
+        let factor = component.factor();
         let location = component.location().iter().zip(direction).map(|(m, a)| m * a).sum();
         let squares = (0..d).map(|k| {
-            let entry: f64 = (k..d).map(|i| component.factor()[i * d + k] * direction[i]).sum();
+            let entry: f64 = (k..d).map(|i| factor[i * d + k] * direction[i]).sum();
             entry * entry
         });
         Self { location, scale: squares.sum::<f64>().sqrt(), df: component.df() }

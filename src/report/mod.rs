@@ -4,9 +4,12 @@
 //! * [`round_rows`]: one row a round, as in `rounds.csv`;
 //! * [`Summary`], [`RareSummary`]: scores, verdict, choices and provenance, as in `summary.json`;
 //! * [`page`]: the page and its Markdown twin;
+//! * [`trial`]: a look at a problem before it is tuned;
 //! * [`RunData`]: what the figures are drawn from, out of a tuning or out of a run's files alike.
 //!
 //! **Invariant:** no clock is read here, and nothing depends on the number of threads.
+
+pub mod trial;
 
 mod draws;
 mod figure_data;

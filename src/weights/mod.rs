@@ -10,6 +10,7 @@
 mod estimate;
 mod interval;
 mod log_weights;
+mod resample;
 mod rounds;
 mod score;
 mod stratified;
@@ -20,6 +21,7 @@ pub mod verdict;
 pub use estimate::{Answer, Estimate, plain_mean, ratio_estimate};
 pub use interval::{gamma_interval, log_interval, no_hit_bound, normal_interval, probability_interval};
 pub use log_weights::{LogWeights, WeightError};
+pub use resample::resample;
 pub use rounds::{CombinedRounds, RoundMean, combine_rounds};
 pub use score::{Score, score};
 pub use stratified::{Strata, StratifiedMean};

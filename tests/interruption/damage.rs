@@ -1,6 +1,6 @@
 //! Journals that were cut or damaged, and disks that refuse.
 
-use super::common::{Case, parts, said};
+use super::common::{Case, FLOOD, parts, said};
 use std::fs;
 use std::process::Command;
 
@@ -16,6 +16,22 @@ fn a_journal_that_was_cut_is_gone_on_with() {
         fs::write(&journal, &bytes[..at]).unwrap();
         let output = case.run(&["tune", &run, "--resume"]);
         assert!(output.status.success() && said(&output).contains("dropped"), "{}", said(&output));
+        case.assert_whole(&run);
+    }
+}
+
+/// Margins and hits are in the journal too.
+#[test]
+fn a_probability_is_gone_on_with() {
+    let case = Case::of(FLOOD);
+    for (k, part) in parts(4).enumerate() {
+        let run = format!("flood-{k}.run");
+        let journal = case.journal_alone(&run);
+        let bytes = fs::read(&journal).unwrap();
+        let at = 2000 + (part * (bytes.len() - 2000) as f64) as usize;
+        fs::write(&journal, &bytes[..at]).unwrap();
+        let output = case.run(&["tune", &run, "--resume"]);
+        assert!(output.status.success(), "{}", said(&output));
         case.assert_whole(&run);
     }
 }

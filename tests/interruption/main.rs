@@ -1,5 +1,7 @@
 //! Runs that are killed, stopped, starved or damaged: what was paid for is kept, and the end is the same to the last byte.
 
+#![allow(clippy::unwrap_used, reason = "a test that cannot go on has failed")]
+
 mod common;
 mod damage;
 mod kills;

@@ -22,8 +22,8 @@ pub struct SurveyFacts {
     pub climbs_finished: usize,
     /// Modes found.
     pub modes: usize,
-    /// Whether any climb ended at a maximum inside the support.
-    pub interior_maximum: bool,
+    /// Climbs that ended where the support ends.
+    pub walls: usize,
     /// Modes that a single climb ended at.
     pub modes_hit_once: usize,
 }
@@ -93,15 +93,35 @@ pub(super) fn wandering(score: &Score, rounds: &[RoundFacts]) -> Check {
 
 /// Whether the target has a top at all: weights cannot show what lies in the neck of a funnel.
 pub(super) fn interior_maximum(survey: &SurveyFacts) -> Check {
-    let word = passes(survey.interior_maximum && survey.modes > 0, Word::Strained);
+    let word = passes(survey.modes > 0 || survey.walls > 0, Word::Strained);
     let detail = match word {
+        Word::Sound if survey.modes == 0 => "The survey ended at the walls of the support: the target is highest there.".to_owned(),
         Word::Sound => format!("The survey found {} inside the support.", modes(survey.modes)),
         _ => "Every climb of the survey ran away: the target may be unbounded or narrow like a funnel, and weights cannot show what \
               lies in its neck; state the problem in other coordinates, for one a scale times standard scores."
             .to_owned(),
     };
     let limit = "at least 1".to_owned();
-    Check { name: "interior maximum", value: survey.modes as f64, limit, word, detail }
+    Check { name: "a maximum", value: (survey.modes + survey.walls) as f64, limit, word, detail }
+}
+
+/// Whether Gaussian tails alone stand against the exponential tails that ends of supports make in log and logit coordinates.
+pub(super) fn guarded_tails(unguarded: bool) -> Check {
+    let word = passes(!unguarded, Word::Strained);
+    let detail = match word {
+        Word::Sound => "The proposal has heavy-tailed components or no variable whose support ends.".to_owned(),
+        _ => "All components are Gaussian, and a variable's support ends: a density that is finite at that end has an exponential tail in \
+              the proposal's coordinates, so the weights have no bound and may have no variance, whatever these draws show; \
+              allow Student-t components or keep a defensive share."
+            .to_owned(),
+    };
+    Check {
+        name: "tails at the ends of supports",
+        value: f64::from(u8::from(unguarded)),
+        limit: "0".to_owned(),
+        word,
+        detail,
+    }
 }
 
 /// Whether the survey looked often enough for separate modes.
@@ -183,12 +203,8 @@ mod tests {
 
     #[test]
     fn few_climbs_make_no_case_against_a_mode_hit_once() {
-        let facts = |climbs_finished, modes_hit_once| SurveyFacts {
-            climbs_finished,
-            modes: 2,
-            interior_maximum: true,
-            modes_hit_once,
-        };
+        let facts =
+            |climbs_finished, modes_hit_once| SurveyFacts { climbs_finished, modes: 2, walls: 0, modes_hit_once };
         assert_eq!(hit_once(&facts(10, 1)).word, Word::Sound);
         assert_eq!(hit_once(&facts(11, 2)).word, Word::Strained);
         assert_eq!(enough_climbs(&facts(60, 0)).word, Word::Sound);

@@ -31,6 +31,8 @@ pub struct DensityEvidence<'a> {
     pub survey: SurveyFacts,
     /// The later half of the rounds, in order; the report draws are added to them here.
     pub rounds: &'a [RoundFacts],
+    /// Whether Gaussian components alone stand for variables whose support ends.
+    pub unguarded_tails: bool,
 }
 
 /// Judges a density run.
@@ -56,6 +58,7 @@ pub fn judge(evidence: &DensityEvidence<'_>) -> Verdict {
         course::rounds_agree(score, evidence.rounds),
         course::wandering(score, evidence.rounds),
         course::interior_maximum(&evidence.survey),
+        course::guarded_tails(evidence.unguarded_tails),
         course::enough_climbs(&evidence.survey),
         course::hit_once(&evidence.survey),
     ]);
@@ -171,6 +174,7 @@ mod tests {
         failed: f64,
         survey: SurveyFacts,
         rounds: Vec<RoundFacts>,
+        unguarded: bool,
     }
 
     fn healthy() -> Run {
@@ -189,8 +193,9 @@ mod tests {
             predicted: 0.97,
             late: Vec::new(),
             failed: 0.0,
-            survey: SurveyFacts { climbs_finished: 60, modes: 1, interior_maximum: true, modes_hit_once: 0 },
+            survey: SurveyFacts { climbs_finished: 60, modes: 1, walls: 0, modes_hit_once: 0 },
             rounds: vec![round; 5],
+            unguarded: false,
             score,
         }
     }
@@ -207,6 +212,7 @@ mod tests {
             failed_share: run.failed,
             survey: run.survey,
             rounds: &run.rounds,
+            unguarded_tails: run.unguarded,
         })
     }
 
@@ -215,14 +221,15 @@ mod tests {
         let verdict = judged(|_| ());
         assert_eq!(verdict.word, Word::Sound, "{:?}", verdict.reasons);
         assert!(verdict.reasons.is_empty());
-        assert_eq!(verdict.checks.len(), 17);
+        assert_eq!(verdict.checks.len(), 18);
         assert!(verdict.checks.iter().all(|check| check.word == Word::Sound && check.value.is_finite()));
     }
 
     #[test]
     fn each_fault_earns_its_word_and_its_reason() {
         type Spoil = fn(&mut Run);
-        let cases: [(Spoil, Word, &str); 19] = [
+        let cases: [(Spoil, Word, &str); 20] = [
+            (|r| r.unguarded = true, Word::Strained, "exponential tail"),
             (|r| r.score.ess_fraction = 0.19, Word::Unfit, "not settled"),
             (|r| r.score.ess = 60.0, Word::Strained, "weak answer"),
             (|r| r.score.largest_share = 0.015, Word::Strained, "One draw carries 1.5 %"),
@@ -254,7 +261,7 @@ mod tests {
             (|r| r.failed = 0.02, Word::Strained, "failed"),
             (|r| r.rounds[0].log_normaliser += 0.1, Word::Unfit, "disagree"),
             (|r| r.rounds[2].ess_fraction = 0.5, Word::Strained, "wanders"),
-            (|r| (r.survey.interior_maximum, r.survey.modes) = (false, 0), Word::Strained, "ran away"),
+            (|r| (r.survey.walls, r.survey.modes) = (0, 0), Word::Strained, "ran away"),
             (|r| r.survey.climbs_finished = 59, Word::Strained, "Only 59 climbs"),
             (|r| r.survey.modes_hit_once = 1, Word::Strained, "by one climb only"),
         ];

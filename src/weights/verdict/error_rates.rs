@@ -42,8 +42,9 @@ fn run(d: usize, s: f64, repetition: u32) -> Verdict {
         predicted_ess_fraction: libm::pow((2.0 * s * s - 1.0).max(0.0).sqrt() / (s * s), d as f64).max(0.1),
         late_modes: &[],
         failed_share: 0.0,
-        survey: SurveyFacts { climbs_finished: 60, modes: 1, interior_maximum: true, modes_hit_once: 0 },
+        survey: SurveyFacts { climbs_finished: 60, modes: 1, walls: 0, modes_hit_once: 0 },
         rounds: &rounds,
+        unguarded_tails: false,
     })
 }
 
