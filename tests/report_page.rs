@@ -231,7 +231,8 @@ event = "inflow + level >= 5 or inflow - level >= 5"
         assert!(page.contains(needed) && text.contains(needed), "{needed}");
     }
     // Nothing is known of degrees of freedom or tails of single rounds here: no empty columns.
-    assert!(!page.contains("degrees of freedom</th>") && !page.contains("tail shape</th>"));
+    let column = |title: &str| page.contains(&format!("<th scope=\"col\" class=\"n\">{title}</th>"));
+    assert!(column("ESS fresh") && !column("degrees of freedom") && !column("tail shape"));
     let value = tuning.answer.value().unwrap();
     assert_eq!((data.answers[0].value, data.answers[0].se), (value.value, value.se));
 }
