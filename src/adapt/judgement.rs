@@ -76,11 +76,18 @@ pub(crate) fn judge(evidence: &Evidence) -> Verdict {
             climbs_finished: evidence.survey.finished as usize,
             modes: evidence.survey.modes.len(),
             walls: evidence.survey.walls as usize,
-            modes_hit_once: evidence.survey.modes.iter().filter(|m| m.hits == 1).count(),
+            modes_hit_once: hit_once(evidence.survey),
         },
         rounds: &rounds,
         unguarded_tails: evidence.unguarded_tails,
     })
+}
+
+/// Modes that one climb alone ended at, of those whose mass by their curvature is not negligible beside the largest.
+fn hit_once(survey: &Survey) -> usize {
+    const NEGLIGIBLE: f64 = -9.0;
+    let largest = survey.modes.iter().map(|m| m.log_mass).fold(f64::NEG_INFINITY, f64::max);
+    survey.modes.iter().filter(|m| m.hits == 1 && m.log_mass - largest > NEGLIGIBLE).count()
 }
 
 /// `w (f - mean)`, whose halves must agree about zero.

@@ -45,7 +45,7 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
     let mut found = Found::default();
     let identity = identity(d);
     while found.starts < MOST {
-        let cap = match (found.modes.is_empty(), found.starts < ENOUGH) {
+        let cap = match (found.modes.is_empty(), found.finished < ENOUGH) {
             (true, _) => limits.first_mode,
             (false, true) => limits.enough,
             (false, false) => limits.all,
@@ -57,7 +57,7 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
         if found.modes.is_empty() && failed >= HOPELESS {
             break;
         }
-        if found.starts >= ENOUGH && target.spent() >= limits.least && found.modes.iter().all(|m| m.hits > 1) {
+        if found.finished >= ENOUGH && target.spent() >= limits.least && found.modes.iter().all(|m| m.hits > 1) {
             break;
         }
         let radius = RADII[found.starts as usize % RADII.len()];
