@@ -1,6 +1,7 @@
 //! The rounds: draw, evaluate, pool, fit; until the budget is spent.
 
 use super::aim::FitTarget;
+use super::control::controlled;
 use super::directed::{Directed, Part, scaled_identity};
 use super::layers::{Layer, Layers};
 use super::plan::Plan;
@@ -24,6 +25,9 @@ pub(crate) struct Drawn {
     pub(crate) log_proposal: Vec<f64>,
     /// `f w` of every draw.
     pub(crate) terms: Vec<f64>,
+    /// The same with control variates.
+    pub(crate) controlled: Vec<f64>,
+    /// Their mean.
     pub(crate) mean: StratifiedMean,
     pub(crate) counted: bool,
     pub(crate) spent_before: u64,
@@ -169,9 +173,22 @@ fn draw(
             f => f * exp(answered.log_nominal[i] - log_proposal[i]),
         })
         .collect();
-    let mean = Strata::new(&labels).mean(&terms);
+    let (columns, _) = whole.responsibilities(&reduced);
+    let controlled = controlled(&terms, &labels, &columns, whole.mixture().shares());
+    let mean = Strata::new(&labels).mean(&controlled);
     let fitted = twin.full.len();
-    let drawn = Drawn { points, labels, answered, log_proposal, terms, mean, counted: counts, spent_before, fitted };
+    let drawn = Drawn {
+        points,
+        labels,
+        answered,
+        log_proposal,
+        terms,
+        controlled,
+        mean,
+        counted: counts,
+        spent_before,
+        fitted,
+    };
     Ok((drawn, reduced))
 }
 
