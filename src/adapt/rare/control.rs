@@ -1,5 +1,6 @@
 //! Control variates: what the proposal's own components say about the luck of a round's draws.
 
+use super::planes::Control;
 use crate::numeric::linear::cholesky;
 
 /// Folds in which coefficients and draws are kept apart.
@@ -9,34 +10,46 @@ const DRAWS_PER_CONTROL: usize = 8;
 const HITS_PER_CONTROL: usize = 2;
 /// Ridge as a share of a control's own sum of squares: the controls sum to one, so their matrix is singular without.
 const RIDGE: f64 = 1e-3;
+/// And in squares of the control's largest value: a control that rests on a few large values (a half-space that few draws entered) must
+/// not be believed.
+const RIDGE_LARGEST: f64 = 1.0;
 /// A component with fewer draws makes no stratum of its own when coefficients are sought.
 const STRATUM: usize = 8;
 
-/// The terms `z_i` less `sum_k b_k (r_ik - share_k)`, where `r_ik` is the share of component `k` in the proposal's density at draw `i`:
-/// its mean over the proposal is `share_k`, so the mean of the terms stays what it is.
+/// The terms `z_i` less `sum_k b_k (c_ik - mean_k)`, where control `k` has a known mean over the proposal, so that the mean of the
+/// terms stays what it is.
 ///
 /// The coefficients minimise the variance within strata and come, for every fifth of the draws, from the other four: a draw never
-/// sets the coefficients that correct it, so the mean keeps no bias beyond the rounding of the strata's sizes. They win back most of
-/// what the defensive layers cost. With too few draws, or draws that count, the terms come back as they are.
+/// sets the coefficients that correct it, so the mean keeps no bias beyond the rounding of the strata's sizes. The first `needed`
+/// controls are used together or not at all, the others as far as the draws go; with too few draws, or draws that count, the terms come
+/// back as they are.
 ///
 /// # Shapes
-/// `columns[k][i] = r_ik`; `labels[i]` is the component of draw `i`, in ascending order.
+/// `labels[i]` is the component of draw `i`, in ascending order.
 ///
 /// # Source
 /// Owen & Zhou, J. Am. Stat. Assoc. 95 (2000) 135-143; the folds and the ridge are ours.
-pub(crate) fn controlled(terms: &[f64], labels: &[u32], columns: &[Vec<f64>], shares: &[f64]) -> Vec<f64> {
-    let (n, p) = (terms.len(), columns.len());
+pub(crate) fn controlled(terms: &[f64], labels: &[u32], controls: &[Control], needed: usize) -> Vec<f64> {
+    let n = terms.len();
     let hits = terms.iter().filter(|z| **z != 0.0).count();
-    if n < DRAWS_PER_CONTROL * p || hits < HITS_PER_CONTROL * p || crate::knob("CV", 1.0) == 0.0 {
+    let room = (n / DRAWS_PER_CONTROL).min(hits / HITS_PER_CONTROL);
+    if room < needed || crate::knob("CV", 1.0) == 0.0 {
         return terms.to_vec();
     }
-    let unit = terms.iter().fold(0.0_f64, |a, z| a.max(z.abs()));
+    let used: Vec<&Control> = controls.iter().take(room).collect();
+    let p = used.len();
+    let largest = |values: &[f64]| values.iter().fold(0.0_f64, |a, v| a.max(v.abs()));
+    let unit = largest(terms);
+    let units: Vec<f64> = used.iter().map(|c| largest(&c.values).max(f64::MIN_POSITIVE)).collect();
     let strata = strata(labels);
     let n_strata = strata.iter().max().map_or(0, |s| s + 1);
     let mut folds: Vec<Sums> = (0..FOLDS).map(|_| Sums::new(p, n_strata)).collect();
     let mut row = vec![0.0; p + 1];
     for i in 0..n {
-        fill(&mut row, terms[i] / unit, columns, i);
+        for (k, control) in used.iter().enumerate() {
+            row[k] = control.values[i] / units[k];
+        }
+        row[p] = terms[i] / unit;
         folds[i % FOLDS].add(&row, strata[i]);
     }
     let mut all = Sums::new(p, n_strata);
@@ -52,19 +65,12 @@ pub(crate) fn controlled(terms: &[f64], labels: &[u32], columns: &[Vec<f64>], sh
     (0..n)
         .map(|i| match &coefficients[i % FOLDS] {
             Some(b) => {
-                let luck: f64 = (0..p).map(|k| b[k] * (columns[k][i] - shares[k])).sum();
+                let luck: f64 = (0..p).map(|k| b[k] * ((used[k].values[i] - used[k].mean) / units[k])).sum();
                 terms[i] - unit * luck
             }
             None => terms[i],
         })
         .collect()
-}
-
-fn fill(row: &mut [f64], term: f64, columns: &[Vec<f64>], i: usize) {
-    for (slot, column) in row.iter_mut().zip(columns) {
-        *slot = column[i];
-    }
-    row[columns.len()] = term;
 }
 
 /// The stratum of every draw: its component, light components together in the last one.
@@ -143,7 +149,7 @@ impl Sums {
                 matrix[b * p + a] = centred[a * w + b];
             }
             let own = centred[a * w + a].max(0.0);
-            matrix[a * p + a] = own + crate::knob("RIDGE", RIDGE) * own + 1e-12;
+            matrix[a * p + a] = own + crate::knob("RIDGE", RIDGE) * own + crate::knob("RIDGE0", RIDGE_LARGEST);
         }
         let l = cholesky(&matrix, p)?;
         let mut b: Vec<f64> = (0..p).map(|a| centred[p * w + a]).collect();
@@ -177,9 +183,10 @@ mod tests {
             let labels: Vec<u32> = (0..n).map(|i| u32::from(i >= n / 2)).collect();
             let first: Vec<f64> =
                 labels.iter().map(|&l| 0.25 + 0.5 * f64::from(1 - l) + 0.4 * (uniform(&mut rng) - 0.5)).collect();
-            let columns = vec![first.clone(), first.iter().map(|r| 1.0 - r).collect()];
+            let second = first.iter().map(|r| 1.0 - r).collect();
+            let controls = [first.clone(), second].map(|values| Control { values, mean: 0.5 });
             let terms: Vec<f64> = first.iter().map(|r| 3.0 + 2.0 * r + 0.1 * normal::draw(&mut rng)).collect();
-            let better = controlled(&terms, &labels, &columns, &[0.5, 0.5]);
+            let better = controlled(&terms, &labels, &controls, 2);
             for (sums, values) in [(&mut plain, &terms), (&mut corrected, &better)] {
                 let mean = values.iter().sum::<f64>() / f64::from(n);
                 sums[0] += mean;
@@ -196,7 +203,7 @@ mod tests {
 
     #[test]
     fn few_draws_are_left_alone() {
-        let columns = vec![vec![0.5; 10]; 3];
-        assert_eq!(controlled(&[1.0; 10], &[0; 10], &columns, &[0.5; 3]), vec![1.0; 10]);
+        let controls = vec![Control { values: vec![0.5; 10], mean: 0.5 }; 3];
+        assert_eq!(controlled(&[1.0; 10], &[0; 10], &controls, 3), vec![1.0; 10]);
     }
 }

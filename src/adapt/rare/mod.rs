@@ -3,7 +3,7 @@
 //! Everything lives in standard normal scores `u`, where the nominal density is `N(0, I)`. In reading order: `scores` (the
 //! problem there), `plan` (budget and constants), `directed`, `subspace` (mixtures that know a few directions), `survey` with
 //! `design_point`, `least_distance` and `mode` (where the event lies), `layers` (what bounds the weights), `pool`, `smoothing`,
-//! `aim`, `em`, `refit` (the next proposal), `control` (variance won back), `rounds` (the loop), `answer` (the value), `judgement` (the
+//! `aim`, `em`, `refit` (the next proposal), `planes`, `control` (variance won back), `rounds` (the loop), `answer` (the value), `judgement` (the
 //! verdict).
 //!
 //! The answer combines the rounds drawn after the event was first reached, each with a weight that was fixed before it was drawn: no
@@ -21,6 +21,7 @@ mod layers;
 mod least_distance;
 mod mode;
 mod plan;
+mod planes;
 mod pool;
 mod refit;
 mod rounds;

@@ -5,6 +5,7 @@ use super::control::controlled;
 use super::directed::{Directed, Part, scaled_identity};
 use super::layers::{Layer, Layers};
 use super::plan::Plan;
+use super::planes::{Control, Plane, planes};
 use super::pool::{Pool, counted};
 use super::refit::{Decision, Twin, refit};
 use super::scores::{Answered, Scores};
@@ -58,6 +59,7 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
     let space = &explored.space;
     let (k, rest) = (space.k(), space.rest_dim());
     let event = target.is_event();
+    let planes = planes(&explored.found, space);
     let layers = Layers::new(plan, k, rest, scouts.sd)?;
     let mut pool = Pool::new(if rest > 0 { k + 1 } else { k }, event, plan.seed);
     let scout_q = scout_density(k, rest, scouts.sd, scouts.sd)?;
@@ -76,7 +78,7 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
         target.enter(Stage::Round(index));
         let n = plan.next_round(at_event, target.spent(), course.rounds.len() as u32);
         let whole = course.layers.whole(&twin.full)?;
-        let (drawn, reduced) = draw(target, plan, space, &whole, &twin, n, index, at_event.is_some())?;
+        let (drawn, reduced) = draw(target, plan, (space, &planes), &whole, &twin, n, index, at_event.is_some())?;
         let mut record = record(&drawn, &reduced, &whole, &twin, index, target.spent());
         (record.step, record.predicted_ess_fraction) = (step, predicted);
         course.pool.add(&reduced, &drawn.answered, &drawn.log_proposal, whole);
@@ -154,7 +156,7 @@ fn widened(fitted: &Directed) -> Result<Directed, TuneError> {
 fn draw(
     target: &Scores,
     plan: &Plan,
-    space: &Subspace,
+    (space, planes): (&Subspace, &[Plane]),
     whole: &Directed,
     twin: &Twin,
     n: usize,
@@ -174,7 +176,14 @@ fn draw(
         })
         .collect();
     let (columns, _) = whole.responsibilities(&reduced);
-    let controlled = controlled(&terms, &labels, &columns, whole.mixture().shares());
+    let mut controls: Vec<Control> =
+        columns.into_iter().zip(whole.mixture().shares()).map(|(values, &mean)| Control { values, mean }).collect();
+    let needed = controls.len();
+    if event && crate::knob("PLANES", 1.0) > 0.0 {
+        let log_ratio: Vec<f64> = answered.log_nominal.iter().zip(&log_proposal).map(|(p, q)| p - q).collect();
+        controls.extend(planes.iter().flat_map(|plane| plane.controls(&points, &log_ratio)));
+    }
+    let controlled = controlled(&terms, &labels, &controls, needed);
     let mean = Strata::new(&labels).mean(&controlled);
     let fitted = twin.full.len();
     let drawn = Drawn {
