@@ -183,7 +183,7 @@ fn draw(
         let log_ratio: Vec<f64> = answered.log_nominal.iter().zip(&log_proposal).map(|(p, q)| p - q).collect();
         controls.extend(planes.iter().flat_map(|plane| plane.controls(&points, &log_ratio)));
     }
-    let controlled = controlled(&terms, &labels, &controls, needed);
+    let controlled = controlled(&terms, &labels, whole.mixture().shares(), &controls, needed);
     let mean = Strata::new(&labels).mean(&controlled);
     let fitted = twin.full.len();
     let drawn = Drawn {
