@@ -2,12 +2,15 @@
 
 use super::planes::Control;
 use crate::numeric::linear::cholesky;
+use crate::weights::{Strata, StratifiedMean};
 
 /// Folds in which coefficients and draws are kept apart.
 const FOLDS: usize = 5;
 /// Draws and draws that count, for every control, below which none is used.
-const DRAWS_PER_CONTROL: usize = 8;
+const DRAWS_PER_CONTROL: usize = 10;
 const HITS_PER_CONTROL: usize = 2;
+/// Draws for every control beyond the needed ones.
+const DRAWS_PER_EXTRA: usize = 30;
 /// Effective draws that must carry a control, and standard errors that its mean may be off.
 const COVERED_DRAWS: f64 = 30.0;
 const COVERED_ERRORS: f64 = 3.0;
@@ -15,9 +18,19 @@ const COVERED_ERRORS: f64 = 3.0;
 const RIDGE: f64 = 1e-3;
 /// And in squares of the control's largest value: a control that rests on a few large values (a half-space that few draws entered) must
 /// not be believed.
-const RIDGE_LARGEST: f64 = 1.0;
+const RIDGE_LARGEST: f64 = 0.1;
 /// A component with fewer draws makes no stratum of its own when coefficients are sought.
 const STRATUM: usize = 8;
+
+/// Part of the plain variance that is kept whatever the controls explain: an event that is a half-space would else claim no error at all.
+const BELIEVED: f64 = 1e-3;
+
+/// Terms with control variates, and their mean.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Controlled {
+    pub(crate) terms: Vec<f64>,
+    pub(crate) mean: StratifiedMean,
+}
 
 /// The terms `z_i` less `sum_k b_k (c_ik - mean_k)`, where control `k` has a known mean over the proposal, so that the mean of the
 /// terms stays what it is.
@@ -38,15 +51,16 @@ pub(crate) fn controlled(
     shares: &[f64],
     controls: &[Control],
     needed: usize,
-) -> Vec<f64> {
+) -> Controlled {
     let n = terms.len();
     let hits = terms.iter().filter(|z| **z != 0.0).count();
     let room = (n / DRAWS_PER_CONTROL).min(hits / HITS_PER_CONTROL);
-    if room < needed || crate::knob("CV", 1.0) == 0.0 {
-        return terms.to_vec();
+    if room < needed {
+        return Controlled { terms: terms.to_vec(), mean: Strata::new(labels).mean(terms) };
     }
+    let extra = n / DRAWS_PER_EXTRA;
     let (own, others) = controls.split_at(needed.min(controls.len()));
-    let used: Vec<&Control> = own.iter().chain(others.iter().filter(|c| covered(c))).take(room).collect();
+    let used: Vec<&Control> = own.iter().chain(others.iter().filter(|c| covered(c)).take(extra)).take(room).collect();
     let p = used.len();
     let largest = |values: &[f64]| values.iter().fold(0.0_f64, |a, v| a.max(v.abs()));
     let unit = largest(terms);
@@ -72,14 +86,20 @@ pub(crate) fn controlled(
             others.coefficients()
         })
         .collect();
-    (0..n)
+    let corrected: Vec<f64> = (0..n)
         .map(|i| {
             let factor = factors[strata[i]];
             let Some(b) = &coefficients[i % FOLDS] else { return factor * terms[i] };
-            let of = |value: &dyn Fn(&Control) -> f64| -> f64 { (0..p).map(|k| b[k] * (value(used[k]) / units[k])).sum() };
+            let of =
+                |value: &dyn Fn(&Control) -> f64| -> f64 { (0..p).map(|k| b[k] * (value(used[k]) / units[k])).sum() };
             factor * (terms[i] - unit * of(&|c| c.values[i])) + unit * of(&|c| c.mean)
         })
-        .collect()
+        .collect();
+    let StratifiedMean { mean, se } = Strata::new(labels).mean(&corrected);
+    let plain = Strata::new(labels).mean(terms).se;
+    // The folds' coefficients share draws: their common error shows in no fold's spread.
+    let variance = se * se * (1.0 + p as f64 / n as f64) + BELIEVED * plain * plain;
+    Controlled { terms: corrected, mean: StratifiedMean { mean, se: variance.sqrt() } }
 }
 
 /// Whether the draws cover a control: enough of them carry it, and their mean is the known one within its error. A half-space that
@@ -98,7 +118,7 @@ fn covered(control: &Control) -> bool {
     }
     let mean = sum / n;
     let se = ((squares / n - mean * mean).max(0.0) / n).sqrt();
-    sizes * sizes >= COVERED_DRAWS * squares && (mean - control.mean / unit).abs() <= crate::knob("COVSE", COVERED_ERRORS) * se
+    sizes * sizes >= COVERED_DRAWS * squares && (mean - control.mean / unit).abs() <= COVERED_ERRORS * se
 }
 
 /// The stratum of every draw (its component; light components together in the last one), and the factor `share n / n_s` of every
@@ -179,7 +199,7 @@ impl Sums {
                 matrix[b * p + a] = centred[a * w + b];
             }
             let own = centred[a * w + a].max(0.0);
-            matrix[a * p + a] = own + crate::knob("RIDGE", RIDGE) * own + crate::knob("RIDGE0", RIDGE_LARGEST);
+            matrix[a * p + a] = own + RIDGE * own + RIDGE_LARGEST;
         }
         let l = cholesky(&matrix, p)?;
         let mut b: Vec<f64> = (0..p).map(|a| centred[p * w + a]).collect();
@@ -216,7 +236,7 @@ mod tests {
             let second = first.iter().map(|r| 1.0 - r).collect();
             let controls = [first.clone(), second].map(|values| Control { values, mean: 0.5 });
             let terms: Vec<f64> = first.iter().map(|r| 3.0 + 2.0 * r + 0.1 * normal::draw(&mut rng)).collect();
-            let better = controlled(&terms, &labels, &[0.5, 0.5], &controls, 2);
+            let better = controlled(&terms, &labels, &[0.5, 0.5], &controls, 2).terms;
             for (sums, values) in [(&mut plain, &terms), (&mut corrected, &better)] {
                 let mean = values.iter().sum::<f64>() / f64::from(n);
                 sums[0] += mean;
@@ -234,6 +254,6 @@ mod tests {
     #[test]
     fn few_draws_are_left_alone() {
         let controls = vec![Control { values: vec![0.5; 10], mean: 0.5 }; 3];
-        assert_eq!(controlled(&[1.0; 10], &[0; 10], &[1.0], &controls, 3), vec![1.0; 10]);
+        assert_eq!(controlled(&[1.0; 10], &[0; 10], &[1.0], &controls, 3).terms, vec![1.0; 10]);
     }
 }

@@ -1,7 +1,7 @@
 //! The rounds: draw, evaluate, pool, fit; until the budget is spent.
 
 use super::aim::FitTarget;
-use super::control::controlled;
+use super::control::{Controlled, controlled};
 use super::directed::{Directed, Part, scaled_identity};
 use super::layers::{Layer, Layers};
 use super::plan::Plan;
@@ -15,7 +15,7 @@ use super::tuning::{RareRound, RareStep};
 use crate::adapt::TuneError;
 use crate::adapt::observer::Stage;
 use crate::numeric::{Points, Purpose, exp};
-use crate::weights::{Strata, StratifiedMean};
+use crate::weights::StratifiedMean;
 
 /// One round's draws and what is known of the proposal that they came from.
 #[derive(Debug)]
@@ -179,12 +179,12 @@ fn draw(
     let mut controls: Vec<Control> =
         columns.into_iter().zip(whole.mixture().shares()).map(|(values, &mean)| Control { values, mean }).collect();
     let needed = controls.len();
-    if event && crate::knob("PLANES", 1.0) > 0.0 {
+    if event {
         let log_ratio: Vec<f64> = answered.log_nominal.iter().zip(&log_proposal).map(|(p, q)| p - q).collect();
         controls.extend(planes.iter().flat_map(|plane| plane.controls(&points, &log_ratio)));
     }
-    let controlled = controlled(&terms, &labels, whole.mixture().shares(), &controls, needed);
-    let mean = Strata::new(&labels).mean(&controlled);
+    let Controlled { terms: controlled, mean } =
+        controlled(&terms, &labels, whole.mixture().shares(), &controls, needed);
     let fitted = twin.full.len();
     let drawn = Drawn {
         points,

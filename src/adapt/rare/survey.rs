@@ -57,9 +57,10 @@ const NEAR_DISTANCE: f64 = 1.0;
 const LATER: f64 = 6.0;
 /// A scout that reaches to within this of the tangent plane at a found point is explained by it.
 const TANGENT_SLACK: f64 = 0.3;
-/// Where the way from a found point to a scout is looked at, and how many ways at most.
+/// Where the way from a found point to a scout is looked at.
 const ON_THE_WAY: [f64; 3] = [0.25, 0.5, 0.75];
-const MOST_CHECKS: usize = 25;
+/// One way for so many evaluations of the budget.
+const BUDGET_PER_CHECK: u64 = 500;
 /// Gradients taken around the best point to tell the directions, where a gradient costs `d` evaluations or one.
 const GRADIENTS: usize = 4;
 const CHEAP_GRADIENTS: usize = 16;
@@ -109,7 +110,7 @@ struct Searching<'a, 'b> {
     gradients: Vec<Vec<f64>>,
     searches: usize,
     /// Ways looked at between scouts and found points.
-    checks: usize,
+    checks: u64,
     cap: u64,
     rng: Stream,
 }
@@ -180,7 +181,9 @@ impl<'a, 'b> Searching<'a, 'b> {
         let mut ways: Vec<&Found> = alike.into_iter().chain(near).collect();
         ways.dedup_by(|a, b| a.at == b.at);
         for point in ways {
-            if self.target.spent() + ON_THE_WAY.len() as u64 > self.cap || self.checks >= MOST_CHECKS {
+            if self.target.spent() + ON_THE_WAY.len() as u64 > self.cap
+                || self.checks >= self.plan.budget / BUDGET_PER_CHECK
+            {
                 return Ok(false);
             }
             self.checks += 1;
