@@ -38,7 +38,6 @@ pub(crate) fn of(course: &mut Course, scouts: &Scouts, event: bool, failures_are
     let evenness = Answer::of(&plain.contributions(&terms), &plain.contributions(&terms));
     let few = evenness.effective_draws < LOG_SCALE_DRAWS;
     let combined = if few { plain } else { combined_of(course, &used, &|drawn| drawn.mean) };
-    drop(terms);
     for (&t, share) in used.iter().zip(&combined.shares) {
         course.rounds[t].share = *share;
     }
@@ -47,10 +46,9 @@ pub(crate) fn of(course: &mut Course, scouts: &Scouts, event: bool, failures_are
     let failed = draws.value.iter().any(|v| v.is_nan());
     let mean_size = mean_size(course, &used, &combined);
     let failing = failed.then(|| failing(course, &used, &combined));
-    let failures = failing.filter(|_| event).map(|failing| {
+    let failures = failing.filter(|_| event).map(|_| {
         let here = ValueWithError { value: combined.value, se: combined.se };
         let other = other_way(course, &used, failures_are_inside);
-        debug_assert!(failing.value >= 0.0);
         if failures_are_inside {
             FailuresCounted { outside: other, inside: here }
         } else {
