@@ -6,6 +6,8 @@
 //! (damped oscillator); El Masri, Morio & Simatos 2024 (100 dimensions, Asian payoff); Rozsas & Slobbe 2019 (rp rows). The answers
 //! are exact sums, nested quadrature, or quasi-Monte Carlo with one variable integrated out, to more digits than any row needs.
 
+#![allow(clippy::approx_constant, reason = "3.14 is a measured figure")]
+
 use evenpoise::distribution::Distribution;
 use evenpoise::model::Closure;
 use evenpoise::numeric::{Points, exp};

@@ -41,12 +41,12 @@ impl FitTarget {
                 smoothing: Some(s),
             });
         }
-        met.then(|| evened(log_target, &log_weights, wanted))
+        met.then(|| evened(&log_target, &log_weights, wanted))
     }
 }
 
 /// Weights to the largest power at which `wanted` of them are effective (the smallest power tried, where none is).
-fn evened(log_target: Vec<f64>, log_weights: &[f64], wanted: f64) -> FitTarget {
+fn evened(log_target: &[f64], log_weights: &[f64], wanted: f64) -> FitTarget {
     let powered =
         |g: f64| -> Vec<f64> { log_weights.iter().map(|&l| if l == f64::NEG_INFINITY { l } else { g * l }).collect() };
     let (mut low, mut high) = (0.0, 1.0);

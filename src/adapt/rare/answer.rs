@@ -1,12 +1,12 @@
 //! From the rounds to an answer: counted rounds combined with weights that were fixed before each was drawn.
 
-use super::rounds::Course;
+use super::rounds::{Course, Drawn};
 use super::survey::Scouts;
 use super::tuning::{FailuresCounted, RareAnswer, RareDraws, RareValue, ValueWithError};
 use crate::numeric::{Points, exp};
 use crate::weights::{
-    Answer, CombinedRounds, RoundMean, Strata, combine_rounds, log_interval, no_hit_bound, normal_interval,
-    probability_interval,
+    Answer, CombinedRounds, RoundMean, Strata, StratifiedMean, combine_rounds, log_interval, no_hit_bound,
+    normal_interval, probability_interval,
 };
 
 /// The answer and what it rests on.
@@ -25,44 +25,63 @@ pub(crate) struct Answering {
 /// Effective draws from which a mean of one sign has an interval on the log scale.
 const LOG_SCALE_DRAWS: f64 = 100.0;
 
+/// A mean that is so many standard errors above zero has an interval on the log scale.
+const SIGNED: f64 = 5.0;
+
 /// Combines the counted rounds; all of them where none counts. Writes each round's share into its record.
 pub(crate) fn of(course: &mut Course, scouts: &Scouts, event: bool, failures_are_inside: bool) -> Answering {
     let any_counted = course.drawn.iter().any(|d| d.counted);
     let used: Vec<usize> = (0..course.drawn.len()).filter(|&t| course.drawn[t].counted || !any_counted).collect();
-    let means: Vec<RoundMean> = used.iter().map(|&t| round_mean(course, t, course.drawn[t].mean)).collect();
-    let combined = combine_rounds(&means);
+    // With few effective draws the interval counts them one by one: no control variates then.
+    let plain = combined_of(course, &used, &|drawn| Strata::new(&drawn.labels).mean(&drawn.terms));
+    let terms: Vec<&[f64]> = used.iter().map(|&t| course.drawn[t].terms.as_slice()).collect();
+    let evenness = Answer::of(&plain.contributions(&terms), &plain.contributions(&terms));
+    let few = evenness.effective_draws < LOG_SCALE_DRAWS;
+    let combined = if few { plain } else { combined_of(course, &used, &|drawn| drawn.mean) };
     for (&t, share) in used.iter().zip(&combined.shares) {
         course.rounds[t].share = *share;
     }
-    let draws = gather(course, &used, &combined);
+    let draws = gather(course, &used, &combined, few);
     let halves_z = halves(course, &used, &draws);
     let failed = draws.value.iter().any(|v| v.is_nan());
-    let sizes: f64 = draws.contributions.iter().map(|c| c.abs()).sum();
+    let mean_size = mean_size(course, &used, &combined);
     let failing = failed.then(|| failing(course, &used, &combined));
-    let failures = failing.filter(|_| event).map(|failing| {
+    let failures = failing.filter(|_| event).map(|_| {
         let here = ValueWithError { value: combined.value, se: combined.se };
         let other = other_way(course, &used, failures_are_inside);
-        debug_assert!(failing.value >= 0.0);
         if failures_are_inside {
             FailuresCounted { outside: other, inside: here }
         } else {
             FailuresCounted { outside: here, inside: other }
         }
     });
-    let answer = if sizes > 0.0 {
-        RareAnswer::Value(valued(&combined, &draws.contributions, event, failures.as_ref()))
+    let answer = if mean_size > 0.0 {
+        RareAnswer::Value(valued(&combined, &draws.contributions, evenness, event, failures.as_ref()))
     } else {
         no_hit(course, scouts)
     };
-    Answering { answer, draws, combined, failures, failing, halves_z, mean_size: sizes }
+    Answering { answer, draws, combined, failures, failing, halves_z, mean_size }
 }
 
-fn round_mean(course: &Course, t: usize, mean: crate::weights::StratifiedMean) -> RoundMean {
+fn combined_of(course: &Course, used: &[usize], mean: &dyn Fn(&Drawn) -> StratifiedMean) -> CombinedRounds {
+    combine_rounds(&used.iter().map(|&t| round_mean(course, t, mean(&course.drawn[t]))).collect::<Vec<_>>())
+}
+
+/// Mean of `|f| w` over the rounds.
+fn mean_size(course: &Course, used: &[usize], combined: &CombinedRounds) -> f64 {
+    let of_round = |t: usize| {
+        let terms = &course.drawn[t].terms;
+        terms.iter().map(|z| z.abs()).sum::<f64>() / terms.len() as f64
+    };
+    used.iter().zip(&combined.shares).map(|(&t, share)| share * of_round(t)).sum()
+}
+
+fn round_mean(course: &Course, t: usize, mean: StratifiedMean) -> RoundMean {
     let drawn = &course.drawn[t];
     RoundMean { draws: drawn.terms.len(), evaluations_before: drawn.spent_before as usize, mean }
 }
 
-fn gather(course: &Course, used: &[usize], combined: &CombinedRounds) -> RareDraws {
+fn gather(course: &Course, used: &[usize], combined: &CombinedRounds, plain: bool) -> RareDraws {
     let dim = course.drawn.first().map_or(1, |d| d.points.dim());
     let mut draws = RareDraws {
         points: Points::new(dim),
@@ -84,7 +103,8 @@ fn gather(course: &Course, used: &[usize], combined: &CombinedRounds) -> RareDra
         draws.round.extend(std::iter::repeat_n(t as u32 + 1, drawn.terms.len()));
         draws.labels.extend_from_slice(&drawn.labels);
     }
-    let terms: Vec<&[f64]> = used.iter().map(|&t| course.drawn[t].terms.as_slice()).collect();
+    let terms = |t: usize| if plain { &course.drawn[t].terms } else { &course.drawn[t].controlled };
+    let terms: Vec<&[f64]> = used.iter().map(|&t| terms(t).as_slice()).collect();
     draws.contributions = combined.contributions(&terms);
     draws
 }
@@ -143,15 +163,14 @@ fn other_way(course: &Course, used: &[usize], failures_are_inside: bool) -> Valu
 fn valued(
     combined: &CombinedRounds,
     contributions: &[f64],
+    answer: Answer,
     event: bool,
     failures: Option<&FailuresCounted>,
 ) -> RareValue {
-    let answer = Answer::of(contributions, contributions);
     let (value, se) = (combined.value, combined.se);
-    let one_sign = contributions.iter().all(|&c| c >= 0.0);
     let (mut interval_95, interval_method) = if event {
         probability_interval(value, se, &answer, contributions)
-    } else if one_sign && answer.effective_draws >= LOG_SCALE_DRAWS {
+    } else if value > SIGNED * se && answer.effective_draws >= LOG_SCALE_DRAWS {
         (log_interval(value, se), "log-normal")
     } else {
         (normal_interval(value, se), "normal")

@@ -31,6 +31,9 @@ const CLOSE: f64 = 0.03;
 const CUTS: usize = 6;
 /// Failed steps after which the search gives up.
 const FAILURES: usize = 4;
+/// Cosine of the gradient with the point below which a converged point is no smooth design point; length of the step that looks further.
+const STRAIGHT: f64 = 0.95;
+const AFRESH: f64 = 0.5;
 /// Gradients smaller than this say nothing.
 const FLAT: f64 = 1e-12;
 /// Sufficient decrease of the merit.
@@ -51,6 +54,7 @@ pub(crate) fn search(target: &Scores, start: Look, cap: u64) -> Result<Ended, Tu
     let mut ended = Ended { at: None, converged: false, normal: None, gradients: Vec::new() };
     let mut cuts: Vec<Cut> = Vec::new();
     let mut failures = 0;
+    let mut afresh = false;
     let mut here = start;
     for _ in 0..ITERATIONS {
         if target.spent() + target.slope_cost() + TRIALS as u64 > cap {
@@ -72,6 +76,16 @@ pub(crate) fn search(target: &Scores, start: Look, cap: u64) -> Result<Ended, Tu
         let mut step: Vec<f64> = aim.iter().zip(&here.at).map(|(a, u)| a - u).collect();
         let mut size = dot(&step, &step).sqrt();
         if size < CLOSE && here.value.abs() / length < CLOSE {
+            // Cuts left over from elsewhere can hold a smooth search back: look once more without them.
+            let reach = dot(&here.at, &here.at).sqrt();
+            if failures > 0 && !afresh && dot(&normal, &here.at).abs() < STRAIGHT * reach {
+                (afresh, failures) = (true, 0);
+                let last = cuts.len() - 1;
+                cuts.drain(..last);
+                let plain: Vec<f64> = normal.iter().map(|n| bound * n).collect();
+                here = step_towards(target, &here.at, &keep_discrete(target, &here.at, plain))?;
+                continue;
+            }
             ended.converged = true;
             ended.normal = Some(normal);
             best = Some(here.at.clone());
@@ -113,6 +127,14 @@ pub(crate) fn search(target: &Scores, start: Look, cap: u64) -> Result<Ended, Tu
     }
     ended.at = best;
     Ok(ended)
+}
+
+/// A first short step towards `aim`.
+fn step_towards(target: &Scores, here: &[f64], aim: &[f64]) -> Result<Look, TuneError> {
+    let step: Vec<f64> = aim.iter().zip(here).map(|(a, u)| a - u).collect();
+    let share = (AFRESH / dot(&step, &step).sqrt().max(1e-12)).min(1.0);
+    let at: Vec<f64> = here.iter().zip(&step).map(|(u, s)| u + share * s).collect();
+    target.look(&at)
 }
 
 /// The aim of a step with every discrete variable at the most likely score of its present value: its margin has no slope to follow.

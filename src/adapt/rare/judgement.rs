@@ -9,7 +9,7 @@ use crate::numeric::ln;
 use crate::weights::TailShape;
 use crate::weights::verdict::{self, Check, FailureFacts, RareEvidence, Verdict, Word, judge_rare};
 
-/// A scout whose weight under the last fit is below this many times the answer is explained by that fit.
+/// A scout whose weight under the last fit and its copies is below this many times the answer is explained by that fit.
 const EXPLAINING_WEIGHT: f64 = 20.0;
 /// Last refits whose new regions are late.
 const LAST_REFITS: usize = 2;
@@ -77,7 +77,10 @@ fn unexplained(course: &Course, scouts: &Scouts, explored: &Explored, answer: f6
         return 0;
     }
     let points = explored.space.reduce(&scouts.points.select(&explored.unexplained));
-    let log_fitted = course.twin.full.log_density(&points);
+    let Ok(fit) = course.layers.following(&course.twin.full) else {
+        return explored.unexplained.len();
+    };
+    let log_fitted = fit.log_density(&points);
     let limit = ln(EXPLAINING_WEIGHT * answer);
     explored.unexplained.iter().zip(&log_fitted).filter(|(i, q)| scouts.answered.log_nominal[**i] - **q > limit).count()
 }
@@ -86,7 +89,7 @@ fn unexplained(course: &Course, scouts: &Scouts, explored: &Explored, answer: f6
 fn late_regions(course: &Course) -> Vec<f64> {
     let rounds = course.rounds.len();
     let late = course.born.iter().filter(|(round, _)| round + LAST_REFITS >= rounds);
-    late.filter_map(|(round, part)| {
+    late.filter_map(|(_, part)| {
         let parts = course.twin.full.parts();
         let nearest = parts
             .iter()
@@ -96,7 +99,6 @@ fn late_regions(course: &Course) -> Vec<f64> {
             .iter()
             .filter(|p| p.mean != nearest.mean)
             .all(|p| squared_distance(&p.mean, &part.mean) > SEPARATE * SEPARATE * k);
-        let _ = round;
         (separate && parts.len() > 1).then_some(nearest.mass)
     })
     .collect()

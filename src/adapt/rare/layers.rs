@@ -68,6 +68,13 @@ impl Layers {
         ])
     }
 
+    /// The layers that follow the fit: fitted components with their unit and inflated copies.
+    pub(crate) fn following(&self, fitted: &Directed) -> Result<Directed, ProposalError> {
+        let parts =
+            [(1.0 - UNIT - INFLATED, fitted), (UNIT, &self.unit_copies(fitted)?), (INFLATED, &inflated(fitted)?)];
+        Directed::union(&parts)
+    }
+
     /// The layer of component `i` of the whole proposal around `fitted` components.
     pub(crate) fn layer_of(&self, i: usize, fitted: usize) -> Layer {
         let nominal = usize::from(self.nominal_share > 0.0);

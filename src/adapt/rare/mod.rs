@@ -3,7 +3,8 @@
 //! Everything lives in standard normal scores `u`, where the nominal density is `N(0, I)`. In reading order: `scores` (the
 //! problem there), `plan` (budget and constants), `directed`, `subspace` (mixtures that know a few directions), `survey` with
 //! `design_point`, `least_distance` and `mode` (where the event lies), `layers` (what bounds the weights), `pool`, `smoothing`,
-//! `aim`, `em`, `refit` (the next proposal), `rounds` (the loop), `answer` (the value), `judgement` (the verdict).
+//! `aim`, `em`, `refit` (the next proposal), `planes`, `control` (variance won back), `rounds` (the loop), `answer` (the value), `judgement` (the
+//! verdict).
 //!
 //! The answer combines the rounds drawn after the event was first reached, each with a weight that was fixed before it was drawn: no
 //! draw is chosen, dropped or reweighted for what it showed, so the combination is unbiased. The pool of all draws fits the
@@ -11,6 +12,7 @@
 
 mod aim;
 mod answer;
+mod control;
 mod design_point;
 mod directed;
 mod em;
@@ -19,6 +21,7 @@ mod layers;
 mod least_distance;
 mod mode;
 mod plan;
+mod planes;
 mod pool;
 mod refit;
 mod rounds;
@@ -104,6 +107,9 @@ pub fn tune_rare(problem: &Problem, settings: &Settings, observer: &mut dyn Obse
     })
 }
 
+/// Cosine between a point and the gradient there above which the gradient is that of a smooth design point.
+const ALONG: f64 = 0.95;
+
 fn surveyed(target: &Scores, scouts: &Scouts, explored: &Explored) -> RareSurvey {
     RareSurvey {
         scouts: scouts.points.len(),
@@ -118,8 +124,9 @@ fn surveyed(target: &Scores, scouts: &Scouts, explored: &Explored) -> RareSurvey
 fn design_point_of(target: &Scores, found: &Found) -> DesignPoint {
     let at = &found.at;
     let length = dot(at, at).sqrt();
-    // Into the event: against the gradient of the margin. Where it is not known, along the point itself.
-    let inward: Vec<f64> = match &found.normal {
+    // Into the event: against the gradient of the margin. Where it is not known, or belongs to one side of a kink, along the point.
+    let along = |normal: &Vec<f64>| dot(normal, at).abs() >= ALONG * length;
+    let inward: Vec<f64> = match found.normal.as_ref().filter(|n| along(n)) {
         Some(normal) => normal.iter().map(|n| -n).collect(),
         None => at.iter().map(|v| v / length.max(1e-300)).collect(),
     };

@@ -53,6 +53,9 @@ const SPLIT_APART: f64 = 0.8;
 /// Weights below this share of the largest take no part.
 const NEGLIGIBLE: f64 = 1e-9;
 
+/// A candidate on the list: its kind, how to make it again from all draws (none for proposals that exist), and its fit.
+type Listed<'a> = (RareStep, Option<(RareStep, f64)>, &'a Directed);
+
 /// Draws to fit to, with their weights.
 struct Material {
     points: Points,
@@ -102,7 +105,7 @@ pub(crate) fn refit(
         candidate(kind, start, from, plan, round)
     };
     let made: Vec<Option<Directed>> = kinds.par_iter().map(|&kind| make(kind, &present.trained, &training)).collect();
-    let mut list: Vec<(RareStep, Option<(RareStep, f64)>, &Directed)> = vec![(RareStep::Kept, None, &present.trained)];
+    let mut list: Vec<Listed<'_>> = vec![(RareStep::Kept, None, &present.trained)];
     if let Some(earlier) = earlier {
         list.push((RareStep::Earlier, None, &earlier.trained));
     }

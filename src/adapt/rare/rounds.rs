@@ -1,9 +1,11 @@
 //! The rounds: draw, evaluate, pool, fit; until the budget is spent.
 
 use super::aim::FitTarget;
+use super::control::{Controlled, controlled};
 use super::directed::{Directed, Part, scaled_identity};
 use super::layers::{Layer, Layers};
 use super::plan::Plan;
+use super::planes::{Control, Plane, planes};
 use super::pool::{Pool, counted};
 use super::refit::{Decision, Twin, refit};
 use super::scores::{Answered, Scores};
@@ -13,7 +15,7 @@ use super::tuning::{RareRound, RareStep};
 use crate::adapt::TuneError;
 use crate::adapt::observer::Stage;
 use crate::numeric::{Points, Purpose, exp};
-use crate::weights::{Strata, StratifiedMean};
+use crate::weights::StratifiedMean;
 
 /// One round's draws and what is known of the proposal that they came from.
 #[derive(Debug)]
@@ -24,6 +26,9 @@ pub(crate) struct Drawn {
     pub(crate) log_proposal: Vec<f64>,
     /// `f w` of every draw.
     pub(crate) terms: Vec<f64>,
+    /// The same with control variates.
+    pub(crate) controlled: Vec<f64>,
+    /// Their mean.
     pub(crate) mean: StratifiedMean,
     pub(crate) counted: bool,
     pub(crate) spent_before: u64,
@@ -54,6 +59,7 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
     let space = &explored.space;
     let (k, rest) = (space.k(), space.rest_dim());
     let event = target.is_event();
+    let planes = planes(&explored.found, space);
     let layers = Layers::new(plan, k, rest, scouts.sd)?;
     let mut pool = Pool::new(if rest > 0 { k + 1 } else { k }, event, plan.seed);
     let scout_q = scout_density(k, rest, scouts.sd, scouts.sd)?;
@@ -72,7 +78,7 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
         target.enter(Stage::Round(index));
         let n = plan.next_round(at_event, target.spent(), course.rounds.len() as u32);
         let whole = course.layers.whole(&twin.full)?;
-        let (drawn, reduced) = draw(target, plan, space, &whole, &twin, n, index, at_event.is_some())?;
+        let (drawn, reduced) = draw(target, plan, (space, &planes), &whole, &twin, n, index, at_event.is_some())?;
         let mut record = record(&drawn, &reduced, &whole, &twin, index, target.spent());
         (record.step, record.predicted_ess_fraction) = (step, predicted);
         course.pool.add(&reduced, &drawn.answered, &drawn.log_proposal, whole);
@@ -150,7 +156,7 @@ fn widened(fitted: &Directed) -> Result<Directed, TuneError> {
 fn draw(
     target: &Scores,
     plan: &Plan,
-    space: &Subspace,
+    (space, planes): (&Subspace, &[Plane]),
     whole: &Directed,
     twin: &Twin,
     n: usize,
@@ -169,9 +175,29 @@ fn draw(
             f => f * exp(answered.log_nominal[i] - log_proposal[i]),
         })
         .collect();
-    let mean = Strata::new(&labels).mean(&terms);
+    let (columns, _) = whole.responsibilities(&reduced);
+    let mut controls: Vec<Control> =
+        columns.into_iter().zip(whole.mixture().shares()).map(|(values, &mean)| Control { values, mean }).collect();
+    let needed = controls.len();
+    if event {
+        let log_ratio: Vec<f64> = answered.log_nominal.iter().zip(&log_proposal).map(|(p, q)| p - q).collect();
+        controls.extend(planes.iter().flat_map(|plane| plane.controls(&points, &log_ratio)));
+    }
+    let Controlled { terms: controlled, mean } =
+        controlled(&terms, &labels, whole.mixture().shares(), &controls, needed);
     let fitted = twin.full.len();
-    let drawn = Drawn { points, labels, answered, log_proposal, terms, mean, counted: counts, spent_before, fitted };
+    let drawn = Drawn {
+        points,
+        labels,
+        answered,
+        log_proposal,
+        terms,
+        controlled,
+        mean,
+        counted: counts,
+        spent_before,
+        fitted,
+    };
     Ok((drawn, reduced))
 }
 

@@ -65,6 +65,12 @@ impl Subspace {
         Some(Self { dim, basis: Some(basis) })
     }
 
+    /// The directions as unit vectors.
+    pub(crate) fn directions(&self) -> Vec<Vec<f64>> {
+        let axis = |j: usize| (0..self.dim).map(|i| f64::from(u8::from(i == j))).collect();
+        self.basis.clone().unwrap_or_else(|| (0..self.dim).map(axis).collect())
+    }
+
     /// Number of directions `k`.
     pub(crate) fn k(&self) -> usize {
         self.basis.as_ref().map_or(self.dim, Vec::len)

@@ -57,6 +57,10 @@ const NEAR_DISTANCE: f64 = 1.0;
 const LATER: f64 = 6.0;
 /// A scout that reaches to within this of the tangent plane at a found point is explained by it.
 const TANGENT_SLACK: f64 = 0.3;
+/// Where the way from a found point to a scout is looked at.
+const ON_THE_WAY: [f64; 3] = [0.25, 0.5, 0.75];
+/// One way for so many evaluations of the budget.
+const BUDGET_PER_CHECK: u64 = 500;
 /// Gradients taken around the best point to tell the directions, where a gradient costs `d` evaluations or one.
 const GRADIENTS: usize = 4;
 const CHEAP_GRADIENTS: usize = 16;
@@ -105,6 +109,8 @@ struct Searching<'a, 'b> {
     found: Vec<Found>,
     gradients: Vec<Vec<f64>>,
     searches: usize,
+    /// Ways looked at between scouts and found points.
+    checks: u64,
     cap: u64,
     rng: Stream,
 }
@@ -128,6 +134,7 @@ impl<'a, 'b> Searching<'a, 'b> {
             found: Vec::new(),
             gradients: Vec::new(),
             searches: 0,
+            checks: 0,
             cap: target.spent() + plan.search_cap,
             rng: stream(plan.seed, Purpose::Survey, 1, 0),
         }
@@ -143,6 +150,10 @@ impl<'a, 'b> Searching<'a, 'b> {
             let (start, hunt) = if std::mem::take(&mut from_middle) {
                 (self.target.look(&vec![0.0; self.target.dim()])?, false)
             } else if let Some(i) = self.nearest_unexplained().filter(|_| useless < REPEATS_UNEXPLAINED) {
+                if self.connected(i)? {
+                    self.unexplained[i] = false;
+                    continue;
+                }
                 self.mark_direction(i);
                 (self.scout(i)?, true)
             } else {
@@ -156,7 +167,46 @@ impl<'a, 'b> Searching<'a, 'b> {
                 (false, _) => repeats = 0,
             }
         }
-        self.neighbours()
+        self.neighbours()?;
+        self.connect_rest()
+    }
+
+    /// Whether the straight way from a scout to a found point stays in the event: they belong together. The point is the one in the
+    /// most similar direction, then the nearest one.
+    fn connected(&mut self, i: usize) -> Result<bool, TuneError> {
+        let row = &self.rows[i];
+        let cosine = |p: &Found| dot(&p.at, row) / dot(&p.at, &p.at).sqrt().max(1e-9);
+        let alike = self.found.iter().max_by(|a, b| cosine(a).total_cmp(&cosine(b)));
+        let near = self.found.iter().min_by(|a, b| distance(&a.at, row).total_cmp(&distance(&b.at, row)));
+        let mut ways: Vec<&Found> = alike.into_iter().chain(near).collect();
+        ways.dedup_by(|a, b| a.at == b.at);
+        for point in ways {
+            if self.target.spent() + ON_THE_WAY.len() as u64 > self.cap
+                || self.checks >= self.plan.budget / BUDGET_PER_CHECK
+            {
+                return Ok(false);
+            }
+            self.checks += 1;
+            let mut between = Points::new(row.len());
+            for share in ON_THE_WAY {
+                let at: Vec<f64> = point.at.iter().zip(row).map(|(p, u)| p + share * (u - p)).collect();
+                between.push(&at);
+            }
+            if self.target.answers(&between)?.hit.iter().all(|&h| h) {
+                return Ok(true);
+            }
+        }
+        Ok(false)
+    }
+
+    /// Scouts left unexplained by the searches from them are held against all that was found.
+    fn connect_rest(&mut self) -> Result<(), TuneError> {
+        for i in 0..self.rows.len() {
+            if self.unexplained[i] && self.connected(i)? {
+                self.unexplained[i] = false;
+            }
+        }
+        Ok(())
     }
 
     /// One search; whether it found something new.
