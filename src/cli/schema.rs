@@ -24,9 +24,9 @@ enum Format {
 
 pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     output::say(match args.format {
-        Format::Proposal => include_str!("../../schemas/proposal.json"),
-        Format::Summary => include_str!("../../schemas/summary.json"),
-        Format::Rounds => include_str!("../../schemas/rounds.json"),
+        Format::Proposal => include_str!("schemas/proposal.json"),
+        Format::Summary => include_str!("schemas/summary.json"),
+        Format::Rounds => include_str!("schemas/rounds.json"),
     })?;
     Ok(Ending::Done)
 }

@@ -189,7 +189,8 @@ mod tests {
         scored.coordinate = Coordinate::StandardNormal;
         let log: fn(f64) -> f64 = |x| ln(x - 2.0);
         let of_gumbel = |x: f64| gumbel.score(x);
-        let cases: [(Variable, [f64; 2], &dyn Fn(f64) -> f64); 3] =
+        type Case<'a> = (Variable, [f64; 2], &'a dyn Fn(f64) -> f64);
+        let cases: [Case; 3] =
             [(line, [-5.0, 5.0], &|x| x), (logged, [2.1, 12.0], &log), (scored, [-6.0, 30.0], &of_gumbel)];
         for (variable, ends, score) in cases {
             for direction in [vec![1.0, 0.0], vec![0.6, 0.8]] {
