@@ -52,6 +52,7 @@ fn page() -> PageData {
         failed: tuning.failed,
         report_draws: tuning.report.labels.len() as u64,
         command: "evenpoise tune seepage.toml --seed 5 && true".into(),
+        statement: problem.text(),
     };
     PageData::of_density(problem, tuning, vec![figure], facts)
 }

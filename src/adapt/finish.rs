@@ -13,7 +13,7 @@ use crate::proposal::{Drawn, Mixture};
 use crate::weights::{LogWeights, Score, score};
 
 /// Fits that the ensemble joins.
-const LAST_FITS: usize = 3;
+const LAST_FITS: usize = 4;
 /// An earlier round is chosen only if its fresh ESS fraction is above the ensemble's by this and two standard errors.
 const MARGIN: f64 = 0.05;
 /// A round in which one draw held more than this is not trusted with the choice.

@@ -37,7 +37,7 @@ pub(crate) struct Plan {
 /// mode of the trial problems; the others are what the loop needs on them (`docs/experiments.md`).
 const SURVEY: f64 = 0.15;
 const SURVEY_LEAST: f64 = 0.06;
-const SURVEY_ENOUGH: f64 = 0.22;
+const SURVEY_ENOUGH: f64 = 0.30;
 const FIRST_MODE_BY_DIFFERENCES: f64 = 0.4;
 const PROBE: f64 = 0.04;
 const BIRTHS: f64 = 0.15;

@@ -296,7 +296,7 @@ pub(crate) fn join(fit: &Fit, born: &Mixture) -> Result<Fit, TuneError> {
 
 /// Points of the ensemble's share problem, at most, and its steps.
 const ENSEMBLE_POINTS: usize = 12_000;
-const ENSEMBLE_STEPS: usize = 30;
+const ENSEMBLE_STEPS: usize = 100;
 /// Floor of a component's share in the ensemble.
 const ENSEMBLE_FLOOR: f64 = 0.001;
 

@@ -40,7 +40,13 @@ pub(crate) fn made_by(provenance: &Provenance, evaluations: u64) -> MadeBy {
 }
 
 /// What the report says of a run.
-pub(crate) fn facts_of_run(provenance: &Provenance, evaluations: u64, failed: u64, draws: usize) -> RunFacts {
+pub(crate) fn facts_of_run(
+    provenance: &Provenance,
+    evaluations: u64,
+    failed: u64,
+    draws: usize,
+    statement: String,
+) -> RunFacts {
     RunFacts {
         program: PROGRAM.to_owned(),
         seed: provenance.seed,
@@ -50,6 +56,7 @@ pub(crate) fn facts_of_run(provenance: &Provenance, evaluations: u64, failed: u6
         report_draws: draws as u64,
         // The copy of the problem in the run's folder holds every setting.
         command: "evenpoise tune problem.toml --out again.run".to_owned(),
+        statement,
     }
 }
 

@@ -49,7 +49,8 @@ pub(crate) fn write(folder: &RunFolder, problem: &Problem, tuning: &Tuning, seed
     let draws = DrawsTable::of(problem, tuning);
     let evaluations = Evaluations { all: tuning.evaluations, survey: tuning.survey.evaluations };
     let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
-    let facts = header::facts_of_run(&provenance, evaluations.all, tuning.failed, draws.len());
+    let facts =
+        header::facts_of_run(&provenance, evaluations.all, tuning.failed, draws.len(), problem.text_for(folder.path()));
     write_page(folder, &PageData::of_density(problem, tuning, figures, facts))?;
     let summary = Summary::of(problem, tuning, provenance);
     write_json(&folder.join("summary.json"), &summary)?;
@@ -65,7 +66,13 @@ pub(crate) fn write_rare(
 ) -> anyhow::Result<RareSummary> {
     let provenance = header::provenance(problem, seed);
     let made_by = header::made_by(&provenance, tuning.evaluations);
-    let facts = header::facts_of_run(&provenance, tuning.evaluations, tuning.failed, tuning.draws.log_nominal.len());
+    let facts = header::facts_of_run(
+        &provenance,
+        tuning.evaluations,
+        tuning.failed,
+        tuning.draws.log_nominal.len(),
+        problem.text_for(folder.path()),
+    );
     let summary = RareSummary::of(problem, tuning, provenance);
     let mut proposal = ProposalFile::new(problem, &tuning.chosen, made_by);
     proposal.scores = Some(summary.scores(tuning));

@@ -227,4 +227,6 @@ pub struct RunFacts {
     pub report_draws: u64,
     /// The command that makes the same run again.
     pub command: String,
+    /// The problem file as it stands in the run's folder, with every default.
+    pub statement: String,
 }

@@ -24,7 +24,7 @@ impl PageData {
             aim: problem.aim(),
             verdict: tuning.verdict.clone(),
             variables: variables(problem),
-            statement: problem.text(),
+            statement: run.statement.clone(),
             notes: notes(problem),
             survey: surveyed(problem, &tuning.survey),
             schedule: ScheduleKind::Exponent,
@@ -105,7 +105,8 @@ pub(crate) fn notes(problem: &Problem) -> Vec<String> {
         notes.push(format!(
             "Data: {} rows of {} with the columns {}{dropped}.",
             count(file.rows as u64),
-            file.file,
+            // By its own name: the way to it depends on where the run was started or gone on with.
+            std::path::Path::new(&file.file).file_name().unwrap_or_default().to_string_lossy(),
             file.columns.join(", ")
         ));
     }

@@ -32,6 +32,7 @@ const POLICY: &str = "default-src 'none'; img-src data:; style-src 'unsafe-inlin
 ///     failed: tuning.failed,
 ///     report_draws: tuning.report.labels.len() as u64,
 ///     command: "evenpoise tune level.toml".into(),
+///     statement: problem.text(),
 /// };
 /// let page = html(&PageData::of_density(&problem, &tuning, vec![], run));
 /// assert!(page.starts_with("<!DOCTYPE html>") && page.contains("Level &lt; 3 m &amp; rising"));

@@ -23,7 +23,7 @@ impl PageData {
             aim: problem.aim(),
             verdict: tuning.verdict.clone(),
             variables: variables(problem),
-            statement: problem.text(),
+            statement: run.statement.clone(),
             notes: notes(problem),
             survey: surveyed(problem, &tuning.survey),
             schedule: ScheduleKind::Smoothing,
