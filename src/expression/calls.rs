@@ -61,6 +61,13 @@ impl Lowering<'_> {
             (Some(_), _) => Fault::new(span.clone(), format!("`{name}` is no function"))
                 .help(format!("write {name}*(...) for a product")),
             (None, Some((_, help))) => Fault::new(span.clone(), format!("no function is called `{name}`")).help(*help),
+            // The nearest name by its letters would be another function, and a wrong model without a word.
+            (None, None) if ["pdf", "pmf", "density", "mass"].iter().any(|end| name.ends_with(end)) => {
+                Fault::new(span.clone(), format!("no function is called `{name}`")).help(
+                    "log densities are called log_density_NAME(x, ...), log masses log_mass_NAME(k, ...): \
+                     log_density_lognormal(x, log_mean, log_sd)",
+                )
+            }
             (None, None) => {
                 let fault = Fault::new(span.clone(), format!("no function is called `{name}`"));
                 match nearest(name, FUNCTIONS.iter().map(|function| function.name)) {

@@ -297,6 +297,9 @@ impl Parser {
         let operator = "an operator is missing before it, * for a product";
         match self.peek() {
             Token::Number(value) => Fault::new(span, format!("the number {value} follows a value")).help(operator),
+            Token::Name(word) if *word == "if" || *word == "else" => {
+                Fault::new(span, format!("`{word}` follows a value")).help("a choice is written if(condition, a, b)")
+            }
             Token::Name(word) => Fault::new(span, format!("`{word}` follows a value")).help(operator),
             Token::Label(label) => Fault::new(span, format!("the label '{label}' follows a value"))
                 .help("compare a column with it: station == 'Alder'"),

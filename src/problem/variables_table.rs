@@ -222,6 +222,16 @@ fn unknown_parameter(reader: &mut Reader<'_>, entry: &Entry<'_>, family: &str, o
         Fault::new(entry.key_span.clone(), format!("`{}` is no parameter of the {family} distribution", entry.key))
             .label("unknown key");
     let all = format!("its parameters are {}", all_of(own));
+    let other_way = match entry.key {
+        "scale" if own.contains(&"rate") => Some("give `rate`, which is one over the scale"),
+        "rate" if own.contains(&"scale") => Some("give `scale`, which is one over the rate"),
+        "sigma" | "stdev" | "std" | "stddev" if own.contains(&"sd") => Some("write `sd`"),
+        _ => None,
+    };
+    if let Some(way) = other_way {
+        reader.fault(fault.help(format!("{way}; its parameters are {all_of}", all_of = all_of(own))));
+        return;
+    }
     reader.fault(match nearest(entry.key, known) {
         Some(near) => fault.help(format!("did you mean `{near}`? {}", capitalised(&all))),
         None => fault.help(all),

@@ -4,6 +4,7 @@
 mod built;
 mod documentation;
 mod mutations;
+mod other_ways;
 mod right;
 mod starts;
 mod whole;
