@@ -158,7 +158,8 @@ pub(crate) fn rounds(
     let mut predicted = None;
     let mut births_left = plan.births;
     for r in 0..count {
-        let draws = plan.draws(r, count, target.spent()) as usize;
+        let reserved = if r + 1 == count && fit.layers.is_some() { plan.last_births.min(births_left) } else { 0 };
+        let draws = plan.draws(r, count, target.spent() + reserved) as usize;
         if draws == 0 {
             course.stop = StopReason::Budget;
             break;
@@ -172,10 +173,11 @@ pub(crate) fn rounds(
             let refined = refine(&course.pool, &fit, wide, settings, r + 1, draws)?;
             (fit, predicted) = absorb(&mut round, refined);
             course.fits.push(fit.clone());
-            if r + 1 < count && fit.layers.is_some() && settings.method == Preference::Auto {
+            if (r + 1 < count || reserved > 0) && fit.layers.is_some() && settings.method == Preference::Auto {
                 target.enter(Stage::Births(r + 1));
                 let before = target.spent();
-                let cap = (before + births_left).min(before + plan.left_for_rounds(before) / 2);
+                let share = if r + 1 < count { 2 } else { 1 };
+                let cap = (before + births_left).min(before + plan.left_for_rounds(before) / share);
                 let now = layered(&fit.full, wide, fit.layers)?;
                 let df = fit.full.components()[0].df();
                 if let Some(born) = births(target, &course.pool, &now, df, cap)? {
@@ -226,11 +228,11 @@ fn draw_round(
 ) -> Result<Round, TuneError> {
     let Drawn { points, labels } = proposal.draw(draws, settings.seed, Purpose::Round, r);
     let log_proposal = proposal.log_density(&points);
-    let log_target = target.values(&points)?;
+    let (log_target, slopes) = target.values_and_slopes(&points)?;
     let failed = log_target.iter().filter(|l| l.is_nan()).count() as u32;
     let log_weights: Vec<f64> =
         log_target.iter().zip(&log_proposal).map(|(l, q)| if l.is_nan() { f64::NEG_INFINITY } else { l - q }).collect();
-    course.pool.add(&points, &log_target, &log_proposal, proposal.clone(), settings.seed);
+    course.pool.add(&points, &log_target, &log_proposal, slopes.as_ref(), proposal.clone(), settings.seed);
     course.proposals.push(proposal.clone());
     Ok(Round {
         index: r + 1,

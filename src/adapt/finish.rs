@@ -29,7 +29,8 @@ pub(crate) fn choose(
 ) -> Result<(Mixture, Vec<Finalist>), TuneError> {
     target.enter(Stage::Confirm);
     let from = course.fits.len().saturating_sub(LAST_FITS);
-    let (joined, predicted) = ensemble(&course.pool, &course.fits[from..], wide, settings, course.last_draws)?;
+    let (joined, predicted) =
+        ensemble(&course.pool, &course.fits[from..], &course.born, wide, settings, course.last_draws)?;
     let n = plan.confirm.min(plan.budget - target.spent()) as usize;
     let confirmed = fresh_score(target, settings, &joined, n, Purpose::Confirm)?.1;
     let mut finalists = vec![Finalist {

@@ -21,6 +21,8 @@ pub(crate) struct Plan {
     pub(crate) probe: u64,
     /// Curvature and probes after rounds may spend this much in all.
     pub(crate) births: u64,
+    /// Of these, kept for the births after the last round.
+    pub(crate) last_births: u64,
     /// Confirm draws.
     pub(crate) confirm: u64,
     /// Report draws, at least.
@@ -41,6 +43,7 @@ const SURVEY_ENOUGH: f64 = 0.30;
 const FIRST_MODE_BY_DIFFERENCES: f64 = 0.4;
 const PROBE: f64 = 0.04;
 const BIRTHS: f64 = 0.15;
+const LAST_BIRTHS: f64 = 0.02;
 const CONFIRM: f64 = 0.05;
 const REPORT: f64 = 0.25;
 /// Rounds when the user does not say: more bring noise, fewer too little adaptation.
@@ -63,6 +66,7 @@ impl Plan {
             first_mode_cap: of(FIRST_MODE_BY_DIFFERENCES),
             probe: of(PROBE),
             births: of(BIRTHS),
+            last_births: of(LAST_BIRTHS),
             confirm: of(CONFIRM).max(of(0.1).min(200)),
             report: of(settings.report_share.unwrap_or(REPORT)).max(of(0.2).min(400)),
             most_rounds: settings.rounds.min(ROUNDS.max(if settings.round_draws.is_some() {

@@ -18,6 +18,8 @@ pub(crate) struct Pool {
     proposals: Vec<(f64, Mixture)>,
     /// Held out for good: never trained on.
     pub(crate) held_out: Vec<bool>,
+    /// Gradients of the log target, where the target gives them.
+    pub(crate) gradients: Option<Points>,
 }
 
 /// One point in so many of every round is held out.
@@ -31,6 +33,7 @@ impl Pool {
             log_sums: Vec::new(),
             proposals: Vec::new(),
             held_out: Vec::new(),
+            gradients: Some(Points::new(dim)),
         }
     }
 
@@ -44,6 +47,7 @@ impl Pool {
         points: &Points,
         log_target: &[f64],
         log_proposal: &[f64],
+        gradients: Option<&Points>,
         proposal: Mixture,
         seed: u64,
     ) {
@@ -61,6 +65,10 @@ impl Pool {
             }
         }
         self.points.extend(points);
+        match (self.gradients.as_mut(), gradients) {
+            (Some(held), Some(more)) => held.extend(more),
+            _ => self.gradients = None,
+        }
         self.log_target.extend(log_target.iter().map(|&l| if l.is_nan() { f64::NEG_INFINITY } else { l }));
         self.log_sums.extend(sums);
         self.proposals.push((log_n, proposal));
@@ -145,7 +153,7 @@ mod tests {
         for (round, (n, q)) in [(300, &a), (500, &b), (200, &a)].into_iter().enumerate() {
             let drawn = q.draw(n, 1, Purpose::Trial, round as u32);
             let lq = q.log_density(&drawn.points);
-            pool.add(&drawn.points, &vec![0.0; n], &lq, q.clone(), 1);
+            pool.add(&drawn.points, &vec![0.0; n], &lq, None, q.clone(), 1);
         }
         for (i, m) in pool.log_mixture().iter().enumerate().step_by(37) {
             let x = pool.points.point(i);

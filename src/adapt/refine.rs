@@ -37,6 +37,8 @@ pub(crate) struct Refined {
 /// Points trained on and polished on, at most.
 const TRAINING: usize = 10_000;
 const POLISHING: usize = 40_000;
+/// The same where gradients take the noise away.
+const POLISHING_WITH_SLOPES: usize = 20_000;
 /// A component's share of the fitted mixture is at least this.
 const SHARE_FLOOR: f64 = 0.004;
 /// Layers that candidates are ranked with.
@@ -94,6 +96,7 @@ pub(crate) fn refine(
     let training = thinned(live.iter().copied().filter(|&i| !pool.held_out[i]).collect(), TRAINING, &mut rng);
     let held: Vec<usize> = (0..pool.len()).filter(|&i| pool.held_out[i]).collect();
     let points = pool.points.select(&training);
+    let slopes = pool.gradients.as_ref().filter(|_| weighted.exponent == 1.0).map(|g| g.select(&training));
     let weights = shares_of(&weighted.weights, &training);
     let log_ratios: Vec<f64> = layered(&fit.trained, wide, fit.layers)?
         .log_density(&points)
@@ -106,6 +109,7 @@ pub(crate) fn refine(
             mixture: &fit.trained,
             points: &points,
             weights: &weights,
+            gradients: slopes.as_ref(),
             log_ratios: &log_ratios,
             most_components: settings.components.unwrap_or_else(|| most_components(&weights, points.dim())),
             fit_df: settings.fit_df(),
@@ -139,9 +143,12 @@ pub(crate) fn refine(
         Step::Kept => fit.full.clone(),
         Step::Tails(df) => fit.full.map(|c| c.with_df(df))?,
         _ => {
-            let all = thinned(live, POLISHING, &mut rng);
+            let exact = weighted.exponent == 1.0 && pool.gradients.is_some();
+            let most = if exact { POLISHING_WITH_SLOPES } else { POLISHING };
+            let all = thinned(live, most, &mut rng);
             let weights = shares_of(&weighted.weights, &all);
-            polish(winner, &pool.points.select(&all), &weights, settings.fit_df(), settings.diagonal())
+            let slopes = pool.gradients.as_ref().filter(|_| weighted.exponent == 1.0).map(|g| g.select(&all));
+            polish(winner, &pool.points.select(&all), &weights, slopes.as_ref(), settings.fit_df(), settings.diagonal())
         }
     };
     let floored = floored(&full)?;
@@ -299,12 +306,19 @@ const ENSEMBLE_POINTS: usize = 12_000;
 const ENSEMBLE_STEPS: usize = 100;
 /// Floor of a component's share in the ensemble.
 const ENSEMBLE_FLOOR: f64 = 0.001;
+/// Share that each component born in any round begins with; it has no floor, and is left out where its share ends below the least.
+const NEWBORN_START: f64 = 0.002;
+const NEWBORN_LEAST: f64 = 1e-6;
 
-/// The final proposal: the last few fits, halo and wide start, every component with its own share, by convex minimisation of the
-/// predicted weight variance. With the ESS fraction that the pool predicts for it.
+/// The final proposal: the last few fits, whatever was born at heavy points, halo and wide start, every component with its own share, by
+/// convex minimisation of the predicted weight variance. With the ESS fraction that the pool predicts for it.
+///
+/// The newborn join as they were born: a refit ranked by log density merges away what carries a ten-thousandth of the mass, be it half
+/// of the weight variance (banana in 20 dimensions: ESS fraction .85 without them, .976 with).
 pub(crate) fn ensemble(
     pool: &Pool,
     fits: &[Fit],
+    born: &[(u32, Mixture)],
     wide: &Mixture,
     settings: &Settings,
     round_draws: usize,
@@ -317,7 +331,10 @@ pub(crate) fn ensemble(
         }
     }
     let each = 1.0 / distinct.len() as f64;
-    let members = Mixture::union(&distinct.iter().map(|m| (each, *m)).collect::<Vec<_>>())?;
+    let mut parts: Vec<(f64, &Mixture)> = distinct.iter().map(|m| (each, *m)).collect();
+    parts.extend(born.iter().map(|(_, b)| (NEWBORN_START * b.len() as f64, b)));
+    let members = Mixture::union(&parts)?;
+    let newborn: usize = parts[distinct.len()..].iter().map(|(_, m)| m.len()).sum();
     let last = distinct[distinct.len() - 1];
     let mut rng = stream(settings.seed, Purpose::Refit, 0, 2);
     let rows = thinned((0..pool.len()).collect(), ENSEMBLE_POINTS, &mut rng);
@@ -327,6 +344,8 @@ pub(crate) fn ensemble(
     let mut columns = members.component_log_densities(&points);
     let mut start: Vec<f64> = members.shares().iter().map(|a| 0.94 * a).collect();
     let mut floors: Vec<f64> = members.shares().iter().map(|a| ENSEMBLE_FLOOR.min(0.5 * a)).collect();
+    let first_newborn = floors.len() - newborn;
+    floors[first_newborn..].fill(0.0);
     let layers = fits[fits.len() - 1].layers.is_some();
     if layers {
         columns.push(halo(last)?.log_density(&points));
@@ -336,9 +355,13 @@ pub(crate) fn ensemble(
     }
     let shares = minimise_variance(&columns, &weights, &log_target, &start, &floors, ENSEMBLE_STEPS);
     let k = members.len();
-    let fitted = Mixture::new(&shares[..k], members.components().to_vec())?;
+    let mut masses = shares[..k].to_vec();
+    for mass in &mut masses[first_newborn..] {
+        *mass = if *mass < NEWBORN_LEAST { 0.0 } else { *mass };
+    }
+    let fitted = Mixture::new(&masses, members.components().to_vec())?;
     let chosen = if layers {
-        let mass: f64 = shares[..k].iter().sum();
+        let mass: f64 = masses.iter().sum();
         Mixture::union(&[(mass, &fitted), (shares[k], &halo(last)?), (shares[k + 1], wide)])?
     } else {
         fitted

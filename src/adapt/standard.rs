@@ -104,6 +104,21 @@ impl<'a> Standard<'a> {
         Ok(answers.log_density)
     }
 
+    /// Log densities at `z`, and their gradients where the target gives them for the price of the value.
+    pub(crate) fn values_and_slopes(&self, z: &Points) -> Result<(Vec<f64>, Option<Points>), TuneError> {
+        if !self.source.has_gradient() {
+            return Ok((self.values(z)?, None));
+        }
+        let mut answers = self.ask(z, true, z.len() as u64)?;
+        for b in 0..answers.gradients.n_blocks() {
+            for j in 0..self.dim() {
+                let spread = self.source.start().spread[j];
+                answers.gradients.column_mut(b, j).iter_mut().for_each(|v| *v *= spread);
+            }
+        }
+        Ok((answers.log_density, Some(answers.gradients)))
+    }
+
     /// Log density of one point.
     pub(crate) fn value(&self, z: &[f64]) -> Result<f64, TuneError> {
         Ok(self.values(&Points::from_rows(z.len(), z))?[0])

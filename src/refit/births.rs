@@ -147,7 +147,7 @@ pub fn residual(
     }
     let born = Mixture::new(seeds.shares(), components)?;
     let method = Method { strength: d as f64, anchor: Anchor::Own, iterations: 6, fit_df: false, diagonal: false };
-    let born = em(&born, &near, &local, method)?;
+    let born = em(&born, &near, &local, None, method)?;
     let total: f64 = weights.iter().sum();
     let share = (missing / total).clamp(0.01, 0.3);
     Ok(Mixture::union(&[(1.0 - share, mixture), (share, &born)])?)

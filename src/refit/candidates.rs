@@ -105,6 +105,8 @@ pub struct Incumbent<'a> {
     pub points: &'a Points,
     /// Their weights, summing to one.
     pub weights: &'a [f64],
+    /// Gradients of the log target at the training points, where there are any.
+    pub gradients: Option<&'a Points>,
     /// `ln` of (normalised target over present proposal, layers included) at the training points.
     pub log_ratios: &'a [f64],
     /// Most components that the effective points can carry.
@@ -206,34 +208,43 @@ fn method(step: Step, d: usize, fit_df: bool, diagonal: bool) -> Method {
 fn build(from: &Incumbent, step: Step, seed: u64, round: u32, index: u32) -> Result<Mixture, RefitError> {
     let mut rng = stream(seed, Purpose::Refit, round, 16 + index);
     let (now, points, weights) = (from.mixture, from.points, from.weights);
+    let slopes = from.gradients;
     let how = method(step, now.dim(), from.fit_df, from.diagonal);
     match step {
         Step::Kept => Ok(now.clone()),
         Step::Tails(df) => Ok(now.map(|c| c.with_df(df))?),
         Step::Moments => moments_fit(now, points, weights, how),
-        Step::Variance => em(now, points, &half_variance_weights(from), how),
-        Step::Merged => em(&births::merge_nearest(now)?, points, weights, how),
+        Step::Variance => em(now, points, &half_variance_weights(from), None, how),
+        Step::Merged => em(&births::merge_nearest(now)?, points, weights, slopes, how),
         Step::Split => {
             let chances: Vec<f64> = now.shares().iter().map(|a| a + 1e-3).collect();
             let which = distinct(&chances, (now.len() / 3).max(1), &mut rng);
-            em(&births::split(now, points, weights, &which, &mut rng)?, points, weights, how)
+            em(&births::split(now, points, weights, &which, &mut rng)?, points, weights, slopes, how)
         }
         Step::Seeded(count) => {
             let df = now.components()[0].df();
-            em(&births::seed(points, weights, count, df, &mut rng)?, points, weights, how)
+            em(&births::seed(points, weights, count, df, &mut rng)?, points, weights, slopes, how)
         }
         Step::Born(count) => {
             let lacking = lacking(from);
-            em(&births::residual(now, points, weights, &lacking, count, &mut rng)?, points, weights, how)
+            em(&births::residual(now, points, weights, &lacking, count, &mut rng)?, points, weights, slopes, how)
         }
-        _ => em(now, points, weights, how),
+        _ => em(now, points, weights, slopes, how),
     }
 }
 
 /// The winner once more on all points, training and held out, by its own method. Candidates that froze locations and scales
 /// (kept, tails) are not polished: that would move what they left alone.
 #[must_use]
-pub fn polish(winner: &Candidate, points: &Points, weights: &[f64], fit_df: bool, diagonal: bool) -> Mixture {
+pub fn polish(
+    winner: &Candidate,
+    points: &Points,
+    weights: &[f64],
+    slopes: Option<&Points>,
+    fit_df: bool,
+    diagonal: bool,
+) -> Mixture {
+    let slopes = if winner.step == Step::Variance { None } else { slopes };
     let how = Method { iterations: 4, ..method(winner.step, winner.mixture.dim(), fit_df, diagonal) };
     let how = if matches!(winner.step, Step::Split | Step::Seeded(_) | Step::Born(_) | Step::Variance) {
         Method { strength: LOOSE * winner.mixture.dim() as f64, ..how }
@@ -243,7 +254,7 @@ pub fn polish(winner: &Candidate, points: &Points, weights: &[f64], fit_df: bool
     let polished = match winner.step {
         Step::Kept | Step::Tails(_) => return winner.mixture.clone(),
         Step::Moments => moments_fit(&winner.mixture, points, weights, how),
-        _ => em(&winner.mixture, points, weights, how),
+        _ => em(&winner.mixture, points, weights, slopes, how),
     };
     polished.unwrap_or_else(|_| winner.mixture.clone())
 }

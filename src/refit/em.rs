@@ -1,6 +1,7 @@
 //! Weighted EM of a Gaussian or Student-t mixture, anchored to the scales it began with; and moment matching.
 
 use super::degrees::best_df;
+use super::slopes::assisted_moments;
 use super::{Moments, RefitError, weighted_moments};
 use crate::numeric::Points;
 use crate::proposal::{Component, Mixture};
@@ -46,14 +47,23 @@ const MIN_SHARE: f64 = 2e-4;
 /// # Source
 /// Update of a Student-t mixture: Peel & McLachlan, Stat. Comput. 10 (2000) 339-348; weighted: Cappe, Douc, Guillin, Marin & Robert,
 /// Stat. Comput. 18 (2008) 447-459. Retention by effective points and the anchor are ours.
-pub fn em(start: &Mixture, points: &Points, weights: &[f64], method: Method) -> Result<Mixture, RefitError> {
+pub fn em(
+    start: &Mixture,
+    points: &Points,
+    weights: &[f64],
+    gradients: Option<&Points>,
+    method: Method,
+) -> Result<Mixture, RefitError> {
     let n_effective = super::effective(weights);
     let tolerance = (0.02 / n_effective).max(1e-4);
     let mut anchors: Vec<Vec<f64>> = start.components().iter().map(Component::scale).collect();
     let mut mixture = start.clone();
     let mut before = f64::NEG_INFINITY;
     for iteration in 0..method.iterations {
-        let (objective, moments) = weighted_moments(&mixture, points, weights, true);
+        let (objective, moments) = match gradients {
+            Some(g) => assisted_moments(&mixture, points, weights, g, true),
+            None => weighted_moments(&mixture, points, weights, true),
+        };
         if objective - before < tolerance && iteration > 1 {
             break;
         }
@@ -205,7 +215,7 @@ mod tests {
                 let (objective, _) = weighted_moments(&mixture, &points, &weights, true);
                 assert!(objective >= before - 1e-12, "seed {seed}: {before} then {objective}");
                 before = objective;
-                mixture = em(&mixture, &points, &weights, plain(1)).unwrap();
+                mixture = em(&mixture, &points, &weights, None, plain(1)).unwrap();
             }
         }
     }
@@ -217,7 +227,7 @@ mod tests {
         let points = truth().draw(n, 3, Purpose::Trial, 0).points;
         let weights = vec![1.0 / n as f64; n];
         let start = truth().map(|c| c.widened(2.0).with_df(30.0)).unwrap();
-        let fit = em(&start, &points, &weights, Method { fit_df: true, ..plain(60) }).unwrap();
+        let fit = em(&start, &points, &weights, None, Method { fit_df: true, ..plain(60) }).unwrap();
         assert!((fit.shares()[0] - 0.3).abs() < 0.02, "{:?}", fit.shares());
         assert!((fit.components()[1].location()[0] - 2.0).abs() < 0.04);
         assert!((fit.components()[1].scale()[3] - 2.0).abs() < 0.2, "{:?}", fit.components()[1].scale());

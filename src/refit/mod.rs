@@ -10,6 +10,7 @@ mod degrees;
 mod em;
 mod moments;
 mod shares;
+mod slopes;
 
 pub use births::{merge_nearest, residual, seed, split};
 pub use candidates::{Candidate, Incumbent, Preference, Step, candidates, most_components, polish};
