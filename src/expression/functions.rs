@@ -116,7 +116,7 @@ pub(super) const FUNCTIONS: &[Function] = &[
 ];
 
 /// What functions are called elsewhere, and what to write here.
-pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 19] = [
+pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 43] = [
     ("ln", "write log(...): it is the natural logarithm"),
     ("log2", "write log(...)/log(2)"),
     ("pow", "write a^b"),
@@ -136,6 +136,30 @@ pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 19] = [
     ("sigmoid", "write logistic(...)"),
     ("prod", "write exp(sum(log(...)))"),
     ("mod", "write x - floor(x/m)*m"),
+    ("avg", "write mean(...)"),
+    ("total", "write sum(...)"),
+    ("length", "write count(...)"),
+    ("len", "write count(...)"),
+    ("minimum", "write min(...)"),
+    ("maximum", "write max(...)"),
+    ("std", "write sqrt(mean((x - mean(x))^2)) of a column x"),
+    ("stdev", "write sqrt(mean((x - mean(x))^2)) of a column x"),
+    ("var", "write mean((x - mean(x))^2) of a column x"),
+    ("ceiling", "write ceil(...)"),
+    ("loge", "write log(...): it is the natural logarithm"),
+    ("sqr", "write (...)^2 for the square, sqrt(...) for its root"),
+    ("cbrt", "write (...)^(1/3)"),
+    ("lngamma", "write lgamma(...)"),
+    ("phi", "write normal_cdf(...)"),
+    ("probit", "write normal_quantile(...)"),
+    ("expit", "write logistic(...)"),
+    ("inv_logit", "write logistic(...)"),
+    ("dnorm", "write exp(log_density_normal(x, mean, sd)), or its logarithm without exp(...)"),
+    ("normal", "write log_density_normal(x, mean, sd)"),
+    ("norm", "write log_density_normal(x, mean, sd), or hypot(x, y) for a length"),
+    ("poisson", "write log_mass_poisson(k, mean)"),
+    ("heaviside", "write if(x > 0, 1, 0)"),
+    ("iif", "write if(condition, a, b)"),
 ];
 
 /// The function called `name`.

@@ -127,6 +127,7 @@ impl<'a> Lowering<'a> {
             }
             Node::Infix(infix, a, b) => self.infix(syntax, *infix, *a, *b, span),
             Node::Call { name, name_span, arguments } => self.call(syntax, name, name_span, arguments, span),
+            Node::Broken => None,
         }
     }
 
@@ -161,7 +162,7 @@ impl<'a> Lowering<'a> {
         let slice = self.slice(span);
         self.faults.push(match value {
             Value::Texts(_) => Fault::new(span.clone(), format!("`{slice}` is a column of labels, not of numbers"))
-                .help(format!("compare it with a label, as in {slice} == 'Alder', or use it in square brackets")),
+                .help(self.use_of_labels(&slice)),
             Value::Label(_) => Fault::new(span.clone(), format!("{slice} is a label, not a number"))
                 .help("compare a column of labels with it, as in station == 'Alder', or use it in square brackets"),
             _ => return None,
@@ -199,7 +200,10 @@ impl<'a> Lowering<'a> {
                         self.describe(rows)
                     );
                     let span = a.start.min(b.start)..a.end.max(b.end);
-                    let help = "make a number of one of them first: sum(...), mean(...), min(...), max(...)";
+                    let by_rows = self.of_each_row(a, known, rows).or_else(|| self.of_each_row(b, rows, known));
+                    let help = by_rows.unwrap_or_else(|| {
+                        "make a number of one of them first: sum(...), mean(...), min(...), max(...)".to_owned()
+                    });
                     self.faults.push(Fault::new(span, message).help(help));
                     return None;
                 }
