@@ -196,13 +196,7 @@ fn label(text: &str, from: usize, quote: char, faults: &mut Vec<Fault>) -> (Toke
 }
 
 /// Reads a sign at `at`, or what stands for one elsewhere, and gives the place after it.
-fn sign(
-    text: &str,
-    at: usize,
-    c: char,
-    found: &mut Vec<(Token, Range<usize>)>,
-    faults: &mut Vec<Fault>,
-) -> usize {
+fn sign(text: &str, at: usize, c: char, found: &mut Vec<(Token, Range<usize>)>, faults: &mut Vec<Fault>) -> usize {
     let rest = &text[at..];
     let own = SIGNS.iter().find(|sign| rest.starts_with(**sign));
     let foreign = FOREIGN.iter().filter(|(sign, ..)| rest.starts_with(sign)).max_by_key(|(sign, ..)| sign.len());

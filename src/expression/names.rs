@@ -74,10 +74,9 @@ impl<'a> Lowering<'a> {
     /// The one name that `name` is the beginning of, or that is the beginning of it.
     fn longer_or_shorter(&self, name: &str) -> Option<&'a str> {
         let of_enough = |text: &str| text.chars().count() >= 3;
-        let mut found =
-            self.scope.names.iter().filter(|known| {
-                of_enough(name) && of_enough(known) && (known.starts_with(name) || name.starts_with(known.as_str()))
-            });
+        let mut found = self.scope.names.iter().filter(|known| {
+            of_enough(name) && of_enough(known) && (known.starts_with(name) || name.starts_with(known.as_str()))
+        });
         found.next().filter(|_| found.next().is_none()).map(String::as_str)
     }
 

@@ -50,8 +50,16 @@ pub(super) enum Node {
     Negate(Place),
     Not(Place),
     Infix(Infix, Place, Place),
-    Call { name: String, name_span: Range<usize>, arguments: Vec<Place> },
-    Index { group: String, member: Member, member_span: Range<usize> },
+    Call {
+        name: String,
+        name_span: Range<usize>,
+        arguments: Vec<Place>,
+    },
+    Index {
+        group: String,
+        member: Member,
+        member_span: Range<usize>,
+    },
     /// Something that was told already, and whose meaning cannot be told.
     Broken,
 }

@@ -32,10 +32,23 @@ pub enum Wanted {
 pub(super) enum Entity {
     Constant(f64),
     Input(usize),
-    Group { rows: RowsId, labels: Vec<String>, first: usize },
-    Column { rows: RowsId, values: Vec<f64> },
-    Texts { rows: RowsId, texts: Vec<String> },
-    ModelColumn { rows: RowsId, first: usize },
+    Group {
+        rows: RowsId,
+        labels: Vec<String>,
+        first: usize,
+    },
+    Column {
+        rows: RowsId,
+        values: Vec<f64>,
+    },
+    Texts {
+        rows: RowsId,
+        texts: Vec<String>,
+    },
+    ModelColumn {
+        rows: RowsId,
+        first: usize,
+    },
     Formula(String),
     /// Something whose nature is not known, because it is stated wrongly: nothing is told of its uses.
     Faulty,

@@ -5,6 +5,8 @@ use std::collections::BTreeSet;
 use super::data::RawTable;
 use super::data::Rows;
 use super::data::line_source;
+use super::data::lines;
+use super::faults::Fault;
 use super::names::Given;
 use super::names::Names;
 use super::names::Piece;
@@ -75,29 +77,90 @@ impl Uses {
 }
 
 /// Names, rows and cells of a file.
-pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, uses: &Uses) -> Option<DataTable> {
+pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, uses: &Uses) -> DataTable {
     let own = raw.own_names(reader, |header| is_name(header) && !crate::expression::is_reserved(header));
     let named = give_names(reader, names, &raw, &own);
     let used: Vec<usize> = named.iter().filter(|(_, name)| uses.names.contains(name)).map(|&(at, _)| at).collect();
     let complete = raw.spec.missing.is_some() && raw.spec.rows != Some(Rows::All);
     let whole = |row: &Vec<String>| used.iter().all(|&at| !raw.is_missing(&row[at]));
-    let kept: Vec<usize> = (0..raw.records.len()).filter(|&row| !complete || whole(&raw.records[row].1)).collect();
+    let all = 0..raw.records.len();
+    let mut kept: Vec<usize> = all.clone().filter(|&row| !complete || whole(&raw.records[row].1)).collect();
     if kept.is_empty() {
-        let message = format!("no row of `{}` has a value in every column that a formula uses", raw.shown);
-        let fault = super::faults::Fault::new(raw.spec.file.span.clone(), message);
-        reader.fault(fault.help("write rows = \"all\" and ask present(x) in the formulas"));
-        return None;
+        no_whole_row(reader, &raw, &named, &used);
+        kept = all.collect();
     }
-    let before = reader.faults.len();
+    let mut aside = Reader::new(reader.source);
+    let cells_reader = if raw.stands_in { &mut aside } else { reader };
+    tell_missing(cells_reader, &raw, &kept, &named, &used);
     let mut columns = Vec::new();
     for (at, name) in named {
         let labels = uses.as_labels.contains(&name);
-        let is_used = used.contains(&at);
-        if let Some(cells) = read_cells(reader, &raw, &kept, at, &name, labels, is_used) {
-            columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
+        let cells = read_cells(cells_reader, &raw, &kept, at, &name, labels, used.contains(&at));
+        columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
+    }
+    DataTable { raw, columns, kept }
+}
+
+/// Every row lacks something: says which columns are to blame.
+fn no_whole_row(reader: &mut Reader<'_>, raw: &RawTable, named: &[(usize, String)], used: &[usize]) {
+    let message = format!("no row of `{}` has a value in every column that a formula uses", raw.shown);
+    let lacking = |at: usize| raw.records.iter().filter(|(_, cells)| raw.is_missing(&cells[at])).count();
+    let counts: Vec<String> = named
+        .iter()
+        .filter(|(at, _)| used.contains(at) && lacking(*at) > 0)
+        .map(|(at, name)| format!("`{name}` in {} of {} rows", lacking(*at), raw.records.len()))
+        .collect();
+    let fault = Fault::new(raw.spec.file.span.clone(), message);
+    let fault = fault.help(format!("missing is {}", counts.join(", ")));
+    reader.fault(fault.help("write rows = \"all\" and ask present(x) in the formulas"));
+}
+
+/// What cells hold that have no value, in the files of the world.
+const MARKS: [&str; 10] = ["na", "n/a", "nan", "null", "none", "-", "--", "?", ".", "missing"];
+
+fn is_mark(cell: &str) -> bool {
+    cell.is_empty() || MARKS.contains(&cell.to_lowercase().as_str())
+}
+
+/// Tells of cells without a value in columns that formulas use, where `[data]` does not say what that means: all of them
+/// at once, since one line mends them all.
+fn tell_missing(reader: &mut Reader<'_>, raw: &RawTable, kept: &[usize], named: &[(usize, String)], used: &[usize]) {
+    if raw.spec.missing.is_some() {
+        return;
+    }
+    let marks = marks_of(raw, used);
+    for (at, name) in named.iter().filter(|(at, _)| used.contains(at)) {
+        let rows: Vec<usize> = kept.iter().copied().filter(|&row| raw.is_missing(&raw.records[row].1[*at])).collect();
+        let Some((&first, others)) = rows.split_first() else { continue };
+        let message = format!("the column `{name}` has no value in line {} of `{}`", raw.records[first].0, raw.shown);
+        let mut fault = raw.cell_fault(first, *at, message).label("empty");
+        if !others.is_empty() {
+            let lines = lines(others.iter().map(|&row| raw.records[row].0));
+            fault = fault.help(format!("nor has it one in {lines}"));
+        }
+        reader.fault(fault.help(format!("fill the cell, or write missing = {marks} under [data] to drop such rows")));
+    }
+}
+
+/// The list for `missing` that holds every mark of the columns that are used.
+fn marks_of(raw: &RawTable, used: &[usize]) -> String {
+    let mut found = vec![String::new()];
+    found.extend(raw.spec.missing.iter().flatten().cloned());
+    for (_, cells) in &raw.records {
+        for cell in used.iter().map(|&at| &cells[at]) {
+            if is_mark(cell) && !found.contains(cell) {
+                found.push(cell.clone());
+            }
         }
     }
-    (reader.faults.len() == before).then_some(DataTable { raw, columns, kept })
+    let mut told: Vec<String> = Vec::new();
+    for mark in found {
+        let quoted = format!("\"{mark}\"");
+        if !told.contains(&quoted) {
+            told.push(quoted);
+        }
+    }
+    format!("[{}]", told.join(", "))
 }
 
 fn give_names(
@@ -119,7 +182,7 @@ fn give_names(
                 }
                 Given::Here(key.span.clone())
             }
-            None => Given::Header(header_line.clone(), super::data::cell_span(&header_line.text, at)),
+            None => Given::Header(header_line.clone(), super::data::cell_span(&header_line.text, at, raw.separator)),
         };
         if names.give(reader, &name, "the column", given) {
             named.push((at, name));
@@ -128,7 +191,8 @@ fn give_names(
     named
 }
 
-/// Cells of column `at`. A column of numbers with a cell that is none is a fault where formulas use it as numbers.
+/// Cells of column `at`. A column of numbers with a cell that is none is a fault where formulas use it as numbers; such a
+/// cell is then read as missing.
 fn read_cells(
     reader: &mut Reader<'_>,
     raw: &RawTable,
@@ -137,41 +201,55 @@ fn read_cells(
     name: &str,
     as_labels: bool,
     is_used: bool,
-) -> Option<Cells> {
+) -> Cells {
     let cell = |row: usize| raw.records[row].1[at].as_str();
     let is_number = |row: usize| number(cell(row)).is_some();
-    let missing = kept.iter().find(|&&row| raw.is_missing(cell(row)));
-    if let Some(&row) = missing.filter(|_| is_used && raw.spec.missing.is_none()) {
-        let line = raw.records[row].0;
-        let message = format!("the column `{name}` has no value in line {line} of `{}`", raw.shown);
-        let fault = raw.cell_fault(row, at, message).label("empty");
-        reader.fault(fault.help("fill the cell, or write missing = [\"\"] under [data] to drop such rows"));
-        return None;
-    }
     let present = || kept.iter().copied().filter(|&row| !raw.is_missing(cell(row)));
     let texts = || kept.iter().map(|&row| if raw.is_missing(cell(row)) { String::new() } else { cell(row).to_owned() });
-    if present().all(is_number) {
-        let numbers = kept
-            .iter()
-            .map(|&row| if raw.is_missing(cell(row)) { f64::NAN } else { number(cell(row)).unwrap_or(f64::NAN) });
-        return Some(Cells::Numbers(numbers.collect(), texts().collect()));
+    let value = |row: usize| if raw.is_missing(cell(row)) { f64::NAN } else { number(cell(row)).unwrap_or(f64::NAN) };
+    let bad: Vec<usize> = present().filter(|&row| !is_number(row)).collect();
+    let is_stray = is_used && !as_labels && present().any(is_number);
+    if !bad.is_empty() && !is_stray {
+        return Cells::Texts(texts().collect());
     }
-    let bad = present().find(|&row| !is_number(row));
-    if let Some(row) = bad.filter(|_| is_used && !as_labels && present().any(is_number)) {
-        let line = raw.records[row].0;
-        let message = format!("line {line} of `{}`, column `{name}`: \"{}\" is no number", raw.shown, cell(row));
-        let fault = raw.cell_fault(row, at, message).label("not a number");
-        reader.fault(fault.help(number_help(cell(row))));
-        return None;
+    if let Some((&first, others)) = bad.split_first() {
+        let line = raw.records[first].0;
+        let message = format!("line {line} of `{}`, column `{name}`: \"{}\" is no number", raw.shown, cell(first));
+        let fault = raw.cell_fault(first, at, message).label("not a number");
+        let marks: Vec<&str> = bad.iter().map(|&row| cell(row)).filter(|cell| is_mark(cell)).collect();
+        let mut fault = fault.help(number_help(raw, cell(first), &marks));
+        if !others.is_empty() {
+            let each = others.iter().take(10).map(|&row| format!("\"{}\" in line {}", cell(row), raw.records[row].0));
+            let more = if others.len() > 10 { format!(" and {} more", others.len() - 10) } else { String::new() };
+            fault = fault.help(format!("nor is {}{more}", each.collect::<Vec<_>>().join(", ")));
+        }
+        reader.fault(fault);
     }
-    Some(Cells::Texts(texts().collect()))
+    Cells::Numbers(kept.iter().map(|&row| value(row)).collect(), texts().collect())
 }
 
-fn number_help(cell: &str) -> String {
-    if number(&cell.replace(',', ".")).is_some() {
-        return format!("write it with a point: {}", cell.replace(',', "."));
+fn number_help(raw: &RawTable, cell: &str, marks: &[&str]) -> String {
+    let pointed = cell.replacen(',', ".", 1);
+    if number(&pointed).is_some() {
+        return format!("write it with a point: {pointed}");
     }
-    format!("mend the cell, or count it as missing: missing = [\"\", \"{cell}\"] under [data]")
+    let spaced: String = cell.chars().filter(|c| !c.is_whitespace() && *c != '\'').collect();
+    if number(&spaced).is_some() {
+        return format!("write it without gaps: {spaced}");
+    }
+    let leading: String = cell.chars().take_while(|c| c.is_ascii_digit() || matches!(c, '.' | '-' | '+')).collect();
+    if number(&leading).is_some() {
+        return format!("write the number alone: {leading}");
+    }
+    let mut all: Vec<String> = vec!["\"\"".into()];
+    let known = raw.spec.missing.iter().flatten().map(String::as_str);
+    for mark in known.chain(marks.iter().copied()).chain([cell]) {
+        let quoted = format!("\"{mark}\"");
+        if !all.contains(&quoted) {
+            all.push(quoted);
+        }
+    }
+    format!("mend the cell, or count it as missing: missing = [{}] under [data]", all.join(", "))
 }
 
 /// The number that a cell holds; `nan` is none.

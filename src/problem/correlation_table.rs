@@ -39,7 +39,7 @@ impl CorrelationKind {
 pub(crate) struct CorrelationSpec {
     pub(crate) among: Vec<Text>,
     pub(crate) kind: CorrelationKind,
-    /// The whole symmetric matrix, row by row.
+    /// The whole symmetric matrix, row by row; NaN where a number is wrong.
     pub(crate) matrix: Vec<f64>,
     /// Place of the numbers.
     pub(crate) span: Range<usize>,
@@ -47,6 +47,7 @@ pub(crate) struct CorrelationSpec {
     pub(crate) places: Vec<(usize, usize, Range<usize>)>,
 }
 
+const KEYS: [&str; 4] = ["among", "linear", "rank", "score"];
 const EXAMPLE: &str = "[[correlation]] with among = [\"yield\", \"modulus\"] and linear = 0.3";
 
 /// Reads every table.
@@ -72,9 +73,9 @@ pub(crate) fn read(reader: &mut Reader<'_>, entry: &Entry<'_>) -> Vec<Correlatio
 }
 
 fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>) -> Option<CorrelationSpec> {
-    reader.only(table, &["among", "linear", "rank", "score"]);
+    reader.only(table, &KEYS);
     let place = table.entries.first().map_or(key_span.clone(), |entry| entry.key_span.clone());
-    let Some(among) = table.entry("among") else {
+    let Some(among) = table.entry_or_slip("among", &KEYS) else {
         reader.fault(
             Fault::new(place, "[[correlation]] does not say among which variables")
                 .help("write among = [\"yield\", \"modulus\"], the names of two or more variables"),
@@ -82,31 +83,38 @@ fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>)
         return None;
     };
     let example = "among = [\"yield\", \"modulus\"]";
-    let names = reader.texts(among, example)?;
-    if names.len() < 2 {
+    let names = reader.texts(among, example);
+    if names.as_ref().is_some_and(|names| names.len() < 2) {
         reader.fault(
             Fault::new(among.span.clone(), "a correlation is among two variables or more")
                 .help(format!("write {example}")),
         );
-        return None;
     }
     let kinds: Vec<(CorrelationKind, &Entry<'_>)> =
         [CorrelationKind::Linear, CorrelationKind::Rank, CorrelationKind::Score]
             .into_iter()
-            .filter_map(|kind| table.entry(kind.word()).map(|entry| (kind, entry)))
+            .filter_map(|kind| table.entry_or_slip(kind.word(), &KEYS).map(|entry| (kind, entry)))
             .collect();
+    // Without numbers the names can be looked at all the same.
+    let names = names?;
+    let bare = |names: Vec<Text>| {
+        let (matrix, places) = (vec![f64::NAN; names.len() * names.len()], Vec::new());
+        CorrelationSpec { among: names, kind: CorrelationKind::Score, matrix, span: among.span.clone(), places }
+    };
     match kinds.as_slice() {
-        [(kind, entry)] => {
-            let (matrix, places) = read_matrix(reader, entry, names.len())?;
-            Some(CorrelationSpec { among: names, kind: *kind, matrix, span: entry.span.clone(), places })
-        }
+        [(kind, entry)] => match read_matrix(reader, entry, names.len()) {
+            Some((matrix, places)) => {
+                Some(CorrelationSpec { among: names, kind: *kind, matrix, span: entry.span.clone(), places })
+            }
+            None => Some(bare(names)),
+        },
         [] => {
             reader.fault(
                 Fault::new(among.span.clone(), "[[correlation]] gives no numbers").help(
                     "write linear = ... (of the variables), rank = ... (of their ranks) or score = ... (of their normal scores)",
                 ),
             );
-            None
+            Some(bare(names))
         }
         [(_, first), (_, second), ..] => {
             reader.fault(
@@ -114,7 +122,7 @@ fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>)
                     .also(first.key_span.clone(), "and this one")
                     .help("keep one of them: the others follow from it and are shown by `check`"),
             );
-            None
+            Some(bare(names))
         }
     }
 }
@@ -134,7 +142,7 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
             );
             return None;
         }
-        check_entry(reader, number, &entry.span)?;
+        let number = if check_entry(reader, number, &entry.span) { number } else { f64::NAN };
         return Some((vec![1.0, number, number, 1.0], vec![(1, 0, entry.span.clone())]));
     }
     let example = format!("{} = {}", entry.key, triangle_example(d));
@@ -148,46 +156,47 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
     }
     let (mut matrix, mut places) = (vec![0.0; d * d], Vec::new());
     for (i, row) in rows.iter().enumerate() {
-        let cells = reader.list(row, &example)?;
+        let Some(cells) = reader.list(row, &example) else { continue };
         if cells.len() != i + 1 {
-            reader.fault(
-                Fault::new(
-                    row.span.clone(),
-                    format!("row {} of the lower triangle has {} of {} numbers", i + 1, cells.len(), i + 1),
-                )
-                .help(format!("write {example}")),
-            );
-            return None;
+            let message = if cells.len() == d && rows.len() == d {
+                format!("row {} of the lower triangle has all {d} numbers of the matrix", i + 1)
+            } else {
+                format!("row {} of the lower triangle has {} of {} numbers", i + 1, cells.len(), i + 1)
+            };
+            let help = format!("end each row with the 1.0 of its own variable: {example}");
+            reader.fault(Fault::new(row.span.clone(), message).help(help));
         }
-        for (j, cell) in cells.iter().enumerate() {
-            let number = reader.number(cell, &example)?;
-            if i == j && number != 1.0 {
+        for (j, cell) in cells.iter().enumerate().take(i + 1) {
+            let number = reader.number(cell, &example).unwrap_or(f64::NAN);
+            if i == j && number != 1.0 && !number.is_nan() && cells.len() == i + 1 {
                 reader.fault(
                     Fault::new(cell.span.clone(), "the correlation of a variable with itself is 1")
                         .help(format!("write {example}")),
                 );
-                return None;
             }
             if i != j {
-                check_entry(reader, number, &cell.span)?;
+                let allowed = number.is_nan() || check_entry(reader, number, &cell.span);
+                let number = if allowed { number } else { f64::NAN };
                 places.push((i, j, cell.span.clone()));
+                matrix[i * d + j] = number;
+                matrix[j * d + i] = number;
+            } else {
+                matrix[i * d + i] = 1.0;
             }
-            matrix[i * d + j] = number;
-            matrix[j * d + i] = number;
         }
     }
     Some((matrix, places))
 }
 
-fn check_entry(reader: &mut Reader<'_>, number: f64, span: &Range<usize>) -> Option<()> {
+fn check_entry(reader: &mut Reader<'_>, number: f64, span: &Range<usize>) -> bool {
     if number > -1.0 && number < 1.0 {
-        return Some(());
+        return true;
     }
     reader.fault(
         Fault::new(span.clone(), "a correlation is between -1 and 1, both excluded")
             .help("variables that determine each other are one variable: write the other as a formula"),
     );
-    None
+    false
 }
 
 /// `[[1.0], [0.3, 1.0], ...]` of the right size.

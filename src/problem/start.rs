@@ -116,6 +116,14 @@ pub(crate) fn place(
     Ok((Space { axes, bundles, groups: groups.to_vec() }, Start { near, spread }))
 }
 
+/// What stands against placing one variable.
+pub(crate) fn misplaced(variable: &Variable, aim: Aim, choice: Option<CoordinateChoice>) -> Vec<Misplaced> {
+    match coordinate(variable, aim, choice) {
+        Ok(coordinate) => start_of(&Variable { coordinate, ..variable.clone() }).err().into_iter().collect(),
+        Err(error) => vec![error],
+    }
+}
+
 fn coordinate(variable: &Variable, aim: Aim, choice: Option<CoordinateChoice>) -> Result<Coordinate, Misplaced> {
     let name = || variable.name.clone();
     let by_support = |low: f64, high: f64| match Coordinate::of_support(low, high) {

@@ -49,6 +49,13 @@ impl<'a> Table<'a> {
     pub(crate) fn entry(&self, key: &str) -> Option<&Entry<'a>> {
         self.entries.iter().find(|entry| entry.key == key)
     }
+
+    /// The entry with this key or, failing that, one with an unknown key that is nearest to it among the `known` ones.
+    pub(crate) fn entry_or_slip(&self, key: &str, known: &[&str]) -> Option<&Entry<'a>> {
+        let slip =
+            |entry: &&Entry<'a>| !known.contains(&entry.key) && nearest(entry.key, known.iter().copied()) == Some(key);
+        self.entry(key).or_else(|| self.entries.iter().find(slip))
+    }
 }
 
 /// Reads typed values out of a document and keeps what is wrong.
@@ -56,11 +63,33 @@ impl<'a> Table<'a> {
 pub(crate) struct Reader<'s> {
     pub(crate) source: &'s str,
     pub(crate) faults: Faults,
+    /// Names that were given to something stated wrongly: formulas that use them are not to blame.
+    pub(crate) faulty: Vec<String>,
+    /// Tables of data whose columns are not known; the empty text for a plain `[data]`.
+    pub(crate) open: Vec<String>,
+    /// Texts that stand where they cannot be read as formulas. The names in them count as used.
+    pub(crate) mentions: Vec<String>,
 }
 
 impl<'s> Reader<'s> {
     pub(crate) fn new(source: &'s str) -> Self {
-        Self { source, faults: Faults::default() }
+        Self { source, faults: Faults::default(), faulty: Vec::new(), open: Vec::new(), mentions: Vec::new() }
+    }
+
+    /// Notes the texts in a value that stands where it cannot be read.
+    pub(crate) fn mention(&mut self, value: &DeValue<'_>) {
+        match value {
+            DeValue::String(text) => self.mentions.push(text.to_string()),
+            DeValue::Array(items) => items.iter().for_each(|item| self.mention(item.get_ref())),
+            DeValue::Table(table) => table.iter().for_each(|(_, item)| self.mention(item.get_ref())),
+            _ => {}
+        }
+    }
+
+    /// Whether `name` may be a column of data that could not be read.
+    pub(crate) fn may_be_a_column(&self, name: &str) -> bool {
+        let table = name.rsplit_once('.').map_or("", |(table, _)| table);
+        self.open.iter().any(|open| open == table) || self.faulty.iter().any(|faulty| faulty == name)
     }
 
     pub(crate) fn fault(&mut self, fault: Fault) {
@@ -71,6 +100,7 @@ impl<'s> Reader<'s> {
     pub(crate) fn only(&mut self, table: &Table<'_>, known: &[&str]) {
         for entry in table.entries.iter().filter(|entry| !known.contains(&entry.key)) {
             self.unknown_key(entry, &table.name, known);
+            self.mention(entry.value);
         }
     }
 
