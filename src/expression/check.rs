@@ -52,6 +52,9 @@ pub(super) fn compile(
     for ((text, _), (_, _, wanted)) in targets.iter().zip(outputs) {
         if let Some(syntax) = &text.syntax {
             made.extend(output(&mut lowering, text, syntax, *wanted));
+            if *wanted == Wanted::Margin {
+                forget_equal_signs(lowering.faults(), text.key, &mut errors);
+            }
             take_faults(&mut lowering, text.key, &mut errors);
         }
     }
@@ -87,6 +90,15 @@ fn formulas(scope: &Scope) -> Vec<Option<(Text<'_>, Vec<Fault>)>> {
 fn read<'a>(key: &'a str, text: &'a str) -> (Text<'a>, Vec<Fault>) {
     let parsed = parse(text);
     (Text { key, text, syntax: parsed.syntax, words: parsed.words }, parsed.faults)
+}
+
+/// An event knows no equality: `=` is then no slip for `==`.
+fn forget_equal_signs(faults: &[Fault], key: &str, errors: &mut Vec<FormulaError>) {
+    let equalities: Vec<&Fault> = faults.iter().filter(|fault| fault.message.contains("equality")).collect();
+    errors.retain(|error| {
+        let inside = |fault: &&Fault| fault.span.start <= error.span.start && error.span.end <= fault.span.end;
+        error.key != key || !error.message.starts_with("`=`") || !equalities.iter().any(|fault| inside(fault))
+    });
 }
 
 fn take_faults(lowering: &mut Lowering<'_>, key: &str, errors: &mut Vec<FormulaError>) {

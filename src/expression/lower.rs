@@ -85,6 +85,10 @@ impl<'a> Lowering<'a> {
         !self.faults.is_empty()
     }
 
+    pub(super) fn faults(&self) -> &[Fault] {
+        &self.faults
+    }
+
     pub(super) fn take_faults(&mut self) -> Vec<Fault> {
         std::mem::take(&mut self.faults)
     }

@@ -56,7 +56,7 @@ impl<'a> Lowering<'a> {
             (Some(near), _) if columns.is_empty() => fault.help(format!("did you mean `{near}`?")),
             (Some(near), _) => fault.help(format!("did you mean `{near}`? The columns of the data are {columns}")),
             (None, "e") => fault.help("write exp(1), or exp(x) for a power of it"),
-            (None, "π" | "PI" | "Pi") => fault.help("write pi"),
+            (None, "π") => fault.help("write pi"),
             (None, "infinity" | "Infinity" | "Inf") => fault.help("write inf"),
             (None, _) if self.scope.names.is_empty() => fault,
             (None, _) => {
@@ -66,8 +66,7 @@ impl<'a> Lowering<'a> {
         };
         self.faults.push(fault);
         // The rest is looked at as if the advice had been taken: what is wrong then is told as well.
-        let taken = near.filter(|near| !matches!(*near, "pi" | "inf"))?;
-        let value = self.name(taken, span)?;
+        let value = self.name(near?, span)?;
         matches!(value, Value::Plain { .. }).then_some(value)
     }
 

@@ -246,13 +246,12 @@ impl Parser {
         Ok(left)
     }
 
-    /// Passes over what the lexer told already.
+    /// Passes over what the lexer told already. Whether the value before is of that kind.
     fn pass_broken(&mut self) -> bool {
-        let before = self.at;
         while *self.peek() == Token::Broken {
             self.advance();
         }
-        self.at > before
+        self.at > 0 && self.tokens[self.at - 1].0 == Token::Broken
     }
 
     /// The operator that was left out before the value here: a comparison before a label, else a product.
@@ -342,7 +341,12 @@ impl Parser {
                     _ => self.ends_early(),
                 };
                 let span = fault.span.start..fault.span.start;
-                self.faults.push(fault);
+                // After an operator that was told already nothing new is missing.
+                let told =
+                    self.at > 0 && self.faults.last().is_some_and(|last| last.span == self.tokens[self.at - 1].1);
+                if !told || *self.peek() != Token::End {
+                    self.faults.push(fault);
+                }
                 Ok(self.push(Node::Broken, span))
             }
         }

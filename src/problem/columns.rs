@@ -13,6 +13,8 @@ use super::names::Piece;
 use super::names::pieces;
 use super::table::Reader;
 use crate::expression::is_name;
+use crate::expression::is_reserved;
+use crate::expression::nearest;
 
 /// Cells of a column, of the rows that are kept.
 #[derive(Debug, Clone, PartialEq)]
@@ -41,6 +43,8 @@ pub(crate) struct DataTable {
     pub(crate) columns: Vec<Column>,
     /// Records kept, by their number from 0.
     pub(crate) kept: Vec<usize>,
+    /// Names that formulas use for columns whose headers are no names: each with the header that is probably meant.
+    pub(crate) assumed: Vec<(String, String)>,
 }
 
 /// How the formulas of a problem use a name.
@@ -79,8 +83,20 @@ impl Uses {
 /// Names, rows and cells of a file.
 pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, uses: &Uses) -> DataTable {
     let own = raw.own_names(reader, |header| is_name(header) && !crate::expression::is_reserved(header));
-    let named = give_names(reader, names, &raw, &own);
-    let used: Vec<usize> = named.iter().filter(|(_, name)| uses.names.contains(name)).map(|&(at, _)| at).collect();
+    let mut named = give_names(reader, names, &raw, &own);
+    let assumed = assumed(&raw, &own, uses, |name| names.has(name) || reader.faulty.iter().any(|known| known == name));
+    for (at, name) in &assumed {
+        named.push((*at, name.clone()));
+    }
+    let assumed = assumed.into_iter().map(|(at, name)| (name, raw.headers[at].clone())).collect();
+    // A misspelt name is a use of the column that it is like.
+    let astray: Vec<&String> = uses.names.iter().filter(|name| !names.has(name) && !is_reserved(name)).collect();
+    let like = |column: &str| {
+        let nearest_column = |name: &str| nearest(name, named.iter().map(|(_, column)| column.as_str()));
+        astray.iter().any(|name| nearest_column(name) == Some(column))
+    };
+    let is_used = |name: &String| uses.names.contains(name) || like(name);
+    let used: Vec<usize> = named.iter().filter(|(_, name)| is_used(name)).map(|&(at, _)| at).collect();
     let complete = raw.spec.missing.is_some() && raw.spec.rows != Some(Rows::All);
     let whole = |row: &Vec<String>| used.iter().all(|&at| !raw.is_missing(&row[at]));
     let all = 0..raw.records.len();
@@ -98,7 +114,31 @@ pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, 
         let cells = read_cells(cells_reader, &raw, &kept, at, &name, labels, used.contains(&at));
         columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
     }
-    DataTable { raw, columns, kept }
+    DataTable { raw, columns, kept, assumed }
+}
+
+/// Columns whose headers are no names, where a formula uses a word of the header as a name that nothing else has.
+fn assumed(raw: &RawTable, own: &[Option<String>], uses: &Uses, known: impl Fn(&str) -> bool) -> Vec<(usize, String)> {
+    let mut found: Vec<(usize, String)> = Vec::new();
+    for name in uses.names.iter().filter(|name| !known(name) && !is_reserved(name)) {
+        let (table, word) = name.rsplit_once('.').map_or((None, name.as_str()), |(table, word)| (Some(table), word));
+        if table != raw.spec.name.as_deref() {
+            continue;
+        }
+        let header = (0..raw.headers.len()).find(|&at| {
+            own[at].is_none() && !found.iter().any(|(other, _)| *other == at) && is_meant(word, &raw.headers[at])
+        });
+        found.extend(header.map(|at| (at, name.clone())));
+    }
+    found
+}
+
+/// Whether a name is a word of a header, or made of words of it.
+fn is_meant(name: &str, header: &str) -> bool {
+    let (name, header) = (name.to_lowercase(), header.to_lowercase());
+    let words = || header.split(|c: char| !c.is_alphanumeric()).filter(|word| word.chars().count() > 2);
+    let parts = || name.split('_').filter(|part| part.chars().count() > 2);
+    words().any(|word| name == word || parts().any(|part| part == word))
 }
 
 /// Every row lacks something: says which columns are to blame.

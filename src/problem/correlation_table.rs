@@ -57,7 +57,8 @@ pub(crate) fn read(reader: &mut Reader<'_>, entry: &Entry<'_>) -> Vec<Correlatio
             Fault::new(entry.key_span.clone(), "correlations stand under [[correlation]], in two pairs of brackets")
                 .help(format!("write {EXAMPLE}")),
         );
-        return Vec::new();
+        let table = entry.value.as_table().map(|table| Table::new("[[correlation]]", table, entry.key_span.clone()));
+        return table.and_then(|table| read_one(reader, &table, &entry.key_span)).into_iter().collect();
     };
     let mut specs = Vec::new();
     for item in items {
@@ -132,6 +133,9 @@ type Places = Vec<(usize, usize, Range<usize>)>;
 /// A number for a pair, or the lower triangle row by row with ones on the diagonal.
 fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(Vec<f64>, Places)> {
     if let Some(number) = plain_number(entry.value) {
+        if d < 2 {
+            return None; // That was told.
+        }
         if d != 2 {
             reader.fault(
                 Fault::new(entry.span.clone(), format!("one number cannot correlate {d} variables")).help(format!(
@@ -152,6 +156,11 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
             Fault::new(entry.span.clone(), format!("{} rows for {d} variables", rows.len()))
                 .help(format!("write a row for each variable: {example}")),
         );
+        return None;
+    }
+    if let Some(triangle) = lower_triangle(&rows, d) {
+        let message = format!("the {d} by {d} matrix stands here, or its upper half; its lower triangle is wanted");
+        reader.fault(Fault::new(entry.span.clone(), message).help(format!("write {} = {triangle}", entry.key)));
         return None;
     }
     let (mut matrix, mut places) = (vec![0.0; d * d], Vec::new());
@@ -186,6 +195,26 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
         }
     }
     Some((matrix, places))
+}
+
+/// The lower triangle, as one writes it, of what stands there as a whole symmetric matrix or as an upper triangle.
+fn lower_triangle(rows: &[Entry<'_>], d: usize) -> Option<String> {
+    let numbers = |row: &Entry<'_>| -> Option<Vec<f64>> {
+        row.value.as_array()?.iter().map(|cell| plain_number(cell.get_ref())).collect()
+    };
+    let rows: Vec<Vec<f64>> = rows.iter().map(numbers).collect::<Option<_>>()?;
+    let whole = rows.iter().all(|row| row.len() == d);
+    let upper = rows.iter().enumerate().all(|(i, row)| row.len() == d - i);
+    let entry = |i: usize, j: usize| if whole { rows[i][j] } else { rows[j][i - j] };
+    let symmetric = upper || (whole && (0..d).all(|i| (0..i).all(|j| rows[i][j] == rows[j][i])));
+    if !symmetric || d < 2 {
+        return None;
+    }
+    let row = |i: usize| {
+        let cells: Vec<String> = (0..=i).map(|j| format!("{:?}", entry(i, j))).collect();
+        format!("[{}]", cells.join(", "))
+    };
+    Some(format!("[{}]", (0..d).map(row).collect::<Vec<_>>().join(", ")))
 }
 
 fn check_entry(reader: &mut Reader<'_>, number: f64, span: &Range<usize>) -> bool {

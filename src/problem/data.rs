@@ -188,8 +188,9 @@ fn not_found(path: &Path, folder: &Path) -> (String, Option<PathBuf>) {
         (None, []) => format!("{looked}, which has no CSV file; a path is taken from the problem file's folder"),
         (None, names) => {
             let some: Vec<&String> = names.iter().take(8).collect();
-            let more = if names.len() > some.len() { " and others" } else { "" };
-            format!("{looked}; CSV files there: {}{more}", all_of(&some).replace('`', ""))
+            let more = if names.len() > some.len() { ", ..." } else { "" };
+            let some: Vec<&str> = some.iter().map(|name| name.as_str()).collect();
+            format!("{looked}; CSV files there: {}{more}", some.join(", "))
         }
     };
     let meant = meant.map(place_of);
@@ -322,10 +323,10 @@ fn other_separator(
             }
         }
     }
-    let name = if separator == ';' { "each ;" } else { "each tab" };
+    let name = if separator == ';' { "each `;`" } else { "each tab" };
     let help = match example {
         Some((line, cell, pointed)) => format!(
-            "first write the numbers with points, {pointed} for {cell} (line {line}) and so on, then a comma for {name}; or \
+            "first write the numbers with points, {pointed} for {cell} (line {line}) and so on, then a comma for {name}, or \
              save the sheet anew as CSV with commas and decimal points"
         ),
         None => format!("write a comma for {name}, in the header and in every row"),

@@ -57,6 +57,11 @@ impl Names {
         Self::check_spelling(reader, name, kind, span) && self.give(reader, name, kind, Given::Here(span.clone()))
     }
 
+    /// Whether anything has this name.
+    pub(crate) fn has(&self, name: &str) -> bool {
+        self.0.contains_key(name)
+    }
+
     /// Whether `name` is a name, and not one of the formula language.
     pub(crate) fn check_spelling(reader: &mut Reader<'_>, name: &str, kind: &str, span: &Range<usize>) -> bool {
         if !is_name(name) {

@@ -21,6 +21,7 @@ use crate::expression::RowsId;
 use crate::expression::Scope;
 use crate::expression::Wanted;
 use crate::expression::is_name;
+use crate::expression::is_reserved;
 
 /// The target of a problem whose target is a formula.
 ///
@@ -100,8 +101,9 @@ pub(crate) fn compile(
     let errors = scope.compile(&asked(all.iter().copied())).err().unwrap_or_default();
     let texts = texts_by_key(statement, &all);
     for error in &errors {
-        tell(reader, error, &texts, tables);
+        tell(reader, error, &texts);
     }
+    tell_assumed(reader, &texts, tables);
     unused(reader, statement, &scope, &all, &errors);
     let program = |outputs: &[Output<'_>]| scope.compile_alone(&asked(outputs.iter())).ok();
     let parameters = parameters.iter().map(|outputs| match program(outputs) {
@@ -129,45 +131,47 @@ pub(crate) fn compile(
 }
 
 /// A fault for what is wrong with a formula, at its place in the file.
-fn tell(reader: &mut Reader<'_>, error: &FormulaError, texts: &BTreeMap<String, &Text>, tables: &[DataTable]) {
+fn tell(reader: &mut Reader<'_>, error: &FormulaError, texts: &BTreeMap<String, &Text>) {
     let text = texts.get(error.key.as_str());
     let place = text.map_or(0..0, |text| text.place(&error.span));
-    let wrong = text.and_then(|text| text.value.get(error.span.clone())).unwrap_or("");
     let mut fault = Fault::new(place, error.message.clone());
     if let Some(help) = &error.help {
         fault = fault.help(help.clone());
     }
-    if error.message.starts_with("nothing is called") {
-        if let Some(help) = nameless_header(wrong, tables) {
-            fault = fault.help(help);
-        } else if error.meant.is_none() && error.help.is_none() {
-            fault = fault.help(UNKNOWN_NAME_HELP);
-        }
+    if error.help.is_none() && error.message.starts_with("nothing is called") {
+        fault = fault.help(UNKNOWN_NAME_HELP);
     }
     reader.fault(fault);
 }
 
-/// How to give a name to a column whose header is none, where a formula may mean it: a word of the header is the name, or
-/// part of it.
-fn nameless_header(name: &str, tables: &[DataTable]) -> Option<String> {
-    let own = name.rsplit('.').next().unwrap_or(name).to_lowercase();
+/// Columns that formulas use by a name that they do not have: their headers are none.
+fn tell_assumed(reader: &mut Reader<'_>, texts: &BTreeMap<String, &Text>, tables: &[DataTable]) {
     for table in tables {
-        let named = |header: &&String| !table.columns.iter().any(|column| column.header == **header);
-        for header in table.raw.headers.iter().filter(named).filter(|header| !is_name(header)) {
-            let lower = header.to_lowercase();
-            let words = || lower.split(|c: char| !c.is_alphanumeric()).filter(|word| word.chars().count() > 2);
-            let parts = || own.split('_').filter(|part| part.chars().count() > 2);
-            if words().any(|word| own == word || parts().any(|part| part == word)) {
-                let key = name.rsplit('.').next().unwrap_or(name);
-                let place = table.raw.spec.name.as_ref().map_or("[data]".into(), |table| format!("[data.{table}]"));
-                return Some(format!(
-                    "the header \"{header}\" of `{}` is no name; give it one under {place}: names = {{ {key} = \"{header}\" }}",
-                    table.raw.shown
-                ));
-            }
+        let place = table.raw.spec.name.as_ref().map_or("[data]".into(), |table| format!("[data.{table}]"));
+        let news: Vec<String> = table
+            .assumed
+            .iter()
+            .map(|(name, header)| format!("{} = \"{header}\"", name.rsplit('.').next().unwrap_or(name)))
+            .collect();
+        for (name, header) in &table.assumed {
+            let is_word = |c: char| c.is_alphanumeric() || c == '_' || c == '.';
+            let found = texts.values().filter_map(|text| {
+                let places = text.value.match_indices(name.as_str());
+                let whole = |at: usize| {
+                    let (before, after) = (&text.value[..at], &text.value[at + name.len()..]);
+                    !before.ends_with(is_word) && !after.starts_with(is_word)
+                };
+                places.map(|(at, _)| at).find(|&at| whole(at)).map(|at| text.place(&(at..at + name.len())))
+            });
+            let Some(span) = found.min_by_key(|span| span.start) else { continue };
+            let fault = Fault::new(span, format!("nothing is called `{name}`"));
+            reader.fault(fault.help(format!(
+                "the header \"{header}\" of `{}` is no name; give it one under {place}: names = {{ {} }}",
+                table.raw.shown,
+                news.join(", ")
+            )));
         }
     }
-    None
 }
 
 const UNKNOWN_NAME_HELP: &str =
@@ -223,7 +227,9 @@ fn unused(
     // What is meant by an unknown name that is like no other may be any of them.
     let astray: Vec<&FormulaError> =
         errors.iter().filter(|error| error.meant.is_none() && error.message.starts_with("nothing is called")).collect();
-    for name in scope.unused(&texts).iter().filter(|name| !reader.faulty.contains(name)).cloned().collect::<Vec<_>>() {
+    let usable = |name: &String| is_name(name) && !is_reserved(name) && !reader.faulty.contains(name);
+    let left: Vec<String> = scope.unused(&texts).into_iter().filter(usable).collect();
+    for name in left {
         if let Some((kind, span)) = place(&name) {
             let fault = Fault::new(span, format!("nothing uses the {kind} `{name}`")).label("not used");
             reader.fault(match astray.as_slice() {

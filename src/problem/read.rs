@@ -20,6 +20,8 @@ use super::faults::Fault;
 use super::faults::Faults;
 use super::faults::Source;
 use super::names::Names;
+use super::names::Piece;
+use super::names::pieces;
 use super::natures;
 use super::natures::Natures;
 use super::programs;
@@ -197,10 +199,28 @@ fn check_places(
     for variable in expanded.iter().filter(|variable| variable.spec.sound) {
         if !matches!(variable.spec.nature, NatureSpec::Range { .. }) || aim == Aim::Density {
             let one = natures.variables[variable.places.start].as_ref();
-            let errors = one.map(|one| start::misplaced(one, aim, choice)).unwrap_or_default();
+            let errors = match one {
+                Some(one) => start::misplaced(one, aim, choice),
+                None if depends(variable, expanded)
+                    && (variable.spec.near.is_some() || variable.spec.spread.is_some()) =>
+                {
+                    vec![Misplaced::StartOfDependent { name: variable.names()[0].0.clone() }]
+                }
+                None => Vec::new(),
+            };
             misplaced(reader, &errors, expanded);
         }
     }
+}
+
+/// Whether a formula among the parameters names another variable.
+fn depends(variable: &Expanded<'_>, expanded: &[Expanded<'_>]) -> bool {
+    variable.spec.nature.parameters().iter().any(|parameter| match &parameter.value {
+        ParameterSpec::Formula(text) => pieces(&text.value)
+            .iter()
+            .any(|piece| matches!(piece, Piece::Name(name) if expanded.iter().any(|other| other.spec.name == *name))),
+        ParameterSpec::Number(_) => false,
+    })
 }
 
 /// What aim and variables ask of each other.

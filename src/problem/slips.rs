@@ -448,6 +448,11 @@ impl Line<'_> {
 
     fn not_plain(&self, text: &str, span: Range<usize>, inside: Inside) -> Slip {
         let at = span.start;
+        let gap = text.find(' ').unwrap_or(text.len());
+        if inside == Inside::List && is_plain(&text[..gap]) && gap < text.len() {
+            let help = format!("write {}", text.split_whitespace().collect::<Vec<_>>().join(", "));
+            return Slip::new(at + gap..at + gap + 1, "a comma is missing", help).edit(at + gap..at + gap, ",");
+        }
         if let Some(mended) = mended_number(text) {
             let (message, mended) = mended;
             return Slip::new(span, message, format!("write {mended}")).write(mended);
@@ -475,6 +480,11 @@ impl Line<'_> {
             let place = at + stripped.len();
             return Slip::new(place..place + 1, "a semicolon stands at the end of the line", "take it away").write(" ");
         }
+        if let Some(percent) = text.strip_suffix('%').and_then(|number| number.trim().parse::<f64>().ok()) {
+            let written = trimmed(percent / 100.0);
+            let help = format!("write a share as a number: {written}");
+            return Slip::new(span, format!("`{text}` is no plain number"), help).write(written);
+        }
         if let Some((number, rest)) = number_and_rest(text) {
             let help = format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\"");
             return Slip::new(span, format!("`{text}` is more than a number"), help).write(number);
@@ -500,6 +510,11 @@ fn decimal_comma(at: usize, whole: &str, part: &str, next: usize) -> Slip {
         format!("write a point: {whole}.{part}")
     };
     Slip::new(at..at + 1, "a decimal comma", help).edit(at..next, ".")
+}
+
+/// A number to fifteen digits, so that 30 % is 0.3.
+fn trimmed(number: f64) -> String {
+    format!("{number:.15}").trim_end_matches('0').trim_end_matches('.').to_owned()
 }
 
 /// Whether a word is a number, a truth or a date of TOML.

@@ -85,6 +85,7 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanne
         }
         let name = format!("[{meant}]");
         let Some(table) = reader.table(entry, &name, &format!("a table: {name}, then its keys below")) else {
+            reader.open.push(String::new());
             continue;
         };
         match meant {

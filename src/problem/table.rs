@@ -206,7 +206,14 @@ impl<'s> Reader<'s> {
     }
 
     /// A list of texts.
+    ///
+    /// A single text is told, and taken for a list of one.
     pub(crate) fn texts(&mut self, entry: &Entry<'_>, example: &str) -> Option<Vec<Text>> {
+        if let DeValue::String(value) = entry.value {
+            let written = &self.source[entry.span.clone()];
+            self.wants(entry, "a list in square brackets", &format!("{} = [{written}]", entry.key));
+            return Some(vec![Text::new(self.source, value, entry.span.clone())]);
+        }
         let items = self.list(entry, example)?;
         items.iter().map(|item| self.text(item, example)).collect()
     }

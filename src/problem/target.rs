@@ -115,7 +115,13 @@ pub(crate) fn read(reader: &mut Reader<'_>, table: &Table<'_>) -> TargetTable {
     let own = aim.zip(slip("aim")).and_then(|(aim, entry)| own_formula(reader, aim, entry, &formulas));
     let mut texts: Vec<(String, Text, Wanted)> = Vec::new();
     for (key, _, text) in &formulas {
-        let wanted = if *key == TargetKey::Event { Wanted::Margin } else { Wanted::Number };
+        // What a formula of another aim must be is not known.
+        let foreign = aim.is_some_and(|aim| !own_keys(aim).contains(key));
+        let wanted = match key {
+            _ if foreign => Wanted::NumberOrColumn,
+            TargetKey::Event => Wanted::Margin,
+            _ => Wanted::Number,
+        };
         texts.extend(text.clone().map(|text| (format!("[target] {}", key.word()), text, wanted)));
     }
     for (k, text) in require.iter().enumerate() {
@@ -172,6 +178,15 @@ fn read_failed(reader: &mut Reader<'_>, entry: &Entry<'_>, aim: Aim) -> Option<F
     Some(if word == "inside" { Failed::Inside } else { Failed::Outside })
 }
 
+/// The keys that carry the target of an aim.
+fn own_keys(aim: Aim) -> &'static [TargetKey] {
+    match aim {
+        Aim::Density => &[TargetKey::LogFactor, TargetKey::LogDensity],
+        Aim::Expectation => &[TargetKey::Integrand],
+        Aim::Probability => &[TargetKey::Event],
+    }
+}
+
 /// The one key that carries the target of this aim; the keys of other aims are faults.
 fn own_formula(
     reader: &mut Reader<'_>,
@@ -179,13 +194,13 @@ fn own_formula(
     aim_entry: &Entry<'_>,
     formulas: &[(TargetKey, &Entry<'_>, Option<Text>)],
 ) -> Option<(TargetKey, Text)> {
-    let (own, example): (&[TargetKey], &str) = match aim {
-        Aim::Density => (
-            &[TargetKey::LogFactor, TargetKey::LogDensity],
-            "log_factor = \"...\" (added to the log densities of the variables) or log_density = \"...\" (the whole)",
-        ),
-        Aim::Expectation => (&[TargetKey::Integrand], "integrand = \"...\", the formula whose mean is wanted"),
-        Aim::Probability => (&[TargetKey::Event], "event = \"level > crest\", an inequality"),
+    let own = own_keys(aim);
+    let example = match aim {
+        Aim::Density => {
+            "log_factor = \"...\" (added to the log densities of the variables) or log_density = \"...\" (the whole)"
+        }
+        Aim::Expectation => "integrand = \"...\", the formula whose mean is wanted",
+        Aim::Probability => "event = \"level > crest\", an inequality",
     };
     let words: Vec<&str> = own.iter().map(|key| key.word()).collect();
     let (found, foreign): (Vec<_>, Vec<_>) = formulas.iter().partition(|(key, ..)| own.contains(key));
@@ -193,7 +208,7 @@ fn own_formula(
         reader.fault(
             Fault::new(entry.key_span.clone(), format!("`{}` is no key of the aim {}", key.word(), aim.word()))
                 .also(aim_entry.span.clone(), "this aim")
-                .help(format!("this aim wants {}", listed(&words))),
+                .help(format!("this aim wants {}: {example}", listed(&words))),
         );
     }
     match found.as_slice() {

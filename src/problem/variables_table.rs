@@ -95,6 +95,54 @@ const COMMON: [&str; 10] =
     ["distribution", "range", "near", "spread", "between", "shift", "unit", "label", "note", "each"];
 const ONLY_RANDOM: [&str; 3] = ["distribution", "between", "shift"];
 
+/// What the keys that every variable has are called elsewhere.
+const COMMON_SYNONYMS: [(&str, &str); 30] = [
+    ("width", "spread"),
+    ("step", "spread"),
+    ("spreads", "spread"),
+    ("start", "near"),
+    ("init", "near"),
+    ("initial", "near"),
+    ("guess", "near"),
+    ("center", "near"),
+    ("centre", "near"),
+    ("around", "near"),
+    ("bounds", "between"),
+    ("limits", "between"),
+    ("truncate", "between"),
+    ("truncated", "between"),
+    ("interval", "range"),
+    ("for_each", "each"),
+    ("foreach", "each"),
+    ("by", "each"),
+    ("per", "each"),
+    ("group", "each"),
+    ("groups", "each"),
+    ("units", "unit"),
+    ("title", "label"),
+    ("name", "label"),
+    ("description", "note"),
+    ("comment", "note"),
+    ("remark", "note"),
+    ("dist", "distribution"),
+    ("prior", "distribution"),
+    ("type", "distribution"),
+];
+
+/// The key of every variable that another word stands for.
+fn meant_key(key: &str) -> Option<&'static str> {
+    let synonym = COMMON_SYNONYMS.iter().find(|(other, _)| *other == key).map(|(_, meant)| *meant);
+    synonym.or_else(|| nearest(key, COMMON))
+}
+
+/// The entry with this key or, failing that, one whose unknown key stands for it.
+fn common_entry<'t, 'a>(table: &'t Table<'a>, key: &str, own: &[&str]) -> Option<&'t Entry<'a>> {
+    let slip = |entry: &&Entry<'_>| {
+        !COMMON.contains(&entry.key) && !own.contains(&entry.key) && meant_key(entry.key) == Some(key)
+    };
+    table.entry(key).or_else(|| table.entries.iter().find(slip))
+}
+
 /// Reads every variable of the table, in the order of the text. What is wrong with one leaves its name known.
 pub(crate) fn read(reader: &mut Reader<'_>, table: &Table<'_>) -> Vec<VariableSpec> {
     let mut specs = Vec::new();
@@ -151,18 +199,20 @@ impl VariableSpec {
 }
 
 fn read_one(reader: &mut Reader<'_>, entry: &Entry<'_>, table: &Table<'_>) -> VariableSpec {
+    // Parameters may be like other keys; `mean` never stands for one.
+    let family = table.entry("distribution").and_then(|entry| entry.value.as_str()).and_then(meant_family);
+    let own = family.map(parameter_keys).unwrap_or_default();
     let mut word = |key: &str, example: &str| {
         table.entry(key).and_then(|entry| reader.text(entry, example)).map(|text| text.value)
     };
     let unit = word("unit", "unit = \"m3/s\"");
     let label = word("label", "label = \"Inflow (m³/s)\"");
     let note = word("note", "note = \"a remark\"");
-    let each = table.entry("each").and_then(|entry| read_each(reader, entry));
-    let slip_of_each =
-        || table.entries.iter().any(|entry| !COMMON.contains(&entry.key) && nearest(entry.key, COMMON) == Some("each"));
-    let each_unknown = each.is_none() && (table.entry("each").is_some() || slip_of_each());
-    let near = placed(reader, table, "near", "near = 5.0");
-    let spread = placed(reader, table, "spread", "spread = 2.0");
+    let each_entry = common_entry(table, "each", &own);
+    let each = each_entry.and_then(|entry| read_each(reader, entry));
+    let each_unknown = each.is_none() && each_entry.is_some();
+    let near = placed(reader, common_entry(table, "near", &own), "near = 5.0");
+    let spread = placed(reader, common_entry(table, "spread", &own), "spread = 2.0");
     if let Some((_, span)) = spread.as_ref().filter(|(width, _)| *width <= 0.0 || width.is_infinite()) {
         reader.fault(
             Fault::new(span.clone(), "`spread` must be above zero and finite")
@@ -199,10 +249,11 @@ fn read_one(reader: &mut Reader<'_>, entry: &Entry<'_>, table: &Table<'_>) -> Va
 /// Neither a distribution nor a range: a slip in the key itself is told as such, and taken for the key that is meant.
 fn no_nature(reader: &mut Reader<'_>, variable: &Entry<'_>, table: &Table<'_>, near: Option<&Placed>) -> NatureSpec {
     let slip = |key: &str| {
-        let like = |entry: &&Entry<'_>| !COMMON.contains(&entry.key) && nearest(entry.key, COMMON) == Some(key);
+        let like = |entry: &&Entry<'_>| !COMMON.contains(&entry.key) && meant_key(entry.key) == Some(key);
         table.entries.iter().find(like)
     };
-    if let Some(entry) = slip("distribution") {
+    let named = table.entries.iter().find(|entry| names_a_family(entry));
+    if let Some(entry) = slip("distribution").filter(|_| named.is_none()) {
         reader.unknown_key(entry, &table.name, &COMMON);
         if entry.value.is_str() {
             return read_random(reader, table, entry);
@@ -212,7 +263,7 @@ fn no_nature(reader: &mut Reader<'_>, variable: &Entry<'_>, table: &Table<'_>, n
         if matches!(entry.value, DeValue::Array(_)) {
             return read_range(reader, table, variable, entry, near);
         }
-    } else if let Some(entry) = table.entries.iter().find(|entry| names_a_family(entry)) {
+    } else if let Some(entry) = named {
         let family = entry.value.as_str().unwrap_or_default();
         reader.fault(
             Fault::new(entry.key_span.clone(), format!("`{}` is no key of {}", entry.key, table.name))
@@ -241,8 +292,8 @@ fn names_a_family(entry: &Entry<'_>) -> bool {
     ["type", "dist", "kind", "family", "prior", "law"].contains(&entry.key) && entry.value.is_str()
 }
 
-fn placed(reader: &mut Reader<'_>, table: &Table<'_>, key: &str, example: &str) -> Option<Placed> {
-    let entry = table.entry(key)?;
+fn placed(reader: &mut Reader<'_>, entry: Option<&Entry<'_>>, example: &str) -> Option<Placed> {
+    let entry = entry?;
     reader.number(entry, example).map(|number| (number, entry.span.clone()))
 }
 
@@ -312,12 +363,12 @@ fn meant_family(word: &str) -> Option<&'static str> {
 
 fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) -> NatureSpec {
     let family = reader.text(entry, "distribution = \"normal\"").and_then(|text| known_family(reader, text));
+    let own = family.as_ref().map(|family| parameter_keys(&family.value)).unwrap_or_default();
     let between = table
         .entry("between")
         .map(|entry| reader.interval(entry, "between = [0.0, 10.0]").map(|interval| (interval, entry.span.clone())));
-    let shift = placed(reader, table, "shift", "shift = 1.5");
+    let shift = placed(reader, common_entry(table, "shift", &own), "shift = 1.5");
     let mut whole = true;
-    let own = family.as_ref().map(|family| parameter_keys(&family.value)).unwrap_or_default();
     let mut parameters: Vec<ParameterEntry> = Vec::new();
     for other in table.entries.iter().filter(|other| other.key != entry.key && !COMMON.contains(&other.key)) {
         let key = match &family {
@@ -403,7 +454,8 @@ fn unknown_parameter(
         reader.fault(fault.help(format!("write `{meant}`; {all}")));
         return Some(meant);
     }
-    let near = nearest(entry.key, known);
+    let common = COMMON_SYNONYMS.iter().find(|(other, _)| *other == entry.key).map(|(_, meant)| *meant);
+    let near = common.or_else(|| nearest(entry.key, known));
     reader.fault(match near {
         Some(near) => fault.help(format!("did you mean `{near}`? {}", capitalised(&all))),
         None => fault.help(all),
@@ -469,11 +521,16 @@ fn read_range(
     let foreign = |other: &&Entry<'_>| other.key != entry.key && !COMMON.contains(&other.key);
     for other in table.entries.iter().filter(foreign) {
         reader.mention(other.value);
-        reader.unknown_key(other, "a variable with a range", &range_keys);
+        let fault = Fault::new(other.key_span.clone(), format!("`{}` is no key of a variable with a range", other.key))
+            .label("unknown key");
+        reader.fault(match meant_key(other.key).filter(|meant| range_keys.contains(meant)) {
+            Some(meant) => fault.help(format!("did you mean `{meant}`?")),
+            None => fault.help(format!("the keys of a variable with a range are {}", all_of(&range_keys))),
+        });
     }
     for key in ["near", "spread"] {
         // A slip in the key has been told already.
-        if table.entry_or_slip(key, &range_keys).is_none() {
+        if common_entry(table, key, &[]).is_none() {
             let says = if key == "near" { "where to look first" } else { "how wide to look first" };
             reader.fault(
                 Fault::new(entry.span.clone(), format!("the range of `{}` needs `{key}`", variable.key))
