@@ -107,11 +107,12 @@ pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, 
     }
     let mut aside = Reader::new(reader.source);
     let cells_reader = if raw.stands_in { &mut aside } else { reader };
+    let marks = marks_of(&raw, &used);
     tell_missing(cells_reader, &raw, &kept, &named, &used);
     let mut columns = Vec::new();
     for (at, name) in named {
         let labels = uses.as_labels.contains(&name);
-        let cells = read_cells(cells_reader, &raw, &kept, at, &name, labels, used.contains(&at));
+        let cells = read_cells(cells_reader, &raw, &kept, (at, &name), labels, used.contains(&at).then_some(&marks));
         columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
     }
     DataTable { raw, columns, kept, assumed }
@@ -168,7 +169,8 @@ fn tell_missing(reader: &mut Reader<'_>, raw: &RawTable, kept: &[usize], named: 
     if raw.spec.missing.is_some() {
         return;
     }
-    let marks = marks_of(raw, used);
+    let quoted: Vec<String> = marks_of(raw, used).iter().map(|mark| format!("\"{mark}\"")).collect();
+    let marks = format!("[{}]", quoted.join(", "));
     for (at, name) in named.iter().filter(|(at, _)| used.contains(at)) {
         let rows: Vec<usize> = kept.iter().copied().filter(|&row| raw.is_missing(&raw.records[row].1[*at])).collect();
         let Some((&first, others)) = rows.split_first() else { continue };
@@ -182,25 +184,17 @@ fn tell_missing(reader: &mut Reader<'_>, raw: &RawTable, kept: &[usize], named: 
     }
 }
 
-/// The list for `missing` that holds every mark of the columns that are used.
-fn marks_of(raw: &RawTable, used: &[usize]) -> String {
+/// All that marks a missing cell in the columns that are used, and what `missing` lists already.
+fn marks_of(raw: &RawTable, used: &[usize]) -> Vec<String> {
     let mut found = vec![String::new()];
-    found.extend(raw.spec.missing.iter().flatten().cloned());
-    for (_, cells) in &raw.records {
-        for cell in used.iter().map(|&at| &cells[at]) {
-            if is_mark(cell) && !found.contains(cell) {
-                found.push(cell.clone());
-            }
+    let listed = raw.spec.missing.iter().flatten();
+    let cells = raw.records.iter().flat_map(|(_, cells)| used.iter().map(|&at| &cells[at]));
+    for mark in listed.chain(cells.filter(|cell| is_mark(cell))) {
+        if !found.contains(mark) {
+            found.push(mark.clone());
         }
     }
-    let mut told: Vec<String> = Vec::new();
-    for mark in found {
-        let quoted = format!("\"{mark}\"");
-        if !told.contains(&quoted) {
-            told.push(quoted);
-        }
-    }
-    format!("[{}]", told.join(", "))
+    found
 }
 
 fn give_names(
@@ -237,11 +231,11 @@ fn read_cells(
     reader: &mut Reader<'_>,
     raw: &RawTable,
     kept: &[usize],
-    at: usize,
-    name: &str,
+    (at, name): (usize, &str),
     as_labels: bool,
-    is_used: bool,
+    marks: Option<&Vec<String>>,
 ) -> Cells {
+    let is_used = marks.is_some();
     let cell = |row: usize| raw.records[row].1[at].as_str();
     let is_number = |row: usize| number(cell(row)).is_some();
     let present = || kept.iter().copied().filter(|&row| !raw.is_missing(cell(row)));
@@ -256,8 +250,10 @@ fn read_cells(
         let line = raw.records[first].0;
         let message = format!("line {line} of `{}`, column `{name}`: \"{}\" is no number", raw.shown, cell(first));
         let fault = raw.cell_fault(first, at, message).label("not a number");
-        let marks: Vec<&str> = bad.iter().map(|&row| cell(row)).filter(|cell| is_mark(cell)).collect();
-        let mut fault = fault.help(number_help(raw, cell(first), &marks));
+        let mut fault = match line == 2 && others.is_empty() && raw.records.len() > 1 && !is_mark(cell(first)) {
+            true => fault.help("a line of units has no place below the header: take the line out"),
+            false => fault.help(number_help(cell(first), marks.map_or(&[], Vec::as_slice))),
+        };
         if !others.is_empty() {
             let each = others.iter().take(10).map(|&row| format!("\"{}\" in line {}", cell(row), raw.records[row].0));
             let more = if others.len() > 10 { format!(" and {} more", others.len() - 10) } else { String::new() };
@@ -268,7 +264,7 @@ fn read_cells(
     Cells::Numbers(kept.iter().map(|&row| value(row)).collect(), texts().collect())
 }
 
-fn number_help(raw: &RawTable, cell: &str, marks: &[&str]) -> String {
+fn number_help(cell: &str, marks: &[String]) -> String {
     let pointed = cell.replacen(',', ".", 1);
     if number(&pointed).is_some() {
         return format!("write it with a point: {pointed}");
@@ -281,14 +277,11 @@ fn number_help(raw: &RawTable, cell: &str, marks: &[&str]) -> String {
     if number(&leading).is_some() {
         return format!("write the number alone: {leading}");
     }
-    let mut all: Vec<String> = vec!["\"\"".into()];
-    let known = raw.spec.missing.iter().flatten().map(String::as_str);
-    for mark in known.chain(marks.iter().copied()).chain([cell]) {
-        let quoted = format!("\"{mark}\"");
-        if !all.contains(&quoted) {
-            all.push(quoted);
-        }
+    let mut all = marks.to_vec();
+    if !marks.iter().any(|mark| mark == cell) {
+        all.push(cell.to_owned());
     }
+    let all: Vec<String> = all.iter().map(|mark| format!("\"{mark}\"")).collect();
     format!("mend the cell, or count it as missing: missing = [{}] under [data]", all.join(", "))
 }
 

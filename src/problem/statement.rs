@@ -92,9 +92,23 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanne
             "constants" => statement.constants = read_constants(reader, &table),
             "variables" => statement.variables = variables_table::read(reader, &table),
             "data" => statement.data = data::read_specs(reader, &table),
-            "formulas" => statement.formulas = read_formulas(reader, &table),
+            "formulas" => {
+                let (inside, table) = strayed(&file, table);
+                statement.formulas = read_formulas(reader, &table);
+                if let Some(inside) = inside {
+                    no_header(reader, &inside);
+                    target = target::read(reader, &inside);
+                }
+            }
             "target" => target = target::read(reader, &table),
-            "estimates" => statement.estimates = read_formulas(reader, &table),
+            "estimates" => {
+                let (inside, table) = strayed(&file, table);
+                statement.estimates = read_formulas(reader, &table);
+                if let Some(inside) = inside {
+                    no_header(reader, &inside);
+                    target = target::read(reader, &inside);
+                }
+            }
             _ => statement.tuning = tuning::read(reader, &table),
         }
     }
@@ -107,7 +121,7 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanne
                 .help("write [variables], and below it one variable a line: depth = { distribution = \"normal\", mean = 2.0, sd = 0.5 }"),
         );
     }
-    if !has("target") {
+    if !has("target") && target.texts.is_empty() && target.aim.is_none() {
         let end = reader.source.trim_end().len();
         reader.fault(
             Fault::new(end..end, "the problem has no [target]")
@@ -118,6 +132,25 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanne
         statement.target = spec.clone();
     }
     Stated { statement, target }
+}
+
+/// The keys of a target that stand in another table, since the line `[target]` is not there, and the table without them.
+fn strayed<'a>(file: &Table<'a>, mut table: Table<'a>) -> (Option<Table<'a>>, Table<'a>) {
+    let is_there = file.entries.iter().any(|entry| meant_table(file, entry) == Some("target"));
+    if is_there || table.entry("aim").is_none() {
+        return (None, table);
+    }
+    let (inside, left) = table.entries.into_iter().partition(|entry| target::KEYS.contains(&entry.key));
+    table.entries = left;
+    let entries: Vec<Entry<'a>> = inside;
+    let span = entries[0].key_span.clone();
+    (Some(Table { name: "[target]".into(), span, entries }), table)
+}
+
+fn no_header(reader: &mut Reader<'_>, inside: &Table<'_>) {
+    reader.fault(
+        Fault::new(inside.span.clone(), "the line [target] is missing above this one").help("write [target] before it"),
+    );
 }
 
 fn is_empty_table(entry: &Entry<'_>) -> bool {

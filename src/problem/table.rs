@@ -58,6 +58,30 @@ impl<'a> Table<'a> {
     }
 }
 
+/// Keys with the place where they belong, for those that stand elsewhere.
+const HOMES: [(&str, &str); 20] = [
+    ("title", "at the head of the file, before the first table"),
+    ("aim", "under [target]"),
+    ("log_factor", "under [target]"),
+    ("log_density", "under [target]"),
+    ("integrand", "under [target]"),
+    ("event", "under [target]"),
+    ("require", "under [target]"),
+    ("failed", "under [target]"),
+    ("file", "under [data]"),
+    ("missing", "under [data]"),
+    ("budget", "under [tuning]"),
+    ("rounds", "under [tuning]"),
+    ("round_draws", "under [tuning]"),
+    ("seed", "under [tuning]"),
+    ("family", "under [tuning]"),
+    ("components", "under [tuning]"),
+    ("coordinates", "under [tuning]"),
+    ("threads", "under [tuning]"),
+    ("among", "under [[correlation]]"),
+    ("linear", "under [[correlation]]"),
+];
+
 /// Reads typed values out of a document and keeps what is wrong.
 #[derive(Debug)]
 pub(crate) struct Reader<'s> {
@@ -107,8 +131,13 @@ impl<'s> Reader<'s> {
     pub(crate) fn unknown_key(&mut self, entry: &Entry<'_>, place: &str, known: &[&str]) {
         let fault =
             Fault::new(entry.key_span.clone(), format!("`{}` is no key of {place}", entry.key)).label("unknown key");
+        let home = HOMES.iter().find(|(key, _)| *key == entry.key).map(|(_, home)| *home);
         self.fault(match nearest(entry.key, known.iter().copied()) {
             Some(near) => fault.help(format!("did you mean `{near}`?")),
+            None if home.is_some() => {
+                let home = home.unwrap_or_default();
+                fault.help(format!("`{}` belongs {home}", entry.key))
+            }
             None => fault.help(format!("the keys of {place} are {}", all_of(known))),
         });
     }

@@ -83,7 +83,7 @@ pub(crate) struct TargetTable {
     pub(crate) texts: Vec<(String, Text, Wanted)>,
 }
 
-const KEYS: [&str; 7] = ["aim", "log_factor", "log_density", "integrand", "event", "require", "failed"];
+pub(crate) const KEYS: [&str; 7] = ["aim", "log_factor", "log_density", "integrand", "event", "require", "failed"];
 const FORMULAS: [TargetKey; 4] = [TargetKey::LogFactor, TargetKey::LogDensity, TargetKey::Integrand, TargetKey::Event];
 
 /// Reads the table.
