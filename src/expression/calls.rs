@@ -34,7 +34,16 @@ impl Lowering<'_> {
                 if matches!(function.body, Body::Chain(..)) { "at least one".to_string() } else { n.to_string() };
             let noun = if wants == "1" || wants == "at least one" { "argument" } else { "arguments" };
             let message = format!("`{name}` takes {wants} {noun}, not {}", arguments.len());
-            self.faults.push(Fault::new(span.clone(), message).help(format!("write {}", written(function))));
+            let help = match (name, arguments) {
+                ("log", [_, base]) => {
+                    let base = self.slice(&syntax.nodes[*base].1);
+                    format!(
+                        "write log(x)/log({base}) for the base {base}; log(x) is the natural one, log10(x) that of base 10"
+                    )
+                }
+                _ => format!("write {}", written(function)),
+            };
+            self.faults.push(Fault::new(span.clone(), message).help(help));
             return self.shape(arguments, function.body);
         }
         match function.body {
@@ -46,7 +55,10 @@ impl Lowering<'_> {
             Body::Unary(_) | Body::Binary(_) | Body::Build(_) | Body::Chain(..) => {
                 // All arguments are looked at before the first mistake ends it.
                 let checked: Vec<_> = arguments.iter().map(|&place| self.number_at(syntax, place)).collect();
-                let checked: Vec<Checked> = checked.into_iter().collect::<Option<_>>()?;
+                if checked.iter().any(Option::is_none) {
+                    return self.shape(arguments, function.body);
+                }
+                let checked: Vec<Checked> = checked.into_iter().flatten().collect();
                 let parts: Vec<_> = arguments.iter().zip(&checked).map(|(&place, &(_, rows))| (place, rows)).collect();
                 let rows = self.common_rows(syntax, &parts)?;
                 let ids: Vec<Id> = checked.iter().map(|&(id, _)| id).collect();
@@ -61,12 +73,18 @@ impl Lowering<'_> {
     fn shape(&mut self, arguments: &[Place], body: Body) -> Option<Value> {
         let one = self.operations.constant(1.0);
         let mut whole = (one, None);
+        let mut unknown = false;
         for &place in arguments {
             match self.values[place] {
                 Value::Plain { id, rows, .. } if whole.1.is_none() => whole = (id, rows),
                 Value::Plain { rows, .. } if rows.is_none() || rows == whole.1 => {}
-                _ => return None,
+                Value::Plain { .. } => return None,
+                _ => unknown = true,
             }
+        }
+        // Together with a column anything makes a column; else it is not known what this is.
+        if unknown && whole.1.is_none() {
+            return None;
         }
         let reduces = matches!(body, Body::Reduce(_)) || (matches!(body, Body::Chain(..)) && arguments.len() < 2);
         Some(if reduces { number(one, None) } else { number(whole.0, whole.1) })

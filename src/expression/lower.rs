@@ -226,7 +226,24 @@ impl<'a> Lowering<'a> {
         let joins = matches!(infix, Infix::And | Infix::Or);
         let check = if joins { Self::condition_at } else { Self::number_at };
         let (left, right) = (check(self, syntax, a), check(self, syntax, b));
-        let ((x, x_rows), (y, y_rows)) = (left?, right?);
+        let ((x, x_rows), (y, y_rows)) = match (left, right) {
+            (Some(left), Some(right)) => (left, right),
+            // Whatever the other one is, together with a column it makes a column.
+            (Some((id, rows @ Some(_))), None) | (None, Some((id, rows @ Some(_)))) => {
+                let makes_number = !joins
+                    && !matches!(
+                        infix,
+                        Infix::Less
+                            | Infix::LessEqual
+                            | Infix::Greater
+                            | Infix::GreaterEqual
+                            | Infix::Equal
+                            | Infix::Differ
+                    );
+                return Some(if makes_number { number(id, rows) } else { condition(id, rows) });
+            }
+            _ => return None,
+        };
         let rows = self.common_rows(syntax, &[(a, x_rows), (b, y_rows)])?;
         let list = &mut self.operations;
         Some(match infix {

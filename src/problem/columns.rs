@@ -135,10 +135,10 @@ fn assumed(raw: &RawTable, own: &[Option<String>], uses: &Uses, known: impl Fn(&
 }
 
 /// Whether a name is a word of a header, or made of words of it.
-fn is_meant(name: &str, header: &str) -> bool {
+pub(crate) fn is_meant(name: &str, header: &str) -> bool {
     let (name, header) = (name.to_lowercase(), header.to_lowercase());
     let words = || header.split(|c: char| !c.is_alphanumeric()).filter(|word| word.chars().count() > 2);
-    let parts = || name.split('_').filter(|part| part.chars().count() > 2);
+    let parts = || name.split(|c: char| !c.is_alphanumeric()).filter(|part| part.chars().count() > 2);
     words().any(|word| name == word || parts().any(|part| part == word))
 }
 
@@ -250,7 +250,7 @@ fn read_cells(
         let line = raw.records[first].0;
         let message = format!("line {line} of `{}`, column `{name}`: \"{}\" is no number", raw.shown, cell(first));
         let fault = raw.cell_fault(first, at, message).label("not a number");
-        let mut fault = match line == 2 && others.is_empty() && raw.records.len() > 1 && !is_mark(cell(first)) {
+        let mut fault = match line == 2 && others.is_empty() && raw.records.len() > 1 && is_unit(cell(first)) {
             true => fault.help("a line of units has no place below the header: take the line out"),
             false => fault.help(number_help(cell(first), marks.map_or(&[], Vec::as_slice))),
         };
@@ -262,6 +262,11 @@ fn read_cells(
         reader.fault(fault);
     }
     Cells::Numbers(kept.iter().map(|&row| value(row)).collect(), texts().collect())
+}
+
+/// Whether a cell looks like the unit of its column.
+fn is_unit(cell: &str) -> bool {
+    !is_mark(cell) && cell.starts_with(|c: char| c.is_alphabetic() || matches!(c, '(' | '[' | '%' | '°'))
 }
 
 fn number_help(cell: &str, marks: &[String]) -> String {

@@ -264,7 +264,15 @@ fn parse_records(
     if headers.iter().all(|header| header.is_empty() || header.parse::<f64>().is_ok()) {
         let fault = Fault::new(0..usize::MAX, format!("line 1 of `{shown}` holds no names of columns"))
             .within(line_source(&bytes, &shown, 1));
-        reader.fault(fault.help("put a line with the name of each column before the first row: time,flow"));
+        let mut fault = fault.help("put a line with the name of each column before the first row: time,flow");
+        let empty = all.iter().filter(|(_, cells)| cells.iter().any(String::is_empty)).map(|(line, _)| *line);
+        if empty.clone().next().is_some() {
+            fault = fault.help(format!(
+                "cells are empty in {}: fill them, or write missing = [\"\"] under [data] to drop such rows",
+                lines(empty)
+            ));
+        }
+        reader.fault(fault);
         return None;
     }
     if all.is_empty() {
@@ -378,7 +386,7 @@ fn row_length_help(headers: &[String], row: &[String]) -> String {
     }
     // 600,0,21: the digits after a decimal comma are a cell of their own.
     let is_digits = |text: &String| !text.is_empty() && text.chars().all(|c| c.is_ascii_digit());
-    let pair = row.windows(2).find(|pair| pair[0].parse::<f64>().is_ok() && is_digits(&pair[1]));
+    let pair = row.windows(2).rfind(|pair| pair[0].parse::<f64>().is_ok() && is_digits(&pair[1]));
     match pair {
         Some([whole, part]) => format!(
             "the columns are {columns}; a decimal comma is written as a point, {whole}.{part} for {whole},{part}, and a text \
@@ -412,12 +420,24 @@ impl RawTable {
                         format!("`{}` has no column with the header \"{}\"", self.shown, header.value),
                     );
                     let known = self.headers.iter().map(String::as_str);
-                    let help = nearest(&header.value, known).map_or_else(
-                        || format!("its headers are {}", all_of(&self.headers)),
-                        |near| format!("did you mean \"{near}\"?"),
-                    );
-                    reader.fault(fault.help(help));
-                    reader.faulty.push(self.spec.scope_name(&name.value));
+                    let like = || {
+                        let mut like =
+                            self.headers.iter().filter(|known| super::columns::is_meant(&header.value, known));
+                        like.next().filter(|_| like.next().is_none()).map(String::as_str)
+                    };
+                    match nearest(&header.value, known).or_else(like) {
+                        Some(near) => {
+                            reader.fault(fault.help(format!("did you mean \"{near}\"?")));
+                            let at = self.headers.iter().position(|known| known == near);
+                            if let Some(at) = at {
+                                names[at] = Some(name.value.clone());
+                            }
+                        }
+                        None => {
+                            reader.fault(fault.help(format!("its headers are {}", all_of(&self.headers))));
+                            reader.faulty.push(self.spec.scope_name(&name.value));
+                        }
+                    }
                 }
                 _ => reader.fault(
                     Fault::new(

@@ -77,7 +77,11 @@ impl Names {
             reader.fault(
                 Fault::new(span.clone(), format!("{kind} `{name}` takes a name of the formula language"))
                     .label("taken")
-                    .help(format!("choose another name, for instance `{name}_value`")),
+                    .help(match name {
+                        "pi" => "take it out: every formula knows pi, 3.14159...".to_owned(),
+                        "inf" => "take it out: every formula knows inf".to_owned(),
+                        _ => format!("choose another name, `{name}_value` for instance, here and in the formulas"),
+                    }),
             );
             reader.faulty.extend([name.to_owned(), format!("{name}_value")]);
             return false;

@@ -100,6 +100,10 @@ impl Problem {
         let text = text.strip_prefix('\u{feff}').unwrap_or(text);
         let mended = syntax::mend(text);
         let mut reader = Reader::new(&mended.text);
+        for line in &mended.left_out {
+            reader.mentions.push(line.clone());
+            reader.faulty.extend(line.split_once('=').map(|(key, _)| key.trim().to_owned()));
+        }
         let problem = if mended.readable { assemble(&mut reader, folder, change) } else { None };
         match problem {
             Some(problem) if reader.faults.is_empty() && mended.faults.is_empty() => Ok(problem),

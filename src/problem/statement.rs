@@ -14,6 +14,7 @@ use super::names::Names;
 use super::table::Entry;
 use super::table::Reader;
 use super::table::Table;
+use super::table::home_of;
 use super::target;
 use super::target::TargetSpec;
 use super::target::TargetTable;
@@ -270,10 +271,12 @@ fn read_formula(reader: &mut Reader<'_>, entry: &Entry<'_>, place: &str, example
     if place == "[formulas]"
         && let Some(number) = super::table::plain_number(entry.value)
     {
-        reader.fault(
-            Fault::new(entry.span.clone(), format!("the formula `{}` is a plain number", entry.key))
-                .help(format!("move it to [constants]: {} = {number:?}", entry.key)),
-        );
+        reader.fault(Fault::new(entry.span.clone(), format!("the formula `{}` is a plain number", entry.key)).help(
+            match home_of(entry.key) {
+                Some(home) => format!("`{}` belongs {home}", entry.key),
+                None => format!("move it to [constants]: {} = {number:?}", entry.key),
+            },
+        ));
         return None;
     }
     reader.text(entry, example)

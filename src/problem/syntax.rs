@@ -24,6 +24,8 @@ pub(crate) struct Mended {
     pub(crate) readable: bool,
     /// For every byte of the copy, and its end: the byte of the file.
     places: Vec<usize>,
+    /// Lines that were left out, because their table stands twice: what they name may be used elsewhere.
+    pub(crate) left_out: Vec<String>,
     /// Lines of the file (from 0) whose values stand in for others: nothing more is told of them.
     muted: Vec<usize>,
 }
@@ -54,6 +56,7 @@ pub(crate) fn mend(source: &str) -> Mended {
         faults: Vec::new(),
         readable: true,
         places: (0..=source.len()).collect(),
+        left_out: Vec::new(),
         muted: Vec::new(),
     };
     for _ in 0..MOST {
@@ -62,12 +65,10 @@ pub(crate) fn mend(source: &str) -> Mended {
         let place = |error: &toml::de::Error| error.span().unwrap_or(end..end);
         let slip = errors.iter().filter(|error| !is_twice(error)).min_by_key(|error| place(error).start);
         let Some(error) = slip else {
-            for error in &errors {
-                let fault = twice(&mended, source, &place(error));
-                mended.readable &= fault.1;
-                mended.faults.push(fault.0);
+            if !tell_twice(&mut mended, source, errors.iter().map(place).collect()) {
+                return mended;
             }
-            return mended;
+            continue;
         };
         let (span, message) = (place(error), error.message().to_owned());
         let line = line_at_fault(&mended.text, span.start, &message);
@@ -133,13 +134,50 @@ fn is_twice(error: &toml::de::Error) -> bool {
     error.message().contains("duplicate key")
 }
 
+/// Tells of all keys that stand twice, in the file `places` of the copy. A table that does is left out the second time;
+/// whether there was one.
+fn tell_twice(mended: &mut Mended, source: &str, places: Vec<Range<usize>>) -> bool {
+    let told: Vec<(Fault, bool)> = places.iter().map(|place| twice(mended, source, place)).collect();
+    // One table at a time, since every line that is left out moves the places behind it.
+    if let Some(k) = told.iter().position(|(_, is_key)| !is_key) {
+        mended.faults.push(told[k].0.clone());
+        leave_out(mended, places[k].start);
+        return true;
+    }
+    mended.faults.extend(told.into_iter().map(|(fault, _)| fault));
+    false
+}
+
+/// Makes remarks of the lines of a table, its header included.
+fn leave_out(mended: &mut Mended, at: usize) {
+    let mut start = mended.text[..at].rfind('\n').map_or(0, |end| end + 1);
+    loop {
+        let end = mended.text[start..].find('\n').map_or(mended.text.len(), |end| start + end);
+        mended.left_out.push(mended.text[start..end].to_owned());
+        let place = mended.places[start];
+        mended.text.insert(start, '#');
+        mended.places.insert(start, place);
+        start = end + 2;
+        if start >= mended.text.len() || mended.text[start..].trim_start().starts_with('[') {
+            return;
+        }
+    }
+}
+
 /// A key that stands twice, and whether the rest can be read all the same.
 fn twice(mended: &Mended, source: &str, span: &Range<usize>) -> (Fault, bool) {
     let text = &mended.text;
     let key = &text[span.clone()];
     let line_start = text[..span.start].rfind('\n').map_or(0, |end| end + 1);
     let is_header = text[line_start..].trim_start().starts_with('[');
-    let what = if is_header { format!("the table [{key}]") } else { format!("the key `{key}`") };
+    let what = if is_header {
+        format!(
+            "the table {}",
+            text[line_start..].lines().next().unwrap_or(key).split('#').next().unwrap_or(key).trim()
+        )
+    } else {
+        format!("the key `{key}`")
+    };
     let fault = Fault::new(mended.place(span), format!("{what} stands twice")).label("again");
     let first = first_place(text, key, line_start, span.start, is_header).map(|first| mended.place(&first));
     let fault = match first {

@@ -82,6 +82,11 @@ const HOMES: [(&str, &str); 20] = [
     ("linear", "under [[correlation]]"),
 ];
 
+/// Where a key belongs, if anywhere.
+pub(crate) fn home_of(key: &str) -> Option<&'static str> {
+    HOMES.iter().find(|(known, _)| *known == key).map(|(_, home)| *home)
+}
+
 /// Reads typed values out of a document and keeps what is wrong.
 #[derive(Debug)]
 pub(crate) struct Reader<'s> {
@@ -131,7 +136,7 @@ impl<'s> Reader<'s> {
     pub(crate) fn unknown_key(&mut self, entry: &Entry<'_>, place: &str, known: &[&str]) {
         let fault =
             Fault::new(entry.key_span.clone(), format!("`{}` is no key of {place}", entry.key)).label("unknown key");
-        let home = HOMES.iter().find(|(key, _)| *key == entry.key).map(|(_, home)| *home);
+        let home = home_of(entry.key);
         self.fault(match nearest(entry.key, known.iter().copied()) {
             Some(near) => fault.help(format!("did you mean `{near}`?")),
             None if home.is_some() => {
@@ -155,7 +160,13 @@ impl<'s> Reader<'s> {
     pub(crate) fn number(&mut self, entry: &Entry<'_>, example: &str) -> Option<f64> {
         let found = plain_number(entry.value);
         if found.is_none() {
-            self.wants(entry, "a number", example);
+            let quoted = entry.value.as_str().and_then(|text| text.trim().parse::<f64>().ok());
+            match quoted {
+                Some(number) if example.starts_with(entry.key) => {
+                    self.wants(entry, "a number", &format!("it without quotes: {number:?}"));
+                }
+                _ => self.wants(entry, "a number", example),
+            }
         }
         if found.is_some_and(f64::is_nan) {
             self.fault(

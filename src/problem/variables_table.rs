@@ -464,7 +464,8 @@ fn unknown_parameter(
 }
 
 /// What parameters are called elsewhere.
-const SYNONYMS: [(&str, &str); 30] = [
+const SYNONYMS: [(&str, &str); 31] = [
+    ("cov", "cv"),
     ("sigma", "sd"),
     ("stdev", "sd"),
     ("std", "sd"),
