@@ -116,7 +116,7 @@ pub(super) const FUNCTIONS: &[Function] = &[
 ];
 
 /// What functions are called elsewhere, and what to write here.
-pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 43] = [
+pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 50] = [
     ("ln", "write log(...): it is the natural logarithm"),
     ("log2", "write log(...)/log(2)"),
     ("pow", "write a^b"),
@@ -151,6 +151,13 @@ pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 43] = [
     ("cbrt", "write (...)^(1/3)"),
     ("lngamma", "write lgamma(...)"),
     ("phi", "write normal_cdf(...)"),
+    ("normal_inv", "write normal_quantile(...)"),
+    ("norm_inv", "write normal_quantile(...)"),
+    ("normal_ppf", "write normal_quantile(...)"),
+    ("normal_icdf", "write normal_quantile(...)"),
+    ("qnorm", "write normal_quantile(...)"),
+    ("pnorm", "write normal_cdf(...)"),
+    ("norm_cdf", "write normal_cdf(...)"),
     ("probit", "write normal_quantile(...)"),
     ("expit", "write logistic(...)"),
     ("inv_logit", "write logistic(...)"),

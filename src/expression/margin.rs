@@ -76,6 +76,9 @@ fn tell_no_inequality(lowering: &mut Lowering<'_>, syntax: &Syntax, place: Place
         return;
     }
     let (node, span) = &syntax.nodes[place];
+    if lowering.faults().iter().any(|fault| fault.span == *span) {
+        return; // A number where a condition should be: that is the same said twice.
+    }
     let fault = match node {
         Node::Infix(Infix::Equal | Infix::Differ, ..) => {
             Fault::new(span.clone(), "an event is made of < <= > >=; equality has no margin")

@@ -185,7 +185,10 @@ impl Parser {
         let in_call = sign == ",";
         while *self.peek() != Token::End && !self.is_sign(sign) && !(in_call && self.is_sign(")")) {
             let fault = self.unexpected_after_value();
-            self.faults.push(fault);
+            // What stood where a value should is told already.
+            if self.faults.last().is_none_or(|last| last.span != fault.span) {
+                self.faults.push(fault);
+            }
             if self.is_sign("[") {
                 while *self.peek() != Token::End && !self.is_sign("]") {
                     self.advance();
@@ -361,6 +364,10 @@ impl Parser {
     }
 
     fn missing_value(&self, found: &str) -> Fault {
+        if found == "[" {
+            return Fault::new(self.span(), "a list in square brackets is no value")
+                .help("write the parts one after the other: max(a, b), logsumexp(a, b)");
+        }
         Fault::new(self.span(), format!("`{found}` stands where a value should"))
             .help("a number, a name, a function or an opening bracket can stand here")
     }

@@ -86,8 +86,19 @@ pub(crate) fn read_specs(reader: &mut Reader<'_>, table: &Table<'_>) -> Vec<Data
 }
 
 fn read_spec(reader: &mut Reader<'_>, table: &Table<'_>, name: Option<String>) -> Option<DataSpec> {
-    reader.only(table, &KEYS);
-    let Some(entry) = table.entry_or_slip("file", &KEYS) else {
+    let file = table.entry_or_slip("file", &KEYS).or_else(|| {
+        table.entries.iter().find(|entry| ["path", "filename", "csv", "source", "from"].contains(&entry.key))
+    });
+    if let Some(entry) = file.filter(|entry| nearest(entry.key, KEYS).is_none()) {
+        let message = format!("`{}` is no key of {}", entry.key, table.name);
+        reader.fault(Fault::new(entry.key_span.clone(), message).label("unknown key").help("did you mean `file`?"));
+    }
+    for entry in table.entries.iter().filter(|entry| !KEYS.contains(&entry.key)) {
+        if file.is_none_or(|file| file.key != entry.key) || nearest(entry.key, KEYS).is_some() {
+            reader.unknown_key(entry, &table.name, &KEYS);
+        }
+    }
+    let Some(entry) = file else {
         reader.fault(
             Fault::new(table.span.clone(), format!("{} names no file", table.name))
                 .help("write file = \"readings.csv\", a path from the problem file's folder"),

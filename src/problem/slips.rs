@@ -2,6 +2,8 @@
 
 use std::ops::Range;
 
+use super::variables_table::meant_family;
+use crate::distribution::Distribution;
 use crate::expression::Scope;
 use crate::expression::Wanted;
 use crate::numeric::Points;
@@ -489,6 +491,10 @@ impl Line<'_> {
             let help = format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\"");
             return Slip::new(span, format!("`{text}` is more than a number"), help).write(number);
         }
+        if let Some(table) = called_family(text).filter(|_| self.table == "variables" && inside == Inside::Line) {
+            let message = "a variable is a table of its distribution and its parameters";
+            return Slip::new(span, message, format!("write {table}")).write(table);
+        }
         let in_formulas = ["formulas", "estimates", "target"].contains(&self.table);
         if !in_formulas && let Some(value) = worked_out(text) {
             let help = format!("write the number itself, {value:?}");
@@ -501,6 +507,19 @@ impl Line<'_> {
             Slip::new(span, format!("`{text}` has no quotes"), format!("texts and formulas stand in quotes: {quoted}"));
         Slip { mute: self.table == "constants", ..slip.edit(at..at, quote).edit(end..end, quote) }
     }
+}
+
+/// `normal(0, 1)` as the table of a variable, with the parameters by their names.
+fn called_family(text: &str) -> Option<String> {
+    let (word, rest) = text.split_once('(')?;
+    let family = meant_family(word.trim())?;
+    let values: Vec<&str> = rest.strip_suffix(')')?.split(',').map(str::trim).collect();
+    let sets = Distribution::parameters_of(family)?;
+    let set = sets.iter().find(|set| set.required.len() == values.len())?;
+    let each = set.required.iter().zip(values).map(|(key, value)| {
+        if is_plain(value) { format!(", {key} = {value}") } else { format!(", {key} = \"{value}\"") }
+    });
+    Some(format!("{{ distribution = \"{family}\"{} }}", each.collect::<String>()))
 }
 
 fn decimal_comma(at: usize, whole: &str, part: &str, next: usize) -> Slip {

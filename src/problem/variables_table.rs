@@ -354,7 +354,7 @@ const FOREIGN_FAMILIES: [(&str, &str); 22] = [
 ];
 
 /// The distribution that is probably meant by a word.
-fn meant_family(word: &str) -> Option<&'static str> {
+pub(crate) fn meant_family(word: &str) -> Option<&'static str> {
     let plain = word.to_lowercase().replace(['_', ' '], "-");
     let exact = Distribution::NAMES.iter().copied().find(|known| *known == plain);
     let foreign = FOREIGN_FAMILIES.iter().find(|(known, _)| *known == plain).map(|(_, meant)| *meant);
@@ -442,6 +442,10 @@ fn unknown_parameter(
     let other_way = match entry.key {
         "scale" if own.contains(&"rate") => Some("give `rate`, which is one over the scale".to_owned()),
         "rate" if own.contains(&"scale") => Some("give `scale`, which is one over the rate".to_owned()),
+        "median" if family == "lognormal" => {
+            Some("give `log_mean`, the logarithm of the median, with `log_sd`; or `mean` with `sd` or `cv`".to_owned())
+        }
+        "median" => Some("a median is no parameter".to_owned()),
         "variance" | "var" if own.contains(&"sd") => Some("give `sd`, the square root of the variance".to_owned()),
         _ => None,
     };
