@@ -171,8 +171,13 @@ impl Lowering<'_> {
 
     fn wants_column(&mut self, name: &str, span: &Range<usize>) {
         let message = format!("`{name}` works on a column, and `{}` is one number", self.slice(span));
-        self.faults
-            .push(Fault::new(span.clone(), message).help("a data column or a group makes an expression a column"));
+        let help = match name {
+            "mean" => {
+                "leave it out: an estimate is averaged over the draws; a mean of rows wants a data column or a group"
+            }
+            _ => "a data column or a group makes an expression a column",
+        };
+        self.faults.push(Fault::new(span.clone(), message).help(help));
     }
 
     fn present(&mut self, syntax: &Syntax, of: Place) -> Option<Value> {

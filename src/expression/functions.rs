@@ -116,7 +116,7 @@ pub(super) const FUNCTIONS: &[Function] = &[
 ];
 
 /// What functions are called elsewhere, and what to write here.
-pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 50] = [
+pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 59] = [
     ("ln", "write log(...): it is the natural logarithm"),
     ("log2", "write log(...)/log(2)"),
     ("pow", "write a^b"),
@@ -158,6 +158,15 @@ pub(super) const FOREIGN_FUNCTIONS: [(&str, &str); 50] = [
     ("qnorm", "write normal_quantile(...)"),
     ("pnorm", "write normal_cdf(...)"),
     ("norm_cdf", "write normal_cdf(...)"),
+    ("log_normal_cdf", "write log_normal_below(z)"),
+    ("normal_lcdf", "write log_normal_below((x - mean)/sd)"),
+    ("normal_lccdf", "write log_normal_tail((x - mean)/sd)"),
+    ("log_normal_sf", "write log_normal_tail(z)"),
+    ("normal_sf", "write normal_cdf(-z)"),
+    ("radians", "write x*pi/180"),
+    ("degrees", "write x*180/pi"),
+    ("variance", "write mean((x - mean(x))^2) of a column x; of an estimate the spread is reported as well"),
+    ("median", "write a mean; there is no median of a column"),
     ("probit", "write normal_quantile(...)"),
     ("expit", "write logistic(...)"),
     ("inv_logit", "write logistic(...)"),

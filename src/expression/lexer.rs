@@ -55,7 +55,7 @@ enum Meant {
 use Meant::{Raised, Sign, Unknown, Word};
 
 /// What people write when they mean something else, what to write instead, and what it is read as.
-const FOREIGN: [(&str, &str, Meant); 38] = [
+const FOREIGN: [(&str, &str, Meant); 40] = [
     ("**", "write ^ for a power", Sign("^")),
     ("//", "write floor(a/b) for a whole quotient", Sign("/")),
     ("&&", "write `and`", Word("and")),
@@ -66,6 +66,8 @@ const FOREIGN: [(&str, &str, Meant); 38] = [
     ("===", "write ==", Sign("==")),
     ("=<", "write <=", Sign("<=")),
     ("=>", "write >=", Sign(">=")),
+    (">>", "write >, or >= where equality counts", Sign(">")),
+    ("<<", "write <, or <= where equality counts", Sign("<")),
     ("<>", "write !=", Sign("!=")),
     ("=", "write == to compare", Sign("==")),
     ("≤", "write <=", Sign("<=")),

@@ -55,6 +55,7 @@ impl<'a> Lowering<'a> {
         let fault = match (near, name) {
             (Some(near), _) if columns.is_empty() => fault.help(format!("did you mean `{near}`?")),
             (Some(near), _) => fault.help(format!("did you mean `{near}`? The columns of the data are {columns}")),
+            (None, _) if self.is_label(name) => fault.help(format!("a label stands in quotes: '{name}'")),
             (None, "e") => fault.help("write exp(1), or exp(x) for a power of it"),
             (None, "π") => fault.help("write pi"),
             (None, "infinity" | "Infinity" | "Inf") => fault.help("write inf"),
@@ -77,6 +78,14 @@ impl<'a> Lowering<'a> {
             of_enough(name) && of_enough(known) && (known.starts_with(name) || name.starts_with(known.as_str()))
         });
         found.next().filter(|_| found.next().is_none()).map(String::as_str)
+    }
+
+    /// Whether some column holds this label.
+    fn is_label(&self, name: &str) -> bool {
+        self.scope.entities.iter().any(|entity| match entity {
+            Entity::Texts { texts, .. } => texts.iter().any(|text| text == name),
+            _ => false,
+        })
     }
 
     fn columns_known(&self) -> String {

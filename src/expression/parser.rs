@@ -365,8 +365,8 @@ impl Parser {
 
     fn missing_value(&self, found: &str) -> Fault {
         if found == "[" {
-            return Fault::new(self.span(), "a list in square brackets is no value")
-                .help("write the parts one after the other: max(a, b), logsumexp(a, b)");
+            return Fault::new(self.span(), "square brackets hold no value")
+                .help("group with round brackets; write the arguments of a function one after the other: max(a, b)");
         }
         Fault::new(self.span(), format!("`{found}` stands where a value should"))
             .help("a number, a name, a function or an opening bracket can stand here")
@@ -458,11 +458,16 @@ impl Parser {
     fn unexpected_after_value(&self) -> Fault {
         let span = self.span();
         let operator = "an operator is missing before it, * for a product";
+        let after_number = self.at > 0 && matches!(self.tokens[self.at - 1].0, Token::Number(_));
         match self.peek() {
             Token::Number(value) => Fault::new(span, format!("the number {value} follows a value")).help(operator),
+            Token::Name(word) if word == "x" && !after_number => Fault::new(span, "`x` follows a value")
+                .help("an operator is missing before it; if it is meant as one, write *"),
             Token::Name(word) if ["if", "else", "then"].contains(&word.as_str()) => {
                 Fault::new(span, format!("`{word}` follows a value")).help("a choice is written if(condition, a, b)")
             }
+            Token::Name(word) if after_number => Fault::new(span, format!("`{word}` follows a number"))
+                .help("an operator is missing before it, * for a product; units have no place in a formula"),
             Token::Name(word) => Fault::new(span, format!("`{word}` follows a value")).help(operator),
             Token::Label(label) => Fault::new(span, format!("the label '{label}' follows a value"))
                 .help("compare a column with it: station == 'Alder'"),
@@ -537,7 +542,7 @@ mod tests {
             ("(a + b", 0..1, "never closed"),
             ("f(a, b", 1..2, "never closed"),
             ("a + b)", 5..6, "closes no bracket"),
-            ("2 x", 2..3, "follows a value"),
+            ("2 x", 2..3, "follows a number"),
             ("2(x)", 1..2, "follows a value"),
             ("a < b < c", 6..7, "do not chain"),
             ("a, b", 1..2, "comma"),
@@ -566,7 +571,7 @@ mod tests {
     fn several_mistakes_are_told_together() {
         for (text, parts) in [
             ("a ** 2 + f(b %% c", vec!["`**`", "never closed", "`%`", "`%`"]),
-            ("2 x + (3 y", vec!["`x` follows", "never closed", "`y` follows"]),
+            ("2 x + (3 y", vec!["`x` follows a number", "never closed", "`y` follows"]),
             ("a < b < c && d", vec!["do not chain", "`&&`"]),
             ("a * / b + f(, c) d", vec!["`/` stands", "`,` stands", "`d` follows"]),
             ("a if b > 2 else c", vec!["`if` follows"]),

@@ -105,14 +105,12 @@ pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, 
         no_whole_row(reader, &raw, &named, &used);
         kept = all.collect();
     }
-    let mut aside = Reader::new(reader.source);
-    let cells_reader = if raw.stands_in { &mut aside } else { reader };
     let marks = marks_of(&raw, &used);
-    tell_missing(cells_reader, &raw, &kept, &named, &used);
+    tell_missing(reader, &raw, &kept, &named, &used);
     let mut columns = Vec::new();
     for (at, name) in named {
         let labels = uses.as_labels.contains(&name);
-        let cells = read_cells(cells_reader, &raw, &kept, (at, &name), labels, used.contains(&at).then_some(&marks));
+        let cells = read_cells(reader, &raw, &kept, (at, &name), labels, used.contains(&at).then_some(&marks));
         columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
     }
     DataTable { raw, columns, kept, assumed }
@@ -248,7 +246,10 @@ fn read_cells(
     }
     if let Some((&first, others)) = bad.split_first() {
         let line = raw.records[first].0;
-        let message = format!("line {line} of `{}`, column `{name}`: \"{}\" is no number", raw.shown, cell(first));
+        let message = match cell(first) {
+            "" => format!("line {line} of `{}`, column `{name}`: the cell is empty", raw.shown),
+            text => format!("line {line} of `{}`, column `{name}`: \"{text}\" is no number", raw.shown),
+        };
         let fault = raw.cell_fault(first, at, message).label("not a number");
         let mut fault = match line == 2 && others.is_empty() && raw.records.len() > 1 && is_unit(cell(first)) {
             true => fault.help("a line of units has no place below the header: take the line out"),
@@ -272,6 +273,10 @@ fn is_unit(cell: &str) -> bool {
 fn number_help(cell: &str, marks: &[String]) -> String {
     let pointed = cell.replacen(',', ".", 1);
     if number(&pointed).is_some() {
+        let (whole, part) = cell.split_once(',').unwrap_or((cell, ""));
+        if part.len() == 3 && !whole.starts_with('0') && whole.len() <= 3 {
+            return format!("write {whole}{part} for a large number, {pointed} for a fraction");
+        }
         return format!("write it with a point: {pointed}");
     }
     let spaced: String = cell.chars().filter(|c| !c.is_whitespace() && *c != '\'').collect();

@@ -149,6 +149,10 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
         let number = if check_entry(reader, number, &entry.span) { number } else { f64::NAN };
         return Some((vec![1.0, number, number, 1.0], vec![(1, 0, entry.span.clone())]));
     }
+    if let Some(number) = entry.value.as_str().and_then(|text| text.trim().parse::<f64>().ok()) {
+        reader.wants(entry, "a number", &format!("it without quotes: {} = {number:?}", entry.key));
+        return None;
+    }
     let example = format!("{} = {}", entry.key, triangle_example(d));
     let rows = reader.list(entry, &example)?;
     if rows.len() != d {

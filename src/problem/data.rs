@@ -55,8 +55,6 @@ pub(crate) struct RawTable {
     pub(crate) records: Vec<(usize, Vec<String>)>,
     /// What stands between the cells: a comma, or else it was told.
     pub(crate) separator: char,
-    /// Whether the file stands in for one that was not found: nothing is told of its cells.
-    pub(crate) stands_in: bool,
 }
 
 const KEYS: [&str; 4] = ["file", "names", "missing", "rows"];
@@ -156,11 +154,11 @@ fn read_file(reader: &mut Reader<'_>, spec: &DataSpec, folder: &Path) -> Option<
             }
             let (help, meant) = not_found(&path, folder);
             reader.fault(fault.help(help));
-            // With the columns of the file that is meant the formulas can be looked at.
-            let bytes = fs::read(meant.as_ref()?).ok()?;
-            let mut aside = Reader::new(reader.source);
-            let found = parse_bytes(&mut aside, spec, shown, meant?, bytes);
-            found.map(|found| RawTable { stands_in: true, ..found })
+            // The file that is meant is looked at as if it had been named.
+            let meant = meant?;
+            let bytes = fs::read(&meant).ok()?;
+            let shown = meant.strip_prefix(folder).unwrap_or(&meant).display().to_string();
+            parse_bytes(reader, spec, shown, meant, bytes)
         }
     }
 }
@@ -302,7 +300,7 @@ fn parse_records(
         }
         return None;
     }
-    Some(RawTable { spec, shown, path, bytes, headers, records, separator, stands_in: false })
+    Some(RawTable { spec, shown, path, bytes, headers, records, separator })
 }
 
 /// What stands between the cells of the header: the one of comma, semicolon and tab that stands there most often, the

@@ -307,7 +307,9 @@ impl Line<'_> {
         let last = self.line.rfind(quote)?;
         // `"normal" mean = "2"`: a comma is missing.
         let comma = inside == Inside::Table && self.line[next..].contains('=') && !self.line[next..].contains("==");
-        if fine || last < end || comma {
+        // Two texts side by side are items without a comma between them.
+        let gap = next > end && matches!(follows, Some('"' | '\''));
+        if fine || last < end || comma || gap {
             return None;
         }
         let other = if quote == '"' { '\'' } else { '"' };
@@ -450,6 +452,11 @@ impl Line<'_> {
 
     fn not_plain(&self, text: &str, span: Range<usize>, inside: Inside) -> Slip {
         let at = span.start;
+        if let Some((before, after)) = text.split_once(';').filter(|_| inside == Inside::List) {
+            let place = at + before.len();
+            let help = format!("write {}, {}", before.trim(), after.trim());
+            return Slip::new(place..place + 1, "a semicolon stands where a comma should", help).write(",");
+        }
         let gap = text.find(' ').unwrap_or(text.len());
         if inside == Inside::List && is_plain(&text[..gap]) && gap < text.len() {
             let help = format!("write {}", text.split_whitespace().collect::<Vec<_>>().join(", "));
@@ -486,6 +493,21 @@ impl Line<'_> {
             let written = trimmed(percent / 100.0);
             let help = format!("write a share as a number: {written}");
             return Slip::new(span, format!("`{text}` is no plain number"), help).write(written);
+        }
+        let thousands = [("k", 1e3), ("K", 1e3), ("M", 1e6)];
+        for (sign, size) in thousands {
+            let number = text.strip_suffix(sign).and_then(|number| number.trim().parse::<f64>().ok());
+            if let Some(number) = number.filter(|_| self.table == "tuning") {
+                let written = (number * size).to_string();
+                return Slip::new(span, format!("`{text}` is no number"), format!("write {written}")).write(written);
+            }
+        }
+        let cut_off =
+            text.strip_suffix(['e', 'E', '+', '-']).filter(|number| is_plain(number.trim_end_matches(['e', 'E'])));
+        if let Some(number) = cut_off {
+            let number = number.trim_end_matches(['e', 'E']);
+            let help = format!("write {number}, or the digits of the exponent as in {number}e3");
+            return Slip::new(span, format!("`{text}` is no number"), help).write(number);
         }
         if let Some((number, rest)) = number_and_rest(text) {
             let help = format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\"");

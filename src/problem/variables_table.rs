@@ -366,7 +366,7 @@ fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) ->
     let own = family.as_ref().map(|family| parameter_keys(&family.value)).unwrap_or_default();
     let between = table
         .entry("between")
-        .map(|entry| reader.interval(entry, "between = [0.0, 10.0]").map(|interval| (interval, entry.span.clone())));
+        .map(|entry| reader.interval(entry, "between = [0.0, inf]").map(|interval| (interval, entry.span.clone())));
     let shift = placed(reader, common_entry(table, "shift", &own), "shift = 1.5");
     let mut whole = true;
     let mut parameters: Vec<ParameterEntry> = Vec::new();
@@ -377,7 +377,7 @@ fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) ->
             Some(family) => {
                 reader.mention(other.value);
                 whole = false;
-                let meant = unknown_parameter(reader, other, &family.value, &own);
+                let meant = unknown_parameter(reader, (table, other), &family.value, &own);
                 meant.filter(|key| table.entry(key).is_none())
             }
         };
@@ -430,7 +430,7 @@ fn known_family(reader: &mut Reader<'_>, text: Text) -> Option<Text> {
 /// Tells that a key is no parameter; gives the one that is meant, where its value may stand for it.
 fn unknown_parameter(
     reader: &mut Reader<'_>,
-    entry: &Entry<'_>,
+    (table, entry): (&Table<'_>, &Entry<'_>),
     family: &str,
     own: &[&'static str],
 ) -> Option<&'static str> {
@@ -442,6 +442,11 @@ fn unknown_parameter(
     let other_way = match entry.key {
         "scale" if own.contains(&"rate") => Some("give `rate`, which is one over the scale".to_owned()),
         "rate" if own.contains(&"scale") => Some("give `scale`, which is one over the rate".to_owned()),
+        "lower" | "min" | "minimum" | "upper" | "max" | "maximum"
+            if !own.contains(&"low") && !own.contains(&"minimum") =>
+        {
+            Some("to cut a distribution off write between = [low, high]; an end may be inf".to_owned())
+        }
         "median" if family == "lognormal" => {
             Some("give `log_mean`, the logarithm of the median, with `log_sd`; or `mean` with `sd` or `cv`".to_owned())
         }
@@ -455,7 +460,10 @@ fn unknown_parameter(
     }
     let synonym = SYNONYMS.iter().find(|(other, meant)| *other == entry.key && own.contains(meant));
     if let Some((_, meant)) = synonym {
-        reader.fault(fault.help(format!("write `{meant}`; {all}")));
+        reader.fault(fault.help(match table.entry(meant) {
+            Some(_) => format!("take it out: `{meant}` is there already; {all}"),
+            None => format!("write `{meant}`; {all}"),
+        }));
         return Some(meant);
     }
     let common = COMMON_SYNONYMS.iter().find(|(other, _)| *other == entry.key).map(|(_, meant)| *meant);

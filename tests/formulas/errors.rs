@@ -100,7 +100,7 @@ fn events_are_inequalities() {
 fn texts_that_are_no_formulas() {
     check("x +", "", "ends where", "");
     check("(x", "(", "never closed", ")");
-    check("2x", "x", "follows a value", "*");
+    check("2x", "x", "follows a number", "*");
     check_as(Wanted::Condition, "x ≤ y", "≤", "no part of a formula", "<=");
     check("", "", "empty", "");
 }
