@@ -195,3 +195,65 @@ fn cells_and_rows() {
         ]),
     );
 }
+
+#[test]
+fn numbers_units_and_labels() {
+    let event = |variables: &str, event: &str| {
+        whole(&format!("[variables]\n{variables}\n\n[target]\naim = \"probability\"\nevent = {event}"))
+    };
+    snapshot(
+        "numbers_units_and_labels",
+        &gallery(&[
+            (
+                "large numbers and foreign signs",
+                event(
+                    "inflow = { distribution = \"lognormal\", mean = 1,200, cv = 0.3 }\nwidth = { distribution = \"triangular\", low = 10, mode = 9, high = 12 }",
+                    "\"inflow / width >> 150\"\n\n[tuning]\nbudget = 50k",
+                ),
+            ),
+            (
+                "units in numbers and formulas",
+                event(
+                    "flow_rate = { distribution = \"lognormal\", mean = 2.0 m3/s, cv = 0.1 }\narea = { distribution = \"uniform\", low = 3.0, high = 3.5 }",
+                    "\"flow_rate / area > 0.8 m/s\"",
+                ),
+            ),
+            (
+                "an event without quotes, a correlation in quotes",
+                event(
+                    "height = { distribution = \"weibull\", shape = 1.5, scale = 2.0, }\nperiod = { distribution = \"lognormal\", mean = 8, cv = 20% }\n\n\
+                 [[correlation]]\namong = [\"height\", \"period\"]\nrank = \"0.6\"",
+                    "height > 6 and period > 12",
+                ),
+            ),
+            (
+                "a label without quotes, items without a comma",
+                whole(
+                    "[variables]\nfirst = { distribution = \"normal\", mean = 1, sd = 1 }\n\n[data]\nfile = \"marks.cvs\"\nmissing = [\"-\" \"\"]\n\n\
+                 [target]\naim = \"density\"\nlog_factor = \"sum(if(station == Alder, (flow - first)^2, 0))\"",
+                ),
+            ),
+            (
+                "semicolons in a list, a letter for a product",
+                whole(
+                    "[variables]\nslope = { range = [-inf; inf], near = 0, spread = \"wide\" }\n\n[data]\nfile = \"readings.csv\"\n\n\
+                 [target]\naim = \"density\"\nlog_density = \"sum(log_density_normal(concentration, slope x time, 1))\"",
+                ),
+            ),
+            (
+                "tails by other names, rows without quotes",
+                whole(
+                    "[variables]\nlevel_of = { distribution = \"normal\", mean = 1, sd = 1 }\n\n[data]\nfile = \"marks.csv\"\nmissing = [\"-\"]\nrows = all\n\n\
+                 [target]\naim = \"density\"\nlog_factor = \"sum(if(flow > 0, normal_lpdf(flow, level_of, 1), log_normal_cdf(0.1 - level_of)))\"",
+                ),
+            ),
+            (
+                "distributions as calls",
+                whole(
+                    "[variables]\nfirst = normal(0, 1)\nsecond ~ gamma(2, 1)\nthird = { distribution = \"student-t\", mean = 0, df = 3 }\n\n\
+                 [target]\naim = \"density\"\nlog_factor = \"-(first + second + third)^2\"",
+                ),
+            ),
+        ]),
+    );
+}
