@@ -97,7 +97,7 @@ fn forget_equal_signs(faults: &[Fault], key: &str, errors: &mut Vec<FormulaError
     let equalities: Vec<&Fault> = faults.iter().filter(|fault| fault.message.contains("equality")).collect();
     errors.retain(|error| {
         let inside = |fault: &&Fault| fault.span.start <= error.span.start && error.span.end <= fault.span.end;
-        error.key != key || !error.message.starts_with("`=`") || !equalities.iter().any(|fault| inside(fault))
+        error.key != key || !error.message.starts_with("`=`") || !equalities.iter().any(inside)
     });
 }
 

@@ -65,7 +65,7 @@ pub(crate) fn mend(source: &str) -> Mended {
         let place = |error: &toml::de::Error| error.span().unwrap_or(end..end);
         let slip = errors.iter().filter(|error| !is_twice(error)).min_by_key(|error| place(error).start);
         let Some(error) = slip else {
-            if !tell_twice(&mut mended, source, errors.iter().map(place).collect()) {
+            if !tell_twice(&mut mended, source, &errors.iter().map(place).collect::<Vec<_>>()) {
                 return mended;
             }
             continue;
@@ -136,7 +136,7 @@ fn is_twice(error: &toml::de::Error) -> bool {
 
 /// Tells of all keys that stand twice, in the file `places` of the copy. A table that does is left out the second time;
 /// whether there was one.
-fn tell_twice(mended: &mut Mended, source: &str, places: Vec<Range<usize>>) -> bool {
+fn tell_twice(mended: &mut Mended, source: &str, places: &[Range<usize>]) -> bool {
     let told: Vec<(Fault, bool)> = places.iter().map(|place| twice(mended, source, place)).collect();
     // One table at a time, since every line that is left out moves the places behind it.
     if let Some(k) = told.iter().position(|(_, is_key)| !is_key) {
