@@ -18,6 +18,7 @@ mod digest;
 mod evaluate;
 mod expand;
 mod faults;
+mod foreign;
 mod from_model;
 mod given;
 mod names;

@@ -2,7 +2,7 @@
 
 use std::ops::Range;
 
-use super::variables_table::meant_family;
+use super::foreign::meant_family;
 use crate::distribution::Distribution;
 use crate::expression::Scope;
 use crate::expression::Wanted;
