@@ -4,6 +4,8 @@
 
 #[path = "formulas/errors.rs"]
 mod errors;
+#[path = "formulas/every_function.rs"]
+mod every_function;
 #[path = "formulas/meaning.rs"]
 mod meaning;
 #[path = "formulas/naive.rs"]

@@ -14,7 +14,6 @@ use super::numbers::trimmed;
 use evenpoise::distribution::Distribution;
 use evenpoise::distribution::correlation::LinearCorrelation;
 use evenpoise::distribution::correlation::rank_of_score;
-use evenpoise::numeric::Points;
 use evenpoise::problem::Aim;
 use evenpoise::problem::Correlation;
 use evenpoise::problem::Nature;
@@ -26,8 +25,6 @@ use std::time::Duration;
 
 /// Most variables, and most pairs of correlated ones, that are shown.
 const MOST: usize = 40;
-/// Scales of the start to both sides of its centre that hold 95 %.
-const CENTRAL_95: f64 = 1.96;
 
 /// The problem as it was understood.
 pub(crate) fn understood(problem: &Problem) -> String {
@@ -53,17 +50,9 @@ fn variables(problem: &Problem) -> String {
     let d = problem.dim();
     let title = if d == 1 { "One variable".to_owned() } else { format!("{d} variables") };
     let mut out = heading(&title);
-    let natural = problem.to_natural(&start_corners(problem));
     for (j, variable) in problem.variables().iter().enumerate().take(MOST) {
-        let unit = variable.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
-        let ends = [1 + 2 * j, 2 + 2 * j].map(|corner| natural.get(corner, j));
-        let [near, low, high] = [natural.get(0, j), ends[0].min(ends[1]), ends[0].max(ends[1])].map(|x| trimmed(x, 3));
-        let text = format!(
-            "{}; coordinate {}; start {near}{unit} (95 % from {low} to {high})",
-            nature(variable),
-            variable.coordinate.word()
-        );
-        out.push_str(&hanging(&format!("  {:<16}  ", cut(&variable.name, 16)), &text));
+        out.push_str(&hanging(&format!("  {:<16}  ", cut(&variable.name, 16)), &nature(variable)));
+        out.push_str(&hanging(&" ".repeat(20), &start(problem, j)));
     }
     if d > MOST {
         out.push_str(&format!("  and {} more\n", d - MOST));
@@ -71,18 +60,21 @@ fn variables(problem: &Problem) -> String {
     out
 }
 
-/// The centre of the start, and for every variable the two ends of its central 95 % with the others at their centres.
-fn start_corners(problem: &Problem) -> Points {
-    let start = problem.start();
-    let mut corners = Points::from_rows(problem.dim(), &start.near);
-    for j in 0..problem.dim() {
-        for side in [-CENTRAL_95, CENTRAL_95] {
-            let mut corner = start.near.clone();
-            corner[j] += side * start.spread[j];
-            corners.push(&corner);
-        }
-    }
-    corners
+/// Unit, coordinate and start of a variable.
+fn start(problem: &Problem, j: usize) -> String {
+    let variable = &problem.variables()[j];
+    let unit = variable.unit.as_ref().map_or(String::new(), |unit| format!("in {unit}; "));
+    let [near, low, high] = problem.start_of(j);
+    // Enough digits to tell the ends from the centre.
+    let width = (high - low).abs();
+    let size = near.abs().max(low.abs()).max(high.abs());
+    let digits = if width > 0.0 && size.is_finite() { 3 + (size / width).max(1.0).log10().floor() as i32 } else { 3 };
+    let [near, low, high] = [near, low, high].map(|x| trimmed(x, digits.min(12)));
+    let given = match variable.nature {
+        Nature::Dependent { .. } => ", given the others at their start",
+        _ => "",
+    };
+    format!("{unit}coordinate {}; start {near} (95 % from {low} to {high}{given})", variable.coordinate.word())
 }
 
 fn nature(variable: &Variable) -> String {
@@ -193,9 +185,35 @@ fn target(problem: &Problem) -> String {
     let names = problem.estimate_names();
     if !names.is_empty() {
         out.push_str(&heading(if names.len() == 1 { "One estimate" } else { "Estimates" }));
-        out.push_str(&hanging("  ", &names.join(", ")));
+        for (name, labels) in estimates(&names) {
+            let over = match labels.as_slice() {
+                [] => "one number".to_owned(),
+                labels => {
+                    let shown: Vec<&str> = labels.iter().take(8).copied().collect();
+                    let more = if labels.len() > shown.len() { ", ..." } else { "" };
+                    format!("one for each of {}: {}{more}", count(labels.len() as u64), shown.join(", "))
+                }
+            };
+            out.push_str(&hanging(&format!("  {:<16}  ", cut(name, 16)), &over));
+        }
     }
     out
+}
+
+/// Estimates by name, each with the labels of what it runs over.
+fn estimates(names: &[String]) -> Vec<(&str, Vec<&str>)> {
+    let mut found: Vec<(&str, Vec<&str>)> = Vec::new();
+    for name in names {
+        let (base, label) = match name.split_once('[') {
+            Some((base, label)) => (base, label.strip_suffix(']')),
+            None => (name.as_str(), None),
+        };
+        match (found.last_mut(), label) {
+            (Some((last, labels)), Some(label)) if *last == base && !labels.is_empty() => labels.push(label),
+            _ => found.push((base, label.into_iter().collect())),
+        }
+    }
+    found
 }
 
 /// How the trial evaluations came out.
@@ -210,6 +228,9 @@ pub(crate) fn tried(problem: &Problem, trial: &Trial, took: Duration) -> String 
         share(tally.outside),
         share(tally.failed)
     ));
+    if let Some(fulfilled) = trial.fulfilled {
+        out.push_str(&format!("  `require` holds at {}\n", share(fulfilled).trim_start()));
+    }
     match problem.aim() {
         Aim::Density => {
             let best = trial.best(problem).map_or("none".to_owned(), |(_, best)| significant(best, 6));

@@ -303,6 +303,18 @@ impl Distribution {
         self.shift
     }
 
+    /// `ln` of the probability that lay between the ends before it was truncated; 0 where it is not.
+    ///
+    /// ```
+    /// use evenpoise::distribution::Distribution;
+    /// let half = Distribution::new("normal", &[("mean", 0.0), ("sd", 1.0)]).unwrap().truncated(0.0, f64::INFINITY).unwrap();
+    /// assert!((half.log_kept() - 0.5_f64.ln()).abs() < 1e-15);
+    /// ```
+    #[must_use]
+    pub fn log_kept(&self) -> f64 {
+        self.window.as_ref().map_or(0.0, window::Window::log_mass)
+    }
+
     /// Whether it is truncated; the ends are then those of [`support`](Self::support).
     #[must_use]
     pub fn is_truncated(&self) -> bool {

@@ -3,7 +3,7 @@
 use std::ops::Range;
 
 use super::errors::nearest;
-use super::functions::{Body, FOREIGN_FUNCTIONS, FUNCTIONS, Reduce, function, written};
+use super::functions::{Body, FOREIGN_FUNCTIONS, FUNCTIONS, Function, Reduce, function, written};
 use super::kinds::{Binary, Id, Reduction, Unary};
 use super::lexer::Fault;
 use super::lower::{Checked, Lowering, Nature, Value, condition, number};
@@ -21,8 +21,8 @@ impl Lowering<'_> {
         span: &Range<usize>,
     ) -> Option<Value> {
         let Some(function) = function(name) else {
-            self.unknown_function(name, name_span);
-            return None;
+            let meant = self.unknown_function(name, name_span)?;
+            return self.shape(arguments, meant);
         };
         let n = function.arguments.len();
         let fits = match function.body {
@@ -34,8 +34,17 @@ impl Lowering<'_> {
                 if matches!(function.body, Body::Chain(..)) { "at least one".to_string() } else { n.to_string() };
             let noun = if wants == "1" || wants == "at least one" { "argument" } else { "arguments" };
             let message = format!("`{name}` takes {wants} {noun}, not {}", arguments.len());
-            self.faults.push(Fault::new(span.clone(), message).help(format!("write {}", written(function))));
-            return None;
+            let help = match (name, arguments) {
+                ("log", [_, base]) => {
+                    let base = self.slice(&syntax.nodes[*base].1);
+                    format!(
+                        "write log(x)/log({base}) for the base {base}; log(x) is the natural one, log10(x) that of base 10"
+                    )
+                }
+                _ => format!("write {}", written(function)),
+            };
+            self.faults.push(Fault::new(span.clone(), message).help(help));
+            return self.shape(arguments, function.body);
         }
         match function.body {
             Body::If => self.choose(syntax, arguments),
@@ -46,7 +55,10 @@ impl Lowering<'_> {
             Body::Unary(_) | Body::Binary(_) | Body::Build(_) | Body::Chain(..) => {
                 // All arguments are looked at before the first mistake ends it.
                 let checked: Vec<_> = arguments.iter().map(|&place| self.number_at(syntax, place)).collect();
-                let checked: Vec<Checked> = checked.into_iter().collect::<Option<_>>()?;
+                if checked.iter().any(Option::is_none) {
+                    return self.shape(arguments, function.body);
+                }
+                let checked: Vec<Checked> = checked.into_iter().flatten().collect();
                 let parts: Vec<_> = arguments.iter().zip(&checked).map(|(&place, &(_, rows))| (place, rows)).collect();
                 let rows = self.common_rows(syntax, &parts)?;
                 let ids: Vec<Id> = checked.iter().map(|&(id, _)| id).collect();
@@ -55,28 +67,77 @@ impl Lowering<'_> {
         }
     }
 
-    fn unknown_function(&mut self, name: &str, span: &Range<usize>) {
-        let foreign = FOREIGN_FUNCTIONS.iter().find(|(other, _)| *other == name);
-        let fault = match (self.scope.find(name), foreign) {
-            (Some(_), _) => Fault::new(span.clone(), format!("`{name}` is no function"))
-                .help(format!("write {name}*(...) for a product")),
-            (None, Some((_, help))) => Fault::new(span.clone(), format!("no function is called `{name}`")).help(*help),
-            // The nearest name by its letters would be another function, and a wrong model without a word.
-            (None, None) if ["pdf", "pmf", "density", "mass"].iter().any(|end| name.ends_with(end)) => {
-                Fault::new(span.clone(), format!("no function is called `{name}`")).help(
-                    "log densities are called log_density_NAME(x, ...), log masses log_mass_NAME(k, ...): \
-                     log_density_lognormal(x, log_mean, log_sd)",
-                )
+    /// A stand-in for what a call would give: a column over what its arguments run over, or a number.
+    ///
+    /// With it what is wrong around a wrong call is told as well.
+    fn shape(&mut self, arguments: &[Place], body: Body) -> Option<Value> {
+        let one = self.operations.constant(1.0);
+        let mut whole = (one, None);
+        let mut unknown = false;
+        for &place in arguments {
+            match self.values[place] {
+                Value::Plain { id, rows, .. } if whole.1.is_none() => whole = (id, rows),
+                Value::Plain { rows, .. } if rows.is_none() || rows == whole.1 => {}
+                Value::Plain { .. } => return None,
+                _ => unknown = true,
             }
-            (None, None) => {
-                let fault = Fault::new(span.clone(), format!("no function is called `{name}`"));
-                match nearest(name, FUNCTIONS.iter().map(|function| function.name)) {
-                    Some(near) => fault.help(format!("did you mean `{near}`?")),
-                    None => fault,
-                }
+        }
+        // Together with a column anything makes a column; else it is not known what this is.
+        if unknown && whole.1.is_none() {
+            return None;
+        }
+        let reduces = matches!(body, Body::Reduce(_)) || (matches!(body, Body::Chain(..)) && arguments.len() < 2);
+        Some(if reduces { number(one, None) } else { number(whole.0, whole.1) })
+    }
+
+    /// Tells that there is no such function; gives the body of one like that which was meant.
+    fn unknown_function(&mut self, name: &str, span: &Range<usize>) -> Option<Body> {
+        if let Some(at) = self.scope.find(name) {
+            if matches!(self.scope.entities[at], Entity::Faulty) {
+                return None;
             }
-        };
-        self.faults.push(fault);
+            let fault = Fault::new(span.clone(), format!("`{name}` is no function"));
+            let column = match self.scope.entities[at] {
+                Entity::Group { .. } => self.columns_of_group(name).first().copied(),
+                _ => None,
+            };
+            self.faults.push(match (column, &self.scope.entities[at]) {
+                (Some(column), _) => fault.help(format!("write {name}[{column}] for the one of each row")),
+                (None, Entity::Group { .. }) => fault.help(format!("write {name}[1], with square brackets")),
+                _ => fault.help(format!("write {name}*(...) for a product")),
+            });
+            return None;
+        }
+        if self.scope.may_be_elsewhere(name) && name.contains('.') {
+            return None;
+        }
+        let fault = Fault::new(span.clone(), format!("no function is called `{name}`"));
+        if let Some((_, help)) = FOREIGN_FUNCTIONS.iter().find(|(other, _)| *other == name) {
+            self.faults.push(fault.help(*help));
+            let reduces = ["write mean(", "write sum(", "write count(", "write exp(sum("];
+            let one_number = reduces.iter().any(|begin| help.starts_with(begin));
+            return Some(if one_number { Body::Reduce(Reduce::Sum) } else { Body::Unary(Unary::Abs) });
+        }
+        // The nearest name by its letters would be another function, and a wrong model without a word.
+        let density = ["pdf", "pmf", "density", "mass", "logp", "likelihood"].iter().any(|part| name.contains(part));
+        let like = density.then(|| density_like(name)).flatten();
+        let near = like.or_else(|| {
+            let known = FUNCTIONS.iter().map(|function| function.name);
+            nearest(name, known).filter(|_| !density || name.starts_with("log_")).and_then(function)
+        });
+        self.faults.push(match near {
+            Some(near) if like.is_some() => fault.help(format!("write {}", written(near))),
+            Some(near) => fault.help(format!("did you mean `{}`? It is written {}", near.name, written(near))),
+            None if density => fault.help(
+                "log densities are called log_density_NAME(x, ...), log masses log_mass_NAME(k, ...): \
+                 log_density_lognormal(x, log_mean, log_sd)",
+            ),
+            None => fault.help(
+                "functions are exp, log, sqrt, abs, min, max, sum, mean, normal_cdf, log_density_normal and others; \
+                 for a product write * before the bracket",
+            ),
+        });
+        near.map(|near| near.body)
     }
 
     fn choose(&mut self, syntax: &Syntax, arguments: &[Place]) -> Option<Value> {
@@ -110,8 +171,13 @@ impl Lowering<'_> {
 
     fn wants_column(&mut self, name: &str, span: &Range<usize>) {
         let message = format!("`{name}` works on a column, and `{}` is one number", self.slice(span));
-        self.faults
-            .push(Fault::new(span.clone(), message).help("a data column or a group makes an expression a column"));
+        let help = match name {
+            "mean" => {
+                "leave it out: an estimate is averaged over the draws; a mean of rows wants a data column or a group"
+            }
+            _ => "a data column or a group makes an expression a column",
+        };
+        self.faults.push(Fault::new(span.clone(), message).help(help));
     }
 
     fn present(&mut self, syntax: &Syntax, of: Place) -> Option<Value> {
@@ -186,4 +252,13 @@ fn apply(body: Body, list: &mut Operations, of: &[Id]) -> Id {
         Body::Chain(function, _) => of[1..].iter().fold(of[0], |so_far, &next| list.binary(function, so_far, next)),
         Body::Reduce(_) | Body::If | Body::Lag | Body::Present => unreachable!("handled by their own functions"),
     }
+}
+
+/// The log density or log mass whose distribution a foreign name speaks of: `normal_lpdf` of the normal one.
+fn density_like(name: &str) -> Option<&'static Function> {
+    let of = |function: &&Function| {
+        let own = ["log_density_", "log_mass_"].iter().find_map(|begin| function.name.strip_prefix(begin));
+        own.is_some_and(|own| name.contains(own))
+    };
+    FUNCTIONS.iter().filter(of).max_by_key(|function| function.name.len())
 }

@@ -12,26 +12,31 @@ use super::plan::Root;
 use super::program::{Output, Program};
 use super::scope::{Entity, Scope, Wanted};
 
-/// A text with its key and, unless it is no formula, its tree.
+/// A text with its key and, as far as it is a formula, its tree.
 struct Text<'a> {
     key: &'a str,
     text: &'a str,
     syntax: Option<Syntax>,
+    words: Vec<(String, Range<usize>)>,
 }
 
-/// Does what [`Scope::compile`] promises.
-pub(super) fn compile(scope: &Scope, outputs: &[(&str, &str, Wanted)]) -> Result<Program, Vec<FormulaError>> {
+/// Does what [`Scope::compile`] promises, or with `all` false what [`Scope::compile_alone`] does.
+pub(super) fn compile(
+    scope: &Scope,
+    outputs: &[(&str, &str, Wanted)],
+    all: bool,
+) -> Result<Program, Vec<FormulaError>> {
     let mut errors = Vec::new();
-    let formulas: Vec<Option<Text<'_>>> = scope
-        .entities
-        .iter()
-        .zip(&scope.names)
-        .map(|(entity, name)| match entity {
-            Entity::Formula(text) => Some(read(name, text, &mut errors)),
-            _ => None,
-        })
-        .collect();
-    let targets: Vec<Text<'_>> = outputs.iter().map(|(key, text, _)| read(key, text, &mut errors)).collect();
+    let mut formulas = formulas(scope);
+    let mut targets: Vec<(Text<'_>, Vec<Fault>)> = outputs.iter().map(|(key, text, _)| read(key, text)).collect();
+    let used = reached(scope, &formulas, targets.iter().map(|(text, _)| text));
+    for (formula, used) in formulas.iter_mut().zip(&used) {
+        *formula = formula.take().filter(|_| all || *used);
+    }
+    for (text, faults) in formulas.iter_mut().flatten().chain(&mut targets) {
+        errors.extend(std::mem::take(faults).into_iter().map(|fault| FormulaError::new(text.key, fault)));
+    }
+    let formulas: Vec<Option<Text<'_>>> = formulas.into_iter().map(|text| text.map(|(text, _)| text)).collect();
 
     let mut lowering = Lowering::new(scope);
     for at in order(scope, &formulas, &mut errors) {
@@ -44,16 +49,18 @@ pub(super) fn compile(scope: &Scope, outputs: &[(&str, &str, Wanted)]) -> Result
         take_faults(&mut lowering, text.key, &mut errors);
     }
     let mut made = Vec::new();
-    for (text, (_, _, wanted)) in targets.iter().zip(outputs) {
+    for ((text, _), (_, _, wanted)) in targets.iter().zip(outputs) {
         if let Some(syntax) = &text.syntax {
             made.extend(output(&mut lowering, text, syntax, *wanted));
+            if *wanted == Wanted::Margin {
+                forget_equal_signs(lowering.faults(), text.key, &mut errors);
+            }
             take_faults(&mut lowering, text.key, &mut errors);
         }
     }
     if !errors.is_empty() {
         return Err(in_order_of_texts(errors, scope, outputs));
     }
-    let used = reached(scope, &formulas, &targets);
     let names_left = |wanted: fn(&Entity) -> bool| {
         let unused = |&at: &usize| !used[at] && wanted(&scope.entities[at]);
         (0..used.len()).filter(unused).map(|at| scope.names[at].clone()).collect()
@@ -63,9 +70,35 @@ pub(super) fn compile(scope: &Scope, outputs: &[(&str, &str, Wanted)]) -> Result
     Ok(Program::new(lowering.into_operations(), made, scope.n_inputs, unused_formulas, unused_constants))
 }
 
-fn read<'a>(key: &'a str, text: &'a str, errors: &mut Vec<FormulaError>) -> Text<'a> {
-    let syntax = parse(text).map_err(|fault| errors.push(FormulaError::new(key, fault))).ok();
-    Text { key, text, syntax }
+/// Does what [`Scope::unused`] promises.
+pub(super) fn unused(scope: &Scope, outputs: &[&str]) -> Vec<String> {
+    let targets: Vec<Text<'_>> = outputs.iter().map(|text| read("", text).0).collect();
+    let used = reached(scope, &formulas(scope), targets.iter());
+    let may_be_unused = |at: usize| matches!(scope.entities[at], Entity::Formula(_) | Entity::Constant(_));
+    (0..used.len()).filter(|&at| !used[at] && may_be_unused(at)).map(|at| scope.names[at].clone()).collect()
+}
+
+/// For every entity that is a formula its text, and what is wrong with it.
+fn formulas(scope: &Scope) -> Vec<Option<(Text<'_>, Vec<Fault>)>> {
+    let each = scope.entities.iter().zip(&scope.names).map(|(entity, name)| match entity {
+        Entity::Formula(text) => Some(read(name, text)),
+        _ => None,
+    });
+    each.collect()
+}
+
+fn read<'a>(key: &'a str, text: &'a str) -> (Text<'a>, Vec<Fault>) {
+    let parsed = parse(text);
+    (Text { key, text, syntax: parsed.syntax, words: parsed.words }, parsed.faults)
+}
+
+/// An event knows no equality: `=` is then no slip for `==`.
+fn forget_equal_signs(faults: &[Fault], key: &str, errors: &mut Vec<FormulaError>) {
+    let equalities: Vec<&Fault> = faults.iter().filter(|fault| fault.message.contains("equality")).collect();
+    errors.retain(|error| {
+        let inside = |fault: &&Fault| fault.span.start <= error.span.start && error.span.end <= fault.span.end;
+        error.key != key || !error.message.starts_with("`=`") || !equalities.iter().any(inside)
+    });
 }
 
 fn take_faults(lowering: &mut Lowering<'_>, key: &str, errors: &mut Vec<FormulaError>) {
@@ -88,8 +121,7 @@ fn in_order_of_texts(
 
 /// The entities a text uses by name.
 fn uses(scope: &Scope, text: &Text<'_>) -> Vec<(usize, Range<usize>)> {
-    let Some(syntax) = &text.syntax else { return Vec::new() };
-    syntax.names().filter_map(|(name, span)| scope.find(name).map(|at| (at, span))).collect()
+    text.words.iter().filter_map(|(name, span)| scope.find(name).map(|at| (at, span.clone()))).collect()
 }
 
 /// The formulas, each after those it uses. Those on a circle are told and left out.
@@ -147,12 +179,16 @@ fn circle_fault(scope: &Scope, circle: &[usize], span: &Range<usize>) -> Fault {
 }
 
 /// Which entities the outputs use, directly or through formulas.
-fn reached(scope: &Scope, formulas: &[Option<Text<'_>>], targets: &[Text<'_>]) -> Vec<bool> {
+fn reached<'a>(
+    scope: &Scope,
+    formulas: &[Option<(Text<'_>, Vec<Fault>)>],
+    targets: impl Iterator<Item = &'a Text<'a>>,
+) -> Vec<bool> {
     let mut reached = vec![false; scope.entities.len()];
-    let mut open: Vec<usize> = targets.iter().flat_map(|text| uses(scope, text)).map(|(at, _)| at).collect();
+    let mut open: Vec<usize> = targets.flat_map(|text| uses(scope, text)).map(|(at, _)| at).collect();
     while let Some(at) = open.pop() {
         if !std::mem::replace(&mut reached[at], true)
-            && let Some(text) = &formulas[at]
+            && let Some((text, _)) = &formulas[at]
         {
             open.extend(uses(scope, text).into_iter().map(|(at, _)| at));
         }

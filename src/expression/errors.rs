@@ -18,11 +18,13 @@ pub struct FormulaError {
     pub message: String,
     /// What to write instead, where that can be told.
     pub help: Option<String>,
+    /// The name of the scope that was probably meant, where a name was misspelt.
+    pub meant: Option<String>,
 }
 
 impl FormulaError {
     pub(super) fn new(key: &str, fault: Fault) -> Self {
-        Self { key: key.to_string(), span: fault.span, message: fault.message, help: fault.help }
+        Self { key: key.to_string(), span: fault.span, message: fault.message, help: fault.help, meant: fault.meant }
     }
 }
 

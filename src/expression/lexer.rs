@@ -8,11 +8,13 @@ pub(super) struct Fault {
     pub(super) span: Range<usize>,
     pub(super) message: String,
     pub(super) help: Option<String>,
+    /// The name that was probably meant, where one was misspelt.
+    pub(super) meant: Option<String>,
 }
 
 impl Fault {
     pub(super) fn new(span: Range<usize>, message: impl Into<String>) -> Self {
-        Self { span, message: message.into(), help: None }
+        Self { span, message: message.into(), help: None, meant: None }
     }
 
     pub(super) fn help(mut self, help: impl Into<String>) -> Self {
@@ -31,33 +33,69 @@ pub(super) enum Token {
     Label(String),
     /// An operator, a bracket or a comma.
     Sign(&'static str),
+    /// Something that was told already.
+    Broken,
     End,
 }
 
 /// Signs of the language, longer ones before those they begin with.
 const SIGNS: [&str; 16] = ["<=", ">=", "==", "!=", "<", ">", "+", "-", "*", "/", "^", "(", ")", "[", "]", ","];
 
-/// What people write when they mean something else, and what to write instead.
-const FOREIGN: [(&str, &str); 19] = [
-    ("**", "write ^ for a power"),
-    ("&&", "write `and`"),
-    ("||", "write `or`"),
-    ("&", "write `and`"),
-    ("|", "write `or`, or abs(...) for an absolute value"),
-    ("!", "write `not`"),
-    ("=", "write == to compare"),
-    ("≤", "write <="),
-    ("≥", "write >="),
-    ("≠", "write !="),
-    ("×", "write *"),
-    ("·", "write *"),
-    ("÷", "write /"),
-    ("\u{2212}", "write the plain minus sign of the keyboard"),
-    ("\u{2013}", "write the plain minus sign of the keyboard"),
-    ("%", "write x - floor(x/m)*m for a remainder, x/100 for a percentage"),
-    ("_", "a name begins with a letter"),
-    ("²", "write ^2"),
-    ("³", "write ^3"),
+/// What a foreign sign is read as, so that the rest of the formula can be looked at as well.
+#[derive(Debug, Clone, Copy)]
+enum Meant {
+    Sign(&'static str),
+    Word(&'static str),
+    /// A power with this exponent.
+    Raised(f64),
+    /// Nothing that could be told.
+    Unknown,
+}
+
+use Meant::{Raised, Sign, Unknown, Word};
+
+/// What people write when they mean something else, what to write instead, and what it is read as.
+const FOREIGN: [(&str, &str, Meant); 40] = [
+    ("**", "write ^ for a power", Sign("^")),
+    ("//", "write floor(a/b) for a whole quotient", Sign("/")),
+    ("&&", "write `and`", Word("and")),
+    ("||", "write `or`", Word("or")),
+    ("&", "write `and`", Word("and")),
+    ("|", "write `or`, or abs(...) for an absolute value", Unknown),
+    ("!", "write `not`", Word("not")),
+    ("===", "write ==", Sign("==")),
+    ("=<", "write <=", Sign("<=")),
+    ("=>", "write >=", Sign(">=")),
+    (">>", "write >, or >= where equality counts", Sign(">")),
+    ("<<", "write <, or <= where equality counts", Sign("<")),
+    ("<>", "write !=", Sign("!=")),
+    ("=", "write == to compare", Sign("==")),
+    ("≤", "write <=", Sign("<=")),
+    ("≥", "write >=", Sign(">=")),
+    ("≠", "write !=", Sign("!=")),
+    ("×", "write *", Sign("*")),
+    ("·", "write *", Sign("*")),
+    ("÷", "write /", Sign("/")),
+    ("\u{2212}", "write the plain minus sign of the keyboard", Sign("-")),
+    ("\u{2013}", "write the plain minus sign of the keyboard", Sign("-")),
+    ("%", "write x - floor(x/m)*m for a remainder, x/100 for a percentage", Unknown),
+    ("_", "a name begins with a letter", Unknown),
+    ("²", "write ^2", Raised(2.0)),
+    ("³", "write ^3", Raised(3.0)),
+    ("{", "write ( and ): a formula knows round brackets, and square ones after the name of a group", Sign("(")),
+    ("}", "write ( and ): a formula knows round brackets, and square ones after the name of a group", Sign(")")),
+    ("√", "write sqrt(...)", Word("sqrt")),
+    ("∞", "write inf", Word("inf")),
+    ("@", "write sum(a*b) for the product of two columns", Unknown),
+    (";", "a formula is one expression; give each further one a name of its own under [formulas]", Unknown),
+    (":", "a choice is written if(condition, a, b)", Unknown),
+    ("?", "a choice is written if(condition, a, b)", Unknown),
+    ("#", "a remark stands after the closing quotes of the formula", Unknown),
+    ("$", "a name stands as it is", Unknown),
+    ("\u{2018}", "write plain quotes: '...'", Unknown),
+    ("\u{2019}", "write plain quotes: '...'", Unknown),
+    ("\u{201c}", "write plain quotes: '...'", Unknown),
+    ("\u{201d}", "write plain quotes: '...'", Unknown),
 ];
 
 /// Whether `c` may begin a name.
@@ -72,29 +110,35 @@ pub(super) fn continues_name(c: char) -> bool {
     (c.is_alphanumeric() && !superscript) || c == '_' || ('\u{300}'..='\u{36f}').contains(&c)
 }
 
-/// All tokens of `text` with their byte spans; the last one is [`Token::End`].
-pub(super) fn tokens(text: &str) -> Result<Vec<(Token, Range<usize>)>, Fault> {
-    let mut found = Vec::new();
+/// All tokens of `text` with their byte spans, the last one [`Token::End`], and what is wrong with them.
+///
+/// Reading goes on after a fault with what was meant, so that one look shows all there is.
+pub(super) fn tokens(text: &str) -> (Vec<(Token, Range<usize>)>, Vec<Fault>) {
+    let (mut found, mut faults) = (Vec::new(), Vec::new());
     let mut at = 0;
     while let Some(c) = text[at..].chars().next() {
         if c.is_whitespace() {
             at += c.len_utf8();
             continue;
         }
-        let (token, end) = if begins_name(c) {
-            name(text, at)
+        if begins_name(c) {
+            let (token, end) = name(text, at);
+            found.push((token, at..end));
+            at = end;
         } else if c.is_ascii_digit() || (c == '.' && text[at + 1..].starts_with(|d: char| d.is_ascii_digit())) {
-            number(text, at)?
+            let (token, end) = number(text, at, &mut faults);
+            found.push((token, at..end));
+            at = end;
         } else if c == '\'' || c == '"' {
-            label(text, at, c)?
+            let (token, end) = label(text, at, c, &mut faults);
+            found.push((token, at..end));
+            at = end;
         } else {
-            sign(text, at, c)?
-        };
-        found.push((token, at..end));
-        at = end;
+            at = sign(text, at, c, &mut found, &mut faults);
+        }
     }
     found.push((Token::End, text.len()..text.len()));
-    Ok(found)
+    (found, faults)
 }
 
 /// A name and, when a letter follows a dot directly, the name after it.
@@ -109,8 +153,8 @@ fn name(text: &str, from: usize) -> (Token, usize) {
     }
 }
 
-/// Digits with a point and an exponent where wanted: `2`, `2.`, `.5`, `1e-3`.
-fn number(text: &str, from: usize) -> Result<(Token, usize), Fault> {
+/// Digits with a point and an exponent where wanted: `2`, `2.`, `.5`, `1e-3`. A number that is none is read as 1.
+fn number(text: &str, from: usize, faults: &mut Vec<Fault>) -> (Token, usize) {
     let bytes = text.as_bytes();
     let digits = |mut at: usize| {
         while bytes.get(at).is_some_and(u8::is_ascii_digit) {
@@ -126,45 +170,65 @@ fn number(text: &str, from: usize) -> Result<(Token, usize), Fault> {
         let signed = end + 1 + usize::from(matches!(bytes.get(end + 1), Some(b'+' | b'-')));
         let last = digits(signed);
         if last == signed {
-            return Err(Fault::new(from..last, format!("the exponent of `{}` has no digits", &text[from..last]))
-                .help("write a number as in 1e-3; write 2*e for a product with a name"));
+            let message = format!("the exponent of `{}` has no digits", &text[from..last]);
+            let help = "write a number as in 1e-3; write 2*e for a product with a name";
+            faults.push(Fault::new(from..last, message).help(help));
+            return (Token::Number(1.0), last);
         }
         end = last;
     }
     match text[from..end].parse::<f64>() {
-        Ok(value) if value.is_finite() => Ok((Token::Number(value), end)),
-        _ => Err(Fault::new(from..end, format!("`{}` is beyond the largest number, 1.8e308", &text[from..end]))
-            .help("write inf for infinity")),
-    }
-}
-
-fn label(text: &str, from: usize, quote: char) -> Result<(Token, usize), Fault> {
-    match text[from + 1..].find(quote) {
-        Some(length) => {
-            let end = from + 1 + length;
-            Ok((Token::Label(text[from + 1..end].to_string()), end + 1))
-        }
-        None => {
-            Err(Fault::new(from..text.len(), "this label has no closing quote").help(format!("end it with {quote}")))
+        Ok(value) if value.is_finite() => (Token::Number(value), end),
+        _ => {
+            let message = format!("`{}` is beyond the largest number, 1.8e308", &text[from..end]);
+            faults.push(Fault::new(from..end, message).help("write inf for infinity"));
+            (Token::Number(1.0), end)
         }
     }
 }
 
-fn sign(text: &str, at: usize, c: char) -> Result<(Token, usize), Fault> {
+fn label(text: &str, from: usize, quote: char, faults: &mut Vec<Fault>) -> (Token, usize) {
+    if let Some(length) = text[from + 1..].find(quote) {
+        let end = from + 1 + length;
+        return (Token::Label(text[from + 1..end].to_string()), end + 1);
+    }
+    let fault = Fault::new(from..text.len(), "this label has no closing quote").help(format!("end it with {quote}"));
+    faults.push(fault);
+    (Token::Broken, text.len())
+}
+
+/// Reads a sign at `at`, or what stands for one elsewhere, and gives the place after it.
+fn sign(text: &str, at: usize, c: char, found: &mut Vec<(Token, Range<usize>)>, faults: &mut Vec<Fault>) -> usize {
     let rest = &text[at..];
     let own = SIGNS.iter().find(|sign| rest.starts_with(**sign));
-    let foreign = FOREIGN.iter().find(|(sign, _)| rest.starts_with(sign));
-    match (own, foreign) {
-        (Some(sign), None) => Ok((Token::Sign(sign), at + sign.len())),
-        // `!=` is ours and `!` is not; `**` is not and `*` is ours: the longer one was meant.
-        (Some(sign), Some((other, _))) if sign.len() > other.len() => Ok((Token::Sign(sign), at + sign.len())),
-        (_, Some((other, help))) => {
-            Err(Fault::new(at..at + other.len(), format!("`{other}` is no part of a formula")).help(*help))
-        }
-        (None, None) => {
-            Err(Fault::new(at..at + c.len_utf8(), format!("`{}` is no part of a formula", c.escape_debug())))
-        }
+    let foreign = FOREIGN.iter().filter(|(sign, ..)| rest.starts_with(sign)).max_by_key(|(sign, ..)| sign.len());
+    // `!=` is ours and `!` is not; `**` is not and `*` is ours: the longer one was meant.
+    if let Some(sign) = own.filter(|sign| foreign.is_none_or(|(other, ..)| sign.len() > other.len())) {
+        found.push((Token::Sign(sign), at..at + sign.len()));
+        return at + sign.len();
     }
+    let Some((other, help, meant)) = foreign else {
+        let span = at..at + c.len_utf8();
+        faults.push(Fault::new(span.clone(), format!("`{}` is no part of a formula", c.escape_debug())));
+        found.push((Token::Broken, span.clone()));
+        return span.end;
+    };
+    let span = at..at + other.len();
+    faults.push(Fault::new(span.clone(), format!("`{other}` is no part of a formula")).help(*help));
+    match meant {
+        Sign(sign) => found.push((Token::Sign(sign), span.clone())),
+        Word(word) => found.push((Token::Name((*word).to_owned()), span.clone())),
+        Raised(power) => {
+            found.push((Token::Sign("^"), span.clone()));
+            found.push((Token::Number(*power), span.clone()));
+        }
+        Unknown => found.push((Token::Broken, span.clone())),
+    }
+    // A name with a sign before it is no name any more.
+    if matches!(*other, "_" | "$") && text[span.end..].starts_with(continues_name) {
+        return name(text, span.end).1;
+    }
+    span.end
 }
 
 #[cfg(test)]
@@ -172,7 +236,15 @@ mod tests {
     use super::*;
 
     fn plain(text: &str) -> Vec<Token> {
-        tokens(text).unwrap().into_iter().map(|(token, _)| token).collect()
+        let (found, faults) = tokens(text);
+        assert_eq!(faults, [], "{text}");
+        found.into_iter().map(|(token, _)| token).collect()
+    }
+
+    fn fault(text: &str) -> Fault {
+        let (_, mut faults) = tokens(text);
+        assert_eq!(faults.len(), 1, "{text}: {faults:?}");
+        faults.remove(0)
     }
 
     #[test]
@@ -181,13 +253,13 @@ mod tests {
             assert_eq!(plain(text), vec![Token::Number(want), Token::End], "{text}");
         }
         for text in ["1e", "1e+", "1e999"] {
-            assert_eq!(tokens(text).unwrap_err().span, 0..text.len(), "{text}");
+            assert_eq!(fault(text).span, 0..text.len(), "{text}");
         }
     }
 
     #[test]
     fn names_come_in_any_script_and_with_dots() {
-        let found = tokens("gauge.flow*größe_2 + 流量").unwrap();
+        let (found, _) = tokens("gauge.flow*größe_2 + 流量");
         assert_eq!(found[0], (Token::Name("gauge.flow".into()), 0..10));
         assert_eq!(found[2], (Token::Name("größe_2".into()), 11..20));
         assert_eq!(found[4], (Token::Name("流量".into()), 23..29));
@@ -198,14 +270,29 @@ mod tests {
         for (text, part) in
             [("a ** b", "^"), ("a && b", "and"), ("a = b", "=="), ("a ≤ b", "<="), ("a − b", "minus"), ("a ² ", "^2")]
         {
-            let fault = tokens(text).unwrap_err();
+            let fault = fault(text);
             assert!(fault.help.unwrap().contains(part), "{text}");
             assert_eq!(fault.span.start, 2);
         }
-        assert_eq!(tokens("größe²").unwrap_err().span, 7..9);
+        assert_eq!(fault("größe²").span, 7..9);
         assert_eq!(plain("Q₁₀₀"), vec![Token::Name("Q₁₀₀".into()), Token::End]);
         assert_eq!(plain("a != b").len(), 4);
-        assert!(tokens("a $ b").unwrap_err().message.contains('$'));
-        assert!(tokens("x == 'Alder").unwrap_err().message.contains("closing quote"));
+        assert!(fault("a $ b").message.contains('$'));
+        assert!(fault("x == 'Alder").message.contains("closing quote"));
+    }
+
+    #[test]
+    fn reading_goes_on_with_what_was_meant() {
+        let (found, faults) = tokens("a ** 2 && b ≤ x² % 3");
+        assert_eq!(faults.len(), 5, "{faults:?}");
+        let want = ["a", "^", "2", "and", "b", "<=", "x", "^", "2", "broken", "3", "end"];
+        let text = |token: &Token| match token {
+            Token::Number(value) => value.to_string(),
+            Token::Name(name) | Token::Label(name) => name.clone(),
+            Token::Sign(sign) => (*sign).to_owned(),
+            Token::Broken => "broken".to_owned(),
+            Token::End => "end".to_owned(),
+        };
+        assert_eq!(found.iter().map(|(token, _)| text(token)).collect::<Vec<_>>(), want);
     }
 }

@@ -85,6 +85,10 @@ impl<'a> Lowering<'a> {
         !self.faults.is_empty()
     }
 
+    pub(super) fn faults(&self) -> &[Fault] {
+        &self.faults
+    }
+
     pub(super) fn take_faults(&mut self) -> Vec<Fault> {
         std::mem::take(&mut self.faults)
     }
@@ -127,6 +131,7 @@ impl<'a> Lowering<'a> {
             }
             Node::Infix(infix, a, b) => self.infix(syntax, *infix, *a, *b, span),
             Node::Call { name, name_span, arguments } => self.call(syntax, name, name_span, arguments, span),
+            Node::Broken => None,
         }
     }
 
@@ -161,7 +166,7 @@ impl<'a> Lowering<'a> {
         let slice = self.slice(span);
         self.faults.push(match value {
             Value::Texts(_) => Fault::new(span.clone(), format!("`{slice}` is a column of labels, not of numbers"))
-                .help(format!("compare it with a label, as in {slice} == 'Alder', or use it in square brackets")),
+                .help(self.use_of_labels(&slice)),
             Value::Label(_) => Fault::new(span.clone(), format!("{slice} is a label, not a number"))
                 .help("compare a column of labels with it, as in station == 'Alder', or use it in square brackets"),
             _ => return None,
@@ -199,7 +204,10 @@ impl<'a> Lowering<'a> {
                         self.describe(rows)
                     );
                     let span = a.start.min(b.start)..a.end.max(b.end);
-                    let help = "make a number of one of them first: sum(...), mean(...), min(...), max(...)";
+                    let by_rows = self.of_each_row(a, known, rows).or_else(|| self.of_each_row(b, rows, known));
+                    let help = by_rows.unwrap_or_else(|| {
+                        "make a number of one of them first: sum(...), mean(...), min(...), max(...)".to_owned()
+                    });
                     self.faults.push(Fault::new(span, message).help(help));
                     return None;
                 }
@@ -218,7 +226,24 @@ impl<'a> Lowering<'a> {
         let joins = matches!(infix, Infix::And | Infix::Or);
         let check = if joins { Self::condition_at } else { Self::number_at };
         let (left, right) = (check(self, syntax, a), check(self, syntax, b));
-        let ((x, x_rows), (y, y_rows)) = (left?, right?);
+        let ((x, x_rows), (y, y_rows)) = match (left, right) {
+            (Some(left), Some(right)) => (left, right),
+            // Whatever the other one is, together with a column it makes a column.
+            (Some((id, rows @ Some(_))), None) | (None, Some((id, rows @ Some(_)))) => {
+                let makes_number = !joins
+                    && !matches!(
+                        infix,
+                        Infix::Less
+                            | Infix::LessEqual
+                            | Infix::Greater
+                            | Infix::GreaterEqual
+                            | Infix::Equal
+                            | Infix::Differ
+                    );
+                return Some(if makes_number { number(id, rows) } else { condition(id, rows) });
+            }
+            _ => return None,
+        };
         let rows = self.common_rows(syntax, &[(a, x_rows), (b, y_rows)])?;
         let list = &mut self.operations;
         Some(match infix {

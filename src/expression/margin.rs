@@ -10,9 +10,6 @@ use super::parser::{Infix, Node, Place, Syntax};
 /// The margin of an inequality is negative or zero where it holds: `B - A` for `A >= B` and `A > B`, `A - B` for the
 /// others. `and` takes the largest, `or` the smallest of those that are defined. The truth is that of the text.
 pub(super) fn event(lowering: &mut Lowering<'_>, syntax: &Syntax) -> Option<(Id, Id)> {
-    if lowering.has_faults() {
-        return None;
-    }
     let mut inequalities = Vec::new();
     let mut open = vec![syntax.root()];
     let mut sound = true;
@@ -32,7 +29,7 @@ pub(super) fn event(lowering: &mut Lowering<'_>, syntax: &Syntax) -> Option<(Id,
             }
         }
     }
-    if !sound {
+    if !sound || lowering.has_faults() {
         return None;
     }
     // Parts come before wholes.
@@ -79,6 +76,9 @@ fn tell_no_inequality(lowering: &mut Lowering<'_>, syntax: &Syntax, place: Place
         return;
     }
     let (node, span) = &syntax.nodes[place];
+    if lowering.faults().iter().any(|fault| fault.span == *span) {
+        return; // A number where a condition should be: that is the same said twice.
+    }
     let fault = match node {
         Node::Infix(Infix::Equal | Infix::Differ, ..) => {
             Fault::new(span.clone(), "an event is made of < <= > >=; equality has no margin")

@@ -50,8 +50,18 @@ pub(super) enum Node {
     Negate(Place),
     Not(Place),
     Infix(Infix, Place, Place),
-    Call { name: String, name_span: Range<usize>, arguments: Vec<Place> },
-    Index { group: String, member: Member, member_span: Range<usize> },
+    Call {
+        name: String,
+        name_span: Range<usize>,
+        arguments: Vec<Place>,
+    },
+    Index {
+        group: String,
+        member: Member,
+        member_span: Range<usize>,
+    },
+    /// Something that was told already, and whose meaning cannot be told.
+    Broken,
 }
 
 /// A formula's tree: `nodes` with their spans, parts before wholes; the last one is the whole formula.
@@ -84,14 +94,37 @@ impl Syntax {
     }
 }
 
-/// The tree of `text`.
-pub(super) fn parse(text: &str) -> Result<Syntax, Fault> {
-    let mut parser = Parser { tokens: tokens(text)?, at: 0, nodes: Vec::new(), depth: 0 };
-    parser.expression(0)?;
-    match parser.peek() {
-        Token::End => Ok(Syntax { nodes: parser.nodes }),
-        _ => Err(parser.unexpected_after_value()),
-    }
+/// What reading a text gave.
+pub(super) struct Parsed {
+    /// The tree; none where nesting ended the reading.
+    pub(super) syntax: Option<Syntax>,
+    /// What is wrong, in the order of the places.
+    pub(super) faults: Vec<Fault>,
+    /// Every word of the text with its place, those of functions included: there even where the tree has a gap.
+    pub(super) words: Vec<(String, Range<usize>)>,
+}
+
+/// The tree of `text`, and what is wrong with it. After a fault reading goes on with what was meant, or else with a
+/// node that is [`Node::Broken`], so that independent mistakes are told together.
+pub(super) fn parse(text: &str) -> Parsed {
+    let (tokens, faults) = tokens(text);
+    let words = tokens.iter().filter_map(|(token, span)| match token {
+        Token::Name(name) => Some((name.clone(), span.clone())),
+        _ => None,
+    });
+    let words = words.collect();
+    let mut parser = Parser { tokens, at: 0, nodes: Vec::new(), depth: 0, faults, given_up: false };
+    let whole = parser.whole();
+    let mut faults = parser.faults;
+    let syntax = match whole {
+        Ok(()) => Some(Syntax { nodes: parser.nodes }),
+        Err(fault) => {
+            faults.push(fault);
+            None
+        }
+    };
+    faults.sort_by_key(|fault| fault.span.start);
+    Parsed { syntax, faults, words }
 }
 
 /// Binding power of a prefix minus: between products and powers.
@@ -106,6 +139,9 @@ struct Parser {
     at: usize,
     nodes: Vec<(Node, Range<usize>)>,
     depth: usize,
+    faults: Vec<Fault>,
+    /// Whether the rest was left out: then nothing is told of what is missing there.
+    given_up: bool,
 }
 
 impl Parser {
@@ -137,6 +173,49 @@ impl Parser {
         self.nodes[place].1.clone()
     }
 
+    /// All tokens.
+    fn whole(&mut self) -> Result<(), Fault> {
+        self.expression(0)?;
+        self.rest("")?;
+        Ok(())
+    }
+
+    /// Goes on after a value until `sign` or the end; whatever stands before it is told and passed over.
+    fn rest(&mut self, sign: &str) -> Result<(), Fault> {
+        let in_call = sign == ",";
+        while *self.peek() != Token::End && !self.is_sign(sign) && !(in_call && self.is_sign(")")) {
+            let fault = self.unexpected_after_value();
+            // What stood where a value should is told already.
+            if self.faults.last().is_none_or(|last| last.span != fault.span) {
+                self.faults.push(fault);
+            }
+            if self.is_sign("[") {
+                while *self.peek() != Token::End && !self.is_sign("]") {
+                    self.advance();
+                }
+            }
+            let from = self.advance().start;
+            while self.infix().is_some() {
+                self.advance();
+            }
+            if self.begins_value() {
+                self.expression(0)?;
+            }
+            let end = self.span().start.max(from);
+            self.push(Node::Broken, from..end);
+        }
+        Ok(())
+    }
+
+    fn begins_value(&self) -> bool {
+        match self.peek() {
+            Token::Number(_) | Token::Label(_) | Token::Broken => true,
+            Token::Name(word) => word != "and" && word != "or",
+            Token::Sign(sign) => *sign == "(",
+            Token::End => false,
+        }
+    }
+
     /// An expression whose operators bind at least as tightly as `least`.
     fn expression(&mut self, least: u8) -> Result<Place, Fault> {
         if self.depth == MAX_NESTING {
@@ -146,20 +225,64 @@ impl Parser {
         self.depth += 1;
         let mut left = self.prefix()?;
         let mut compared = false;
-        while let Some((infix, left_power, right_power)) = self.infix() {
+        loop {
+            let broken = self.pass_broken();
+            let Some((infix, left_power, right_power)) = self.infix().or_else(|| self.left_out()) else { break };
             if left_power < least {
                 break;
             }
-            if left_power == COMPARE_POWER && std::mem::replace(&mut compared, true) {
-                return Err(Fault::new(self.span(), "comparisons do not chain").help("write a < b and b < c"));
+            let chained = left_power == COMPARE_POWER && std::mem::replace(&mut compared, true);
+            if chained {
+                self.faults.push(Fault::new(self.span(), "comparisons do not chain").help("write a < b and b < c"));
             }
-            self.advance();
+            if self.infix().is_some() {
+                self.advance();
+            } else if !broken && self.tell_left_out() {
+                break;
+            }
             let right = self.expression(right_power)?;
-            let span = self.span_of(left).start..self.span_of(right).end;
-            left = self.push(Node::Infix(infix, left, right), span);
+            let span = self.span_of(left).start..self.span_of(right).end.max(self.span_of(left).end);
+            let node = if broken || chained { Node::Broken } else { Node::Infix(infix, left, right) };
+            left = self.push(node, span);
         }
         self.depth -= 1;
         Ok(left)
+    }
+
+    /// Passes over what the lexer told already. Whether the value before is of that kind.
+    fn pass_broken(&mut self) -> bool {
+        while *self.peek() == Token::Broken {
+            self.advance();
+        }
+        self.at > 0 && self.tokens[self.at - 1].0 == Token::Broken
+    }
+
+    /// The operator that was left out before the value here: a comparison before a label, else a product.
+    fn left_out(&self) -> Option<(Infix, u8, u8)> {
+        match self.peek() {
+            Token::Label(_) => Some((Infix::Equal, COMPARE_POWER, 7)),
+            _ if self.begins_value() => Some((Infix::Multiply, 9, 10)),
+            _ => None,
+        }
+    }
+
+    /// Tells that an operator was left out. Whether the rest was given up, as after `a if b else c`.
+    fn tell_left_out(&mut self) -> bool {
+        let fault = self.unexpected_after_value();
+        self.faults.push(fault);
+        let given_up = matches!(self.peek(), Token::Name(word) if ["if", "else", "then"].contains(&word.as_str()));
+        if given_up {
+            self.give_up();
+        }
+        given_up
+    }
+
+    /// Leaves out all that follows, and closes every bracket: nothing can be told of it.
+    fn give_up(&mut self) {
+        self.at = self.tokens.len() - 1;
+        self.given_up = true;
+        let span = self.span();
+        self.push(Node::Broken, span);
     }
 
     /// The operator here, with the powers by which it binds to its left and its right.
@@ -210,9 +333,25 @@ impl Parser {
                 Ok(self.push(Node::Not(of), span))
             }
             Token::Name(word) if word != "and" && word != "or" => self.name(word),
-            Token::End => Err(self.ends_early()),
-            Token::Name(word) => Err(self.missing_value(&word)),
-            Token::Sign(sign) => Err(self.missing_value(sign)),
+            Token::Broken => {
+                let span = self.advance();
+                Ok(self.push(Node::Broken, span))
+            }
+            found => {
+                let fault = match found {
+                    Token::Name(word) => self.missing_value(&word),
+                    Token::Sign(sign) => self.missing_value(sign),
+                    _ => self.ends_early(),
+                };
+                let span = fault.span.start..fault.span.start;
+                // After an operator that was told already nothing new is missing.
+                let told =
+                    self.at > 0 && self.faults.last().is_some_and(|last| last.span == self.tokens[self.at - 1].1);
+                if !told || *self.peek() != Token::End {
+                    self.faults.push(fault);
+                }
+                Ok(self.push(Node::Broken, span))
+            }
         }
     }
 
@@ -225,6 +364,10 @@ impl Parser {
     }
 
     fn missing_value(&self, found: &str) -> Fault {
+        if found == "[" {
+            return Fault::new(self.span(), "square brackets hold no value")
+                .help("group with round brackets; write the arguments of a function one after the other: max(a, b)");
+        }
         Fault::new(self.span(), format!("`{found}` stands where a value should"))
             .help("a number, a name, a function or an opening bracket can stand here")
     }
@@ -240,19 +383,25 @@ impl Parser {
 
     /// The closing bracket that answers `open`.
     fn close(&mut self, sign: &str, open: &Range<usize>) -> Result<Range<usize>, Fault> {
-        if self.is_sign(sign) {
-            return Ok(self.advance());
+        if !self.is_sign(sign) {
+            self.rest(sign)?;
         }
-        if *self.peek() == Token::End {
-            return Err(Fault::new(open.clone(), "this bracket is never closed").help(format!("close it with {sign}")));
+        if *self.peek() == Token::End && !self.given_up {
+            let fault = Fault::new(open.clone(), "this bracket is never closed").help(format!("close it with {sign}"));
+            self.faults.push(fault);
         }
-        Err(self.unexpected_after_value())
+        Ok(self.advance())
     }
 
     fn name(&mut self, word: String) -> Result<Place, Fault> {
         let span = self.advance();
         if self.is_sign("(") {
             return self.call(word, span);
+        }
+        if word == "if" {
+            self.faults.push(Fault::new(span, "`if` has no bracket").help("a choice is written if(condition, a, b)"));
+            self.give_up();
+            return Ok(self.nodes.len() - 1);
         }
         if self.is_sign("[") {
             return self.index(word, &span);
@@ -264,15 +413,23 @@ impl Parser {
         let open = self.advance();
         let mut arguments = Vec::new();
         if !self.is_sign(")") {
-            arguments.push(self.expression(0)?);
+            arguments.push(self.argument()?);
             while self.is_sign(",") {
                 self.advance();
-                arguments.push(self.expression(0)?);
+                arguments.push(self.argument()?);
             }
         }
         let close = self.close(")", &open)?;
         let span = name_span.start..close.end;
         Ok(self.push(Node::Call { name, name_span, arguments }, span))
+    }
+
+    /// One argument, up to a comma or the closing bracket.
+    fn argument(&mut self) -> Result<Place, Fault> {
+        let first = self.expression(0)?;
+        let before = self.nodes.len();
+        self.rest(",")?;
+        Ok(if self.nodes.len() > before { self.nodes.len() - 1 } else { first })
     }
 
     fn index(&mut self, group: String, group_span: &Range<usize>) -> Result<Place, Fault> {
@@ -282,8 +439,14 @@ impl Parser {
             Token::Label(label) => Member::Label(label),
             Token::Number(position) => Member::Position(position),
             _ => {
-                return Err(Fault::new(self.span(), format!("`{group}[...]` wants to know which one"))
-                    .help("in square brackets stands a column of labels, a label in quotes, or a position from 1"));
+                let fault = Fault::new(self.span(), format!("`{group}[...]` wants to know which one"))
+                    .help("in square brackets stands a column of labels, a label in quotes, or a position from 1");
+                self.faults.push(fault);
+                while *self.peek() != Token::End && !self.is_sign("]") {
+                    self.advance();
+                }
+                let end = self.advance().end;
+                return Ok(self.push(Node::Broken, group_span.start..end));
             }
         };
         let member_span = self.advance();
@@ -295,11 +458,16 @@ impl Parser {
     fn unexpected_after_value(&self) -> Fault {
         let span = self.span();
         let operator = "an operator is missing before it, * for a product";
+        let after_number = self.at > 0 && matches!(self.tokens[self.at - 1].0, Token::Number(_));
         match self.peek() {
             Token::Number(value) => Fault::new(span, format!("the number {value} follows a value")).help(operator),
-            Token::Name(word) if *word == "if" || *word == "else" => {
+            Token::Name(word) if word == "x" && !after_number => Fault::new(span, "`x` follows a value")
+                .help("an operator is missing before it; if it is meant as one, write *"),
+            Token::Name(word) if ["if", "else", "then"].contains(&word.as_str()) => {
                 Fault::new(span, format!("`{word}` follows a value")).help("a choice is written if(condition, a, b)")
             }
+            Token::Name(word) if after_number => Fault::new(span, format!("`{word}` follows a number"))
+                .help("an operator is missing before it, * for a product; units have no place in a formula"),
             Token::Name(word) => Fault::new(span, format!("`{word}` follows a value")).help(operator),
             Token::Label(label) => Fault::new(span, format!("the label '{label}' follows a value"))
                 .help("compare a column with it: station == 'Alder'"),
@@ -309,7 +477,7 @@ impl Parser {
             Token::Sign(",") => Fault::new(span, "a comma stands outside the brackets of a function")
                 .help("write decimals with a point"),
             Token::Sign(sign) => Fault::new(span, format!("`{sign}` closes no bracket that is open")),
-            Token::End => self.ends_early(),
+            Token::End | Token::Broken => self.ends_early(),
         }
     }
 }
@@ -333,9 +501,12 @@ mod tests {
                     format!("{name}({})", arguments.iter().map(of).collect::<Vec<_>>().join(", "))
                 }
                 Node::Index { group, member, .. } => format!("{group}[{member:?}]"),
+                Node::Broken => "?".to_owned(),
             }
         }
-        let syntax = parse(text).unwrap_or_else(|fault| panic!("{text}: {fault:?}"));
+        let parsed = parse(text);
+        assert!(parsed.faults.is_empty(), "{text}: {:?}", parsed.faults);
+        let syntax = parsed.syntax.unwrap();
         write(&syntax, syntax.root())
     }
 
@@ -371,7 +542,7 @@ mod tests {
             ("(a + b", 0..1, "never closed"),
             ("f(a, b", 1..2, "never closed"),
             ("a + b)", 5..6, "closes no bracket"),
-            ("2 x", 2..3, "follows a value"),
+            ("2 x", 2..3, "follows a number"),
             ("2(x)", 1..2, "follows a value"),
             ("a < b < c", 6..7, "do not chain"),
             ("a, b", 1..2, "comma"),
@@ -379,19 +550,40 @@ mod tests {
             ("effect[]", 7..8, "which one"),
             ("and", 0..3, "where a value should"),
         ] {
-            let fault = parse(text).unwrap_err();
-            assert_eq!(fault.span, span, "{text}: {fault:?}");
-            assert!(fault.message.contains(part), "{text}: {fault:?}");
+            let faults = parse(text).faults;
+            assert_eq!(faults.len(), 1, "{text}: {faults:?}");
+            assert_eq!(faults[0].span, span, "{text}: {faults:?}");
+            assert!(faults[0].message.contains(part), "{text}: {faults:?}");
         }
     }
 
     #[test]
     fn deep_nesting_is_an_error_and_long_chains_are_not() {
         for opening in ["(", "-", "2^", "exp(", "not ", "if(", "+"] {
-            let fault = parse(&opening.repeat(100_000)).unwrap_err();
-            assert!(fault.message.contains("nested"), "{opening}: {fault:?}");
+            let parsed = parse(&opening.repeat(100_000));
+            assert!(parsed.syntax.is_none() && parsed.faults[0].message.contains("nested"), "{opening}");
         }
         let long = vec!["x"; 50_000].join("+");
-        assert_eq!(parse(&long).unwrap().nodes.len(), 99_999);
+        assert_eq!(parse(&long).syntax.unwrap().nodes.len(), 99_999);
+    }
+
+    #[test]
+    fn several_mistakes_are_told_together() {
+        for (text, parts) in [
+            ("a ** 2 + f(b %% c", vec!["`**`", "never closed", "`%`", "`%`"]),
+            ("2 x + (3 y", vec!["`x` follows a number", "never closed", "`y` follows"]),
+            ("a < b < c && d", vec!["do not chain", "`&&`"]),
+            ("a * / b + f(, c) d", vec!["`/` stands", "`,` stands", "`d` follows"]),
+            ("a if b > 2 else c", vec!["`if` follows"]),
+            ("f(if a then b, g(", vec!["`if` has no bracket"]),
+            ("|x| + y", vec!["`|`", "`|`"]),
+            ("f(a b, c) ) + 1 2", vec!["`b` follows", "closes no", "number 2"]),
+        ] {
+            let faults = parse(text).faults;
+            assert_eq!(faults.len(), parts.len(), "{text}: {faults:?}");
+            for (fault, part) in faults.iter().zip(parts) {
+                assert!(fault.message.contains(part), "{text}: {faults:?}");
+            }
+        }
     }
 }

@@ -2,7 +2,7 @@
 
 use std::collections::HashMap;
 
-use super::check::compile;
+use super::check::{compile, unused};
 use super::columns::{Rows, RowsId};
 use super::errors::FormulaError;
 use super::functions::FUNCTIONS;
@@ -32,11 +32,26 @@ pub enum Wanted {
 pub(super) enum Entity {
     Constant(f64),
     Input(usize),
-    Group { rows: RowsId, labels: Vec<String>, first: usize },
-    Column { rows: RowsId, values: Vec<f64> },
-    Texts { rows: RowsId, texts: Vec<String> },
-    ModelColumn { rows: RowsId, first: usize },
+    Group {
+        rows: RowsId,
+        labels: Vec<String>,
+        first: usize,
+    },
+    Column {
+        rows: RowsId,
+        values: Vec<f64>,
+    },
+    Texts {
+        rows: RowsId,
+        texts: Vec<String>,
+    },
+    ModelColumn {
+        rows: RowsId,
+        first: usize,
+    },
     Formula(String),
+    /// Something whose nature is not known, because it is stated wrongly: nothing is told of its uses.
+    Faulty,
 }
 
 /// All names that formulas may use. Inputs are numbered in the order in which they are given.
@@ -64,6 +79,8 @@ pub struct Scope {
     /// For a group and a column, the member each row belongs to.
     pub(super) links: HashMap<(String, String), Vec<u32>>,
     pub(super) n_inputs: usize,
+    /// What names may begin with that are not known, as of a file that cannot be read; the empty text for all.
+    open: Vec<String>,
 }
 
 impl Scope {
@@ -135,6 +152,17 @@ impl Scope {
         self.enter(name, Entity::Formula(text.to_string()));
     }
 
+    /// A name that was given to something stated wrongly. Formulas may use it; whatever follows from that is not told.
+    pub fn faulty(&mut self, name: &str) {
+        self.enter(name, Entity::Faulty);
+    }
+
+    /// Says that there are more names, not known here, that begin with `prefix` and a dot, or, where it is empty, have
+    /// no dot: a name that is not known is no mistake then.
+    pub fn open(&mut self, prefix: &str) {
+        self.open.push(prefix.to_owned());
+    }
+
     /// Numbers a point must bring along: variables, members of groups and values of models.
     #[must_use]
     pub fn n_inputs(&self) -> usize {
@@ -147,7 +175,27 @@ impl Scope {
     /// # Errors
     /// All mistakes that do not follow from one another, in the order of the formulas and then the outputs.
     pub fn compile(&self, outputs: &[(&str, &str, Wanted)]) -> Result<Program, Vec<FormulaError>> {
-        compile(self, outputs)
+        compile(self, outputs, true)
+    }
+
+    /// As [`Scope::compile`], but of the formulas only those are looked at that the outputs need.
+    ///
+    /// # Errors
+    /// All mistakes in the outputs and in what they need.
+    pub fn compile_alone(&self, outputs: &[(&str, &str, Wanted)]) -> Result<Program, Vec<FormulaError>> {
+        compile(self, outputs, false)
+    }
+
+    /// Names of formulas and of constants that no output needs, whatever may be wrong with them.
+    #[must_use]
+    pub fn unused(&self, outputs: &[&str]) -> Vec<String> {
+        unused(self, outputs)
+    }
+
+    /// Whether `name` may be one that is not known here.
+    pub(super) fn may_be_elsewhere(&self, name: &str) -> bool {
+        let table = name.rsplit_once('.').map_or("", |(table, _)| table);
+        self.open.iter().any(|prefix| prefix == table)
     }
 
     /// The entity `name` stands for, with its number.
@@ -190,7 +238,11 @@ pub fn is_reserved(name: &str) -> bool {
 /// # Errors
 /// The text is no formula; the error carries `key`.
 pub fn names_used(key: &str, text: &str) -> Result<Vec<String>, FormulaError> {
-    let syntax = parse(text).map_err(|fault| FormulaError::new(key, fault))?;
+    let parsed = parse(text);
+    if let Some(fault) = parsed.faults.into_iter().next() {
+        return Err(FormulaError::new(key, fault));
+    }
+    let Some(syntax) = parsed.syntax else { return Ok(Vec::new()) };
     let mut found: Vec<String> = Vec::new();
     let mut places: Vec<_> = syntax.names().collect();
     places.sort_by_key(|(_, span)| span.start);

@@ -5,12 +5,16 @@ use std::collections::BTreeSet;
 use super::data::RawTable;
 use super::data::Rows;
 use super::data::line_source;
+use super::data::lines;
+use super::faults::Fault;
 use super::names::Given;
 use super::names::Names;
 use super::names::Piece;
 use super::names::pieces;
 use super::table::Reader;
 use crate::expression::is_name;
+use crate::expression::is_reserved;
+use crate::expression::nearest;
 
 /// Cells of a column, of the rows that are kept.
 #[derive(Debug, Clone, PartialEq)]
@@ -39,6 +43,8 @@ pub(crate) struct DataTable {
     pub(crate) columns: Vec<Column>,
     /// Records kept, by their number from 0.
     pub(crate) kept: Vec<usize>,
+    /// Names that formulas use for columns whose headers are no names: each with the header that is probably meant.
+    pub(crate) assumed: Vec<(String, String)>,
 }
 
 /// How the formulas of a problem use a name.
@@ -75,29 +81,118 @@ impl Uses {
 }
 
 /// Names, rows and cells of a file.
-pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, uses: &Uses) -> Option<DataTable> {
+pub(crate) fn settle(reader: &mut Reader<'_>, names: &mut Names, raw: RawTable, uses: &Uses) -> DataTable {
     let own = raw.own_names(reader, |header| is_name(header) && !crate::expression::is_reserved(header));
-    let named = give_names(reader, names, &raw, &own);
-    let used: Vec<usize> = named.iter().filter(|(_, name)| uses.names.contains(name)).map(|&(at, _)| at).collect();
+    let mut named = give_names(reader, names, &raw, &own);
+    let assumed = assumed(&raw, &own, uses, |name| names.has(name) || reader.faulty.iter().any(|known| known == name));
+    for (at, name) in &assumed {
+        named.push((*at, name.clone()));
+    }
+    let assumed = assumed.into_iter().map(|(at, name)| (name, raw.headers[at].clone())).collect();
+    // A misspelt name is a use of the column that it is like.
+    let astray: Vec<&String> = uses.names.iter().filter(|name| !names.has(name) && !is_reserved(name)).collect();
+    let like = |column: &str| {
+        let nearest_column = |name: &str| nearest(name, named.iter().map(|(_, column)| column.as_str()));
+        astray.iter().any(|name| nearest_column(name) == Some(column))
+    };
+    let is_used = |name: &String| uses.names.contains(name) || like(name);
+    let used: Vec<usize> = named.iter().filter(|(_, name)| is_used(name)).map(|&(at, _)| at).collect();
     let complete = raw.spec.missing.is_some() && raw.spec.rows != Some(Rows::All);
     let whole = |row: &Vec<String>| used.iter().all(|&at| !raw.is_missing(&row[at]));
-    let kept: Vec<usize> = (0..raw.records.len()).filter(|&row| !complete || whole(&raw.records[row].1)).collect();
+    let all = 0..raw.records.len();
+    let mut kept: Vec<usize> = all.clone().filter(|&row| !complete || whole(&raw.records[row].1)).collect();
     if kept.is_empty() {
-        let message = format!("no row of `{}` has a value in every column that a formula uses", raw.shown);
-        let fault = super::faults::Fault::new(raw.spec.file.span.clone(), message);
-        reader.fault(fault.help("write rows = \"all\" and ask present(x) in the formulas"));
-        return None;
+        no_whole_row(reader, &raw, &named, &used);
+        kept = all.collect();
     }
-    let before = reader.faults.len();
+    let marks = marks_of(&raw, &used);
+    tell_missing(reader, &raw, &kept, &named, &used);
     let mut columns = Vec::new();
     for (at, name) in named {
         let labels = uses.as_labels.contains(&name);
-        let is_used = used.contains(&at);
-        if let Some(cells) = read_cells(reader, &raw, &kept, at, &name, labels, is_used) {
-            columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
+        let cells = read_cells(reader, &raw, &kept, (at, &name), labels, used.contains(&at).then_some(&marks));
+        columns.push(Column { header: raw.headers[at].clone(), name, cells, at });
+    }
+    DataTable { raw, columns, kept, assumed }
+}
+
+/// Columns whose headers are no names, where a formula uses a word of the header as a name that nothing else has.
+fn assumed(raw: &RawTable, own: &[Option<String>], uses: &Uses, known: impl Fn(&str) -> bool) -> Vec<(usize, String)> {
+    let mut found: Vec<(usize, String)> = Vec::new();
+    for name in uses.names.iter().filter(|name| !known(name) && !is_reserved(name)) {
+        let (table, word) = name.rsplit_once('.').map_or((None, name.as_str()), |(table, word)| (Some(table), word));
+        if table != raw.spec.name.as_deref() {
+            continue;
+        }
+        let header = (0..raw.headers.len()).find(|&at| {
+            own[at].is_none() && !found.iter().any(|(other, _)| *other == at) && is_meant(word, &raw.headers[at])
+        });
+        found.extend(header.map(|at| (at, name.clone())));
+    }
+    found
+}
+
+/// Whether a name is a word of a header, or made of words of it.
+pub(crate) fn is_meant(name: &str, header: &str) -> bool {
+    let (name, header) = (name.to_lowercase(), header.to_lowercase());
+    let words = || header.split(|c: char| !c.is_alphanumeric()).filter(|word| word.chars().count() > 2);
+    let parts = || name.split(|c: char| !c.is_alphanumeric()).filter(|part| part.chars().count() > 2);
+    words().any(|word| name == word || parts().any(|part| part == word))
+}
+
+/// Every row lacks something: says which columns are to blame.
+fn no_whole_row(reader: &mut Reader<'_>, raw: &RawTable, named: &[(usize, String)], used: &[usize]) {
+    let message = format!("no row of `{}` has a value in every column that a formula uses", raw.shown);
+    let lacking = |at: usize| raw.records.iter().filter(|(_, cells)| raw.is_missing(&cells[at])).count();
+    let counts: Vec<String> = named
+        .iter()
+        .filter(|(at, _)| used.contains(at) && lacking(*at) > 0)
+        .map(|(at, name)| format!("`{name}` in {} of {} rows", lacking(*at), raw.records.len()))
+        .collect();
+    let fault = Fault::new(raw.spec.file.span.clone(), message);
+    let fault = fault.help(format!("missing is {}", counts.join(", ")));
+    reader.fault(fault.help("write rows = \"all\" and ask present(x) in the formulas"));
+}
+
+/// What cells hold that have no value, in the files of the world.
+const MARKS: [&str; 10] = ["na", "n/a", "nan", "null", "none", "-", "--", "?", ".", "missing"];
+
+fn is_mark(cell: &str) -> bool {
+    cell.is_empty() || MARKS.contains(&cell.to_lowercase().as_str())
+}
+
+/// Tells of cells without a value in columns that formulas use, where `[data]` does not say what that means: all of them
+/// at once, since one line mends them all.
+fn tell_missing(reader: &mut Reader<'_>, raw: &RawTable, kept: &[usize], named: &[(usize, String)], used: &[usize]) {
+    if raw.spec.missing.is_some() {
+        return;
+    }
+    let quoted: Vec<String> = marks_of(raw, used).iter().map(|mark| format!("\"{mark}\"")).collect();
+    let marks = format!("[{}]", quoted.join(", "));
+    for (at, name) in named.iter().filter(|(at, _)| used.contains(at)) {
+        let rows: Vec<usize> = kept.iter().copied().filter(|&row| raw.is_missing(&raw.records[row].1[*at])).collect();
+        let Some((&first, others)) = rows.split_first() else { continue };
+        let message = format!("the column `{name}` has no value in line {} of `{}`", raw.records[first].0, raw.shown);
+        let mut fault = raw.cell_fault(first, *at, message).label("empty");
+        if !others.is_empty() {
+            let lines = lines(others.iter().map(|&row| raw.records[row].0));
+            fault = fault.help(format!("nor has it one in {lines}"));
+        }
+        reader.fault(fault.help(format!("fill the cell, or write missing = {marks} under [data] to drop such rows")));
+    }
+}
+
+/// All that marks a missing cell in the columns that are used, and what `missing` lists already.
+fn marks_of(raw: &RawTable, used: &[usize]) -> Vec<String> {
+    let mut found = vec![String::new()];
+    let listed = raw.spec.missing.iter().flatten();
+    let cells = raw.records.iter().flat_map(|(_, cells)| used.iter().map(|&at| &cells[at]));
+    for mark in listed.chain(cells.filter(|cell| is_mark(cell))) {
+        if !found.contains(mark) {
+            found.push(mark.clone());
         }
     }
-    (reader.faults.len() == before).then_some(DataTable { raw, columns, kept })
+    found
 }
 
 fn give_names(
@@ -119,7 +214,7 @@ fn give_names(
                 }
                 Given::Here(key.span.clone())
             }
-            None => Given::Header(header_line.clone(), super::data::cell_span(&header_line.text, at)),
+            None => Given::Header(header_line.clone(), super::data::cell_span(&header_line.text, at, raw.separator)),
         };
         if names.give(reader, &name, "the column", given) {
             named.push((at, name));
@@ -128,50 +223,76 @@ fn give_names(
     named
 }
 
-/// Cells of column `at`. A column of numbers with a cell that is none is a fault where formulas use it as numbers.
+/// Cells of column `at`. A column of numbers with a cell that is none is a fault where formulas use it as numbers; such a
+/// cell is then read as missing.
 fn read_cells(
     reader: &mut Reader<'_>,
     raw: &RawTable,
     kept: &[usize],
-    at: usize,
-    name: &str,
+    (at, name): (usize, &str),
     as_labels: bool,
-    is_used: bool,
-) -> Option<Cells> {
+    marks: Option<&Vec<String>>,
+) -> Cells {
+    let is_used = marks.is_some();
     let cell = |row: usize| raw.records[row].1[at].as_str();
     let is_number = |row: usize| number(cell(row)).is_some();
-    let missing = kept.iter().find(|&&row| raw.is_missing(cell(row)));
-    if let Some(&row) = missing.filter(|_| is_used && raw.spec.missing.is_none()) {
-        let line = raw.records[row].0;
-        let message = format!("the column `{name}` has no value in line {line} of `{}`", raw.shown);
-        let fault = raw.cell_fault(row, at, message).label("empty");
-        reader.fault(fault.help("fill the cell, or write missing = [\"\"] under [data] to drop such rows"));
-        return None;
-    }
     let present = || kept.iter().copied().filter(|&row| !raw.is_missing(cell(row)));
     let texts = || kept.iter().map(|&row| if raw.is_missing(cell(row)) { String::new() } else { cell(row).to_owned() });
-    if present().all(is_number) {
-        let numbers = kept
-            .iter()
-            .map(|&row| if raw.is_missing(cell(row)) { f64::NAN } else { number(cell(row)).unwrap_or(f64::NAN) });
-        return Some(Cells::Numbers(numbers.collect(), texts().collect()));
+    let value = |row: usize| if raw.is_missing(cell(row)) { f64::NAN } else { number(cell(row)).unwrap_or(f64::NAN) };
+    let bad: Vec<usize> = present().filter(|&row| !is_number(row)).collect();
+    let is_stray = is_used && !as_labels && present().any(is_number);
+    if !bad.is_empty() && !is_stray {
+        return Cells::Texts(texts().collect());
     }
-    let bad = present().find(|&row| !is_number(row));
-    if let Some(row) = bad.filter(|_| is_used && !as_labels && present().any(is_number)) {
-        let line = raw.records[row].0;
-        let message = format!("line {line} of `{}`, column `{name}`: \"{}\" is no number", raw.shown, cell(row));
-        let fault = raw.cell_fault(row, at, message).label("not a number");
-        reader.fault(fault.help(number_help(cell(row))));
-        return None;
+    if let Some((&first, others)) = bad.split_first() {
+        let line = raw.records[first].0;
+        let message = match cell(first) {
+            "" => format!("line {line} of `{}`, column `{name}`: the cell is empty", raw.shown),
+            text => format!("line {line} of `{}`, column `{name}`: \"{text}\" is no number", raw.shown),
+        };
+        let fault = raw.cell_fault(first, at, message).label("not a number");
+        let mut fault = match line == 2 && others.is_empty() && raw.records.len() > 1 && is_unit(cell(first)) {
+            true => fault.help("a line of units has no place below the header: take the line out"),
+            false => fault.help(number_help(cell(first), marks.map_or(&[], Vec::as_slice))),
+        };
+        if !others.is_empty() {
+            let each = others.iter().take(10).map(|&row| format!("\"{}\" in line {}", cell(row), raw.records[row].0));
+            let more = if others.len() > 10 { format!(" and {} more", others.len() - 10) } else { String::new() };
+            fault = fault.help(format!("nor is {}{more}", each.collect::<Vec<_>>().join(", ")));
+        }
+        reader.fault(fault);
     }
-    Some(Cells::Texts(texts().collect()))
+    Cells::Numbers(kept.iter().map(|&row| value(row)).collect(), texts().collect())
 }
 
-fn number_help(cell: &str) -> String {
-    if number(&cell.replace(',', ".")).is_some() {
-        return format!("write it with a point: {}", cell.replace(',', "."));
+/// Whether a cell looks like the unit of its column.
+fn is_unit(cell: &str) -> bool {
+    !is_mark(cell) && cell.starts_with(|c: char| c.is_alphabetic() || matches!(c, '(' | '[' | '%' | '°'))
+}
+
+fn number_help(cell: &str, marks: &[String]) -> String {
+    let pointed = cell.replacen(',', ".", 1);
+    if number(&pointed).is_some() {
+        let (whole, part) = cell.split_once(',').unwrap_or((cell, ""));
+        if part.len() == 3 && !whole.starts_with('0') && whole.len() <= 3 {
+            return format!("write {whole}{part} for a large number, {pointed} for a fraction");
+        }
+        return format!("write it with a point: {pointed}");
     }
-    format!("mend the cell, or count it as missing: missing = [\"\", \"{cell}\"] under [data]")
+    let spaced: String = cell.chars().filter(|c| !c.is_whitespace() && *c != '\'').collect();
+    if number(&spaced).is_some() {
+        return format!("write it without gaps: {spaced}");
+    }
+    let leading: String = cell.chars().take_while(|c| c.is_ascii_digit() || matches!(c, '.' | '-' | '+')).collect();
+    if number(&leading).is_some() {
+        return format!("write the number alone: {leading}");
+    }
+    let mut all = marks.to_vec();
+    if !marks.iter().any(|mark| mark == cell) {
+        all.push(cell.to_owned());
+    }
+    let all: Vec<String> = all.iter().map(|mark| format!("\"{mark}\"")).collect();
+    format!("mend the cell, or count it as missing: missing = [{}] under [data]", all.join(", "))
 }
 
 /// The number that a cell holds; `nan` is none.

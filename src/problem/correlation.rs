@@ -11,6 +11,7 @@ use super::correlation_table::CorrelationKind;
 use super::correlation_table::CorrelationSpec;
 use super::expand::Expanded;
 use super::faults::Fault;
+use super::names::all_of;
 use super::table::Reader;
 use super::text_value::Text;
 use super::variable::Nature;
@@ -45,6 +46,9 @@ pub enum CorrelationError {
     NotPositiveDefinite {
         /// Smallest eigenvalue.
         smallest: f64,
+        /// The pair of variables that alone could be mended, with its present correlation of scores and the ends of the
+        /// interval that the others leave to it; none where no single pair could.
+        pair: Option<Box<Mendable>>,
     },
     /// Only settled distributions can be correlated.
     #[error("`{name}` has no distribution of its own that could be correlated")]
@@ -65,13 +69,38 @@ pub enum CorrelationError {
     },
 }
 
+/// A pair whose correlation alone stands against those of the others.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Mendable {
+    /// One of the pair.
+    pub first: String,
+    /// The other.
+    pub second: String,
+    /// The correlation of their scores.
+    pub score: f64,
+    /// Low end of what the other correlations allow.
+    pub low: f64,
+    /// High end.
+    pub high: f64,
+}
+
 impl CorrelationError {
     /// The whole story, and what to write instead.
     pub(crate) fn explained(&self) -> (String, String) {
         let own = self.to_string();
         let Self::Pair { first, second, source } = self else {
-            let help = "bring the numbers nearer to zero, or check their signs";
-            return (own, help.into());
+            let general = "bring the numbers nearer to zero, or check their signs";
+            let help = match self {
+                Self::NotPositiveDefinite { pair: Some(pair), .. } => format!(
+                    "{general}; the others allow `{}` and `{}` a score correlation between {:.4} and {:.4}, and theirs is {:.4}",
+                    pair.first, pair.second, pair.low, pair.high, pair.score
+                ),
+                Self::NotPositiveDefinite { pair: None, .. } => {
+                    format!("{general}; no single pair could be changed alone to mend it")
+                }
+                _ => general.to_owned(),
+            };
+            return (own, help);
         };
         match source {
             PairError::Unattainable { value, low, high, .. } => (
@@ -136,61 +165,76 @@ pub(crate) fn of_matrix(
     let mut scores = Vec::new();
     for i in 0..d {
         for j in 0..i {
-            let value = score_of_pair(variables, (members[i], members[j]), kind, matrix[i * d + j])?;
+            let (first, second) = (members[i], members[j]);
+            let pair = (&variables[first], &variables[second]);
+            let value = score_of_pair(pair, kind, matrix[i * d + j])?;
             scores.push(((members[i], members[j]), value));
         }
     }
     let mut sorted = members;
     sorted.sort_unstable();
-    group(sorted, &scores)
+    group(sorted, &scores, |place| variables[place].name.clone())
 }
 
-/// All groups of the file; faults point at the number, the name or the table that is wrong.
+/// All groups of the file; faults point at the number, the name or the table that is wrong. Pairs of variables that are
+/// not known are left out.
 pub(crate) fn settle(
     reader: &mut Reader<'_>,
     specs: &[CorrelationSpec],
     expanded: &[Expanded<'_>],
-    variables: &[Variable],
-) -> Option<Vec<Correlation>> {
-    let before = reader.faults.len();
+    variables: &[Option<Variable>],
+) -> Vec<Correlation> {
     let mut pairs: Vec<Pair> = Vec::new();
     for spec in specs {
         add_pairs(reader, spec, expanded, variables, &mut pairs);
     }
     let mut scores = Vec::new();
+    let mut doubtful: Vec<usize> = Vec::new();
     for pair in &pairs {
-        match score_of_pair(variables, pair.places, pair.kind, pair.value) {
-            Ok(score) => scores.push((pair.places, score)),
-            Err(error) => {
+        let (i, j) = pair.places;
+        let known = variables[i].as_ref().zip(variables[j].as_ref()).filter(|_| !pair.value.is_nan());
+        match known.map(|known| score_of_pair(known, pair.kind, pair.value)) {
+            Some(Ok(score)) => scores.push((pair.places, score)),
+            Some(Err(error)) => {
                 let (message, help) = error.explained();
                 reader.fault(Fault::new(pair.span.clone(), message).help(help));
+                doubtful.push(i);
             }
+            None => doubtful.push(i),
         }
     }
-    if reader.faults.len() > before {
-        return None;
-    }
     let mut groups = Vec::new();
-    for members in connected(&pairs) {
+    for members in connected(&pairs).into_iter().filter(|members| !doubtful.iter().any(|place| members.contains(place)))
+    {
         let inside: Vec<((usize, usize), f64)> =
             scores.iter().copied().filter(|((i, _), _)| members.contains(i)).collect();
         let table = pairs.iter().find(|pair| members.contains(&pair.places.0)).map_or(0..0, |pair| pair.table.clone());
-        match group(members, &inside) {
+        let name = |place: usize| variables[place].as_ref().map_or_else(String::new, |variable| variable.name.clone());
+        match group(members, &inside, name) {
             Ok(found) => groups.push(found),
             Err(error) => {
                 let (message, help) = error.explained();
-                reader.fault(Fault::new(table, message).help(help));
+                let at_fault = match &error {
+                    CorrelationError::NotPositiveDefinite { pair: Some(pair), .. } => {
+                        let names = |of: &Pair| [name(of.places.0), name(of.places.1)];
+                        let same = |of: &&Pair| names(of).contains(&pair.first) && names(of).contains(&pair.second);
+                        pairs.iter().find(same).map(|pair| pair.span.clone())
+                    }
+                    _ => None,
+                };
+                let fault = Fault::new(at_fault.unwrap_or(table), message);
+                reader.fault(fault.help(help));
             }
         }
     }
-    (reader.faults.len() == before).then_some(groups)
+    groups
 }
 
 fn add_pairs(
     reader: &mut Reader<'_>,
     spec: &CorrelationSpec,
     expanded: &[Expanded<'_>],
-    variables: &[Variable],
+    variables: &[Option<Variable>],
     pairs: &mut Vec<Pair>,
 ) {
     let mut places: Vec<usize> = Vec::new();
@@ -222,21 +266,38 @@ fn add_pairs(
 }
 
 /// The place of a variable that may be correlated.
-fn place_of(reader: &mut Reader<'_>, name: &Text, expanded: &[Expanded<'_>], variables: &[Variable]) -> Option<usize> {
+fn place_of(
+    reader: &mut Reader<'_>,
+    name: &Text,
+    expanded: &[Expanded<'_>],
+    variables: &[Option<Variable>],
+) -> Option<usize> {
     let Some(found) = expanded.iter().find(|variable| variable.spec.name == name.value) else {
-        let known = expanded.iter().map(|variable| variable.spec.name.as_str());
+        if reader.faulty.contains(&name.value) {
+            return None;
+        }
+        let names: Vec<&str> = expanded.iter().map(|variable| variable.spec.name.as_str()).collect();
         let fault = Fault::new(name.span.clone(), format!("no variable is called `{}`", name.value));
-        reader.fault(match nearest(&name.value, known) {
+        let base = name.value.split('[').next().unwrap_or_default();
+        if base != name.value && names.contains(&base) {
+            let message = format!("`{}` cannot be correlated: it is one of a group of variables (`each`)", name.value);
+            let help = "correlate single variables whose distribution has numbers as parameters";
+            reader.fault(Fault::new(name.span.clone(), message).help(help));
+            return None;
+        }
+        reader.fault(match nearest(&name.value, names.iter().copied()) {
             Some(near) => fault.help(format!("did you mean `{near}`?")),
-            None => fault.help("name variables of [variables]"),
+            None => fault.help(format!("the variables are {}", all_of(&names))),
         });
         return None;
     };
     let refusal = match &found.spec.nature {
         _ if found.labels.is_some() => Some("is a group of variables (`each`)"),
+        NatureSpec::Faulty { .. } => None,
         NatureSpec::Range { .. } => Some("has a range and no distribution"),
         NatureSpec::Random { .. } => {
-            let dependent = matches!(variables[found.places.start].nature, Nature::Dependent { .. });
+            let one = variables[found.places.start].as_ref();
+            let dependent = one.is_some_and(|one| matches!(one.nature, Nature::Dependent { .. }));
             dependent.then_some("has parameters that depend on other variables")
         }
     };
@@ -251,30 +312,25 @@ fn place_of(reader: &mut Reader<'_>, name: &Text, expanded: &[Expanded<'_>], var
 
 /// The correlation of the scores of a pair.
 fn score_of_pair(
-    variables: &[Variable],
-    (i, j): (usize, usize),
+    (one, other): (&Variable, &Variable),
     kind: CorrelationKind,
     value: f64,
 ) -> Result<f64, CorrelationError> {
-    let settled = |k: usize| -> Result<&Distribution, CorrelationError> {
-        match &variables[k].nature {
-            Nature::Random(distribution) => Ok(distribution),
-            _ => Err(CorrelationError::NotSettled { name: variables[k].name.clone() }),
+    let settled = |variable: &Variable| -> Result<Distribution, CorrelationError> {
+        match &variable.nature {
+            Nature::Random(distribution) => Ok(distribution.clone()),
+            _ => Err(CorrelationError::NotSettled { name: variable.name.clone() }),
         }
     };
-    let (first, second) = (settled(i)?, settled(j)?);
+    let (first, second) = (settled(one)?, settled(other)?);
     let score = match kind {
         CorrelationKind::Score => Ok(value),
         CorrelationKind::Rank => copula::score_of_rank(value),
         // A pair that is uncorrelated needs no standard deviations.
         CorrelationKind::Linear if value == 0.0 => Ok(0.0),
-        CorrelationKind::Linear => LinearCorrelation::new(first, second).and_then(|link| link.score(value)),
+        CorrelationKind::Linear => LinearCorrelation::new(&first, &second).and_then(|link| link.score(value)),
     };
-    score.map_err(|source| CorrelationError::Pair {
-        first: variables[j].name.clone(),
-        second: variables[i].name.clone(),
-        source,
-    })
+    score.map_err(|source| CorrelationError::Pair { first: other.name.clone(), second: one.name.clone(), source })
 }
 
 /// Members that hang together, directly or through others, in the order of their places.
@@ -296,7 +352,11 @@ fn connected(pairs: &[Pair]) -> Vec<Vec<usize>> {
     groups
 }
 
-fn group(members: Vec<usize>, scores: &[((usize, usize), f64)]) -> Result<Correlation, CorrelationError> {
+fn group(
+    members: Vec<usize>,
+    scores: &[((usize, usize), f64)],
+    name: impl Fn(usize) -> String,
+) -> Result<Correlation, CorrelationError> {
     let d = members.len();
     let mut score = vec![0.0; d * d];
     (0..d).for_each(|i| score[i * d + i] = 1.0);
@@ -311,9 +371,47 @@ fn group(members: Vec<usize>, scores: &[((usize, usize), f64)]) -> Result<Correl
         Some(lower) => Ok(Correlation { members, score, lower }),
         None => {
             let smallest = linear::eigen(&score, d).map_or(f64::NAN, |eigen| eigen.values[0]);
-            Err(CorrelationError::NotPositiveDefinite { smallest })
+            let pair = mendable(&score, d).map(|(i, j, low, high)| {
+                let (first, second) = (name(members[j]), name(members[i]));
+                Box::new(Mendable { first, second, score: score[i * d + j], low, high })
+            });
+            Err(CorrelationError::NotPositiveDefinite { smallest, pair })
         }
     }
+}
+
+/// The pair whose number alone can be changed so that the matrix becomes positive definite, with what the others leave
+/// to it; of several the one that has to move least.
+///
+/// With all others in their places the determinant is a parabola `-m s^2 + 2 b s + c` in the number `s` of the pair, and
+/// the matrix is positive definite between its zeros where the matrix without either of the two is.
+fn mendable(score: &[f64], d: usize) -> Option<(usize, usize, f64, f64)> {
+    let mut best: Option<(f64, (usize, usize, f64, f64))> = None;
+    for i in 0..d {
+        for j in 0..i {
+            let rest: Vec<usize> = (0..d).filter(|&k| k != i && k != j).collect();
+            let n = rest.len();
+            let inner: Vec<f64> = rest.iter().flat_map(|&a| rest.iter().map(move |&b| score[a * d + b])).collect();
+            let Some(lower) = linear::cholesky(&inner, n) else { continue };
+            let column = |of: usize| -> Vec<f64> {
+                let raw: Vec<f64> = rest.iter().map(|&k| score[k * d + of]).collect();
+                linear::lower_times(&linear::invert_lower(&lower, n), &raw)
+            };
+            let (a, b) = (column(i), column(j));
+            // Partial variances of the two given the others, and where the middle of the interval lies.
+            let (left, right, middle) = (1.0 - linear::dot(&a, &a), 1.0 - linear::dot(&b, &b), linear::dot(&a, &b));
+            if !(left > 0.0 && right > 0.0) {
+                continue;
+            }
+            let half = (left * right).sqrt();
+            let (low, high) = (middle - half, middle + half);
+            let move_by = (low - score[i * d + j]).max(score[i * d + j] - high);
+            if best.as_ref().is_none_or(|(least, _)| move_by < *least) {
+                best = Some((move_by, (i, j, low, high)));
+            }
+        }
+    }
+    best.map(|(_, pair)| pair)
 }
 
 #[cfg(test)]
@@ -331,7 +429,16 @@ mod tests {
         let variables: Vec<Variable> = ["a", "b", "c"].map(normal).to_vec();
         let matrix = [1.0, 0.9, -0.9, 0.9, 1.0, 0.9, -0.9, 0.9, 1.0];
         match of_matrix(&variables, vec![0, 1, 2], CorrelationKind::Score, &matrix) {
-            Err(CorrelationError::NotPositiveDefinite { smallest }) => assert!((smallest + 0.8).abs() < 1e-12),
+            Err(CorrelationError::NotPositiveDefinite { smallest, pair }) => {
+                assert!((smallest + 0.8).abs() < 1e-12);
+                // Of three scores each lies between `ab -+ sqrt((1 - a^2)(1 - b^2))`: here .81 -+ .19, or its negative.
+                let pair = pair.unwrap();
+                assert!(
+                    (pair.high - pair.low - 0.38).abs() < 1e-12 && (pair.low.abs() - 0.62).abs() < 1e-12
+                        || (pair.high.abs() - 0.62).abs() < 1e-12,
+                    "{pair:?}"
+                );
+            }
             other => panic!("{other:?}"),
         }
     }

@@ -39,7 +39,7 @@ impl CorrelationKind {
 pub(crate) struct CorrelationSpec {
     pub(crate) among: Vec<Text>,
     pub(crate) kind: CorrelationKind,
-    /// The whole symmetric matrix, row by row.
+    /// The whole symmetric matrix, row by row; NaN where a number is wrong.
     pub(crate) matrix: Vec<f64>,
     /// Place of the numbers.
     pub(crate) span: Range<usize>,
@@ -47,6 +47,7 @@ pub(crate) struct CorrelationSpec {
     pub(crate) places: Vec<(usize, usize, Range<usize>)>,
 }
 
+const KEYS: [&str; 4] = ["among", "linear", "rank", "score"];
 const EXAMPLE: &str = "[[correlation]] with among = [\"yield\", \"modulus\"] and linear = 0.3";
 
 /// Reads every table.
@@ -56,7 +57,8 @@ pub(crate) fn read(reader: &mut Reader<'_>, entry: &Entry<'_>) -> Vec<Correlatio
             Fault::new(entry.key_span.clone(), "correlations stand under [[correlation]], in two pairs of brackets")
                 .help(format!("write {EXAMPLE}")),
         );
-        return Vec::new();
+        let table = entry.value.as_table().map(|table| Table::new("[[correlation]]", table, entry.key_span.clone()));
+        return table.and_then(|table| read_one(reader, &table, &entry.key_span)).into_iter().collect();
     };
     let mut specs = Vec::new();
     for item in items {
@@ -72,9 +74,9 @@ pub(crate) fn read(reader: &mut Reader<'_>, entry: &Entry<'_>) -> Vec<Correlatio
 }
 
 fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>) -> Option<CorrelationSpec> {
-    reader.only(table, &["among", "linear", "rank", "score"]);
+    reader.only(table, &KEYS);
     let place = table.entries.first().map_or(key_span.clone(), |entry| entry.key_span.clone());
-    let Some(among) = table.entry("among") else {
+    let Some(among) = table.entry_or_slip("among", &KEYS) else {
         reader.fault(
             Fault::new(place, "[[correlation]] does not say among which variables")
                 .help("write among = [\"yield\", \"modulus\"], the names of two or more variables"),
@@ -82,31 +84,38 @@ fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>)
         return None;
     };
     let example = "among = [\"yield\", \"modulus\"]";
-    let names = reader.texts(among, example)?;
-    if names.len() < 2 {
+    let names = reader.texts(among, example);
+    if names.as_ref().is_some_and(|names| names.len() < 2) {
         reader.fault(
             Fault::new(among.span.clone(), "a correlation is among two variables or more")
                 .help(format!("write {example}")),
         );
-        return None;
     }
     let kinds: Vec<(CorrelationKind, &Entry<'_>)> =
         [CorrelationKind::Linear, CorrelationKind::Rank, CorrelationKind::Score]
             .into_iter()
-            .filter_map(|kind| table.entry(kind.word()).map(|entry| (kind, entry)))
+            .filter_map(|kind| table.entry_or_slip(kind.word(), &KEYS).map(|entry| (kind, entry)))
             .collect();
+    // Without numbers the names can be looked at all the same.
+    let names = names?;
+    let bare = |names: Vec<Text>| {
+        let (matrix, places) = (vec![f64::NAN; names.len() * names.len()], Vec::new());
+        CorrelationSpec { among: names, kind: CorrelationKind::Score, matrix, span: among.span.clone(), places }
+    };
     match kinds.as_slice() {
-        [(kind, entry)] => {
-            let (matrix, places) = read_matrix(reader, entry, names.len())?;
-            Some(CorrelationSpec { among: names, kind: *kind, matrix, span: entry.span.clone(), places })
-        }
+        [(kind, entry)] => match read_matrix(reader, entry, names.len()) {
+            Some((matrix, places)) => {
+                Some(CorrelationSpec { among: names, kind: *kind, matrix, span: entry.span.clone(), places })
+            }
+            None => Some(bare(names)),
+        },
         [] => {
             reader.fault(
                 Fault::new(among.span.clone(), "[[correlation]] gives no numbers").help(
                     "write linear = ... (of the variables), rank = ... (of their ranks) or score = ... (of their normal scores)",
                 ),
             );
-            None
+            Some(bare(names))
         }
         [(_, first), (_, second), ..] => {
             reader.fault(
@@ -114,7 +123,7 @@ fn read_one(reader: &mut Reader<'_>, table: &Table<'_>, key_span: &Range<usize>)
                     .also(first.key_span.clone(), "and this one")
                     .help("keep one of them: the others follow from it and are shown by `check`"),
             );
-            None
+            Some(bare(names))
         }
     }
 }
@@ -124,6 +133,9 @@ type Places = Vec<(usize, usize, Range<usize>)>;
 /// A number for a pair, or the lower triangle row by row with ones on the diagonal.
 fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(Vec<f64>, Places)> {
     if let Some(number) = plain_number(entry.value) {
+        if d < 2 {
+            return None; // That was told.
+        }
         if d != 2 {
             reader.fault(
                 Fault::new(entry.span.clone(), format!("one number cannot correlate {d} variables")).help(format!(
@@ -134,8 +146,12 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
             );
             return None;
         }
-        check_entry(reader, number, &entry.span)?;
+        let number = if check_entry(reader, number, &entry.span) { number } else { f64::NAN };
         return Some((vec![1.0, number, number, 1.0], vec![(1, 0, entry.span.clone())]));
+    }
+    if let Some(number) = entry.value.as_str().and_then(|text| text.trim().parse::<f64>().ok()) {
+        reader.wants(entry, "a number", &format!("it without quotes: {} = {number:?}", entry.key));
+        return None;
     }
     let example = format!("{} = {}", entry.key, triangle_example(d));
     let rows = reader.list(entry, &example)?;
@@ -146,48 +162,74 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
         );
         return None;
     }
+    if let Some(triangle) = lower_triangle(&rows, d) {
+        let message = format!("the {d} by {d} matrix stands here, or its upper half; its lower triangle is wanted");
+        reader.fault(Fault::new(entry.span.clone(), message).help(format!("write {} = {triangle}", entry.key)));
+        return None;
+    }
     let (mut matrix, mut places) = (vec![0.0; d * d], Vec::new());
     for (i, row) in rows.iter().enumerate() {
-        let cells = reader.list(row, &example)?;
+        let Some(cells) = reader.list(row, &example) else { continue };
         if cells.len() != i + 1 {
-            reader.fault(
-                Fault::new(
-                    row.span.clone(),
-                    format!("row {} of the lower triangle has {} of {} numbers", i + 1, cells.len(), i + 1),
-                )
-                .help(format!("write {example}")),
-            );
-            return None;
+            let message = if cells.len() == d && rows.len() == d {
+                format!("row {} of the lower triangle has all {d} numbers of the matrix", i + 1)
+            } else {
+                format!("row {} of the lower triangle has {} of {} numbers", i + 1, cells.len(), i + 1)
+            };
+            let help = format!("end each row with the 1.0 of its own variable: {example}");
+            reader.fault(Fault::new(row.span.clone(), message).help(help));
         }
-        for (j, cell) in cells.iter().enumerate() {
-            let number = reader.number(cell, &example)?;
-            if i == j && number != 1.0 {
+        for (j, cell) in cells.iter().enumerate().take(i + 1) {
+            let number = reader.number(cell, &example).unwrap_or(f64::NAN);
+            if i == j && number != 1.0 && !number.is_nan() && cells.len() == i + 1 {
                 reader.fault(
                     Fault::new(cell.span.clone(), "the correlation of a variable with itself is 1")
                         .help(format!("write {example}")),
                 );
-                return None;
             }
             if i != j {
-                check_entry(reader, number, &cell.span)?;
+                let allowed = number.is_nan() || check_entry(reader, number, &cell.span);
+                let number = if allowed { number } else { f64::NAN };
                 places.push((i, j, cell.span.clone()));
+                matrix[i * d + j] = number;
+                matrix[j * d + i] = number;
+            } else {
+                matrix[i * d + i] = 1.0;
             }
-            matrix[i * d + j] = number;
-            matrix[j * d + i] = number;
         }
     }
     Some((matrix, places))
 }
 
-fn check_entry(reader: &mut Reader<'_>, number: f64, span: &Range<usize>) -> Option<()> {
+/// The lower triangle, as one writes it, of what stands there as a whole symmetric matrix or as an upper triangle.
+fn lower_triangle(rows: &[Entry<'_>], d: usize) -> Option<String> {
+    let numbers = |row: &Entry<'_>| -> Option<Vec<f64>> {
+        row.value.as_array()?.iter().map(|cell| plain_number(cell.get_ref())).collect()
+    };
+    let rows: Vec<Vec<f64>> = rows.iter().map(numbers).collect::<Option<_>>()?;
+    let whole = rows.iter().all(|row| row.len() == d);
+    let upper = rows.iter().enumerate().all(|(i, row)| row.len() == d - i);
+    let entry = |i: usize, j: usize| if whole { rows[i][j] } else { rows[j][i - j] };
+    let symmetric = upper || (whole && (0..d).all(|i| (0..i).all(|j| rows[i][j] == rows[j][i])));
+    if !symmetric || d < 2 {
+        return None;
+    }
+    let row = |i: usize| {
+        let cells: Vec<String> = (0..=i).map(|j| format!("{:?}", entry(i, j))).collect();
+        format!("[{}]", cells.join(", "))
+    };
+    Some(format!("[{}]", (0..d).map(row).collect::<Vec<_>>().join(", ")))
+}
+
+fn check_entry(reader: &mut Reader<'_>, number: f64, span: &Range<usize>) -> bool {
     if number > -1.0 && number < 1.0 {
-        return Some(());
+        return true;
     }
     reader.fault(
         Fault::new(span.clone(), "a correlation is between -1 and 1, both excluded")
             .help("variables that determine each other are one variable: write the other as a formula"),
     );
-    None
+    false
 }
 
 /// `[[1.0], [0.3, 1.0], ...]` of the right size.

@@ -138,6 +138,12 @@ impl Problem {
         self.estimates_at(&self.space.to_natural(points))
     }
 
+    /// Whether there are inequalities that must hold.
+    #[must_use]
+    pub fn has_requirements(&self) -> bool {
+        matches!(&self.target, super::Target::Formulas(target) if target.requires().next().is_some())
+    }
+
     /// Whether each point fulfils every inequality of `require`; true everywhere where there is none.
     ///
     /// # Errors

@@ -21,6 +21,8 @@ pub(crate) struct Expanded<'a> {
     pub(crate) places: Range<usize>,
     /// Labels of the members of an `each`.
     pub(crate) labels: Option<Vec<String>>,
+    /// Whether how many there are could not be told: then there is a place for one.
+    pub(crate) unknown: bool,
 }
 
 impl Expanded<'_> {
@@ -45,37 +47,33 @@ impl Expanded<'_> {
 const MOST_MEMBERS: u64 = 10_000;
 
 /// Spreads out every variable. A fault of one leaves the others.
-pub(crate) fn expand<'a>(
-    reader: &mut Reader<'_>,
-    statement: &'a Statement,
-    tables: &[DataTable],
-) -> Option<Vec<Expanded<'a>>> {
-    let before = reader.faults.len();
+pub(crate) fn expand<'a>(reader: &mut Reader<'_>, statement: &'a Statement, tables: &[DataTable]) -> Vec<Expanded<'a>> {
     let mut expanded = Vec::new();
     let mut next = 0;
     for spec in &statement.variables {
-        let labels = match &spec.each {
+        let labels: Option<Vec<String>> = match &spec.each {
             None => None,
             Some(Each::Count(n)) if *n > MOST_MEMBERS => {
                 let message = format!("`{}` would be {n} variables; at most {MOST_MEMBERS} can be searched", spec.name);
                 reader.fault(Fault::new(spec.name_span.clone(), message).help("write fewer"));
-                continue;
+                None
             }
             Some(Each::Count(n)) => Some((1..=*n).map(|k| k.to_string()).collect()),
-            Some(Each::Column(column)) => match labels_of(reader, column, tables) {
-                Some(labels) => Some(labels),
-                None => continue,
-            },
+            Some(Each::Column(column)) => labels_of(reader, column, tables),
         };
+        let unknown = spec.each_unknown || (spec.each.is_some() && labels.is_none());
         let size = labels.as_ref().map_or(1, Vec::len);
-        expanded.push(Expanded { spec, places: next..next + size, labels });
+        expanded.push(Expanded { spec, places: next..next + size, labels, unknown });
         next += size;
     }
-    (reader.faults.len() == before).then_some(expanded)
+    expanded
 }
 
 fn labels_of(reader: &mut Reader<'_>, name: &Text, tables: &[DataTable]) -> Option<Vec<String>> {
     let Some((table, column)) = column_named(&name.value, tables) else {
+        if reader.may_be_a_column(&name.value) {
+            return None;
+        }
         let known: Vec<&str> =
             tables.iter().flat_map(|table| &table.columns).map(|column| column.name.as_str()).collect();
         let fault = Fault::new(name.span.clone(), format!("there is no data column `{}`", name.value));
@@ -85,7 +83,9 @@ fn labels_of(reader: &mut Reader<'_>, name: &Text, tables: &[DataTable]) -> Opti
             (None, _) => format!("the columns are {}", all_of(&known)),
         };
         reader.fault(fault.label("no such column").help(help));
-        return None;
+        // The column that is suggested is taken, to go on with.
+        let near = nearest(&name.value, known.iter().copied())?;
+        return column_named(near, tables).and_then(|(_, column)| column.distinct_labels().ok());
     };
     match column.distinct_labels() {
         Ok(labels) => Some(labels),

@@ -66,6 +66,16 @@ impl Fault {
         self
     }
 
+    /// Whether it points into another file than the problem file.
+    pub(crate) fn is_elsewhere(&self) -> bool {
+        self.elsewhere.is_some()
+    }
+
+    /// Where it begins.
+    pub(crate) fn start(&self) -> usize {
+        self.span.start
+    }
+
     /// What is wrong, in a sentence.
     #[must_use]
     pub fn message(&self) -> &str {
@@ -96,6 +106,16 @@ impl Faults {
 
     pub(crate) fn is_empty(&self) -> bool {
         self.0.is_empty()
+    }
+
+    /// The faults with their places in the problem file led through `place`.
+    pub(crate) fn placed(self, place: impl Fn(&Range<usize>) -> Range<usize>) -> Vec<Fault> {
+        let mut faults = self.0;
+        for fault in faults.iter_mut().filter(|fault| fault.elsewhere.is_none()) {
+            fault.span = place(&fault.span);
+            fault.also = fault.also.take().map(|(span, label)| (place(&span), label));
+        }
+        faults
     }
 
     /// The faults as the error of `source`, in the order of their places.

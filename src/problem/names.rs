@@ -45,6 +45,7 @@ impl Names {
     pub(crate) fn give(&mut self, reader: &mut Reader<'_>, name: &str, kind: &str, given: Given) -> bool {
         if let Some((other_kind, other)) = self.0.get(name) {
             reader.fault(clash(name, kind, &given, other_kind, other, reader.source));
+            reader.faulty.push(name.to_owned());
             return false;
         }
         self.0.insert(name.to_owned(), (kind.to_owned(), given));
@@ -56,40 +57,46 @@ impl Names {
         Self::check_spelling(reader, name, kind, span) && self.give(reader, name, kind, Given::Here(span.clone()))
     }
 
+    /// Whether anything has this name.
+    pub(crate) fn has(&self, name: &str) -> bool {
+        self.0.contains_key(name)
+    }
+
     /// Whether `name` is a name, and not one of the formula language.
     pub(crate) fn check_spelling(reader: &mut Reader<'_>, name: &str, kind: &str, span: &Range<usize>) -> bool {
         if !is_name(name) {
             reader.fault(
                 Fault::new(span.clone(), format!("{kind} \"{name}\" has no proper name"))
                     .label("not a name")
-                    .help(format!("a name is a letter, then letters, digits and `_`: {}", suggestion(name))),
+                    .help(format!("a name is a letter, then letters, digits and `_`: `{}`, say", suggestion(name))),
             );
+            reader.faulty.push(suggestion(name));
             return false;
         }
         if crate::expression::is_reserved(name) {
             reader.fault(
                 Fault::new(span.clone(), format!("{kind} `{name}` takes a name of the formula language"))
                     .label("taken")
-                    .help(format!("choose another name, for instance `{name}_value`")),
+                    .help(match name {
+                        "pi" => "take it out: every formula knows pi, 3.14159...".to_owned(),
+                        "inf" => "take it out: every formula knows inf".to_owned(),
+                        _ => format!("choose another name, `{name}_value` for instance, here and in the formulas"),
+                    }),
             );
+            reader.faulty.extend([name.to_owned(), format!("{name}_value")]);
             return false;
         }
         true
     }
-
-    /// Whether anything has this name.
-    pub(crate) fn has(&self, name: &str) -> bool {
-        self.0.contains_key(name)
-    }
 }
 
 /// A name like `text` that is one.
-fn suggestion(text: &str) -> String {
+pub(crate) fn suggestion(text: &str) -> String {
     let mapped: String = text.chars().map(|c| if c.is_alphanumeric() { c } else { '_' }).collect();
     let parts: Vec<&str> = mapped.split('_').filter(|part| !part.is_empty()).collect();
     let trimmed = parts.join("_");
     let begins = trimmed.chars().next().is_some_and(char::is_alphabetic);
-    if begins { format!("`{trimmed}`, say") } else { format!("`x{trimmed}`, say") }
+    if begins { trimmed } else { format!("x{trimmed}") }
 }
 
 fn clash(name: &str, kind: &str, given: &Given, other_kind: &str, other: &Given, source: &str) -> Fault {
@@ -177,10 +184,10 @@ mod tests {
     fn names_are_suggested_and_listed() {
         for text in ["1x", "_x", "a b", "Flow (m3/s)", "a-b", "a.b"] {
             assert!(!is_name(text), "{text}");
-            assert!(is_name(suggestion(text).split('`').nth(1).unwrap()), "{text}");
+            assert!(is_name(&suggestion(text)), "{text}");
         }
         assert_eq!(listed(&["a", "b", "c"]), "`a`, `b` or `c`");
-        assert_eq!(suggestion("Flow (m3/s)"), "`Flow_m3_s`, say");
+        assert_eq!(suggestion("Flow (m3/s)"), "Flow_m3_s");
     }
 
     #[test]

@@ -6,6 +6,7 @@ use super::given::GivenGroup;
 use super::given::Parameter;
 use super::given::placed;
 use super::names::all_of;
+use super::programs::ParameterProgram;
 use super::table::Reader;
 use super::variable::Nature;
 use super::variable::Variable;
@@ -21,48 +22,51 @@ use crate::numeric::Points;
 
 /// Every coordinate's variable, and the groups with dependent parameters, each after those it depends on.
 pub(crate) struct Natures {
-    pub(crate) variables: Vec<Variable>,
+    /// None where what it is could not be told.
+    pub(crate) variables: Vec<Option<Variable>>,
     pub(crate) groups: Vec<GivenGroup>,
 }
 
-/// Settles all distributions; `programs` are those of the parameters, one for each variable as stated.
-pub(crate) fn settle(
-    reader: &mut Reader<'_>,
-    expanded: &[Expanded<'_>],
-    programs: &[Option<Program>],
-) -> Option<Natures> {
-    let before = reader.faults.len();
+/// Settles all distributions; `programs` are those of the parameters, one for each variable as stated. What is wrong
+/// with one leaves the others.
+pub(crate) fn settle(reader: &mut Reader<'_>, expanded: &[Expanded<'_>], programs: &[ParameterProgram]) -> Natures {
     let dim = expanded.last().map_or(0, |variable| variable.places.end);
     let mut variables = Vec::new();
     let mut groups = Vec::new();
     for (variable, program) in expanded.iter().zip(programs) {
-        let Some((nature, group)) = nature_of(reader, variable, program.as_ref(), dim) else { continue };
+        let settled = match program {
+            ParameterProgram::Numbers => nature_of(reader, variable, None, dim),
+            ParameterProgram::Formulas(program) => nature_of(reader, variable, Some(program), dim),
+            ParameterProgram::Faulty => {
+                check_form(reader, variable);
+                None
+            }
+        };
+        let settled = settled.filter(|_| !variable.unknown);
         for (name, member) in variable.names() {
-            let mut one = Variable::plain(&name, nature.clone());
-            one.label = variable.spec.label.clone();
-            one.unit = variable.spec.unit.clone();
-            one.note = variable.spec.note.clone();
-            one.near = variable.spec.near.as_ref().map(|(near, _)| *near);
-            one.spread = variable.spec.spread.as_ref().map(|(spread, _)| *spread);
-            one.member = member;
-            variables.push(one);
+            variables.push(settled.as_ref().map(|(nature, _)| {
+                let mut one = Variable::plain(&name, nature.clone());
+                one.label = variable.spec.label.clone();
+                one.unit = variable.spec.unit.clone();
+                one.note = variable.spec.note.clone();
+                one.near = variable.spec.near.as_ref().map(|(near, _)| *near);
+                one.spread = variable.spec.spread.as_ref().map(|(spread, _)| *spread);
+                one.member = member;
+                one
+            }));
         }
-        groups.extend(group);
+        groups.extend(settled.and_then(|(_, group)| group));
     }
-    if reader.faults.len() > before {
-        return None;
-    }
-    let groups = in_order(reader, expanded, groups)?;
-    Some(Natures { variables, groups })
+    let groups = in_order(reader, expanded, groups).unwrap_or_default();
+    Natures { variables, groups }
 }
 
-/// Checks the distributions whose parameters are numbers, where there is no program for the others.
-pub(crate) fn check_numbers(reader: &mut Reader<'_>, expanded: &[Expanded<'_>]) {
-    for variable in expanded {
-        let NatureSpec::Random { parameters, .. } = &variable.spec.nature else { continue };
-        if parameters.iter().all(|entry| matches!(entry.value, ParameterSpec::Number(_))) {
-            nature_of(reader, variable, None, 0);
-        }
+/// Whether the parameters make a distribution, where their formulas cannot be worked out.
+fn check_form(reader: &mut Reader<'_>, variable: &Expanded<'_>) {
+    let NatureSpec::Random { family, parameters, .. } = &variable.spec.nature else { return };
+    let keys: Vec<&str> = parameters.iter().map(|entry| entry.key.as_str()).collect();
+    if let Err(error) = Form::new(&family.value, &keys) {
+        refuse(reader, variable, &error, None);
     }
 }
 
@@ -77,6 +81,7 @@ fn nature_of(
         NatureSpec::Random { family, parameters, between, shift } => {
             (family, parameters, between.as_ref().map(|(ends, _)| *ends), shift.as_ref().map(|(shift, _)| *shift))
         }
+        NatureSpec::Faulty { .. } => return None,
     };
     if let Some(program) = program.filter(|program| (0..dim).any(|input| program.uses_input(input))) {
         let mut output = 0;

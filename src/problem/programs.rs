@@ -7,20 +7,21 @@ use super::columns::Cells;
 use super::columns::DataTable;
 use super::expand::Expanded;
 use super::faults::Fault;
-use super::names::Names;
+use super::statement::Stated;
 use super::statement::Statement;
 use super::table::Reader;
 use super::target::Aim;
 use super::text_value::Text;
 use super::variables_table::Each;
-use super::variables_table::NatureSpec;
 use super::variables_table::ParameterSpec;
+use crate::expression::FormulaError;
 use crate::expression::Program;
 use crate::expression::Rows;
 use crate::expression::RowsId;
 use crate::expression::Scope;
 use crate::expression::Wanted;
 use crate::expression::is_name;
+use crate::expression::is_reserved;
 
 /// The target of a problem whose target is a formula.
 ///
@@ -47,7 +48,7 @@ impl FormulaTarget {
     }
 }
 
-/// Everything that was compiled.
+/// Everything that was compiled but parameters.
 #[derive(Debug)]
 pub(crate) struct Programs {
     pub(crate) target: FormulaTarget,
@@ -55,8 +56,17 @@ pub(crate) struct Programs {
     pub(crate) estimates: Option<Program>,
     /// Names of what each estimate that is a column runs over: labels of members, numbers of rows.
     pub(crate) estimate_labels: Vec<Option<Vec<String>>>,
-    /// For each variable as stated: the program of its parameters that are formulas, in their order.
-    pub(crate) parameters: Vec<Option<Program>>,
+}
+
+/// The formulas among the parameters of a variable.
+#[derive(Debug)]
+pub(crate) enum ParameterProgram {
+    /// There are none.
+    Numbers,
+    /// In their order.
+    Formulas(Box<Program>),
+    /// Something is wrong with them, and was told.
+    Faulty,
 }
 
 /// One formula that is asked for.
@@ -66,16 +76,17 @@ struct Output<'a> {
     wanted: Wanted,
 }
 
-/// Compiles all formulas; what is wrong with them goes to `reader`.
+/// Compiles all formulas; what is wrong with them goes to `reader`. Parameters are there for every variable as stated,
+/// the rest only where all is well.
 pub(crate) fn compile(
     reader: &mut Reader<'_>,
-    names: &Names,
-    statement: &Statement,
+    stated: &Stated,
     expanded: &[Expanded<'_>],
     tables: &[DataTable],
-) -> Option<Programs> {
-    let (scope, kinds) = scope(statement, expanded, tables);
-    let target = target_outputs(statement);
+) -> (Option<Programs>, Vec<ParameterProgram>) {
+    let statement = &stated.statement;
+    let (scope, kinds) = scope(reader, statement, expanded, tables);
+    let target: Vec<Output<'_>> = stated.target.texts.iter().map(target_output).collect();
     let estimates: Vec<Output<'_>> = statement
         .estimates
         .iter()
@@ -87,40 +98,80 @@ pub(crate) fn compile(
         .collect();
     let parameters: Vec<Vec<Output<'_>>> = expanded.iter().map(parameter_outputs).collect();
     let all: Vec<&Output<'_>> = target.iter().chain(&estimates).chain(parameters.iter().flatten()).collect();
-    let whole = match scope.compile(&asked(all.iter().copied())) {
-        Ok(program) => program,
-        Err(errors) => {
-            let texts = texts_by_key(statement, &all);
-            for error in errors {
-                let text = texts.get(error.key.as_str());
-                let place = text.map_or(0..0, |text| text.place(&error.span));
-                let wrong = text.and_then(|text| text.value.get(error.span.clone())).unwrap_or("");
-                let fault = Fault::new(place, error.message);
-                reader.fault(match error.help {
-                    Some(help) => fault.help(help),
-                    None if is_name(wrong) && !names.has(wrong) => fault.help(UNKNOWN_NAME_HELP),
-                    None => fault,
-                });
-            }
-            return None;
+    let errors = scope.compile(&asked(all.iter().copied())).err().unwrap_or_default();
+    let texts = texts_by_key(statement, &all);
+    for error in &errors {
+        tell(reader, error, &texts);
+    }
+    tell_assumed(reader, &texts, tables);
+    unused(reader, statement, &scope, &all, &errors);
+    let program = |outputs: &[Output<'_>]| scope.compile_alone(&asked(outputs.iter())).ok();
+    let parameters = parameters.iter().map(|outputs| match program(outputs) {
+        _ if outputs.is_empty() => ParameterProgram::Numbers,
+        Some(program) => ParameterProgram::Formulas(Box::new(program)),
+        None => ParameterProgram::Faulty,
+    });
+    let parameters = parameters.collect();
+    let whole = || {
+        let target = program(&target)?;
+        let estimates = if estimates.is_empty() { None } else { Some(program(&estimates)?) };
+        let labels = |program: &Program, k: usize| {
+            let rows = program.output_rows(k)?;
+            kinds.iter().find(|(id, _)| *id == rows).map(|(_, names)| names.clone())
+        };
+        let of_estimate = |k: usize| estimates.as_ref().and_then(|program| labels(program, k));
+        let estimate_labels = (0..statement.estimates.len()).map(of_estimate).collect();
+        let requirements = statement.target.require.len();
+        let first_requirement = if statement.target.aim == Aim::Probability { 2 } else { 1 };
+        let target = FormulaTarget { program: target, first_requirement, requirements };
+        Some(Programs { target, estimates, estimate_labels })
+    };
+    let sound = errors.is_empty() && reader.faults.is_empty();
+    (if sound { whole() } else { None }, parameters)
+}
+
+/// A fault for what is wrong with a formula, at its place in the file.
+fn tell(reader: &mut Reader<'_>, error: &FormulaError, texts: &BTreeMap<String, &Text>) {
+    let text = texts.get(error.key.as_str());
+    let place = text.map_or(0..0, |text| text.place(&error.span));
+    let mut fault = Fault::new(place, error.message.clone());
+    if let Some(help) = &error.help {
+        fault = fault.help(help.clone());
+    }
+    if error.help.is_none() && error.message.starts_with("nothing is called") {
+        fault = fault.help(UNKNOWN_NAME_HELP);
+    }
+    reader.fault(fault);
+}
+
+/// Columns that formulas use by a name that they do not have: their headers are none.
+fn tell_assumed(reader: &mut Reader<'_>, texts: &BTreeMap<String, &Text>, tables: &[DataTable]) {
+    for table in tables {
+        let place = table.raw.spec.name.as_ref().map_or("[data]".into(), |table| format!("[data.{table}]"));
+        let news: Vec<String> = table
+            .assumed
+            .iter()
+            .map(|(name, header)| format!("{} = \"{header}\"", name.rsplit('.').next().unwrap_or(name)))
+            .collect();
+        for (name, header) in &table.assumed {
+            let is_word = |c: char| c.is_alphanumeric() || c == '_' || c == '.';
+            let found = texts.values().filter_map(|text| {
+                let places = text.value.match_indices(name.as_str());
+                let whole = |at: usize| {
+                    let (before, after) = (&text.value[..at], &text.value[at + name.len()..]);
+                    !before.ends_with(is_word) && !after.starts_with(is_word)
+                };
+                places.map(|(at, _)| at).find(|&at| whole(at)).map(|at| text.place(&(at..at + name.len())))
+            });
+            let Some(span) = found.min_by_key(|span| span.start) else { continue };
+            let fault = Fault::new(span, format!("nothing is called `{name}`"));
+            reader.fault(fault.help(format!(
+                "the header \"{header}\" of `{}` is no name; give it one under {place}: names = {{ {} }}",
+                table.raw.shown,
+                news.join(", ")
+            )));
         }
-    };
-    unused(reader, statement, &whole);
-    let program = |outputs: &[Output<'_>]| scope.compile(&asked(outputs.iter())).ok();
-    let estimates = if estimates.is_empty() { None } else { Some(program(&estimates)?) };
-    let labels = |program: &Program, k: usize| {
-        program.output_rows(k).and_then(|rows| kinds.iter().find(|(id, _)| *id == rows)).map(|(_, names)| names.clone())
-    };
-    let estimate_labels =
-        (0..statement.estimates.len()).map(|k| estimates.as_ref().and_then(|program| labels(program, k))).collect();
-    let requirements = statement.target.require.len();
-    let first_requirement = if statement.target.aim == Aim::Probability { 2 } else { 1 };
-    Some(Programs {
-        target: FormulaTarget { program: program(&target)?, first_requirement, requirements },
-        estimates,
-        estimate_labels,
-        parameters: parameters.iter().map(|outputs| if outputs.is_empty() { None } else { program(outputs) }).collect(),
-    })
+    }
 }
 
 const UNKNOWN_NAME_HELP: &str =
@@ -130,18 +181,12 @@ fn asked<'a>(outputs: impl Iterator<Item = &'a Output<'a>>) -> Vec<(&'a str, &'a
     outputs.map(|output| (output.key.as_str(), output.text.value.as_str(), output.wanted)).collect()
 }
 
-fn target_outputs(statement: &Statement) -> Vec<Output<'_>> {
-    let target = &statement.target;
-    let wanted = if target.aim == Aim::Probability { Wanted::Margin } else { Wanted::Number };
-    let mut outputs = vec![Output { key: format!("[target] {}", target.key.word()), text: &target.formula, wanted }];
-    for (k, text) in target.require.iter().enumerate() {
-        outputs.push(Output { key: format!("[target] require {}", k + 1), text, wanted: Wanted::Margin });
-    }
-    outputs
+fn target_output((key, text, wanted): &(String, Text, Wanted)) -> Output<'_> {
+    Output { key: key.clone(), text, wanted: *wanted }
 }
 
 fn parameter_outputs<'a>(expanded: &Expanded<'a>) -> Vec<Output<'a>> {
-    let NatureSpec::Random { parameters, .. } = &expanded.spec.nature else { return Vec::new() };
+    let parameters = expanded.spec.nature.parameters();
     parameters
         .iter()
         .filter_map(|parameter| match &parameter.value {
@@ -160,8 +205,15 @@ fn texts_by_key<'a>(statement: &'a Statement, outputs: &[&Output<'a>]) -> BTreeM
     formulas.chain(outputs.iter().map(|output| (output.key.clone(), output.text))).collect()
 }
 
-/// Formulas and constants that nothing uses are faults: they are slips, or leftovers that mislead a reader.
-fn unused(reader: &mut Reader<'_>, statement: &Statement, whole: &Program) {
+/// Formulas and constants that nothing uses are faults: they are slips, or leftovers that mislead a reader. One that a
+/// misspelt name means is used.
+fn unused(
+    reader: &mut Reader<'_>,
+    statement: &Statement,
+    scope: &Scope,
+    outputs: &[&Output<'_>],
+    errors: &[FormulaError],
+) {
     let place = |name: &str| -> Option<(&'static str, Range<usize>)> {
         let formula = statement.formulas.iter().find(|formula| formula.name == name);
         let constant = statement.constants.iter().find(|(constant, _, _)| constant == name);
@@ -169,13 +221,26 @@ fn unused(reader: &mut Reader<'_>, statement: &Statement, whole: &Program) {
             .map(|formula| ("formula", formula.name_span.clone()))
             .or_else(|| constant.map(|(_, _, span)| ("constant", span.clone())))
     };
-    for name in whole.unused_formulas().iter().chain(whole.unused_constants()) {
-        if let Some((kind, span)) = place(name) {
-            reader.fault(
-                Fault::new(span, format!("nothing uses the {kind} `{name}`"))
-                    .label("not used")
-                    .help("use it, take it out, or put a `#` before the line"),
-            );
+    let meant: Vec<&str> = errors.iter().filter_map(|error| error.meant.as_deref()).collect();
+    let mut texts: Vec<&str> = outputs.iter().map(|output| output.text.value.as_str()).collect();
+    texts.extend(reader.mentions.iter().map(String::as_str).chain(meant));
+    // What is meant by an unknown name that is like no other may be any of them.
+    let astray: Vec<&FormulaError> =
+        errors.iter().filter(|error| error.meant.is_none() && error.message.starts_with("nothing is called")).collect();
+    let usable = |name: &String| is_name(name) && !is_reserved(name) && !reader.faulty.contains(name);
+    let left: Vec<String> = scope.unused(&texts).into_iter().filter(usable).collect();
+    for name in left {
+        if let Some((kind, span)) = place(&name) {
+            let fault = Fault::new(span, format!("nothing uses the {kind} `{name}`")).label("not used");
+            reader.fault(match astray.as_slice() {
+                [] => fault.help("use it, take it out, or put a `#` before the line"),
+                [one, ..] => {
+                    let unknown = one.message.trim_start_matches("nothing is called ");
+                    fault.help(format!(
+                        "use it, perhaps for {unknown}, which nothing is called; or put a `#` before the line"
+                    ))
+                }
+            });
         }
     }
 }
@@ -183,7 +248,12 @@ fn unused(reader: &mut Reader<'_>, statement: &Statement, whole: &Program) {
 /// Kinds of rows, each with the names of its rows: labels, or numbers from 1.
 type Kinds = Vec<(RowsId, Vec<String>)>;
 
-fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable]) -> (Scope, Kinds) {
+fn scope(
+    reader: &Reader<'_>,
+    statement: &Statement,
+    expanded: &[Expanded<'_>],
+    tables: &[DataTable],
+) -> (Scope, Kinds) {
     let mut scope = Scope::new();
     let mut kinds: Kinds = Vec::new();
     for (name, value, _) in &statement.constants {
@@ -205,6 +275,9 @@ fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable])
         let name = &variable.spec.name;
         let Some(labels) = &variable.labels else {
             scope.variable(name);
+            if variable.unknown {
+                scope.faulty(name);
+            }
             continue;
         };
         let rows = match &variable.spec.each {
@@ -228,6 +301,8 @@ fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable])
     for formula in &statement.formulas {
         scope.formula(&formula.name, &formula.formula.value);
     }
+    reader.faulty.iter().for_each(|name| scope.faulty(name));
+    reader.open.iter().for_each(|prefix| scope.open(prefix));
     (scope, kinds)
 }
 

@@ -3,6 +3,8 @@
 use std::fs;
 use std::path::Path;
 
+use toml::de::DeTable;
+
 use super::Estimates;
 use super::Problem;
 use super::ProblemErrors;
@@ -18,17 +20,24 @@ use super::faults::Fault;
 use super::faults::Faults;
 use super::faults::Source;
 use super::names::Names;
+use super::names::Piece;
+use super::names::pieces;
 use super::natures;
+use super::natures::Natures;
 use super::programs;
 use super::programs::Programs;
 use super::start;
 use super::start::Misplaced;
 use super::statement;
+use super::statement::Stated;
 use super::statement::Statement;
+use super::syntax;
 use super::table::Reader;
 use super::target::Aim;
 use super::target::TargetKey;
+use super::tuning::CoordinateChoice;
 use super::tuning::TuningKeys;
+use super::variable::Variable;
 use super::variables_table::Each;
 use super::variables_table::NatureSpec;
 use super::variables_table::ParameterSpec;
@@ -89,13 +98,23 @@ impl Problem {
 
     fn parse_with(text: &str, file_name: &str, folder: &Path, change: KeysChange<'_>) -> Result<Self, ProblemErrors> {
         let text = text.strip_prefix('\u{feff}').unwrap_or(text);
-        let mut reader = Reader::new(text);
-        let problem = assemble(&mut reader, folder, change);
+        let mended = syntax::mend(text);
+        let mut reader = Reader::new(&mended.text);
+        for line in &mended.left_out {
+            reader.mentions.push(line.clone());
+            reader.faulty.extend(line.split_once('=').map(|(key, _)| key.trim().to_owned()));
+        }
+        let problem = if mended.readable { assemble(&mut reader, folder, change) } else { None };
         match problem {
-            Some(problem) if reader.faults.is_empty() => Ok(problem),
+            Some(problem) if reader.faults.is_empty() && mended.faults.is_empty() => Ok(problem),
             _ => {
+                let mut faults = Faults::default();
+                mended.faults.iter().cloned().for_each(|fault| faults.push(fault));
+                let placed = reader.faults.placed(|span| mended.place(span));
+                let told = |fault: &Fault| fault.is_elsewhere() || !mended.is_muted(text, fault.start());
+                placed.into_iter().filter(told).for_each(|fault| faults.push(fault));
                 let source = Source { file: file_name.to_owned(), text: text.to_owned(), first_line: 1 };
-                Err(reader.faults.into_errors(source))
+                Err(faults.into_errors(source))
             }
         }
     }
@@ -116,33 +135,32 @@ impl Problem {
 /// What is made of the keys that a file has.
 type KeysChange<'a> = &'a dyn Fn(&TuningKeys) -> TuningKeys;
 
-/// None only where `reader` holds a fault that says why.
+/// None only where `reader` holds a fault that says why. Every step goes on with what the steps before could make out, so
+/// that one look at a file shows all that is wrong with it and does not follow from something else.
 fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> Option<Problem> {
+    // What is wrong with it as TOML was told already.
+    let (document, _) = DeTable::parse_recoverable(reader.source);
     let mut names = Names::default();
-    let statement = statement::read(reader, &mut names);
-    let mut statement = statement?;
-    statement.tuning = change(&statement.tuning);
-    check_aim(reader, &statement);
-    let before = reader.faults.len();
-    let tables = load(reader, &mut names, &statement, folder)?;
-    if !statement.names_known || reader.faults.len() > before {
-        return None; // Names that are wrong or missing would be told again, less clearly, by the formulas.
+    let mut stated = statement::read(reader, &mut names, &document);
+    stated.statement.tuning = change(&stated.statement.tuning);
+    let statement = &stated.statement;
+    check_aim(reader, &stated);
+    let tables = load(reader, &mut names, &stated, folder);
+    let expanded = expand::expand(reader, statement, &tables);
+    let (programs, parameters) = programs::compile(reader, &stated, &expanded, &tables);
+    let natures = natures::settle(reader, &expanded, &parameters);
+    let correlations = correlation::settle(reader, &statement.correlations, &expanded, &natures.variables);
+    let choice = statement.tuning.coordinates;
+    if let Some(aim) = stated.target.aim {
+        check_places(reader, &expanded, &natures, aim, choice);
     }
-    let expanded = expand::expand(reader, &statement, &tables)?;
-    let Some(programs) = programs::compile(reader, &names, &statement, &expanded, &tables) else {
-        natures::check_numbers(reader, &expanded);
-        return None;
-    };
-    let Programs { target, estimates, estimate_labels, parameters } = programs;
-    let settled = natures::settle(reader, &expanded, &parameters)?;
-    let mut variables = settled.variables;
-    let correlations = correlation::settle(reader, &statement.correlations, &expanded, &variables)?;
     if !reader.faults.is_empty() {
         return None;
     }
+    let Programs { target, estimates, estimate_labels } = programs?;
+    let mut variables: Vec<Variable> = natures.variables.into_iter().collect::<Option<_>>()?;
     let aim = statement.target.aim;
-    let choice = statement.tuning.coordinates;
-    let placed = start::place(&mut variables, &settled.groups, &correlations, aim, choice);
+    let placed = start::place(&mut variables, &natures.groups, &correlations, aim, choice);
     let (space, start) = match placed {
         Ok(placed) => placed,
         Err(errors) => {
@@ -151,8 +169,8 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
         }
     };
     let centre = space.to_natural(&Points::from_rows(variables.len(), &start.near));
-    natures::try_at_start(reader, &expanded, &settled.groups, &centre);
-    let estimate_names = estimate_names(&statement, &estimate_labels);
+    natures::try_at_start(reader, &expanded, &natures.groups, &centre);
+    let estimate_names = estimate_names(statement, &estimate_labels);
     Some(Problem {
         title: statement.title.clone(),
         correlations,
@@ -166,16 +184,56 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
         tuning: statement.tuning.clone(),
         data: tables,
         variables,
-        statement: Some(statement),
+        statement: Some(statement.clone()),
+    })
+}
+
+/// Whether each variable that is known can have its coordinate and its start.
+fn check_places(
+    reader: &mut Reader<'_>,
+    expanded: &[Expanded<'_>],
+    natures: &Natures,
+    aim: Aim,
+    choice: Option<CoordinateChoice>,
+) {
+    if choice == Some(CoordinateChoice::Natural) && aim != Aim::Density {
+        misplaced(reader, &[Misplaced::NaturalElsewhere(aim.word())], expanded);
+        return;
+    }
+    for variable in expanded.iter().filter(|variable| variable.spec.sound) {
+        if !matches!(variable.spec.nature, NatureSpec::Range { .. }) || aim == Aim::Density {
+            let one = natures.variables[variable.places.start].as_ref();
+            let errors = match one {
+                Some(one) => start::misplaced(one, aim, choice),
+                None if depends(variable, expanded)
+                    && (variable.spec.near.is_some() || variable.spec.spread.is_some()) =>
+                {
+                    vec![Misplaced::StartOfDependent { name: variable.names()[0].0.clone() }]
+                }
+                None => Vec::new(),
+            };
+            misplaced(reader, &errors, expanded);
+        }
+    }
+}
+
+/// Whether a formula among the parameters names another variable.
+fn depends(variable: &Expanded<'_>, expanded: &[Expanded<'_>]) -> bool {
+    variable.spec.nature.parameters().iter().any(|parameter| match &parameter.value {
+        ParameterSpec::Formula(text) => pieces(&text.value)
+            .iter()
+            .any(|piece| matches!(piece, Piece::Name(name) if expanded.iter().any(|other| other.spec.name == *name))),
+        ParameterSpec::Number(_) => false,
     })
 }
 
 /// What aim and variables ask of each other.
-fn check_aim(reader: &mut Reader<'_>, statement: &Statement) {
-    let target = &statement.target;
-    for spec in &statement.variables {
+fn check_aim(reader: &mut Reader<'_>, stated: &Stated) {
+    let Some(target) = &stated.target.spec else { return };
+    for spec in &stated.statement.variables {
+        let range = matches!(spec.nature, NatureSpec::Range { .. });
         let random = matches!(spec.nature, NatureSpec::Random { .. });
-        if !random && target.aim != Aim::Density {
+        if range && target.aim != Aim::Density {
             let error = Misplaced::NoDistribution { name: spec.name.clone(), aim: target.aim.word() };
             reader.fault(
                 Fault::new(spec.name_span.clone(), error.to_string())
@@ -197,35 +255,30 @@ fn check_aim(reader: &mut Reader<'_>, statement: &Statement) {
 }
 
 /// Reads all data files; formulas are looked through first, to know which columns are used.
-fn load(reader: &mut Reader<'_>, names: &mut Names, statement: &Statement, folder: &Path) -> Option<Vec<DataTable>> {
+fn load(reader: &mut Reader<'_>, names: &mut Names, stated: &Stated, folder: &Path) -> Vec<DataTable> {
+    let statement = &stated.statement;
     let mut uses = Uses::default();
     for formula in statement.formulas.iter().chain(&statement.estimates) {
         uses.note(&formula.formula.value);
     }
-    uses.note(&statement.target.formula.value);
-    statement.target.require.iter().for_each(|text| uses.note(&text.value));
+    stated.target.texts.iter().for_each(|(_, text, _)| uses.note(&text.value));
     for spec in &statement.variables {
         if let Some(Each::Column(column)) = &spec.each {
             uses.note_labels(&column.value);
         }
-        if let NatureSpec::Random { parameters, .. } = &spec.nature {
-            for parameter in parameters {
-                if let ParameterSpec::Formula(text) = &parameter.value {
-                    uses.note(&text.value);
-                }
+        for parameter in spec.nature.parameters() {
+            if let ParameterSpec::Formula(text) = &parameter.value {
+                uses.note(&text.value);
             }
         }
     }
     let mut tables = Vec::new();
-    let mut whole = true;
     for spec in &statement.data {
-        let table = data::load(reader, spec, folder).and_then(|raw| columns::settle(reader, names, raw, &uses));
-        match table {
-            Some(table) => tables.push(table),
-            None => whole = false,
+        if let Some(raw) = data::load(reader, spec, folder) {
+            tables.push(columns::settle(reader, names, raw, &uses));
         }
     }
-    whole.then_some(tables)
+    tables
 }
 
 fn misplaced(reader: &mut Reader<'_>, errors: &[Misplaced], expanded: &[Expanded<'_>]) {

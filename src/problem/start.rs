@@ -2,6 +2,7 @@
 
 use thiserror::Error;
 
+use super::Problem;
 use super::correlation::Correlation;
 use super::given::GivenGroup;
 use super::space::Axis;
@@ -13,6 +14,7 @@ use super::variable::Coordinate;
 use super::variable::Nature;
 use super::variable::Variable;
 use crate::distribution::Distribution;
+use crate::numeric::Points;
 use crate::numeric::linear;
 
 /// The 97.5 % point of the standard normal distribution: a normal start has its central 95 % within this many scales.
@@ -27,6 +29,51 @@ pub struct Start {
     pub near: Vec<f64>,
     /// Scales, above zero.
     pub spread: Vec<f64>,
+}
+
+impl Problem {
+    /// Where the search starts with variable `j`, in its own unit: the centre, and the ends of the central 95 %.
+    ///
+    /// They are those of the variable alone, whatever it is correlated with. Of a variable whose parameters depend on
+    /// others they are given those at their centres.
+    ///
+    /// ```
+    /// use evenpoise::problem::Problem;
+    /// let text = "title = \"Two\"\n[variables]\na = { distribution = \"normal\", mean = 0.0, sd = 1.0 }\n\
+    ///             b = { distribution = \"normal\", mean = 0.0, sd = 1.0 }\n[[correlation]]\namong = [\"a\", \"b\"]\nscore = 0.9\n\
+    ///             [target]\naim = \"probability\"\nevent = \"a + b > 6\"\n";
+    /// let problem = Problem::parse(text, "two.toml", std::path::Path::new(".")).unwrap();
+    /// let [centre, low, high] = problem.start_of(1);
+    /// assert!(centre == 0.0 && (low + 1.96).abs() < 1e-3 && (high - 1.96).abs() < 1e-3);
+    /// ```
+    ///
+    /// # Panics
+    /// `j` is not below [`Problem::dim`].
+    #[must_use]
+    pub fn start_of(&self, j: usize) -> [f64; 3] {
+        let Start { near, spread } = &self.start;
+        let bundle = self.space.bundles.iter().find(|bundle| bundle.mixed && bundle.members.contains(&j));
+        if let (Some(bundle), Axis::Score(distribution)) = (bundle, &self.space.axes[j]) {
+            // The score is the sum of independent ones, `u = L e`.
+            let d = bundle.members.len();
+            let row = bundle.members.iter().position(|&member| member == j).unwrap_or(0);
+            let factors = || bundle.members.iter().enumerate().map(|(k, &member)| (bundle.lower[row * d + k], member));
+            let centre: f64 = factors().map(|(factor, member)| factor * near[member]).sum();
+            let variance: f64 =
+                factors().map(|(factor, member)| (factor * spread[member]) * (factor * spread[member])).sum();
+            let half = CENTRAL_95 * variance.sqrt();
+            return [centre, centre - half, centre + half].map(|u| distribution.from_score(u));
+        }
+        let mut corners = Points::from_rows(near.len(), near);
+        for side in [-CENTRAL_95, CENTRAL_95] {
+            let mut corner = near.clone();
+            corner[j] += side * spread[j];
+            corners.push(&corner);
+        }
+        let natural = self.space.to_natural(&corners);
+        let ends = [natural.get(1, j), natural.get(2, j)];
+        [natural.get(0, j), ends[0].min(ends[1]), ends[0].max(ends[1])]
+    }
 }
 
 /// Why a variable cannot be placed.
@@ -114,6 +161,14 @@ pub(crate) fn place(
         }
     }
     Ok((Space { axes, bundles, groups: groups.to_vec() }, Start { near, spread }))
+}
+
+/// What stands against placing one variable.
+pub(crate) fn misplaced(variable: &Variable, aim: Aim, choice: Option<CoordinateChoice>) -> Vec<Misplaced> {
+    match coordinate(variable, aim, choice) {
+        Ok(coordinate) => start_of(&Variable { coordinate, ..variable.clone() }).err().into_iter().collect(),
+        Err(error) => vec![error],
+    }
 }
 
 fn coordinate(variable: &Variable, aim: Aim, choice: Option<CoordinateChoice>) -> Result<Coordinate, Misplaced> {

@@ -2,6 +2,7 @@
 
 use std::ops::Range;
 
+use toml::Spanned;
 use toml::de::DeTable;
 
 use super::correlation_table;
@@ -13,13 +14,16 @@ use super::names::Names;
 use super::table::Entry;
 use super::table::Reader;
 use super::table::Table;
+use super::table::home_of;
 use super::target;
 use super::target::TargetSpec;
+use super::target::TargetTable;
 use super::text_value::Text;
 use super::tuning;
 use super::tuning::TuningKeys;
 use super::variables_table;
 use super::variables_table::VariableSpec;
+use crate::expression::nearest;
 
 /// A name with a formula.
 #[derive(Debug, Clone)]
@@ -41,32 +45,28 @@ pub(crate) struct Statement {
     pub(crate) estimates: Vec<NamedFormula>,
     pub(crate) correlations: Vec<CorrelationSpec>,
     pub(crate) tuning: TuningKeys,
-    /// Whether all that bears a name in formulas was read: only then do formulas tell more than is known already.
-    pub(crate) names_known: bool,
+}
+
+/// A file as far as it could be read.
+#[derive(Debug)]
+pub(crate) struct Stated {
+    /// What it states; its target is meaningless where `target` has none.
+    pub(crate) statement: Statement,
+    /// The target as far as it could be read.
+    pub(crate) target: TargetTable,
 }
 
 const TABLES: [&str; 9] =
     ["title", "constants", "variables", "data", "formulas", "target", "estimates", "tuning", "correlation"];
 const MODEL_TABLES: [&str; 3] = ["program", "library", "exchange"];
 
-/// Reads the document. Faults go to `reader`; none is returned where there is no target to speak of.
-pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Statement> {
-    let (document, errors) = DeTable::parse_recoverable(reader.source);
-    if !errors.is_empty() {
-        for error in errors {
-            let end = reader.source.len();
-            let span = error.span().unwrap_or(end..end);
-            reader.fault(not_toml(error.message().trim(), span));
-        }
-        return None;
-    }
+/// Reads the document. Faults go to `reader`, and reading goes on after each: a misspelt table is taken for the one that
+/// is meant.
+pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanned<DeTable<'_>>) -> Stated {
     let file = Table::new("a problem file", document.get_ref(), document.span());
-    let before = reader.faults.len();
     check_top(reader, &file);
-    let tables_known = reader.faults.len() == before && file.entry("variables").is_some();
-    let title = read_title(reader, &file);
     let mut statement = Statement {
-        title: title.unwrap_or_default(),
+        title: read_title(reader, &file).unwrap_or_default(),
         constants: Vec::new(),
         variables: Vec::new(),
         data: Vec::new(),
@@ -75,64 +75,111 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
         estimates: Vec::new(),
         correlations: Vec::new(),
         tuning: TuningKeys::default(),
-        names_known: tables_known,
     };
-    let mut target = None;
+    let mut target = TargetTable::default();
     // In the order of the text, so that the first of two equal names is the one that stands first.
     for entry in &file.entries {
-        let name = format!("[{}]", entry.key);
-        match entry.key {
-            "constants" | "variables" | "data" | "formulas" | "target" | "estimates" | "tuning" => {
-                let before = reader.faults.len();
-                let table = reader.table(entry, &name, &format!("a table: {name}, then its keys below"));
-                match (entry.key, table) {
-                    (_, None) => {}
-                    ("constants", Some(table)) => statement.constants = read_constants(reader, &table),
-                    ("variables", Some(table)) => statement.variables = variables_table::read(reader, &table),
-                    ("data", Some(table)) => statement.data = data::read_specs(reader, &table),
-                    ("formulas", Some(table)) => statement.formulas = read_formulas(reader, &table),
-                    ("target", Some(table)) => target = target::read(reader, &table),
-                    ("estimates", Some(table)) => statement.estimates = read_formulas(reader, &table),
-                    (_, Some(table)) => statement.tuning = tuning::read(reader, &table),
+        let Some(meant) = meant_table(&file, entry) else { continue };
+        if meant == "correlation" {
+            statement.correlations = correlation_table::read(reader, entry);
+            continue;
+        }
+        let name = format!("[{meant}]");
+        let Some(table) = reader.table(entry, &name, &format!("a table: {name}, then its keys below")) else {
+            reader.open.push(String::new());
+            continue;
+        };
+        match meant {
+            "constants" => statement.constants = read_constants(reader, &table),
+            "variables" => statement.variables = variables_table::read(reader, &table),
+            "data" => statement.data = data::read_specs(reader, &table),
+            "formulas" => {
+                let (inside, table) = strayed(&file, table);
+                statement.formulas = read_formulas(reader, &table);
+                if let Some(inside) = inside {
+                    no_header(reader, &inside);
+                    target = target::read(reader, &inside);
                 }
-                let named = ["constants", "variables", "data", "formulas"].contains(&entry.key);
-                statement.names_known &= !named || reader.faults.len() == before;
             }
-            "correlation" => statement.correlations = correlation_table::read(reader, entry),
-            _ => {}
+            "target" => target = target::read(reader, &table),
+            "estimates" => {
+                let (inside, table) = strayed(&file, table);
+                statement.estimates = read_formulas(reader, &table);
+                if let Some(inside) = inside {
+                    no_header(reader, &inside);
+                    target = target::read(reader, &inside);
+                }
+            }
+            _ => statement.tuning = tuning::read(reader, &table),
         }
     }
-    let before = reader.faults.len();
     give_names(reader, names, &statement);
-    statement.names_known &= reader.faults.len() == before;
-    if statement.variables.is_empty() && reader.faults.is_empty() {
+    let has = |wanted: &str| file.entries.iter().any(|entry| meant_table(&file, entry) == Some(wanted));
+    if statement.variables.is_empty() && (!has("variables") || file.entry("variables").is_some_and(is_empty_table)) {
         let span = file.entry("variables").map_or(0..0, |entry| entry.key_span.clone());
         reader.fault(
             Fault::new(span, "the problem has no variables")
                 .help("write [variables], and below it one variable a line: depth = { distribution = \"normal\", mean = 2.0, sd = 0.5 }"),
         );
     }
-    if file.entry("target").is_none() {
+    if !has("target") && target.texts.is_empty() && target.aim.is_none() {
         let end = reader.source.trim_end().len();
         reader.fault(
             Fault::new(end..end, "the problem has no [target]")
                 .help("write [target], and below it aim = \"density\" with log_factor = \"...\", aim = \"expectation\" with integrand = \"...\", or aim = \"probability\" with event = \"...\""),
         );
     }
-    statement.target = target?;
-    Some(statement)
+    if let Some(spec) = &target.spec {
+        statement.target = spec.clone();
+    }
+    Stated { statement, target }
 }
 
-fn not_toml(message: &str, span: Range<usize>) -> Fault {
-    if message.contains("duplicate key") {
-        return Fault::new(span, "this key stands twice in its table").label("again").help("keep one of the two");
+/// The keys of a target that stand in another table, since the line `[target]` is not there, and the table without them.
+fn strayed<'a>(file: &Table<'a>, mut table: Table<'a>) -> (Option<Table<'a>>, Table<'a>) {
+    let is_there = file.entries.iter().any(|entry| meant_table(file, entry) == Some("target"));
+    if is_there || table.entry("aim").is_none() {
+        return (None, table);
     }
-    let help = if message.contains("string") {
-        "close the text with the quotes it began with; a backslash in \"...\" is written \\\\, in '...' as it is"
-    } else {
-        "a key and its value stand on one line: key = value; texts and formulas in quotes, tables under [name]"
+    let (inside, left) = table.entries.into_iter().partition(|entry| target::KEYS.contains(&entry.key));
+    table.entries = left;
+    let entries: Vec<Entry<'a>> = inside;
+    let span = entries[0].key_span.clone();
+    (Some(Table { name: "[target]".into(), span, entries }), table)
+}
+
+fn no_header(reader: &mut Reader<'_>, inside: &Table<'_>) {
+    reader.fault(
+        Fault::new(inside.span.clone(), "the line [target] is missing above this one").help("write [target] before it"),
+    );
+}
+
+fn is_empty_table(entry: &Entry<'_>) -> bool {
+    entry.value.as_table().is_some_and(DeTable::is_empty)
+}
+
+/// The table that an entry of the file is, or is meant to be; none for texts and for what is unknown.
+fn meant_table(file: &Table<'_>, entry: &Entry<'_>) -> Option<&'static str> {
+    let tables = || TABLES[1..].iter().copied();
+    if let Some(exact) = tables().find(|known| *known == entry.key) {
+        return Some(exact);
+    }
+    let meant = near_table(entry.key)?;
+    (meant != "title" && file.entry(meant).is_none()).then_some(meant)
+}
+
+/// The table whose name is nearest, or that goes by this name elsewhere.
+fn near_table(key: &str) -> Option<&'static str> {
+    let other = match key {
+        "parameters" | "priors" | "inputs" | "unknowns" => "variables",
+        "constant" | "fixed" | "settings" => "constants",
+        "model" | "formulae" | "expressions" | "definitions" => "formulas",
+        "outputs" | "quantities" | "results" => "estimates",
+        "correlations" => "correlation",
+        "observations" | "datafile" => "data",
+        _ => return nearest(key, TABLES),
     };
-    Fault::new(span, format!("this is not TOML: {message}")).help(help)
+    Some(other)
 }
 
 fn check_top(reader: &mut Reader<'_>, file: &Table<'_>) {
@@ -145,15 +192,31 @@ fn check_top(reader: &mut Reader<'_>, file: &Table<'_>) {
                 )
                 .help("state the target as a formula"),
             );
-        } else {
-            reader.unknown_key(entry, "a problem file", &TABLES);
+            reader.open.push(String::new());
+            reader.mention(entry.value);
+            continue;
+        }
+        match near_table(entry.key) {
+            Some(near) => reader.fault(
+                Fault::new(entry.key_span.clone(), format!("`{}` is no key of {}", entry.key, file.name))
+                    .label("unknown key")
+                    .help(format!("did you mean `{near}`?")),
+            ),
+            None => reader.unknown_key(entry, &file.name, &TABLES),
+        }
+        if meant_table(file, entry).is_none() {
+            // What it names may be used elsewhere.
+            reader.mention(entry.value);
+            if let Some(table) = entry.value.as_table() {
+                reader.faulty.extend(table.iter().map(|(key, _)| key.get_ref().to_string()));
+            }
         }
     }
 }
 
 fn read_title(reader: &mut Reader<'_>, file: &Table<'_>) -> Option<String> {
     let example = "title = \"Dye tracer in the feeder canal\"";
-    let Some(entry) = file.entry("title") else {
+    let Some(entry) = file.entry_or_slip("title", &TABLES) else {
         reader.fault(Fault::new(0..0, "the problem has no title").help(format!("begin the file with {example}")));
         return None;
     };
@@ -164,20 +227,25 @@ fn read_title(reader: &mut Reader<'_>, file: &Table<'_>) -> Option<String> {
     Some(title.value)
 }
 
+/// Constants; one that is no number keeps its name and stands for 1, so that formulas can be looked at.
 fn read_constants(reader: &mut Reader<'_>, table: &Table<'_>) -> Vec<(String, f64, Range<usize>)> {
     let mut constants = Vec::new();
     for entry in &table.entries {
-        if entry.value.is_str() {
-            reader.fault(
-                Fault::new(entry.span.clone(), format!("the constant `{}` wants a number", entry.key))
-                    .label("this is a text")
-                    .help(
-                        "a number stands without quotes; what is worked out from other values belongs under [formulas]",
-                    ),
-            );
-        } else if let Some(number) = reader.number(entry, &format!("{} = 2.5", entry.key)) {
-            constants.push((entry.key.to_owned(), number, entry.key_span.clone()));
-        }
+        let number = if let Some(text) = entry.value.as_str() {
+            reader.mention(entry.value);
+            let fault = Fault::new(entry.span.clone(), format!("the constant `{}` wants a number", entry.key))
+                .label("this is a text");
+            reader.fault(match text.trim().parse::<f64>() {
+                Ok(number) => fault.help(format!("a number stands without quotes: {} = {number:?}", entry.key)),
+                Err(_) => fault.help(
+                    "a number stands without quotes; what is worked out from other values belongs under [formulas]",
+                ),
+            });
+            None
+        } else {
+            reader.number(entry, &format!("{} = 2.5", entry.key))
+        };
+        constants.push((entry.key.to_owned(), number.unwrap_or(1.0), entry.key_span.clone()));
     }
     constants
 }
@@ -186,19 +254,29 @@ fn read_formulas(reader: &mut Reader<'_>, table: &Table<'_>) -> Vec<NamedFormula
     let mut formulas = Vec::new();
     for entry in &table.entries {
         let example = format!("{} = \"a formula in quotes\"", entry.key);
-        if let Some(formula) = read_formula(reader, entry, &table.name, &example) {
-            formulas.push(NamedFormula { name: entry.key.to_owned(), name_span: entry.key_span.clone(), formula });
+        match read_formula(reader, entry, &table.name, &example) {
+            Some(formula) => {
+                formulas.push(NamedFormula { name: entry.key.to_owned(), name_span: entry.key_span.clone(), formula });
+            }
+            None => {
+                reader.mention(entry.value);
+                reader.faulty.push(entry.key.to_owned());
+            }
         }
     }
     formulas
 }
 
 fn read_formula(reader: &mut Reader<'_>, entry: &Entry<'_>, place: &str, example: &str) -> Option<Text> {
-    if place == "[formulas]" && super::table::plain_number(entry.value).is_some() {
-        reader.fault(
-            Fault::new(entry.span.clone(), format!("the formula `{}` is a plain number", entry.key))
-                .help("move it to [constants]"),
-        );
+    if place == "[formulas]"
+        && let Some(number) = super::table::plain_number(entry.value)
+    {
+        reader.fault(Fault::new(entry.span.clone(), format!("the formula `{}` is a plain number", entry.key)).help(
+            match home_of(entry.key) {
+                Some(home) => format!("`{}` belongs {home}", entry.key),
+                None => format!("move it to [constants]: {} = {number:?}", entry.key),
+            },
+        ));
         return None;
     }
     reader.text(entry, example)

@@ -49,6 +49,42 @@ impl<'a> Table<'a> {
     pub(crate) fn entry(&self, key: &str) -> Option<&Entry<'a>> {
         self.entries.iter().find(|entry| entry.key == key)
     }
+
+    /// The entry with this key or, failing that, one with an unknown key that is nearest to it among the `known` ones.
+    pub(crate) fn entry_or_slip(&self, key: &str, known: &[&str]) -> Option<&Entry<'a>> {
+        let slip =
+            |entry: &&Entry<'a>| !known.contains(&entry.key) && nearest(entry.key, known.iter().copied()) == Some(key);
+        self.entry(key).or_else(|| self.entries.iter().find(slip))
+    }
+}
+
+/// Keys with the place where they belong, for those that stand elsewhere.
+const HOMES: [(&str, &str); 20] = [
+    ("title", "at the head of the file, before the first table"),
+    ("aim", "under [target]"),
+    ("log_factor", "under [target]"),
+    ("log_density", "under [target]"),
+    ("integrand", "under [target]"),
+    ("event", "under [target]"),
+    ("require", "under [target]"),
+    ("failed", "under [target]"),
+    ("file", "under [data]"),
+    ("missing", "under [data]"),
+    ("budget", "under [tuning]"),
+    ("rounds", "under [tuning]"),
+    ("round_draws", "under [tuning]"),
+    ("seed", "under [tuning]"),
+    ("family", "under [tuning]"),
+    ("components", "under [tuning]"),
+    ("coordinates", "under [tuning]"),
+    ("threads", "under [tuning]"),
+    ("among", "under [[correlation]]"),
+    ("linear", "under [[correlation]]"),
+];
+
+/// Where a key belongs, if anywhere.
+pub(crate) fn home_of(key: &str) -> Option<&'static str> {
+    HOMES.iter().find(|(known, _)| *known == key).map(|(_, home)| *home)
 }
 
 /// Reads typed values out of a document and keeps what is wrong.
@@ -56,11 +92,33 @@ impl<'a> Table<'a> {
 pub(crate) struct Reader<'s> {
     pub(crate) source: &'s str,
     pub(crate) faults: Faults,
+    /// Names that were given to something stated wrongly: formulas that use them are not to blame.
+    pub(crate) faulty: Vec<String>,
+    /// Tables of data whose columns are not known; the empty text for a plain `[data]`.
+    pub(crate) open: Vec<String>,
+    /// Texts that stand where they cannot be read as formulas. The names in them count as used.
+    pub(crate) mentions: Vec<String>,
 }
 
 impl<'s> Reader<'s> {
     pub(crate) fn new(source: &'s str) -> Self {
-        Self { source, faults: Faults::default() }
+        Self { source, faults: Faults::default(), faulty: Vec::new(), open: Vec::new(), mentions: Vec::new() }
+    }
+
+    /// Notes the texts in a value that stands where it cannot be read.
+    pub(crate) fn mention(&mut self, value: &DeValue<'_>) {
+        match value {
+            DeValue::String(text) => self.mentions.push(text.to_string()),
+            DeValue::Array(items) => items.iter().for_each(|item| self.mention(item.get_ref())),
+            DeValue::Table(table) => table.iter().for_each(|(_, item)| self.mention(item.get_ref())),
+            _ => {}
+        }
+    }
+
+    /// Whether `name` may be a column of data that could not be read.
+    pub(crate) fn may_be_a_column(&self, name: &str) -> bool {
+        let table = name.rsplit_once('.').map_or("", |(table, _)| table);
+        self.open.iter().any(|open| open == table) || self.faulty.iter().any(|faulty| faulty == name)
     }
 
     pub(crate) fn fault(&mut self, fault: Fault) {
@@ -71,14 +129,20 @@ impl<'s> Reader<'s> {
     pub(crate) fn only(&mut self, table: &Table<'_>, known: &[&str]) {
         for entry in table.entries.iter().filter(|entry| !known.contains(&entry.key)) {
             self.unknown_key(entry, &table.name, known);
+            self.mention(entry.value);
         }
     }
 
     pub(crate) fn unknown_key(&mut self, entry: &Entry<'_>, place: &str, known: &[&str]) {
         let fault =
             Fault::new(entry.key_span.clone(), format!("`{}` is no key of {place}", entry.key)).label("unknown key");
+        let home = home_of(entry.key);
         self.fault(match nearest(entry.key, known.iter().copied()) {
             Some(near) => fault.help(format!("did you mean `{near}`?")),
+            None if home.is_some() => {
+                let home = home.unwrap_or_default();
+                fault.help(format!("`{}` belongs {home}", entry.key))
+            }
             None => fault.help(format!("the keys of {place} are {}", all_of(known))),
         });
     }
@@ -96,7 +160,13 @@ impl<'s> Reader<'s> {
     pub(crate) fn number(&mut self, entry: &Entry<'_>, example: &str) -> Option<f64> {
         let found = plain_number(entry.value);
         if found.is_none() {
-            self.wants(entry, "a number", example);
+            let quoted = entry.value.as_str().and_then(|text| text.trim().parse::<f64>().ok());
+            match quoted {
+                Some(number) if example.starts_with(entry.key) => {
+                    self.wants(entry, "a number", &format!("it without quotes: {number:?}"));
+                }
+                _ => self.wants(entry, "a number", example),
+            }
         }
         if found.is_some_and(f64::is_nan) {
             self.fault(
@@ -176,7 +246,14 @@ impl<'s> Reader<'s> {
     }
 
     /// A list of texts.
+    ///
+    /// A single text is told, and taken for a list of one.
     pub(crate) fn texts(&mut self, entry: &Entry<'_>, example: &str) -> Option<Vec<Text>> {
+        if let DeValue::String(value) = entry.value {
+            let written = &self.source[entry.span.clone()];
+            self.wants(entry, "a list in square brackets", &format!("{} = [{written}]", entry.key));
+            return Some(vec![Text::new(self.source, value, entry.span.clone())]);
+        }
         let items = self.list(entry, example)?;
         items.iter().map(|item| self.text(item, example)).collect()
     }

@@ -165,6 +165,7 @@ fn write_variable(out: &mut String, spec: &VariableSpec) {
         None => {}
     }
     match &spec.nature {
+        NatureSpec::Faulty { .. } => {}
         NatureSpec::Range { low, high } => {
             let _ = writeln!(out, "range = [{low:?}, {high:?}]");
         }

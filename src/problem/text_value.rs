@@ -27,6 +27,11 @@ impl Text {
         Self { value: value.to_owned(), span: 0..value.len(), offsets: (0..=value.len()).collect() }
     }
 
+    /// This text with another value, for one that was misspelt.
+    pub(crate) fn meaning(self, value: &str) -> Self {
+        Self { value: value.to_owned(), ..self }
+    }
+
     /// Where bytes `part` of the text stand in the file.
     pub(crate) fn place(&self, part: &Range<usize>) -> Range<usize> {
         let last = self.offsets.len() - 1;

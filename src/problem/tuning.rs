@@ -181,6 +181,10 @@ pub(crate) fn read(reader: &mut Reader<'_>, table: &Table<'_>) -> TuningKeys {
     let mut keys = TuningKeys::default();
     reader.only(table, &KEYS);
     for entry in &table.entries {
+        // The value of a misspelt key is looked at as that of the key that is meant.
+        let meant =
+            KEYS.iter().copied().find(|key| table.entry_or_slip(key, &KEYS).is_some_and(|e| e.key == entry.key));
+        let entry = &Entry { key: meant.unwrap_or(entry.key), ..entry.clone() };
         match entry.key {
             "budget" => keys.budget = reader.count(entry, 100, "budget = 20000"),
             "rounds" => keys.rounds = reader.count(entry, 1, "rounds = 20"),

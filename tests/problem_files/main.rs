@@ -9,4 +9,5 @@ mod right;
 mod starts;
 mod whole;
 mod wrong;
+mod wrong_layers;
 mod wrong_tables;

@@ -1,6 +1,7 @@
 //! What looks wrong with a problem, each with advice.
 
 use super::Trial;
+use crate::numeric;
 use crate::numeric::Points;
 use crate::problem::Aim;
 use crate::problem::Coordinate;
@@ -11,6 +12,8 @@ use std::fmt;
 
 /// A centre that lies so far below the best trial point, in nats, was put there by a wrong unit, not by a prior.
 const FAR_BELOW: f64 = 1e4;
+/// `ln 1e-6`: a distribution of which less is left was not cut off on purpose.
+const LITTLE: f64 = -13.815_510_557_964_274;
 /// Differences of the target below this part of its size are rounding.
 const ROUNDING: f64 = 1e-9;
 /// More of the start than this outside the support is told.
@@ -28,6 +31,13 @@ pub enum Finding {
     Unused {
         /// Its name.
         variable: String,
+    },
+    /// The ends of a truncated distribution leave almost nothing of it.
+    LittleLeft {
+        /// The variable.
+        variable: String,
+        /// `ln` of the probability between the ends.
+        log_probability: f64,
     },
     /// Every trial point is outside the support.
     AllOutside {
@@ -74,6 +84,12 @@ impl fmt::Display for Finding {
                 f,
                 "Nothing depends on `{variable}`: it only dilutes the search. Use it in the target or an estimate, or drop it."
             ),
+            Self::LittleLeft { variable, log_probability } => write!(
+                f,
+                "`between` leaves {} of the distribution of `{variable}`: a far tail stands for all of it. Check the ends and the \
+                 parameters, and their units.",
+                probability(*log_probability)
+            ),
             Self::AllOutside { points } => write!(
                 f,
                 "All {points} points of the start lie outside the support of the target. Move or widen `near` and `spread`, \
@@ -112,6 +128,24 @@ impl fmt::Display for Finding {
     }
 }
 
+/// A small probability from its logarithm, `3.1e-15`, however small.
+fn probability(log: f64) -> String {
+    let tens = log / std::f64::consts::LN_10;
+    let exponent = tens.floor();
+    format!("{:.1}e{exponent}", numeric::exp((tens - exponent) * std::f64::consts::LN_10))
+}
+
+/// Truncated distributions of which almost nothing is left.
+fn little_left(problem: &Problem) -> Vec<Finding> {
+    let left = problem.variables().iter().filter_map(|variable| match &variable.nature {
+        Nature::Random(distribution) if distribution.log_kept() < LITTLE => {
+            Some(Finding::LittleLeft { variable: variable.name.clone(), log_probability: distribution.log_kept() })
+        }
+        _ => None,
+    });
+    left.collect()
+}
+
 /// All that looks wrong, from the trial and a few evaluations more along variables that live on an interval.
 ///
 /// # Errors
@@ -119,6 +153,7 @@ impl fmt::Display for Finding {
 pub fn findings(problem: &Problem, trial: &Trial) -> Result<Vec<Finding>, EvaluateError> {
     let unused = problem.unused_variables().into_iter().map(|name| Finding::Unused { variable: name.to_owned() });
     let mut found: Vec<Finding> = unused.collect();
+    found.extend(little_left(problem));
     let tally = trial.tally(problem.aim());
     let points = trial.points.len();
     if tally.failed > 0 {
@@ -160,6 +195,10 @@ fn flat(problem: &Problem, trial: &Trial) -> Option<&'static str> {
     };
     let low = values.iter().copied().fold(f64::INFINITY, f64::min);
     let high = values.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    // A cost that is zero at all trial points is a rare one, and no slip.
+    if problem.aim() == Aim::Expectation && high == 0.0 && low == 0.0 {
+        return None;
+    }
     (values.len() > 1 && high - low <= ROUNDING * high.abs().max(low.abs()).max(1.0)).then_some(what)
 }
 
@@ -168,9 +207,15 @@ fn both_ends(problem: &Problem, trial: &Trial) -> Result<Vec<Finding>, EvaluateE
     let Some((best, _)) = trial.best(problem) else { return Ok(Vec::new()) };
     let mut found = Vec::new();
     for (j, variable) in problem.variables().iter().enumerate() {
-        let (Nature::Range { .. }, Coordinate::Logit { low, high }) = (&variable.nature, variable.coordinate) else {
-            continue;
+        let Coordinate::Logit { low, high } = variable.coordinate else { continue };
+        let flat = match &variable.nature {
+            Nature::Range { .. } => true,
+            Nature::Random(distribution) => distribution.family() == "uniform",
+            Nature::Dependent { .. } => false,
         };
+        if !flat {
+            continue;
+        }
         let through = problem.to_natural(&Points::from_rows(problem.dim(), &trial.points.point(best))).point(0);
         let mut line = Points::new(problem.dim());
         for part in PLACES {
@@ -221,12 +266,19 @@ mod tests {
             (LEVEL.into(), "log_density = \"-level\"\nrequire = [\"level > 90\"]", Finding::AllOutside { points: 200 }),
             (LEVEL.into(), "log_density = \"-(level - 2000)^2\"", Finding::FarBelow { nats: 0.0 }),
             (DEPTH.into(), "log_factor = \"0 * depth - 3\"", Finding::Flat { what: "" }),
+            (
+                "depth = { distribution = \"normal\", mean = 2.0, sd = 0.1, between = [3.0, inf] }".into(),
+                "log_factor = \"-depth^2\"",
+                Finding::LittleLeft { variable: "depth".into(), log_probability: 0.0 },
+            ),
             (ANGLE.into(), "log_density = \"3 * cos(angle)\"", Finding::BothEnds { variable: "angle".into() }),
             (LEVEL.into(), "log_density = \"-level^2\"\nrequire = [\"abs(level - 2) > 0.1\"]", Finding::CentreOutside),
         ] {
             let kinds: Vec<_> = found(&variables, target).iter().map(std::mem::discriminant).collect();
             assert!(kinds.contains(&std::mem::discriminant(&want)), "{target}: {:?}", found(&variables, target));
         }
+        // SciPy 1.17.1: norm.logsf(10) = -53.23128515051247, which is 7.6e-24.
+        assert_eq!(probability(-53.231_285_150_512_47), "7.6e-24");
         let most = found(LEVEL, "log_density = \"-level\"\nrequire = [\"level > 3.6\"]");
         assert!(matches!(most[0], Finding::MostlyOutside { outside: 181..200, .. }), "{most:?}");
         for finding in most {

@@ -22,6 +22,8 @@ pub struct Trial {
     pub answers: Evaluation,
     /// Answers at the centre.
     pub centre: Evaluation,
+    /// Points that fulfil every inequality of `require`, where there are any.
+    pub fulfilled: Option<usize>,
 }
 
 /// How the trial points came out.
@@ -57,7 +59,11 @@ impl Trial {
     /// [`EvaluateError`] where the model cannot go on.
     pub fn new(problem: &Problem, points: Points, answers: Evaluation) -> Result<Self, EvaluateError> {
         let centre = problem.evaluate(&Points::from_rows(problem.dim(), &problem.start().near))?;
-        Ok(Self { points, answers, centre })
+        let fulfilled = match problem.has_requirements() {
+            true => Some(problem.fulfils(&points)?.into_iter().filter(|fulfils| *fulfils).count()),
+            false => None,
+        };
+        Ok(Self { points, answers, centre, fulfilled })
     }
 
     /// How the points came out.

@@ -1,0 +1,107 @@
+//! What distributions, their parameters and the keys of variables are called elsewhere.
+
+use crate::distribution::Distribution;
+use crate::expression::nearest;
+
+/// What the keys that every variable has are called elsewhere.
+pub(crate) const COMMON_SYNONYMS: [(&str, &str); 30] = [
+    ("width", "spread"),
+    ("step", "spread"),
+    ("spreads", "spread"),
+    ("start", "near"),
+    ("init", "near"),
+    ("initial", "near"),
+    ("guess", "near"),
+    ("center", "near"),
+    ("centre", "near"),
+    ("around", "near"),
+    ("bounds", "between"),
+    ("limits", "between"),
+    ("truncate", "between"),
+    ("truncated", "between"),
+    ("interval", "range"),
+    ("for_each", "each"),
+    ("foreach", "each"),
+    ("by", "each"),
+    ("per", "each"),
+    ("group", "each"),
+    ("groups", "each"),
+    ("units", "unit"),
+    ("title", "label"),
+    ("name", "label"),
+    ("description", "note"),
+    ("comment", "note"),
+    ("remark", "note"),
+    ("dist", "distribution"),
+    ("prior", "distribution"),
+    ("type", "distribution"),
+];
+
+/// What distributions are called elsewhere.
+const FOREIGN_FAMILIES: [(&str, &str); 22] = [
+    ("gaussian", "normal"),
+    ("gauss", "normal"),
+    ("norm", "normal"),
+    ("log-gaussian", "lognormal"),
+    ("lognorm", "lognormal"),
+    ("flat", "uniform"),
+    ("unif", "uniform"),
+    ("rectangular", "uniform"),
+    ("exp", "exponential"),
+    ("expon", "exponential"),
+    ("t", "student-t"),
+    ("student", "student-t"),
+    ("studentt", "student-t"),
+    ("chi2", "chi-squared"),
+    ("chisquare", "chi-squared"),
+    ("invgamma", "inverse-gamma"),
+    ("halfnormal", "half-normal"),
+    ("halfcauchy", "half-cauchy"),
+    ("extreme-value", "gumbel"),
+    ("triangle", "triangular"),
+    ("discrete-uniform", "integers"),
+    ("randint", "integers"),
+];
+
+/// The distribution that is probably meant by a word.
+pub(crate) fn meant_family(word: &str) -> Option<&'static str> {
+    let plain = word.to_lowercase().replace(['_', ' '], "-");
+    let exact = Distribution::NAMES.iter().copied().find(|known| *known == plain);
+    let foreign = FOREIGN_FAMILIES.iter().find(|(known, _)| *known == plain).map(|(_, meant)| *meant);
+    exact.or(foreign).or_else(|| nearest(word, Distribution::NAMES.iter().copied()))
+}
+
+/// What parameters are called elsewhere.
+pub(crate) const SYNONYMS: [(&str, &str); 31] = [
+    ("cov", "cv"),
+    ("sigma", "sd"),
+    ("stdev", "sd"),
+    ("std", "sd"),
+    ("stddev", "sd"),
+    ("sigma", "scale"),
+    ("sd", "scale"),
+    ("sigma", "log_sd"),
+    ("sdlog", "log_sd"),
+    ("mu", "mean"),
+    ("loc", "location"),
+    ("mu", "location"),
+    ("mean", "location"),
+    ("mu", "log_mean"),
+    ("meanlog", "log_mean"),
+    ("lambda", "rate"),
+    ("lambda", "mean"),
+    ("beta", "rate"),
+    ("alpha", "shape"),
+    ("k", "shape"),
+    ("alpha", "a"),
+    ("beta", "b"),
+    ("min", "low"),
+    ("max", "high"),
+    ("lower", "low"),
+    ("upper", "high"),
+    ("a", "low"),
+    ("b", "high"),
+    ("nu", "df"),
+    ("prob", "p"),
+    ("probability", "p"),
+];
