@@ -19,19 +19,28 @@ const MARGIN: f64 = 0.05;
 /// A round in which one draw held more than this is not trusted with the choice.
 const TRUSTED_SHARE: f64 = 0.05;
 
-/// The proposal chosen, in the start's units, and who stood beside it.
+/// The proposal chosen, in the start's units, who stood beside it, and the draws that decided.
+pub(crate) struct Choice {
+    pub(crate) chosen: Mixture,
+    pub(crate) finalists: Vec<Finalist>,
+    /// The last fits joined, and the confirm draws from them.
+    pub(crate) joined: Mixture,
+    pub(crate) confirm: ReportDraws,
+}
+
+/// Chooses between the last fits joined and the best round.
 pub(crate) fn choose(
     target: &Standard,
     settings: &Settings,
     plan: &Plan,
     wide: &Mixture,
     course: &Course,
-) -> Result<(Mixture, Vec<Finalist>), TuneError> {
+) -> Result<Choice, TuneError> {
     target.enter(Stage::Confirm);
     let from = course.fits.len().saturating_sub(LAST_FITS);
     let (joined, predicted) = ensemble(&course.pool, &course.fits[from..], wide, settings, course.last_draws)?;
     let n = plan.confirm.min(plan.budget - target.spent()) as usize;
-    let confirmed = fresh_score(target, settings, &joined, n, Purpose::Confirm)?.1;
+    let (confirm, confirmed) = fresh_score(target, settings, &joined, n, (Purpose::Confirm, plan.part))?;
     let mut finalists = vec![Finalist {
         name: "ensemble".into(),
         predicted_ess_fraction: predicted,
@@ -39,7 +48,7 @@ pub(crate) fn choose(
         chosen: false,
     }];
     let best = best_round(course);
-    let mut chosen = joined;
+    let mut chosen = joined.clone();
     let mut winner = 0;
     if let Some(best) = best {
         let round = &course.rounds[best];
@@ -55,7 +64,7 @@ pub(crate) fn choose(
         }
     }
     finalists[winner].chosen = true;
-    Ok((chosen, finalists))
+    Ok(Choice { chosen, finalists, joined, confirm })
 }
 
 /// The round with the largest fresh ESS fraction among those whose score can be trusted.
@@ -89,9 +98,9 @@ fn fresh_score(
     settings: &Settings,
     proposal: &Mixture,
     n: usize,
-    purpose: Purpose,
+    (purpose, part): (Purpose, u32),
 ) -> Result<(ReportDraws, Option<Score>), TuneError> {
-    let Drawn { points, labels } = proposal.draw(n, settings.seed, purpose, 0);
+    let Drawn { points, labels } = proposal.draw(n, settings.seed, purpose, part);
     let log_proposal = proposal.log_density(&points);
     let log_target = target.values(&points)?;
     let draws = ReportDraws { points, labels, log_target, log_proposal };
@@ -109,7 +118,7 @@ pub(crate) fn report(
 ) -> Result<(ReportDraws, Option<Score>), TuneError> {
     target.enter(Stage::Report);
     let n = plan.budget.saturating_sub(target.spent()) as usize;
-    let (mut draws, score) = fresh_score(target, settings, chosen, n, Purpose::Report)?;
+    let (mut draws, score) = fresh_score(target, settings, chosen, n, (Purpose::Report, plan.part))?;
     draws.points = target.coordinates(&draws.points);
     let shift = target.log_spread();
     for l in draws.log_target.iter_mut().chain(&mut draws.log_proposal) {

@@ -11,6 +11,7 @@ use super::numbers::percent;
 use super::numbers::significant;
 use super::tune_report::mark;
 use super::tune_report::quiet;
+use super::tune_report::raised;
 use super::tune_report::verdict;
 use evenpoise::adapt::rare::DesignPoint;
 use evenpoise::adapt::rare::RareAnswer;
@@ -27,7 +28,8 @@ const NAMED: usize = 3;
 
 /// Answer, design points and verdict.
 pub(crate) fn closing(problem: &Problem, tuning: &RareTuning) -> String {
-    let parts = format!("{} components; {} evaluations in all", tuning.chosen.len(), count(tuning.evaluations));
+    let (n, raised) = (tuning.chosen.len(), raised(&tuning.extended_from));
+    let parts = format!("{n} components; {} evaluations in all{raised}", count(tuning.evaluations));
     let counted = tuning.rounds.iter().filter(|round| round.counted).count();
     let draws = count(tuning.draws.log_nominal.len() as u64);
     let title = format!("Answer from the {draws} draws of {counted} rounds{}", mark(&tuning.verdict));

@@ -17,6 +17,7 @@ use evenpoise::report::draw_figures;
 use evenpoise::report::page::PageData;
 use evenpoise::report::page::PageFigure;
 use evenpoise::report::page::html;
+use evenpoise::report::page::markdown;
 use evenpoise::report::write_rare_rounds;
 use evenpoise::report::write_rounds;
 use evenpoise::store::ProposalFile;
@@ -116,9 +117,10 @@ fn write_common(
     Ok(figures)
 }
 
-/// The report, as a page.
+/// The report, as a page and as Markdown.
 fn write_page(folder: &RunFolder, data: &PageData) -> Result<(), StoreError> {
-    write_bytes(&folder.join("report.html"), html(data).as_bytes())
+    write_bytes(&folder.join("report.html"), html(data).as_bytes())?;
+    write_bytes(&folder.join("report.md"), markdown(data).as_bytes())
 }
 
 /// Writes figures, the numbers behind each, and their captions.

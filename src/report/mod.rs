@@ -18,6 +18,7 @@ mod outline;
 mod rare_summary;
 mod rounds;
 mod summary;
+mod summary_head;
 
 pub mod page;
 
@@ -33,3 +34,4 @@ pub use summary::{
     CandidateSummary, Evaluations, FinalistSummary, NamedValues, ProposalSummary, Provenance, RoundCandidates,
     SUMMARY_FORMAT, Summary, SummaryCheck, SurveySummary, ValueWithError, read_evaluations,
 };
+pub use summary_head::SummaryHead;

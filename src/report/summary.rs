@@ -2,6 +2,7 @@
 //!
 //! `null` stands for a number that is not known, or not finite (the tail shape of weights whose largest are all equal).
 
+use super::summary_head::SummaryHead;
 use crate::adapt::Finalist;
 use crate::adapt::Round;
 use crate::adapt::StopReason;
@@ -35,26 +36,9 @@ pub struct Provenance {
 /// The summary of a tuning.
 #[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct Summary {
-    /// [`SUMMARY_FORMAT`].
-    pub format: &'static str,
-    /// Title of the problem.
-    pub title: String,
-    /// `density`, `expectation` or `probability`.
-    pub aim: &'static str,
-    /// What the reader may do with the numbers.
-    pub verdict: Word,
-    /// Why it is not "sound"; the worst reason first.
-    pub reasons: Vec<String>,
-    /// What no check can see.
-    pub caution: String,
-    /// Every check.
-    pub checks: Vec<SummaryCheck>,
-    /// All evaluations.
-    pub evaluations: u64,
-    /// Those that failed.
-    pub failed: u64,
-    /// Report draws.
-    pub draws: u64,
+    /// What the summaries of all aims share.
+    #[serde(flatten)]
+    pub head: SummaryHead,
     /// Effective sample size over report draws.
     pub ess_fraction: Option<f64>,
     /// Its 95 % interval.
@@ -198,17 +182,9 @@ impl Summary {
         let score = tuning.score.as_ref();
         let known = |read: &dyn Fn(&crate::weights::Score) -> f64| score.and_then(|s| finite(read(s)));
         let se = known(&|s| s.log_normaliser_se);
+        let counts = [tuning.evaluations, tuning.failed, tuning.report.labels.len() as u64];
         Self {
-            format: SUMMARY_FORMAT,
-            title: problem.title().to_owned(),
-            aim: problem.aim().word(),
-            verdict: tuning.verdict.word,
-            reasons: tuning.verdict.reasons.clone(),
-            caution: tuning.verdict.caution.clone(),
-            checks: tuning.verdict.checks.iter().map(SummaryCheck::of).collect(),
-            evaluations: tuning.evaluations,
-            failed: tuning.failed,
-            draws: tuning.report.labels.len() as u64,
+            head: SummaryHead::of(problem, &tuning.verdict, counts, &tuning.extended_from),
             ess_fraction: known(&|s| s.ess_fraction),
             ess_fraction_interval: score.and_then(|s| s.ess_fraction_interval),
             weight_variance: known(&|s| s.weight_variance),

@@ -1,5 +1,6 @@
 //! What the loop gives back: plain values, in the order in which they came to be.
 
+use crate::adapt::tuning::Extension;
 use crate::numeric::Points;
 use crate::proposal::Mixture;
 use crate::weights::Answer;
@@ -202,6 +203,8 @@ pub struct FailuresCounted {
 /// The whole of a tuning whose aim is a probability or an expectation.
 #[derive(Debug, Clone)]
 pub struct RareTuning {
+    /// Earlier budgets, where the budget was raised: the rounds simply went on.
+    pub extended_from: Vec<Extension>,
     /// What the survey found.
     pub survey: RareSurvey,
     /// The rounds.

@@ -65,6 +65,9 @@ pub(crate) fn tuning(data: &PageData) -> Vec<Block> {
     )));
     blocks.push(rounds(data));
     blocks.push(Block::text(format!("The rounds ended because {}.", data.stop)));
+    for raise in &data.raises {
+        blocks.push(Block::Paragraph(vec![Span::Strong("A raised budget. ".into()), plain(raise.clone())]));
+    }
     blocks.extend(winners(data));
     if !data.finalists.is_empty() {
         let rows = data.finalists.iter().map(|f| {

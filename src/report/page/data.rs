@@ -38,6 +38,8 @@ pub struct PageData {
     pub answers: Vec<AnswerLine>,
     /// What else is to be said about them, a sentence each.
     pub remarks: Vec<String>,
+    /// How the budget was raised, a sentence for each time; empty for most.
+    pub raises: Vec<String>,
     /// Figures, in the order in which they are shown.
     pub figures: Vec<PageFigure>,
     /// Seed, versions, digests, evaluations.

@@ -5,6 +5,7 @@ use super::data::{
     VariableLine,
 };
 use super::numbers::{count, number, share};
+use super::raises::raises;
 use crate::adapt::{Finalist, Round, StopReason, Survey, Tuning};
 use crate::numeric::{Points, exp, log_sum_exp};
 use crate::problem::{Nature, Problem};
@@ -40,6 +41,7 @@ impl PageData {
             score: tuning.score.clone(),
             answers,
             remarks: Vec::new(),
+            raises: raises(problem.aim(), &tuning.extended_from, run.evaluations),
             figures,
             run,
         }

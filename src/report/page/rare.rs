@@ -2,6 +2,7 @@
 
 use super::data::{AnswerLine, PageData, PageFigure, PointLine, RoundLine, RunFacts, ScheduleKind, SurveyLine};
 use super::density::{notes, variables};
+use super::raises::raises;
 use super::numbers::{NOTHING, count, share, short};
 use crate::adapt::rare::{DesignPoint, RareAnswer, RareRound, RareSurvey, RareTuning, RareValue, ValueWithError};
 use crate::problem::{Aim, Problem};
@@ -37,6 +38,7 @@ impl PageData {
             score: None,
             answers: answers(problem, tuning),
             remarks: remarks(problem, tuning),
+            raises: raises(problem.aim(), &tuning.extended_from, run.evaluations),
             figures,
             run,
         }
