@@ -74,7 +74,9 @@ impl Budgets {
         Journal::replace_header(&located.run, &header::facts(&before), &header::facts(problem))?;
         let last = count(self.before.last().copied().unwrap_or_default());
         let kept = match problem.aim() {
-            Aim::Density => "What was spent, the report draws included, counts as rounds; new report draws alone carry the answer.",
+            Aim::Density => {
+                "What was spent, the report draws included, counts as rounds; new report draws alone carry the answer."
+            }
             _ => "The rounds go on, and those that counted go on counting.",
         };
         let first = if self.finished {

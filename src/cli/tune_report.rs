@@ -68,7 +68,11 @@ fn proposal(tuning: &Tuning) -> String {
 /// What is said of a budget that was raised.
 pub(crate) fn raised(extended_from: &[Extension]) -> String {
     let budgets: Vec<String> = extended_from.iter().map(|earlier| count(earlier.budget)).collect();
-    if budgets.is_empty() { String::new() } else { format!(" (the budget was raised from {})", budgets.join(", then ")) }
+    if budgets.is_empty() {
+        String::new()
+    } else {
+        format!(" (the budget was raised from {})", budgets.join(", then "))
+    }
 }
 
 fn scores(score: &Score, verdict: &Verdict) -> String {

@@ -15,6 +15,7 @@ use super::key::Sample;
 use super::numbers::count;
 use super::numbers::significant;
 use super::place::Area;
+use super::sought::Sought;
 use super::table::Table;
 
 /// Height of the panel in text sizes: about as high as wide.
@@ -27,6 +28,8 @@ const DOT: f64 = 0.13;
 /// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct PlaneData {
+    /// What is looked for.
+    pub sought: Sought,
     /// What all values are.
     pub space: Space,
     /// The variable along the bottom.
@@ -106,14 +109,14 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     let nominal = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.4 * unit, 0.3 * unit);
     let component = Pen::solid(MODELLED, 0.12 * unit);
     let mut entries = vec![
-        (Sample::Dot(1.3 * dot, MEASURED, 0.8), "in the event".to_owned()),
-        (Sample::Dot(1.3 * dot, REFERENCE, 0.6), "outside".to_owned()),
+        (Sample::Dot(1.3 * dot, MEASURED, 0.8), data.sought.inside().to_owned()),
+        (Sample::Dot(1.3 * dot, REFERENCE, 0.6), data.sought.outside().to_owned()),
     ];
     if !data.components.is_empty() {
         entries.push((Sample::Outline(component), "component, 1 sd".to_owned()));
     }
     if !data.nominal.is_empty() {
-        entries.push((Sample::Outline(nominal), "nominal density".to_owned()));
+        entries.push((Sample::Outline(nominal), "nominal density, 1 to 3 sd".to_owned()));
     }
     let mut frame = frame(data, (xs, ys), &entries, style);
     for (hit, colour, opacity) in [(false, REFERENCE, 0.35), (true, MEASURED, 0.5)] {
@@ -175,30 +178,43 @@ fn around(range: Range, length: f64) -> Range {
 fn caption(data: &PlaneData, draws: &[(f64, f64, bool)]) -> String {
     let hits = draws.iter().filter(|d| d.2).count();
     let mut parts = vec![format!(
-        "{} draws of the proposal, {} of them in the event, in the plane of {} and {}.",
+        "{} draws of the proposals in the plane of {} and {}; {} {}.",
         count(draws.len()),
-        count(hits),
         data.x.name,
-        data.y.name
+        data.y.name,
+        count(hits),
+        data.sought.of_them()
     )];
     if let (Some(x), Some(y)) = (data.x.importance, data.y.importance) {
         parts.push(format!(
-            "Their shares of the squared direction cosines are {} and {}; the other variables blur \
-             the limit of the event.",
+            "Their squared direction cosines at the nearest {} are {} and {}; the other variables blur the picture.",
+            data.sought.point(),
             significant(x, 2),
             significant(y, 2)
         ));
     }
+    if !data.components.is_empty() {
+        parts.push(
+            "Outlines: components of the chosen proposal, one standard deviation around their centres.".to_owned(),
+        );
+    }
+    if !data.nominal.is_empty() {
+        parts.push("Dashed: one, two and three standard deviations of the variables' own distribution.".to_owned());
+    }
     if !data.design_points.is_empty() {
-        parts.push("Crosses are the most likely points of the event that the search found.".to_owned());
+        parts.push(format!("Crosses are {}.", data.sought.points()));
     }
     parts.join(" ")
 }
 
 fn table(data: &PlaneData, draws: &[(f64, f64, bool)]) -> Table {
+    let (inside, outside) = match data.sought {
+        Sought::Event => ("event", "outside"),
+        Sought::Integrand => ("not zero", "zero"),
+    };
     let mut table = Table::new(&["series", "number", &data.x.name, &data.y.name]);
     for &(x, y, hit) in draws {
-        table.push([if hit { "event" } else { "outside" }.into(), None.into(), x.into(), y.into()]);
+        table.push([if hit { inside } else { outside }.into(), None.into(), x.into(), y.into()]);
     }
     for (series, lines) in [("component", &data.components), ("nominal", &data.nominal)] {
         for (k, line) in lines.iter().enumerate() {
@@ -208,7 +224,7 @@ fn table(data: &PlaneData, draws: &[(f64, f64, bool)]) -> Table {
         }
     }
     for (k, &(x, y)) in data.design_points.iter().enumerate() {
-        table.push(["design point".into(), (k as f64).into(), x.into(), y.into()]);
+        table.push([data.sought.point().into(), (k as f64).into(), x.into(), y.into()]);
     }
     table
 }
@@ -240,6 +256,7 @@ mod tests {
             values: vec![],
         };
         let mut data = PlaneData {
+            sought: Sought::Event,
             space: Space::Scores,
             x: side("score of inflow", 0.61),
             y: side("score of gate_friction", 0.3),

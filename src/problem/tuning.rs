@@ -237,7 +237,9 @@ fn earlier_budgets(reader: &mut Reader<'_>, entry: &Entry<'_>, budget: u64) -> V
     let whole = |x: f64| (100.0..9e15).contains(&x) && x.fract() == 0.0;
     let budget_of = |value| plain_number(value).filter(|&x| whole(x)).map(|x| x as u64);
     let budgets: Option<Vec<u64>> = list.iter().map(|item| budget_of(item.get_ref())).collect();
-    let rising = |budgets: &Vec<u64>| budgets.iter().zip(budgets[1.min(budgets.len())..].iter().chain([&budget])).all(|(a, b)| a < b);
+    let rising = |budgets: &Vec<u64>| {
+        budgets.iter().zip(budgets[1.min(budgets.len())..].iter().chain([&budget])).all(|(a, b)| a < b)
+    };
     match budgets.filter(rising) {
         Some(budgets) => budgets,
         None => {

@@ -4,6 +4,8 @@ use super::draws::DrawsTable;
 use super::marginal;
 use super::marginal::Direction;
 use super::outline::outlines;
+use super::rare_facts::RareFacts;
+use super::rare_figures;
 use super::rounds::RoundRow;
 use crate::figures::Drawing;
 use crate::figures::Style;
@@ -56,6 +58,8 @@ pub struct RunData<'a> {
     pub survey_evaluations: u64,
     /// All evaluations.
     pub evaluations: u64,
+    /// What else there is of a probability or an expectation.
+    pub rare: Option<&'a RareFacts>,
 }
 
 /// All figures of a run; of the variables, those in `chosen` (all, up to 24, where it is empty).
@@ -64,6 +68,9 @@ pub fn draw_figures(run: &RunData, chosen: &[usize], style: &Style) -> Vec<Drawi
     let score = LogWeights::new(run.draws.log_weights()).ok().map(|weights| score(&weights, &[]));
     let weights = run.draws.weights().to_vec();
     let mut drawings = vec![progress::draw(&progress_data(run, score.as_ref()), style)];
+    if let Some(facts) = run.rare {
+        drawings.extend(rare_figures::draw(run, facts, chosen, style));
+    }
     if let Some(score) = &score {
         drawings.push(evenness::draw(&evenness_data(&weights, score), style));
     }
@@ -163,7 +170,7 @@ fn variables_data(run: &RunData, columns: &[VariableColumn], weights: &[f64], ch
 }
 
 /// For every variable the direction in coordinates along which its own score runs.
-fn directions(problem: &Problem) -> Vec<Direction> {
+pub(super) fn directions(problem: &Problem) -> Vec<Direction> {
     let d = problem.dim();
     let mut directions: Vec<Direction> =
         (0..d).map(|j| (0..d).map(|i| f64::from(u8::from(i == j))).collect()).collect();

@@ -265,22 +265,31 @@ pub struct Evaluations {
 /// # Errors
 /// [`StoreError::Io`], [`StoreError::Json`].
 pub fn read_evaluations(path: &Path) -> Result<Evaluations, StoreError> {
-    let text = std::fs::read_to_string(path).map_err(|source| StoreError::Io {
-        action: "read",
-        path: path.to_path_buf(),
-        source,
-    })?;
-    let wrong = |at: &str, reason: String| StoreError::Json { path: path.to_path_buf(), at: at.to_owned(), reason };
-    let value: serde_json::Value =
-        serde_json::from_str(&text).map_err(|error| wrong("the whole", error.to_string()))?;
-    if value["format"] != SUMMARY_FORMAT {
-        return Err(wrong("format", format!("is {}; this program reads {SUMMARY_FORMAT:?}", value["format"])));
-    }
+    let value = read_summary(path)?;
     let count = |at: &str, value: &serde_json::Value| {
-        value.as_u64().ok_or_else(|| wrong(at, format!("is {value}; expected a whole number")))
+        value.as_u64().ok_or_else(|| wrong(path, at, format!("is {value}; expected a whole number")))
     };
     Ok(Evaluations {
         all: count("evaluations", &value["evaluations"])?,
         survey: count("survey.evaluations", &value["survey"]["evaluations"])?,
     })
+}
+
+/// Reads a summary of this format.
+pub(super) fn read_summary(path: &Path) -> Result<serde_json::Value, StoreError> {
+    let text = std::fs::read_to_string(path).map_err(|source| StoreError::Io {
+        action: "read",
+        path: path.to_path_buf(),
+        source,
+    })?;
+    let value: serde_json::Value =
+        serde_json::from_str(&text).map_err(|error| wrong(path, "the whole", error.to_string()))?;
+    if value["format"] != SUMMARY_FORMAT {
+        return Err(wrong(path, "format", format!("is {}; this program reads {SUMMARY_FORMAT:?}", value["format"])));
+    }
+    Ok(value)
+}
+
+fn wrong(path: &Path, at: &str, reason: String) -> StoreError {
+    StoreError::Json { path: path.to_path_buf(), at: at.to_owned(), reason }
 }

@@ -5,4 +5,5 @@
 mod common;
 mod damage;
 mod kills;
+mod raises;
 mod refusals;

@@ -148,12 +148,12 @@ mod tests {
     fn a_raise_spends_what_it_adds() {
         let settings = Settings { extended_from: vec![10_000, 20_000], ..Settings::new(25_000, 1) };
         let plans = Plan::parts(&settings, 5).unwrap();
-        assert_eq!(plans.iter().map(|p| (p.from, p.budget)).collect::<Vec<_>>(), [
-            (0, 10_000),
-            (10_000, 20_000),
-            (20_000, 25_000)
-        ]);
-        let sizes = [(0, 10_000), (1, 11_400), (2, 13_800)].map(|(t, spent)| plans[1].next_round(Some(t), spent, t as u32));
+        assert_eq!(
+            plans.iter().map(|p| (p.from, p.budget)).collect::<Vec<_>>(),
+            [(0, 10_000), (10_000, 20_000), (20_000, 25_000)]
+        );
+        let sizes =
+            [(0, 10_000), (1, 11_400), (2, 13_800)].map(|(t, spent)| plans[1].next_round(Some(t), spent, t as u32));
         assert_eq!(sizes, [1400, 2400, 6200]);
         assert_eq!(plans[2].next_round(Some(0), 20_000, 0), 700);
         let small = Settings { extended_from: vec![10_000], ..Settings::new(10_100, 1) };

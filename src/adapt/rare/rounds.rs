@@ -87,8 +87,15 @@ pub(crate) fn run(target: &Scores, plans: &[Plan], scouts: &Scouts, explored: &E
 
     let mut twin = Twin::same(first_fit(explored)?);
     let mut earlier: Option<Twin> = None;
-    let mut course =
-        Course { rounds: Vec::new(), drawn: Vec::new(), pool, layers, twin: twin.clone(), born: Vec::new(), extended_from: Vec::new() };
+    let mut course = Course {
+        rounds: Vec::new(),
+        drawn: Vec::new(),
+        pool,
+        layers,
+        twin: twin.clone(),
+        born: Vec::new(),
+        extended_from: Vec::new(),
+    };
     let (mut at_event, mut before) = (None::<usize>, 0);
     let (mut step, mut predicted) = (RareStep::Survey, None);
     while target.spent() < budget {

@@ -5,11 +5,12 @@ use crate::numeric::Points;
 use crate::proposal::Mixture;
 use crate::weights::Answer;
 use crate::weights::verdict::Verdict;
+use serde::Deserialize;
 use serde::Serialize;
 
 /// A point of the event that lies nearest to the origin of the scores in its neighbourhood; for an expectation, a mode of the integrand
 /// times the nominal density.
-#[derive(Debug, Clone, PartialEq, Serialize)]
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct DesignPoint {
     /// In natural units.
     pub natural: Vec<f64>,

@@ -200,6 +200,14 @@ impl PageFigure {
             "variables" => {
                 "Charts in rows, one a variable: its distribution with the proposal's, then its draws against those of its closest partners."
             }
+            "convergence" => {
+                "Two charts: the estimate with its interval after every counted round, and its standard error."
+            }
+            "margin" => "Chart: every draw by its distance from the origin of the scores and its margin or integrand.",
+            "event" => {
+                "Chart: the draws in the plane of two variables, with the outlines of the proposal's components over them."
+            }
+            "importance" => "Bar chart: the signed squared direction cosine of every variable, the largest first.",
             "heavy" => "Chart: where the heaviest draws lie in every variable, against an even spread.",
             _ => "Chart; its numbers stand in the CSV file of the same name.",
         };

@@ -2,8 +2,8 @@
 
 use super::data::{AnswerLine, PageData, PageFigure, PointLine, RoundLine, RunFacts, ScheduleKind, SurveyLine};
 use super::density::{notes, variables};
-use super::raises::raises;
 use super::numbers::{NOTHING, count, share, short};
+use super::raises::raises;
 use crate::adapt::rare::{DesignPoint, RareAnswer, RareRound, RareSurvey, RareTuning, RareValue, ValueWithError};
 use crate::problem::{Aim, Problem};
 use crate::report::rounds::rare_step;
