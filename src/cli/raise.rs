@@ -50,19 +50,19 @@ impl Budgets {
     }
 
     /// The keys of a problem as the run had them before.
-    fn of_before(&self, keys: TuningKeys) -> TuningKeys {
+    fn of_before(&self, keys: &TuningKeys) -> TuningKeys {
         let (budget, extended_from) = match self.before.split_last() {
             Some((&last, earlier)) => (Some(last), earlier.to_vec()),
             None => (keys.budget, Vec::new()),
         };
-        TuningKeys { budget, extended_from, ..keys }
+        TuningKeys { budget, extended_from, ..keys.clone() }
     }
 
     /// The keys of a problem as the run has them from now on.
     pub(crate) fn over(&self, keys: TuningKeys) -> TuningKeys {
         match self.raised {
             Some(_) => TuningKeys { budget: self.raised, extended_from: self.before.clone(), ..keys },
-            None => self.of_before(keys),
+            None => self.of_before(&keys),
         }
     }
 
@@ -70,7 +70,7 @@ impl Budgets {
     pub(crate) fn write(&self, args: &Args, located: &Located, problem: &Problem) -> anyhow::Result<Option<String>> {
         let Some(raised) = self.raised else { return Ok(None) };
         adapt::check_budget(problem, &Settings::from_keys(problem.tuning()))?;
-        let before = problem_file::read(&located.file, |keys| self.of_before(args.tuning.over(keys)))?;
+        let before = problem_file::read(&located.file, |keys| self.of_before(&args.tuning.over(keys)))?;
         Journal::replace_header(&located.run, &header::facts(&before), &header::facts(problem))?;
         let last = count(self.before.last().copied().unwrap_or_default());
         let kept = match problem.aim() {

@@ -20,6 +20,7 @@ use evenpoise::adapt::rare::RareValue;
 use evenpoise::problem::Aim;
 use evenpoise::problem::Problem;
 use evenpoise::report::PROBABILITY_NOTE;
+use evenpoise::report::places;
 
 /// Most points in the table; all are in the summary.
 const MOST_POINTS: usize = 8;
@@ -101,10 +102,11 @@ fn points(problem: &Problem, points: &[DesignPoint]) -> String {
 fn carried(problem: &Problem, point: &DesignPoint) -> String {
     let mut order: Vec<usize> = (0..problem.dim()).collect();
     order.sort_by(|&a, &b| point.importance[b].abs().total_cmp(&point.importance[a].abs()).then(a.cmp(&b)));
+    let values = places(problem, &point.natural);
     let named = order.iter().take(NAMED).map(|&j| {
         let variable = &problem.variables()[j];
         let unit = variable.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
-        let value = significant(point.natural[j], 3);
+        let value = &values[j];
         format!("{} {} ({value}{unit})", cut(&variable.name, 16), percent(point.importance[j].abs()))
     });
     named.collect::<Vec<_>>().join(", ")

@@ -119,7 +119,7 @@ fn panel(bars: &[Bar], (top, bottom): (f64, f64), style: &Style) -> Panel {
     let unit = style.unit();
     let names = bars.iter().flat_map(|bar| &bar.name);
     let names = names.map(|line| width(line, unit, Face::Regular)).fold(0.0, f64::max);
-    let number = width("0.000", unit, Face::Regular) + 0.6 * unit;
+    let number = width("−0.000", unit, Face::Regular) + 0.6 * unit;
     let ends = bars.iter().fold((0.0_f64, 0.0_f64), |(low, high), bar| (low.min(bar.signed), high.max(bar.signed)));
     let (low, high) = if ends.1 - ends.0 > 0.0 { ends } else { (0.0, 1.0) };
     let left = (MARGIN + 0.6) * unit + names + if low < 0.0 { number } else { 0.0 };
@@ -141,7 +141,7 @@ fn draw_bar(canvas: &mut Canvas, panel: &Panel, bar: &Bar, middle: f64, style: &
     let (top, bottom) = (middle - half, middle + half);
     canvas.fill(vec![(zero, top), (end, top), (end, bottom), (zero, bottom)], colour, 1.0);
     let size = bar.signed.abs();
-    let number = if size < 0.001 { "< 0.001".to_owned() } else { significant(size, 2) };
+    let number = if size < 0.001 { "< 0.001".to_owned() } else { significant(bar.signed, 2) };
     let (x, anchor) =
         if bar.signed < 0.0 { (end - 0.3 * unit, Anchor::End) } else { (end + 0.3 * unit, Anchor::Start) };
     canvas.write(&number, (x, baseline), anchor, style.plain(colour));

@@ -70,6 +70,11 @@ pub fn draw(data: &MarginData, style: &Style) -> Drawing {
     if data.sought == Sought::Event {
         entries.push((Sample::Line(limit(style)), "limit of the event".to_owned()));
     }
+    let guide = Pen::solid(MODELLED, 1.4 * style.hairline()).dashed(0.4 * style.unit(), 0.3 * style.unit());
+    if let Some(first) = nearest.clone().reduce(f64::min) {
+        let many = if nearest.clone().count() > 1 { "s, the nearest" } else { "" };
+        entries.push((Sample::Line(guide), format!("{}{many} at {}", data.sought.point(), significant(first, 3))));
+    }
     let x = Side {
         name: "distance from the origin of the scores",
         unit: None,
@@ -88,14 +93,8 @@ pub fn draw(data: &MarginData, style: &Style) -> Drawing {
     if data.sought == Sought::Event {
         frame.curve(0, [(0.0, 0.0), (end, 0.0)], limit(style));
     }
-    let guide = Pen::solid(MODELLED, 1.4 * style.hairline()).dashed(0.4 * style.unit(), 0.3 * style.unit());
-    for distance in nearest.clone() {
+    for distance in nearest {
         frame.curve(0, [(distance, low), (distance, high)], guide);
-    }
-    if let Some(first) = nearest.reduce(f64::min) {
-        let (x, y) = frame.panels[0].spot(first, high);
-        let text = format!("nearest {} {}", data.sought.point(), significant(first, 3));
-        frame.note(0, &text, (x - 4.6 * style.unit(), y + style.unit()), MODELLED);
     }
     if draws.is_empty() {
         frame.say(0, "no draw");
@@ -134,8 +133,8 @@ fn caption(data: &MarginData, draws: &[(f64, f64, bool)]) -> String {
     let failed = data.distance.len() - draws.len();
     match failed {
         0 => {}
-        1 => parts.push("One draw has no margin.".to_owned()),
-        _ => parts.push(format!("{} draws have no margin.", count(failed))),
+        1 => parts.push("One draw has no finite value.".to_owned()),
+        _ => parts.push(format!("{} draws have no finite value.", count(failed))),
     }
     parts.join(" ")
 }
@@ -216,7 +215,7 @@ mod tests {
         let mut data = data(300, 1.0);
         data.margin[7] = f64::NAN;
         let drawing = draw(&data, &Style::default());
-        assert!(drawing.caption.contains("299 draws") && drawing.caption.contains("One draw has no margin"));
+        assert!(drawing.caption.contains("299 draws") && drawing.caption.contains("One draw has no finite value"));
         assert_eq!(drawing.table.rows().len(), 299);
         assert_eq!(thinned((0..5000).collect()).len(), DOTS);
     }

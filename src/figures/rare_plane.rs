@@ -9,6 +9,7 @@ use super::colour::MEASURED;
 use super::colour::MODELLED;
 use super::colour::PAPER;
 use super::colour::REFERENCE;
+use super::columns::quantiles;
 use super::frame::Frame;
 use super::frame::Side;
 use super::key::Sample;
@@ -22,6 +23,8 @@ use super::table::Table;
 const HEIGHT: f64 = 27.0;
 /// Most dots of each kind; of more draws, evenly many are drawn.
 const DOTS: usize = 1500;
+/// Part of the draws that the axes show at least, as quantiles.
+const FRAMED: [f64; 2] = [0.0025, 0.9975];
 /// Radius of a dot, in text sizes.
 const DOT: f64 = 0.13;
 
@@ -40,6 +43,8 @@ pub struct PlaneData {
     pub hit: Vec<bool>,
     /// Outlines of the components.
     pub components: Vec<PlaneOutline>,
+    /// How many components there are.
+    pub n_components: usize,
     /// Lines of equal nominal density around the middle.
     pub nominal: Vec<PlaneOutline>,
     /// Points of the event of the highest nominal density, found by the search.
@@ -99,15 +104,20 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         .map(|((&x, &y), &hit)| (x, y, hit))
         .filter(|(x, y, _)| x.is_finite() && y.is_finite())
         .collect();
-    let spots = || {
+    let fixed = || {
         let lines = data.components.iter().chain(&data.nominal).flat_map(PlaneOutline::points);
-        draws.iter().map(|d| (d.0, d.1)).chain(lines).chain(data.design_points.iter().copied())
+        lines.chain(data.design_points.iter().copied())
     };
-    let range = |pick: fn((f64, f64)) -> f64| padded_range(spots().map(pick), 0.04).unwrap_or((-1.0, 1.0));
+    // A few draws far out must not press all others together.
+    let usual = |values: Vec<f64>| quantiles(&values, &vec![1.0; values.len()], FRAMED).unwrap_or([f64::NAN; 2]);
+    let range = |pick: fn((f64, f64)) -> f64| {
+        let framed = usual(draws.iter().map(|d| pick((d.0, d.1))).collect());
+        padded_range(framed.into_iter().chain(fixed().map(pick)), 0.04).unwrap_or((-1.0, 1.0))
+    };
     let (xs, ys) = (range(|p| p.0), range(|p| p.1));
     let dot = DOT * unit;
     let nominal = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.4 * unit, 0.3 * unit);
-    let component = Pen::solid(MODELLED, 0.12 * unit);
+    let component = Pen::solid(MODELLED, 0.1 * unit);
     let mut entries = vec![
         (Sample::Dot(1.3 * dot, MEASURED, 0.8), data.sought.inside().to_owned()),
         (Sample::Dot(1.3 * dot, REFERENCE, 0.6), data.sought.outside().to_owned()),
@@ -124,7 +134,9 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         let shown = kind.len().min(DOTS);
         for i in 0..shown {
             let &(x, y, _) = kind[i * kind.len() / shown];
-            frame.canvas.disc(frame.panels[0].spot(x, y), dot, colour, opacity);
+            if frame.panels[0].shows(x, y) {
+                frame.canvas.disc(frame.panels[0].spot(x, y), dot, colour, opacity);
+            }
         }
     }
     for line in &data.nominal {
@@ -141,7 +153,8 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     if draws.is_empty() {
         frame.say(0, "no draw");
     }
-    frame.finish("event", caption(data, &draws), table(data, &draws))
+    let caption = caption(data, &draws, |x, y| frame.panels[0].shows(x, y));
+    frame.finish("event", caption, table(data, &draws))
 }
 
 fn draw_cross(frame: &mut Frame, (x, y): (f64, f64), style: &Style) {
@@ -175,7 +188,7 @@ fn around(range: Range, length: f64) -> Range {
     (middle - length / 2.0, middle + length / 2.0)
 }
 
-fn caption(data: &PlaneData, draws: &[(f64, f64, bool)]) -> String {
+fn caption(data: &PlaneData, draws: &[(f64, f64, bool)], shows: impl Fn(f64, f64) -> bool) -> String {
     let hits = draws.iter().filter(|d| d.2).count();
     let mut parts = vec![format!(
         "{} draws of the proposals in the plane of {} and {}; {} {}.",
@@ -193,10 +206,19 @@ fn caption(data: &PlaneData, draws: &[(f64, f64, bool)]) -> String {
             significant(y, 2)
         ));
     }
-    if !data.components.is_empty() {
-        parts.push(
-            "Outlines: components of the chosen proposal, one standard deviation around their centres.".to_owned(),
-        );
+    match data.components.len() {
+        0 => {}
+        n if n == data.n_components => parts.push(
+            "Outlines: the fitted components of the chosen proposal, one standard deviation around their centres.".to_owned(),
+        ),
+        n => parts.push(format!(
+            "Outlines: the {n} largest of the {} fitted components of the chosen proposal, one standard deviation around their centres.",
+            data.n_components
+        )),
+    }
+    let beyond = draws.iter().filter(|d| !shows(d.0, d.1)).count();
+    if beyond > 0 {
+        parts.push(format!("{} draws lie outside of the axes.", count(beyond)));
     }
     if !data.nominal.is_empty() {
         parts.push("Dashed: one, two and three standard deviations of the variables' own distribution.".to_owned());
@@ -262,6 +284,7 @@ mod tests {
             y: side("score of gate_friction", 0.3),
             hit: vec![],
             components: vec![ring((3.4, 0.3), (0.5, 1.1)), ring((0.6, -3.9), (1.1, 0.4))],
+            n_components: 2,
             nominal: vec![ring((0.0, 0.0), (1.0, 1.0)), ring((0.0, 0.0), (2.0, 2.0)), ring((0.0, 0.0), (3.0, 3.0))],
             design_points: vec![(3.1, 0.2), (0.5, -3.7)],
         };

@@ -4,6 +4,7 @@ use super::draws::DrawsTable;
 use super::marginal;
 use super::marginal::Direction;
 use super::outline::outlines;
+use super::outline::sizeable;
 use super::rare_facts::RareFacts;
 use super::rare_figures;
 use super::rounds::RoundRow;
@@ -150,6 +151,11 @@ fn columns(run: &RunData) -> Vec<VariableColumn> {
 
 fn variables_data(run: &RunData, columns: &[VariableColumn], weights: &[f64], chosen: &[usize]) -> VariablesData {
     let directions = directions(run.problem);
+    let outlined = match run.rare {
+        // The many copies of components that are there for caution would hide the draws.
+        Some(_) => rare_figures::fitted(run),
+        None => sizeable(run.mixture),
+    };
     let values: Vec<&[f64]> = columns.iter().map(|column| column.values.as_slice()).collect();
     let partners = strongest_partners(&values, weights, PARTNERS);
     let all: Vec<usize> = (0..columns.len().min(MOST_ROWS)).collect();
@@ -160,9 +166,15 @@ fn variables_data(run: &RunData, columns: &[VariableColumn], weights: &[f64], ch
             Nature::Dependent { .. } => marginal::smoothed(&columns[j], weights),
             _ => marginal::closed(variable, run.mixture, &directions[j], &columns[j], weights),
         };
+        let whole = |j: usize| columns[j].discrete;
         let pair = |&k: &usize| Partner {
             variable: k,
-            outlines: outlines(run.problem, run.mixture, [(j, &directions[j]), (k, &directions[k])]),
+            // Over whole numbers an outline is a staircase that says nothing.
+            outlines: if whole(j) || whole(k) {
+                Vec::new()
+            } else {
+                outlines(run.problem, run.mixture, &outlined, [(j, &directions[j]), (k, &directions[k])])
+            },
         };
         VariableRow { variable: j, proposal_at, proposal_density, partners: partners[j].iter().map(pair).collect() }
     };

@@ -15,6 +15,7 @@ mod draws;
 mod figure_data;
 mod marginal;
 mod outline;
+mod places;
 mod rare_facts;
 mod rare_figures;
 mod rare_summary;
@@ -26,6 +27,7 @@ pub mod page;
 
 pub use draws::DrawsTable;
 pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};
+pub use places::places;
 pub use rare_facts::{RareFacts, RareRow};
 pub use rare_summary::{
     NoHit, PROBABILITY_NOTE, Pooled, RareCandidateSummary, RareRoundCandidates, RareSummary, RareSurveySummary,

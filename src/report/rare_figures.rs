@@ -3,6 +3,7 @@
 use super::figure_data::RunData;
 use super::figure_data::directions;
 use super::outline::outlines;
+use super::places::places;
 use super::rare_facts::RareFacts;
 use super::rare_facts::RareRow;
 use crate::figures::Drawing;
@@ -34,8 +35,10 @@ use crate::weights::normal_interval;
 
 /// Standard deviations of the nominal density that are outlined.
 const NOMINAL: [f64; 3] = [1.0, 2.0, 3.0];
-/// Design points that a caption tells of.
-const TOLD: usize = 4;
+/// Components that are outlined, at most.
+const OUTLINED: usize = 6;
+/// Variables whose values at the nearest point a caption tells.
+const TOLD: usize = 8;
 /// A mean so many standard errors above zero has its interval on the log scale.
 const SIGNED: f64 = 5.0;
 
@@ -122,8 +125,8 @@ fn plane_of(run: &RunData, facts: &RareFacts, chosen: &[usize]) -> Option<[usize
 
 fn plane(run: &RunData, facts: &RareFacts, (sought, hit): (Sought, Vec<bool>), [j, k]: [usize; 2]) -> PlaneData {
     let directions = directions(run.problem);
-    let lines = |mixture: &Mixture| {
-        let outlined = outlines(run.problem, mixture, [(j, &directions[j]), (k, &directions[k])]);
+    let lines = |mixture: &Mixture, which: &[usize]| {
+        let outlined = outlines(run.problem, mixture, which, [(j, &directions[j]), (k, &directions[k])]);
         outlined.into_iter().map(|outline| PlaneOutline { x: outline.x, y: outline.y }).collect::<Vec<_>>()
     };
     let side = |j: usize| {
@@ -141,10 +144,29 @@ fn plane(run: &RunData, facts: &RareFacts, (sought, hit): (Sought, Vec<bool>), [
         x: side(j),
         y: side(k),
         hit,
-        components: lines(run.mixture),
-        nominal: NOMINAL.iter().filter_map(|&sd| nominal(run.problem.dim(), sd)).flat_map(|m| lines(&m)).collect(),
+        components: lines(run.mixture, &fitted(run)),
+        n_components: n_fitted(run),
+        nominal: NOMINAL
+            .iter()
+            .filter_map(|&sd| nominal(run.problem.dim(), sd))
+            .flat_map(|m| lines(&m, &[0]))
+            .collect(),
         design_points: facts.points.iter().map(|point| (point.natural[j], point.natural[k])).collect(),
     }
+}
+
+/// How many components are fitted ones: the first of a proposal; copies and the nominal density follow them.
+fn n_fitted(run: &RunData) -> usize {
+    run.rounds.last().map_or(0, |round| round.components).min(run.mixture.len())
+}
+
+/// The largest of the fitted components.
+pub(super) fn fitted(run: &RunData) -> Vec<usize> {
+    let shares = run.mixture.shares();
+    let mut order: Vec<usize> = (0..n_fitted(run)).collect();
+    order.sort_by(|&a, &b| shares[b].total_cmp(&shares[a]).then(a.cmp(&b)));
+    order.truncate(OUTLINED);
+    order
 }
 
 /// The nominal density of the scores, widened to `sd`.
@@ -157,29 +179,24 @@ fn importance(run: &RunData, facts: &RareFacts, sought: Sought) -> ImportanceDat
     let variables = run.problem.variables();
     let nearest = &facts.points[0];
     let cosine = |signed: f64| signed.signum() * signed.abs().sqrt();
-    let mut remarks: Vec<String> = facts
-        .points
+    let place: Vec<String> = variables
         .iter()
+        .zip(places(run.problem, &nearest.natural))
+        .map(|(v, x)| format!("{} = {x}{}", v.name, v.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"))))
         .take(TOLD)
-        .map(|point| {
-            let place: Vec<String> = variables
-                .iter()
-                .zip(&point.natural)
-                .map(|(v, x)| {
-                    let unit = v.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
-                    format!("{} = {}{unit}", v.name, significant(*x, 3))
-                })
-                .take(6)
-                .collect();
-            let first = point.first_order_probability.map_or(String::new(), |p| {
-                format!("; first-order probability {} (a by-product of the search, not the answer)", significant(p, 3))
-            });
-            let what = if sought == Sought::Event { "Design point" } else { "Mode" };
-            format!("{what} at distance {}: {}{first}.", significant(point.distance, 3), place.join(", "))
-        })
         .collect();
-    if facts.points.len() > TOLD {
-        remarks.push(format!("Of {} points the {TOLD} nearest are named.", facts.points.len()));
+    let more = if variables.len() > TOLD { ", …" } else { "" };
+    let first = nearest.first_order_probability.map_or(String::new(), |p| {
+        format!(" Its first-order probability is {}: a by-product of the search, not the answer.", significant(p, 3))
+    });
+    let mut remarks = vec![format!(
+        "It lies at distance {}, at {}{more}.{first}",
+        significant(nearest.distance, 3),
+        place.join(", ")
+    )];
+    if facts.points.len() > 1 {
+        let others: Vec<String> = facts.points[1..].iter().map(|point| significant(point.distance, 3)).collect();
+        remarks.push(format!("Others that the search found lie at {}.", others.join(", ")));
     }
     if !run.problem.correlations().is_empty() {
         remarks.push(

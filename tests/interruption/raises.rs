@@ -46,8 +46,9 @@ fn old_evaluations_count_as_rounds_and_new_draws_carry_the_answer() {
     let (old, new) = (summary(&case, "whole.run"), summary(&case, "more.run"));
     let raised = &new["extended_from"][0];
     assert_eq!((&raised["budget"], &raised["report_draws"]), (&old["evaluations"], &old["draws"]));
-    // A quarter of the new total.
-    assert_eq!((new["evaluations"].as_u64(), new["draws"].as_u64()), (Some(4000), Some(1000)));
+    // A quarter of the new total, and more where the rounds ended early.
+    assert_eq!(new["evaluations"].as_u64(), Some(4000));
+    assert!((1000..2000).contains(&new["draws"].as_u64().unwrap()));
     assert!(old["extended_from"].is_null());
     let points = |run: &str| Table::read(&case.path(run).join("points.csv")).unwrap();
     let (old_points, new_points) = (points("whole.run"), points("more.run"));
@@ -84,7 +85,8 @@ fn a_raise_ends_with_the_same_bytes_however_it_is_reached() {
     let bytes = fs::read(&journal).unwrap();
     fs::write(&journal, &bytes[..bytes.len() / 2]).unwrap();
     let output = case.run(&["tune", "canal.toml", "--out", "half.run", "--resume", "--budget", "4000"]);
-    assert!(done(&output) && said(&output).contains("had not come to its end"), "{}", said(&output));
+    let told = said(&output).split_whitespace().collect::<Vec<_>>().join(" ");
+    assert!(done(&output) && told.contains("had not come to its end"), "{told}");
     case.assert_same("more.run", "half.run");
     // Cut anywhere, also within what was there before; gone on with by either name, without saying the budget again.
     for (k, part) in parts(6).enumerate() {

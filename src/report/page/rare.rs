@@ -131,7 +131,7 @@ fn surveyed(problem: &Problem, survey: &RareSurvey) -> SurveyLine {
             count(survey.evaluations)
         ),
     ];
-    let mut fact_titles = vec!["distance from the origin of the scores#", "carried by"];
+    let mut fact_titles = vec!["distance from the origin of the scores#", "squared direction cosines"];
     if event {
         fact_titles.push("first-order probability#");
     }
@@ -142,11 +142,13 @@ fn surveyed(problem: &Problem, survey: &RareSurvey) -> SurveyLine {
         }
         PointLine { location: point.natural.clone(), facts }
     };
+    let mut nearest: Vec<&DesignPoint> = survey.points.iter().collect();
+    nearest.sort_by(|a, b| a.distance.total_cmp(&b.distance));
     SurveyLine {
         sentences,
         point_name,
         fact_titles,
-        points: survey.points.iter().map(point).collect(),
+        points: nearest.into_iter().map(point).collect(),
         basin_share: no_hit_bound(survey.scouts + survey.searches),
         evaluations: survey.evaluations,
     }
