@@ -144,51 +144,60 @@ pub(crate) fn rounds(
     wide: &Mixture,
     first: Fit,
 ) -> Result<Course, TuneError> {
-    let count = plan.rounds(target.spent());
     let mut course = Course {
         rounds: Vec::new(),
         pool: Pool::new(target.dim()),
         fits: Vec::new(),
         proposals: Vec::new(),
         born: Vec::new(),
-        stop: if count < plan.most_rounds { StopReason::Budget } else { StopReason::Rounds },
+        stop: StopReason::Budget,
         last_draws: 0,
     };
-    let mut fit = first;
-    let mut predicted = None;
     let mut births_left = plan.births;
+    go_on(target, settings, plan, wide, &mut course, Next { fit: first, predicted: None }, &mut births_left)?;
+    if course.fits.is_empty() {
+        return Err(TuneError::NoMass { draws: course.pool.len() });
+    }
+    Ok(course)
+}
+
+/// What the next round is drawn from.
+pub(crate) struct Next {
+    pub(crate) fit: Fit,
+    /// Its ESS fraction as the pool predicts it.
+    pub(crate) predicted: Option<f64>,
+}
+
+/// The rounds that a plan has, after those that there are already. Curvature and probes may spend `births_left`.
+pub(crate) fn go_on(
+    target: &Standard,
+    settings: &Settings,
+    plan: &Plan,
+    wide: &Mixture,
+    course: &mut Course,
+    mut next: Next,
+    births_left: &mut u64,
+) -> Result<(), TuneError> {
+    let count = plan.rounds(target.spent());
+    let before = course.rounds.len() as u32;
+    course.stop = if count < plan.most_rounds { StopReason::Budget } else { StopReason::Rounds };
     for r in 0..count {
-        let reserved = if r + 1 == count && fit.layers.is_some() { plan.last_births.min(births_left) } else { 0 };
+        let last = r + 1 == count;
+        let reserved = if last && gives_birth(settings, &next.fit) { plan.last_births.min(*births_left) } else { 0 };
         let draws = plan.draws(r, count, target.spent() + reserved) as usize;
         if draws == 0 {
             course.stop = StopReason::Budget;
             break;
         }
-        target.enter(Stage::Round(r + 1));
-        let proposal = layered(&fit.full, wide, fit.layers)?;
-        let mut round = draw_round(target, settings, &mut course, &proposal, &fit, r, draws)?;
-        round.predicted_ess_fraction = predicted;
-        course.last_draws = draws;
-        if has_mass(&course.pool) {
-            let refined = refine(&course.pool, &fit, wide, settings, r + 1, draws)?;
-            (fit, predicted) = absorb(&mut round, refined);
-            course.fits.push(fit.clone());
-            if (r + 1 < count || reserved > 0) && fit.layers.is_some() && settings.method == Preference::Auto {
-                target.enter(Stage::Births(r + 1));
-                let before = target.spent();
-                let share = if r + 1 < count { 2 } else { 1 };
-                let cap = (before + births_left).min(before + plan.left_for_rounds(before) / share);
-                let now = layered(&fit.full, wide, fit.layers)?;
-                let df = fit.full.components()[0].df();
-                if let Some(born) = births(target, &course.pool, &now, df, cap)? {
-                    round.births = born.len() as u32;
-                    fit = join(&fit, &born)?;
-                    course.born.push((r + 1, born));
-                }
-                births_left -= target.spent() - before;
-            }
-            fit.layers = fit.layers.map(|now| explored(now, settings));
-        }
+        target.enter(Stage::Round(before + r + 1));
+        let proposal = layered(&next.fit.full, wide, next.fit.layers)?;
+        let mut round = draw_round(target, settings, course, &proposal, &next.fit, before + r, draws)?;
+        round.predicted_ess_fraction = next.predicted;
+        // Half of what is left for rounds at most, unless nothing else is to come.
+        let cap = if last { reserved } else { (*births_left).min(plan.left_for_rounds(target.spent()) / 2) };
+        let before = target.spent();
+        next = learn(target, settings, wide, course, &mut round, next, cap)?;
+        *births_left -= target.spent() - before;
         round.evaluations = target.spent();
         target.tell(|o| o.round(&round));
         course.rounds.push(round);
@@ -197,10 +206,44 @@ pub(crate) fn rounds(
             break;
         }
     }
-    if course.fits.is_empty() {
-        return Err(TuneError::NoMass { draws: course.pool.len() });
+    Ok(())
+}
+
+/// Whether components are born at heavy points.
+pub(crate) fn gives_birth(settings: &Settings, fit: &Fit) -> bool {
+    fit.layers.is_some() && settings.method == Preference::Auto
+}
+
+/// What a round that is in the pool already teaches: the next fit, and components born where that is too low, which may spend
+/// `births_cap` evaluations.
+pub(crate) fn learn(
+    target: &Standard,
+    settings: &Settings,
+    wide: &Mixture,
+    course: &mut Course,
+    round: &mut Round,
+    next: Next,
+    births_cap: u64,
+) -> Result<Next, TuneError> {
+    course.last_draws = round.draws as usize;
+    if !has_mass(&course.pool) {
+        return Ok(next);
     }
-    Ok(course)
+    let refined = refine(&course.pool, &next.fit, wide, settings, round.index, round.draws as usize)?;
+    let (mut fit, predicted) = absorb(round, refined);
+    course.fits.push(fit.clone());
+    if births_cap > 0 && gives_birth(settings, &fit) {
+        target.enter(Stage::Births(round.index));
+        let now = layered(&fit.full, wide, fit.layers)?;
+        let df = fit.full.components()[0].df();
+        if let Some(born) = births(target, &course.pool, &now, df, target.spent() + births_cap)? {
+            round.births = born.len() as u32;
+            fit = join(&fit, &born)?;
+            course.born.push((round.index, born));
+        }
+    }
+    fit.layers = fit.layers.map(|now| explored(now, settings));
+    Ok(Next { fit, predicted })
 }
 
 /// While tuning, the layers explore: they never shrink below their floors.

@@ -8,7 +8,7 @@ use super::refine::ensemble;
 use super::settings::Settings;
 use super::standard::Standard;
 use super::tuning::{Finalist, ReportDraws};
-use crate::numeric::Purpose;
+use crate::numeric::{Points, Purpose};
 use crate::proposal::{Drawn, Mixture};
 use crate::weights::{LogWeights, Score, score};
 
@@ -19,20 +19,39 @@ const MARGIN: f64 = 0.05;
 /// A round in which one draw held more than this is not trusted with the choice.
 const TRUSTED_SHARE: f64 = 0.05;
 
-/// The proposal chosen, in the start's units, and who stood beside it.
+/// The proposal chosen, in the start's units, who stood beside it, and the draws that decided.
+pub(crate) struct Choice {
+    pub(crate) chosen: Mixture,
+    pub(crate) finalists: Vec<Finalist>,
+    /// The last fits joined, and the confirm draws from them.
+    pub(crate) joined: Mixture,
+    pub(crate) confirm: Reported,
+}
+
+/// Fresh draws from a frozen proposal, with what they say.
+#[derive(Clone)]
+pub(crate) struct Reported {
+    pub(crate) draws: ReportDraws,
+    /// Gradients in the start's units, where the target gives them.
+    pub(crate) slopes: Option<Points>,
+    pub(crate) score: Option<Score>,
+}
+
+/// Chooses between the last fits joined and the best round.
 pub(crate) fn choose(
     target: &Standard,
     settings: &Settings,
     plan: &Plan,
     wide: &Mixture,
     course: &Course,
-) -> Result<(Mixture, Vec<Finalist>), TuneError> {
+) -> Result<Choice, TuneError> {
     target.enter(Stage::Confirm);
     let from = course.fits.len().saturating_sub(LAST_FITS);
     let (joined, predicted) =
         ensemble(&course.pool, &course.fits[from..], &course.born, wide, settings, course.last_draws)?;
     let n = plan.confirm.min(plan.budget - target.spent()) as usize;
-    let confirmed = fresh_score(target, settings, &joined, n, Purpose::Confirm)?.1;
+    let confirm = fresh(target, settings, &joined, n, (Purpose::Confirm, plan.part))?;
+    let confirmed = confirm.score.clone();
     let mut finalists = vec![Finalist {
         name: "ensemble".into(),
         predicted_ess_fraction: predicted,
@@ -40,7 +59,7 @@ pub(crate) fn choose(
         chosen: false,
     }];
     let best = best_round(course);
-    let mut chosen = joined;
+    let mut chosen = joined.clone();
     let mut winner = 0;
     if let Some(best) = best {
         let round = &course.rounds[best];
@@ -56,7 +75,7 @@ pub(crate) fn choose(
         }
     }
     finalists[winner].chosen = true;
-    Ok((chosen, finalists))
+    Ok(Choice { chosen, finalists, joined, confirm })
 }
 
 /// The round with the largest fresh ESS fraction among those whose score can be trusted.
@@ -85,19 +104,19 @@ fn clearly_better(round: Option<&Score>, ensemble: Option<&Score>) -> bool {
 }
 
 /// Draws `n` points, evaluates and scores them.
-fn fresh_score(
+fn fresh(
     target: &Standard,
     settings: &Settings,
     proposal: &Mixture,
     n: usize,
-    purpose: Purpose,
-) -> Result<(ReportDraws, Option<Score>), TuneError> {
-    let Drawn { points, labels } = proposal.draw(n, settings.seed, purpose, 0);
+    (purpose, part): (Purpose, u32),
+) -> Result<Reported, TuneError> {
+    let Drawn { points, labels } = proposal.draw(n, settings.seed, purpose, part);
     let log_proposal = proposal.log_density(&points);
-    let log_target = target.values(&points)?;
+    let (log_target, slopes) = target.values_and_slopes(&points)?;
     let draws = ReportDraws { points, labels, log_target, log_proposal };
     let score = LogWeights::new(draws.log_weights()).ok().map(|w| score(&w, &draws.labels));
-    Ok((draws, score))
+    Ok(Reported { draws, slopes, score })
 }
 
 /// All that is left of the budget, drawn from the frozen proposal: the number was fixed before any of them was seen. Points and log
@@ -107,14 +126,15 @@ pub(crate) fn report(
     settings: &Settings,
     plan: &Plan,
     chosen: &Mixture,
-) -> Result<(ReportDraws, Option<Score>), TuneError> {
+) -> Result<Reported, TuneError> {
     target.enter(Stage::Report);
     let n = plan.budget.saturating_sub(target.spent()) as usize;
-    let (mut draws, score) = fresh_score(target, settings, chosen, n, Purpose::Report)?;
+    let mut reported = fresh(target, settings, chosen, n, (Purpose::Report, plan.part))?;
+    let draws = &mut reported.draws;
     draws.points = target.coordinates(&draws.points);
     let shift = target.log_spread();
     for l in draws.log_target.iter_mut().chain(&mut draws.log_proposal) {
         *l -= shift;
     }
-    Ok((draws, score))
+    Ok(reported)
 }

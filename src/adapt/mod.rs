@@ -6,6 +6,7 @@
 mod climb;
 mod course;
 mod curvature;
+mod extend;
 mod finish;
 mod judgement;
 mod layers;
@@ -24,10 +25,10 @@ pub mod rare;
 
 pub use observer::{Answers, Batch, Observer, Silent, Stage};
 pub use settings::Settings;
-pub use tuning::{CandidateScore, Finalist, Mode, ReportDraws, Round, StopReason, Survey, Tuning};
+pub use tuning::{CandidateScore, Extension, Finalist, Mode, ReportDraws, Round, StopReason, Survey, Tuning};
 
 use crate::BoxError;
-use crate::problem::{EvaluateError, Problem};
+use crate::problem::{Aim, EvaluateError, Problem};
 use crate::proposal::ProposalError;
 use crate::refit::RefitError;
 use plan::Plan;
@@ -45,6 +46,18 @@ pub enum TuneError {
         budget: u64,
         /// Dimension.
         dim: usize,
+        /// The least that makes sense.
+        least: u64,
+    },
+    /// A budget is raised by too little, or not at all.
+    #[error(
+        "a budget of {from} evaluations, raised to {budget}, leaves too little for new rounds and new report draws; raise it to {least} or more"
+    )]
+    Raise {
+        /// The new budget.
+        budget: u64,
+        /// The budget before.
+        from: u64,
         /// The least that makes sense.
         least: u64,
     },
@@ -95,6 +108,17 @@ pub enum TuneError {
     Proposal(#[from] ProposalError),
 }
 
+/// Whether the budget of these settings, and every one that it was raised from, suffices for a problem.
+///
+/// # Errors
+/// [`TuneError::Budget`], [`TuneError::Raise`].
+pub fn check_budget(problem: &Problem, settings: &Settings) -> Result<(), TuneError> {
+    match problem.aim() {
+        Aim::Density => Plan::parts(settings, problem.dim()).map(|_| ()),
+        Aim::Expectation | Aim::Probability => rare::check_budget(problem.dim(), settings),
+    }
+}
+
 /// Tunes a proposal for a problem whose aim is a density: the one loop, top to bottom.
 ///
 /// Same problem, settings and seed give the same bits, whatever the number of threads.
@@ -117,15 +141,24 @@ pub enum TuneError {
 /// assert!((score.log_normaliser - exact).abs() < 5.0 * score.log_normaliser_se + 1e-3);
 /// ```
 pub fn tune(problem: &Problem, settings: &Settings, observer: &mut dyn Observer) -> Result<Tuning, TuneError> {
-    let plan = Plan::new(settings, problem.dim())?;
+    let plans = Plan::parts(settings, problem.dim())?;
+    let (plan, raises) = plans.split_first().expect("a tuning has one part at least");
     let target = Standard::new(problem, observer);
     let wide = layers::wide(problem.dim())?;
 
-    let (first, survey) = course::first_proposal(&target, settings, &plan)?;
+    let (first, survey) = course::first_proposal(&target, settings, plan)?;
     target.tell(|o| o.surveyed(&survey));
-    let course = course::rounds(&target, settings, &plan, &wide, first)?;
-    let (chosen, finalists) = finish::choose(&target, settings, &plan, &wide, &course)?;
-    let (report, score) = finish::report(&target, settings, &plan, &chosen)?;
+    let mut course = course::rounds(&target, settings, plan, &wide, first)?;
+    let mut choice = finish::choose(&target, settings, plan, &wide, &course)?;
+    let mut reported = finish::report(&target, settings, plan, &choice.chosen)?;
+    let mut extended_from = Vec::new();
+    for plan in raises {
+        extended_from.push(extend::go_on(&target, settings, plan, &wide, &mut course, (&choice, &reported))?);
+        choice = finish::choose(&target, settings, plan, &wide, &course)?;
+        reported = finish::report(&target, settings, plan, &choice.chosen)?;
+    }
+    let finish::Choice { chosen, finalists, .. } = choice;
+    let finish::Reported { draws: report, score, .. } = reported;
 
     let late_modes = judgement::late_modes(&course, &chosen, &report, &target);
     let df = course.fits[course.fits.len() - 1].full.components()[0].df();
@@ -147,6 +180,7 @@ pub fn tune(problem: &Problem, settings: &Settings, observer: &mut dyn Observer)
     };
     let verdict = judgement::judge(&evidence);
     Ok(Tuning {
+        extended_from,
         survey,
         rounds: course.rounds,
         finalists,

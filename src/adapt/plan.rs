@@ -6,7 +6,11 @@ use super::settings::Settings;
 /// Shares and caps of the budget, in evaluations.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Plan {
-    /// All evaluations.
+    /// Which part of a tuning this is: 0, or the number of times that the budget was raised before.
+    pub(crate) part: u32,
+    /// The budget before; 0 in the first part.
+    pub(crate) from: u64,
+    /// All evaluations, those of earlier parts included.
     pub(crate) budget: u64,
     /// The survey ends at this count, whatever it found.
     pub(crate) survey_cap: u64,
@@ -46,19 +50,28 @@ const BIRTHS: f64 = 0.15;
 const LAST_BIRTHS: f64 = 0.02;
 const CONFIRM: f64 = 0.05;
 const REPORT: f64 = 0.25;
+/// Of the evaluations that a raise adds, the report may have so much: some rounds must learn from what came before.
+const REPORT_OF_RAISE: f64 = 0.75;
 /// Rounds when the user does not say: more bring noise, fewer too little adaptation.
 const ROUNDS: u32 = 10;
+
+/// The least budget, and the least that a raise must add, in `dim` dimensions.
+pub(crate) fn least_raise(dim: usize) -> u64 {
+    300 + 60 * dim as u64
+}
 
 impl Plan {
     pub(crate) fn new(settings: &Settings, dim: usize) -> Result<Self, TuneError> {
         let d = dim as u64;
         let budget = settings.budget;
-        let least = 300 + 60 * d;
+        let least = least_raise(dim);
         if budget < least {
             return Err(TuneError::Budget { budget, dim, least });
         }
         let of = |share: f64| (share * budget as f64) as u64;
         Ok(Self {
+            part: 0,
+            from: 0,
             budget,
             survey_cap: of(SURVEY),
             survey_least: of(SURVEY_LEAST),
@@ -76,6 +89,42 @@ impl Plan {
             })),
             least_round: (150 + 25 * d).min(budget / 6),
             round_draws: settings.round_draws.map(|n| n.max(10 * (d + 1))),
+        })
+    }
+
+    /// The plans of all parts: one for the first budget, and one for every raise.
+    ///
+    /// A raise spends nothing on a survey. Its report draws are a share of the new budget, a quarter unless set, as far as what it
+    /// adds reaches: they alone carry the answer.
+    pub(crate) fn parts(settings: &Settings, dim: usize) -> Result<Vec<Self>, TuneError> {
+        let mut plans: Vec<Self> = Vec::new();
+        for part in settings.parts() {
+            let plan = match plans.last() {
+                None => Self::new(&part, dim)?,
+                Some(before) => before.raised(&part, dim)?,
+            };
+            plans.push(plan);
+        }
+        Ok(plans)
+    }
+
+    fn raised(&self, settings: &Settings, dim: usize) -> Result<Self, TuneError> {
+        let least = least_raise(dim);
+        let added = settings.budget.saturating_sub(self.budget);
+        if added < least {
+            return Err(TuneError::Raise { budget: settings.budget, from: self.budget, least: self.budget + least });
+        }
+        let of = |share: f64| (share * added as f64) as u64;
+        let whole = Self::new(settings, dim)?;
+        Ok(Self {
+            part: self.part + 1,
+            from: self.budget,
+            probe: of(PROBE),
+            births: of(BIRTHS),
+            confirm: of(CONFIRM).max(of(0.1).min(200)),
+            report: whole.report.min(of(REPORT_OF_RAISE)),
+            least_round: whole.least_round.min(added / 6),
+            ..whole
         })
     }
 

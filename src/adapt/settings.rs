@@ -8,6 +8,8 @@ use crate::refit::Preference;
 pub struct Settings {
     /// Evaluations in all: survey, rounds, confirm and report draws.
     pub budget: u64,
+    /// Earlier budgets, ascending, which the tuning was planned with before it was raised to this one; empty for most.
+    pub extended_from: Vec<u64>,
     /// Draws in a round.
     pub round_draws: Option<u64>,
     /// Rounds at most.
@@ -36,6 +38,7 @@ impl Settings {
     pub fn new(budget: u64, seed: u64) -> Self {
         Self {
             budget,
+            extended_from: Vec::new(),
             round_draws: None,
             rounds: 20,
             report_share: None,
@@ -54,6 +57,7 @@ impl Settings {
     pub fn from_keys(keys: &TuningKeys) -> Self {
         let plain = Self::new(keys.budget.unwrap_or(BUDGET), keys.seed.unwrap_or(1));
         Self {
+            extended_from: keys.extended_from.clone(),
             round_draws: keys.round_draws,
             rounds: keys.rounds.map_or(plain.rounds, |r| r.min(u64::from(u32::MAX)) as u32),
             report_share: keys.report_share,
@@ -70,6 +74,12 @@ impl Settings {
             defensive: keys.defensive,
             ..plain
         }
+    }
+
+    /// The same settings under every budget in turn, the first planned first.
+    pub(crate) fn parts(&self) -> Vec<Self> {
+        let budgets = self.extended_from.iter().copied().chain([self.budget]);
+        budgets.map(|budget| Self { budget, extended_from: Vec::new(), ..self.clone() }).collect()
     }
 
     /// Whether scales are kept diagonal.

@@ -89,6 +89,20 @@ pub struct CandidateScore {
     pub gain: f64,
 }
 
+/// A budget that was raised: what was spent under it is kept, and its report draws count as a round.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
+pub struct Extension {
+    /// The budget before.
+    pub budget: u64,
+    /// Rounds until then, those that its confirm and report draws became included.
+    pub rounds: u32,
+    /// Its confirm draws: the last round but one of these. None for a probability or an expectation.
+    pub confirm_draws: u64,
+    /// The draws that its answer rested on. For a density they are the last of these rounds now and no part of the new answer;
+    /// for a probability or an expectation they are the counted rounds until then, which go on counting.
+    pub report_draws: u64,
+}
+
 /// Why the rounds ended.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
 #[serde(rename_all = "kebab-case")]
@@ -148,6 +162,8 @@ impl ReportDraws {
 /// The whole of a tuning.
 #[derive(Debug, Clone)]
 pub struct Tuning {
+    /// Earlier budgets, where the budget was raised.
+    pub extended_from: Vec<Extension>,
     /// What the survey found.
     pub survey: Survey,
     /// The rounds.

@@ -8,8 +8,10 @@ use super::run_files;
 use super::run_files::Form;
 use anyhow::Context;
 use evenpoise::figures::Style;
+use evenpoise::problem::Aim;
 use evenpoise::problem::Problem;
 use evenpoise::report::DrawsTable;
+use evenpoise::report::RareFacts;
 use evenpoise::report::RunData;
 use evenpoise::report::draw_figures;
 use evenpoise::report::read_evaluations;
@@ -46,6 +48,7 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let chosen = args.variables.iter().map(|name| place(&problem, name)).collect::<Result<Vec<_>, _>>()?;
     let proposal = read_proposal(&args.run)?;
     let evaluations = read_evaluations(&args.run.join("summary.json"))?;
+    let rare = (problem.aim() != Aim::Density).then(|| RareFacts::read(&args.run, problem.aim())).transpose()?;
     let data = RunData {
         problem: &problem,
         mixture: &proposal.mixture()?,
@@ -53,6 +56,7 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
         rounds: &read_rounds(&args.run.join("rounds.csv"))?,
         survey_evaluations: evaluations.survey,
         evaluations: evaluations.all,
+        rare: rare.as_ref(),
     };
     let folder = args.out.clone().unwrap_or_else(|| args.run.join("figures"));
     fs::create_dir_all(&folder).with_context(|| format!("cannot create the folder {}", folder.display()))?;

@@ -27,6 +27,13 @@ pub(crate) fn facts(problem: &Problem) -> JournalHeader {
     JournalHeader { facts }
 }
 
+/// The budgets that a run was written under, the last one last; none where its header does not say.
+pub(crate) fn budgets(header: &JournalHeader) -> Vec<u64> {
+    let fact = |key: &str| header.facts.get(&format!("the setting {key}")).map_or("", String::as_str);
+    let earlier = fact("extended_from").trim_matches(['[', ']']).split(',');
+    earlier.chain([fact("budget")]).filter_map(|budget| budget.trim().parse().ok()).collect()
+}
+
 /// Seed, versions and digests of a run.
 pub(crate) fn provenance(problem: &Problem, seed: u64) -> Provenance {
     let mut digests: BTreeMap<String, String> = data(problem).collect();

@@ -14,6 +14,7 @@ mod options;
 mod output;
 mod points;
 mod problem_file;
+mod raise;
 mod rare_report;
 mod round_lines;
 mod run_files;

@@ -70,6 +70,7 @@ impl TuningOptions {
         let gaussian = self.family == Some(Setting::Of(Family::Gaussian));
         TuningKeys {
             budget: self.budget.or(keys.budget),
+            extended_from: keys.extended_from.clone(),
             round_draws: chosen(self.round_draws, keys.round_draws),
             rounds: self.rounds.or(keys.rounds),
             report_share: chosen(self.report_share, keys.report_share),

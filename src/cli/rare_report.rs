@@ -11,6 +11,7 @@ use super::numbers::percent;
 use super::numbers::significant;
 use super::tune_report::mark;
 use super::tune_report::quiet;
+use super::tune_report::raised;
 use super::tune_report::verdict;
 use evenpoise::adapt::rare::DesignPoint;
 use evenpoise::adapt::rare::RareAnswer;
@@ -19,6 +20,7 @@ use evenpoise::adapt::rare::RareValue;
 use evenpoise::problem::Aim;
 use evenpoise::problem::Problem;
 use evenpoise::report::PROBABILITY_NOTE;
+use evenpoise::report::places;
 
 /// Most points in the table; all are in the summary.
 const MOST_POINTS: usize = 8;
@@ -27,7 +29,8 @@ const NAMED: usize = 3;
 
 /// Answer, design points and verdict.
 pub(crate) fn closing(problem: &Problem, tuning: &RareTuning) -> String {
-    let parts = format!("{} components; {} evaluations in all", tuning.chosen.len(), count(tuning.evaluations));
+    let (n, raised) = (tuning.chosen.len(), raised(&tuning.extended_from));
+    let parts = format!("{n} components; {} evaluations in all{raised}", count(tuning.evaluations));
     let counted = tuning.rounds.iter().filter(|round| round.counted).count();
     let draws = count(tuning.draws.log_nominal.len() as u64);
     let title = format!("Answer from the {draws} draws of {counted} rounds{}", mark(&tuning.verdict));
@@ -99,10 +102,11 @@ fn points(problem: &Problem, points: &[DesignPoint]) -> String {
 fn carried(problem: &Problem, point: &DesignPoint) -> String {
     let mut order: Vec<usize> = (0..problem.dim()).collect();
     order.sort_by(|&a, &b| point.importance[b].abs().total_cmp(&point.importance[a].abs()).then(a.cmp(&b)));
+    let values = places(problem, &point.natural);
     let named = order.iter().take(NAMED).map(|&j| {
         let variable = &problem.variables()[j];
         let unit = variable.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
-        let value = significant(point.natural[j], 3);
+        let value = &values[j];
         format!("{} {} ({value}{unit})", cut(&variable.name, 16), percent(point.importance[j].abs()))
     });
     named.collect::<Vec<_>>().join(", ")

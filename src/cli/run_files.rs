@@ -9,6 +9,7 @@ use evenpoise::figures::Style;
 use evenpoise::problem::Problem;
 use evenpoise::report::DrawsTable;
 use evenpoise::report::Evaluations;
+use evenpoise::report::RareFacts;
 use evenpoise::report::RareSummary;
 use evenpoise::report::RoundRow;
 use evenpoise::report::RunData;
@@ -17,6 +18,7 @@ use evenpoise::report::draw_figures;
 use evenpoise::report::page::PageData;
 use evenpoise::report::page::PageFigure;
 use evenpoise::report::page::html;
+use evenpoise::report::page::markdown;
 use evenpoise::report::write_rare_rounds;
 use evenpoise::report::write_rounds;
 use evenpoise::store::ProposalFile;
@@ -48,7 +50,7 @@ pub(crate) fn write(folder: &RunFolder, problem: &Problem, tuning: &Tuning, seed
     let rounds: Vec<RoundRow> = tuning.rounds.iter().map(RoundRow::from).collect();
     let draws = DrawsTable::of(problem, tuning);
     let evaluations = Evaluations { all: tuning.evaluations, survey: tuning.survey.evaluations };
-    let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
+    let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations, None)?;
     let facts =
         header::facts_of_run(&provenance, evaluations.all, tuning.failed, draws.len(), problem.text_for(folder.path()));
     write_page(folder, &PageData::of_density(problem, tuning, figures, facts))?;
@@ -81,7 +83,7 @@ pub(crate) fn write_rare(
     let rounds: Vec<RoundRow> = tuning.rounds.iter().map(RoundRow::from).collect();
     let draws = DrawsTable::of_rare(problem, &tuning.draws);
     let evaluations = Evaluations { all: tuning.evaluations, survey: tuning.survey.evaluations };
-    let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations)?;
+    let figures = write_common(folder, problem, &proposal, &draws, &rounds, evaluations, Some(&RareFacts::of(tuning)))?;
     write_page(folder, &PageData::of_rare(problem, tuning, figures, facts))?;
     write_json(&folder.join("summary.json"), &summary)?;
     Ok(summary)
@@ -94,6 +96,7 @@ fn write_common(
     draws: &DrawsTable,
     rounds: &[RoundRow],
     evaluations: Evaluations,
+    rare: Option<&RareFacts>,
 ) -> anyhow::Result<Vec<PageFigure>> {
     draws.write(&folder.join("points.csv"))?;
     proposal.write(&folder.join("proposal.json"))?;
@@ -105,6 +108,7 @@ fn write_common(
         rounds,
         survey_evaluations: evaluations.survey,
         evaluations: evaluations.all,
+        rare,
     };
     let drawings = draw_figures(&data, &[], &Style::default());
     let figures: Vec<PageFigure> = drawings.par_iter().map(PageFigure::of).collect();
@@ -116,9 +120,10 @@ fn write_common(
     Ok(figures)
 }
 
-/// The report, as a page.
+/// The report, as a page and as Markdown.
 fn write_page(folder: &RunFolder, data: &PageData) -> Result<(), StoreError> {
-    write_bytes(&folder.join("report.html"), html(data).as_bytes())
+    write_bytes(&folder.join("report.html"), html(data).as_bytes())?;
+    write_bytes(&folder.join("report.md"), markdown(data).as_bytes())
 }
 
 /// Writes figures, the numbers behind each, and their captions.

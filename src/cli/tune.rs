@@ -7,6 +7,7 @@ use super::options::TuningOptions;
 use super::output;
 use super::problem_file;
 use super::problem_file::Located;
+use super::raise::Budgets;
 use super::rare_report;
 use super::run_files;
 use super::run_files::write_bytes;
@@ -23,11 +24,13 @@ use evenpoise::adapt::rare::RareTuning;
 use evenpoise::adapt::rare::tune_rare;
 use evenpoise::problem::Aim;
 use evenpoise::problem::Problem;
+use evenpoise::problem::TuningKeys;
 use evenpoise::store::Recorder;
 use evenpoise::store::RunFolder;
 use evenpoise::store::write_json;
 use evenpoise::weights::verdict::Word;
 use serde::Serialize;
+use std::fs;
 use std::path::PathBuf;
 
 /// Tune a proposal for the integral in PROBLEM, and judge it.
@@ -41,30 +44,53 @@ pub(crate) struct Args {
     /// Replace the run that is in the folder.
     #[arg(long, conflicts_with = "resume")]
     force: bool,
-    /// Go on with a run that was interrupted: nothing that was evaluated is evaluated again.
+    /// Go on with a run that was interrupted, or with a finished one under a larger --budget: nothing that was evaluated is
+    /// evaluated again.
     #[arg(long)]
     resume: bool,
     /// Print the summary as JSON on standard output, and nothing else there.
     #[arg(long)]
     json: bool,
     #[command(flatten)]
-    tuning: TuningOptions,
+    pub(crate) tuning: TuningOptions,
 }
 
 pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let located = problem_file::locate(&args.problem, args.out.as_deref());
-    let problem = problem_file::read(&located.file, |keys| args.tuning.over(keys))?;
+    let resumed = if args.resume { Some(Resumed::open(args, &located)?) } else { None };
+    let problem = problem_file::read(&located.file, |keys| {
+        let keys = args.tuning.over(keys);
+        match &resumed {
+            Some(resumed) => resumed.budgets.over(keys),
+            // A budget on the command line is a plan of its own, whatever the file says of earlier ones.
+            None if args.tuning.budget.is_some() => TuningKeys { extended_from: Vec::new(), ..keys },
+            None => keys,
+        }
+    })?;
     options::check(problem.tuning())?;
     // Zero threads: as many as the machine has cores.
     let threads = usize::try_from(args.tuning.threads(problem.tuning()).unwrap_or(0))?;
     let threads = rayon::ThreadPoolBuilder::new().num_threads(threads).build().context("starting the threads")?;
-    threads.install(|| tune(args, &located, &problem))
+    threads.install(|| tune(args, &located, &problem, resumed))
 }
 
-fn tune(args: &Args, located: &Located, problem: &Problem) -> anyhow::Result<Ending> {
+/// A run that is gone on with.
+struct Resumed {
+    folder: RunFolder,
+    budgets: Budgets,
+}
+
+impl Resumed {
+    fn open(args: &Args, located: &Located) -> anyhow::Result<Self> {
+        let folder = RunFolder::open(&located.run)?;
+        Ok(Self { folder, budgets: Budgets::of(args, located)? })
+    }
+}
+
+fn tune(args: &Args, located: &Located, problem: &Problem, resumed: Option<Resumed>) -> anyhow::Result<Ending> {
     let settings = Settings::from_keys(problem.tuning());
     let signals = Signals::listen().context("listening for signals")?;
-    let (folder, mut watch) = begin(args, located, problem, &settings, signals.clone())?;
+    let (folder, mut watch) = begin(args, located, problem, resumed, signals.clone())?;
     let tuned = match problem.aim() {
         Aim::Density => adapt::tune(problem, &settings, &mut watch).map(|tuning| Tuned::Density(Box::new(tuning))),
         _ => tune_rare(problem, &settings, &mut watch).map(|tuning| Tuned::Rare(Box::new(tuning))),
@@ -109,26 +135,35 @@ fn begin(
     args: &Args,
     located: &Located,
     problem: &Problem,
-    settings: &Settings,
+    resumed: Option<Resumed>,
     signals: Signals,
 ) -> anyhow::Result<(RunFolder, Watch)> {
     let facts = header::facts(problem);
-    let (folder, recorder, dropped) = if args.resume {
-        let folder = RunFolder::open(&located.run)?;
-        let (recorder, dropped) = Recorder::resume(folder.path(), &facts)?;
-        (folder, recorder, dropped)
-    } else {
-        let folder = RunFolder::create(&located.run, args.force)?;
-        let recorder = Recorder::begin(folder.path(), &facts)?;
-        (folder, recorder, None)
+    let (folder, recorder, dropped, raised) = match resumed {
+        Some(Resumed { folder, budgets }) => {
+            let raised = budgets.write(args, located, problem)?;
+            let (recorder, dropped) = Recorder::resume(folder.path(), &facts)?;
+            (folder, recorder, dropped, raised)
+        }
+        None => {
+            let folder = RunFolder::create(&located.run, args.force)?;
+            let recorder = Recorder::begin(folder.path(), &facts)?;
+            (folder, recorder, None, None)
+        }
     };
     let log = folder.join("log.txt");
     let mut screen = Screen::new(&log).with_context(|| format!("cannot write {}", log.display()))?;
     let copy = folder.join(problem_file::COPY);
-    if !copy.exists() {
-        write_bytes(&copy, problem.text_for(folder.path()).as_bytes())?;
+    let text = problem.text_for(folder.path());
+    let stale = || !problem.tuning().extended_from.is_empty() && fs::read_to_string(&copy).ok().as_ref() != Some(&text);
+    if !copy.exists() || stale() {
+        write_bytes(&copy, text.as_bytes())?;
     }
+    let settings = Settings::from_keys(problem.tuning());
     screen.keep(&tune_report::opening(problem, settings.budget, settings.seed));
+    if let Some(raised) = raised {
+        screen.keep(&raised);
+    }
     if args.resume {
         screen.keep(&tune_report::resumed(recorder.found(), dropped.as_deref(), folder.stale_lock()));
     }

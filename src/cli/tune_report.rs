@@ -11,6 +11,7 @@ use super::numbers::count;
 use super::numbers::measured;
 use super::numbers::percent;
 use super::numbers::significant;
+use evenpoise::adapt::Extension;
 use evenpoise::adapt::Tuning;
 use evenpoise::problem::Problem;
 use evenpoise::weights::Estimate;
@@ -59,7 +60,19 @@ fn proposal(tuning: &Tuning) -> String {
     let from = tuning.finalists.iter().find(|finalist| finalist.chosen).map_or("", |finalist| finalist.name.as_str());
     let from = if from == "ensemble" { "the last fits joined".to_owned() } else { from.to_owned() };
     let parts = if n == 1 { "one component".to_owned() } else { format!("{n} components") };
-    hanging("Proposal  ", &format!("{parts} ({tails}), from {from}; {} evaluations in all", count(tuning.evaluations)))
+    let raised = raised(&tuning.extended_from);
+    let spent = format!("{} evaluations in all{raised}", count(tuning.evaluations));
+    hanging("Proposal  ", &format!("{parts} ({tails}), from {from}; {spent}"))
+}
+
+/// What is said of a budget that was raised.
+pub(crate) fn raised(extended_from: &[Extension]) -> String {
+    let budgets: Vec<String> = extended_from.iter().map(|earlier| count(earlier.budget)).collect();
+    if budgets.is_empty() {
+        String::new()
+    } else {
+        format!(" (the budget was raised from {})", budgets.join(", then "))
+    }
 }
 
 fn scores(score: &Score, verdict: &Verdict) -> String {
@@ -153,7 +166,7 @@ pub(crate) fn mark(verdict: &Verdict) -> &'static str {
 /// Where everything is, and what to do next.
 pub(crate) fn whereabouts(run: &str) -> String {
     format!(
-        "\nReport    {run}/report.html\n          with proposal.json, points.csv, summary.json, rounds.csv, figures\n\
+        "\nReport    {run}/report.html\n          and report.md, proposal.json, points.csv, summary.json, figures\n\
          Next      evenpoise points {run} --even 4000\n"
     )
 }

@@ -19,6 +19,8 @@ use super::numbers::significant;
 use super::table::Table;
 use super::text::Spot;
 
+/// Up to so many points are marked one by one.
+const MARKED: usize = 30;
 /// Heights of the panels, in text sizes.
 const HEIGHTS: (f64, f64) = (13.0, 11.0);
 
@@ -130,6 +132,10 @@ pub fn draw(data: &CourseData, style: &Style) -> Drawing {
     let mut frame = Frame::new(&x, &rows, &entries, style);
     draw_band(&mut frame, &points);
     frame.curve(0, points.iter().map(|p| (p.spent, p.estimate)), line);
+    let few = points.len() <= MARKED;
+    for point in points.iter().filter(|p| few && frame.panels[0].shows(p.spent, p.estimate)) {
+        frame.canvas.disc(frame.panels[0].spot(point.spent, point.estimate), 0.6 * style.marker(), MEASURED, 1.0);
+    }
     if let Some(last) = points.last().filter(|last| frame.panels[0].shows(last.spent, last.estimate)) {
         let ends = [(last.spent, last.interval.0), (last.spent, last.interval.1)];
         frame.curve(0, ends, Pen::solid(MEASURED, 1.4 * style.hairline()));
@@ -193,10 +199,10 @@ fn draw_band(frame: &mut Frame, points: &[&CoursePoint]) {
 }
 
 fn caption(data: &CourseData, points: &[&CoursePoint]) -> String {
-    let Some(last) = points.last() else { return format!("There is no estimate of {}.", data.quantity) };
+    let Some(last) = points.last() else { return format!("There is no estimate of the {}.", data.quantity) };
     let unit = data.unit.as_ref().map_or(String::new(), |unit| format!(" {unit}"));
     let mut parts = vec![format!(
-        "Estimate of {} with its 95 % interval (a) and its standard error (b) against the {} spent.",
+        "Estimate of the {} with its 95 % interval (a) and its standard error (b) against the {} spent.",
         data.quantity, data.spent
     )];
     let relative = last.standard_error / last.estimate.abs();

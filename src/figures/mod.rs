@@ -14,8 +14,8 @@
 //! of freedom), [`compare_errors`] (running standard errors), [`compare_radial`] (tails of target and proposals), each
 //! contestant with its look of [`contestants`].
 //!
-//! Rare events: [`rare_margin`] (margin against the distance in score space), [`rare_plane`] (the event in the plane of
-//! two variables), [`rare_importance`] (the part of each variable).
+//! Rare events and means of integrands ([`sought`] tells them apart): [`rare_margin`] (margin against the distance in score space),
+//! [`rare_plane`] (the event in the plane of two variables), [`rare_importance`] (the part of each variable).
 //!
 //! Production: [`course`] (an estimate with its interval and error against what was spent; for probabilities too) and
 //! [`bands`] (a column of estimates with its bands).
@@ -55,6 +55,7 @@ pub mod rare_importance;
 pub mod rare_margin;
 pub mod rare_plane;
 pub mod raster;
+pub mod sought;
 pub mod svg;
 pub mod table;
 pub mod text;

@@ -20,6 +20,7 @@ use super::numbers::significant;
 use super::panel::Panel;
 use super::panel::bottom_room;
 use super::place::Area;
+use super::sought::Sought;
 use super::table::Table;
 use super::text::Face;
 use super::text::width;
@@ -39,6 +40,10 @@ const NAMES: f64 = 0.34;
 /// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct ImportanceData {
+    /// What is looked for.
+    pub sought: Sought,
+    /// What is to be said of the point, a sentence each.
+    pub remarks: Vec<String>,
     /// The variables, in any order.
     pub variables: Vec<Importance>,
 }
@@ -75,9 +80,13 @@ struct Bar {
 pub fn draw(data: &ImportanceData, style: &Style) -> Drawing {
     let bars = bars(data, style);
     let (unit, margin) = (style.unit(), MARGIN * style.unit());
+    let to = match data.sought {
+        Sought::Event => "to the event",
+        Sought::Integrand => "to the mode",
+    };
     let entries = [
-        (Sample::Field(MEASURED, Pen::solid(MEASURED, style.hairline())), "larger values lead to the event".to_owned()),
-        (Sample::Field(MODELLED, Pen::solid(MODELLED, style.hairline())), "smaller values do".to_owned()),
+        (Sample::Field(MEASURED, Pen::solid(MEASURED, style.hairline())), format!("larger values lead {to}")),
+        (Sample::Field(MODELLED, Pen::solid(MODELLED, style.hairline())), format!("smaller values lead {to}")),
     ];
     let key = Key::new(&entries, style.width() - 2.0 * margin, style);
     let top = key.height(style) + 0.9 * unit;
@@ -110,7 +119,7 @@ fn panel(bars: &[Bar], (top, bottom): (f64, f64), style: &Style) -> Panel {
     let unit = style.unit();
     let names = bars.iter().flat_map(|bar| &bar.name);
     let names = names.map(|line| width(line, unit, Face::Regular)).fold(0.0, f64::max);
-    let number = width("0.000", unit, Face::Regular) + 0.6 * unit;
+    let number = width("−0.000", unit, Face::Regular) + 0.6 * unit;
     let ends = bars.iter().fold((0.0_f64, 0.0_f64), |(low, high), bar| (low.min(bar.signed), high.max(bar.signed)));
     let (low, high) = if ends.1 - ends.0 > 0.0 { ends } else { (0.0, 1.0) };
     let left = (MARGIN + 0.6) * unit + names + if low < 0.0 { number } else { 0.0 };
@@ -132,7 +141,7 @@ fn draw_bar(canvas: &mut Canvas, panel: &Panel, bar: &Bar, middle: f64, style: &
     let (top, bottom) = (middle - half, middle + half);
     canvas.fill(vec![(zero, top), (end, top), (end, bottom), (zero, bottom)], colour, 1.0);
     let size = bar.signed.abs();
-    let number = if size < 0.001 { "< 0.001".to_owned() } else { significant(size, 2) };
+    let number = if size < 0.001 { "< 0.001".to_owned() } else { significant(bar.signed, 2) };
     let (x, anchor) =
         if bar.signed < 0.0 { (end - 0.3 * unit, Anchor::End) } else { (end + 0.3 * unit, Anchor::Start) };
     canvas.write(&number, (x, baseline), anchor, style.plain(colour));
@@ -167,11 +176,11 @@ fn bars(data: &ImportanceData, style: &Style) -> Vec<Bar> {
 
 fn caption(data: &ImportanceData) -> String {
     let sorted = sorted(data);
-    let mut parts = vec![
-        "Squared direction cosines of the most likely point of the event: the share of each variable in its \
-         distance from the origin of the scores."
-            .to_owned(),
-    ];
+    let mut parts = vec![format!(
+        "Signed squared direction cosines of the nearest {}: the share of each variable in its squared distance from the origin \
+         of the scores, to the right where a larger value leads there.",
+        data.sought.point()
+    )];
     let (mut sum, mut most) = (0.0, 0);
     let total: f64 = sorted.iter().map(|v| v.cosine * v.cosine).sum();
     while most < sorted.len() && sum < 0.9 * total {
@@ -183,6 +192,7 @@ fn caption(data: &ImportanceData) -> String {
         let rest = if most > 5 { format!(" and {} more", most - 5) } else { String::new() };
         parts.push(format!("Nine tenths of it rest on {}{rest}.", names.join(", ")));
     }
+    parts.extend(data.remarks.iter().cloned());
     parts.join(" ")
 }
 
@@ -202,7 +212,7 @@ mod tests {
     fn data(cosines: &[f64], name: impl Fn(usize) -> String) -> ImportanceData {
         let norm = cosines.iter().map(|c| c * c).sum::<f64>().sqrt();
         let variables = cosines.iter().enumerate().map(|(i, c)| Importance { name: name(i), cosine: c / norm });
-        ImportanceData { variables: variables.collect() }
+        ImportanceData { sought: Sought::Event, remarks: vec![], variables: variables.collect() }
     }
 
     #[test]
@@ -219,7 +229,13 @@ mod tests {
             ("falling", data(&[-0.8, -0.4, -0.3], gauge)),
             ("many", data(&many, long)),
             ("broken", broken),
-            ("zero", ImportanceData { variables: vec![Importance { name: "still".into(), cosine: 0.0 }] }),
+            (
+                "zero",
+                ImportanceData {
+                    variables: vec![Importance { name: "still".into(), cosine: 0.0 }],
+                    ..data(&[], gauge)
+                },
+            ),
             ("empty", data(&[], gauge)),
         ];
         for (name, data) in cases {

@@ -15,6 +15,7 @@ use super::frame::Side;
 use super::key::Sample;
 use super::numbers::count;
 use super::numbers::significant;
+use super::sought::Sought;
 use super::table::Table;
 
 /// Most dots of each kind; of more draws, evenly many are drawn.
@@ -25,6 +26,8 @@ const DOT: f64 = 0.13;
 /// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct MarginData {
+    /// What is looked for: of an integrand the margins are its values.
+    pub sought: Sought,
     /// What the margin is called.
     pub margin_name: String,
     /// Its unit.
@@ -60,11 +63,18 @@ pub fn draw(data: &MarginData, style: &Style) -> Drawing {
     let (low, high) = padded_range([usual[0], usual[1], 0.0], 0.08).unwrap_or((-1.0, 1.0));
 
     let dot = DOT * style.unit();
-    let entries = [
-        (Sample::Dot(1.3 * dot, MEASURED, 0.8), "in the event".to_owned()),
-        (Sample::Dot(1.3 * dot, REFERENCE, 0.6), "outside".to_owned()),
-        (Sample::Line(limit(style)), "limit of the event".to_owned()),
+    let mut entries = vec![
+        (Sample::Dot(1.3 * dot, MEASURED, 0.8), data.sought.inside().to_owned()),
+        (Sample::Dot(1.3 * dot, REFERENCE, 0.6), data.sought.outside().to_owned()),
     ];
+    if data.sought == Sought::Event {
+        entries.push((Sample::Line(limit(style)), "limit of the event".to_owned()));
+    }
+    let guide = Pen::solid(MODELLED, 1.4 * style.hairline()).dashed(0.4 * style.unit(), 0.3 * style.unit());
+    if let Some(first) = nearest.clone().reduce(f64::min) {
+        let many = if nearest.clone().count() > 1 { "s, the nearest" } else { "" };
+        entries.push((Sample::Line(guide), format!("{}{many} at {}", data.sought.point(), significant(first, 3))));
+    }
     let x = Side {
         name: "distance from the origin of the scores",
         unit: None,
@@ -80,20 +90,16 @@ pub fn draw(data: &MarginData, style: &Style) -> Drawing {
             }
         }
     }
-    frame.curve(0, [(0.0, 0.0), (end, 0.0)], limit(style));
-    let guide = Pen::solid(MODELLED, 1.4 * style.hairline()).dashed(0.4 * style.unit(), 0.3 * style.unit());
-    for distance in nearest.clone() {
-        frame.curve(0, [(distance, low), (distance, high)], guide);
+    if data.sought == Sought::Event {
+        frame.curve(0, [(0.0, 0.0), (end, 0.0)], limit(style));
     }
-    if let Some(first) = nearest.reduce(f64::min) {
-        let (x, y) = frame.panels[0].spot(first, high);
-        let text = format!("nearest point {}", significant(first, 3));
-        frame.note(0, &text, (x - 4.6 * style.unit(), y + style.unit()), MODELLED);
+    for distance in nearest {
+        frame.curve(0, [(distance, low), (distance, high)], guide);
     }
     if draws.is_empty() {
         frame.say(0, "no draw");
     }
-    frame.finish("margin", caption(data, &draws), table(&draws))
+    frame.finish("margin", caption(data, &draws), table(data, &draws))
 }
 
 fn limit(style: &Style) -> Pen {
@@ -111,30 +117,40 @@ fn thinned<T: Copy>(draws: Vec<T>) -> Vec<T> {
 fn caption(data: &MarginData, draws: &[(f64, f64, bool)]) -> String {
     let hits = draws.iter().filter(|d| d.2).count();
     let mut parts = vec![format!(
-        "Margin ({}) of {} draws against their distance from the origin of the standard normal scores; {} of \
-         them lie in the event.",
-        data.margin_name,
+        "{} of {} draws against their distance from the origin of the standard normal scores, in standard deviations; {} {}.",
+        capital(&data.margin_name),
         count(draws.len()),
-        count(hits)
+        count(hits),
+        data.sought.of_them()
     )];
     if let Some(nearest) = draws.iter().filter(|d| d.2).map(|d| d.0).reduce(f64::min) {
         parts.push(format!("The nearest of those is {} away.", significant(nearest, 3)));
     }
     let found: Vec<String> = data.nearest.iter().map(|&distance| significant(distance, 3)).collect();
     if !found.is_empty() {
-        parts.push(format!("Dashed: the nearest points of the event that the search found, at {}.", found.join(", ")));
+        parts.push(format!("Dashed: {}, at {}.", data.sought.points(), found.join(", ")));
     }
     let failed = data.distance.len() - draws.len();
     match failed {
         0 => {}
-        1 => parts.push("One draw has no margin.".to_owned()),
-        _ => parts.push(format!("{} draws have no margin.", count(failed))),
+        1 => parts.push("One draw has no finite value.".to_owned()),
+        _ => parts.push(format!("{} draws have no finite value.", count(failed))),
     }
     parts.join(" ")
 }
 
-fn table(draws: &[(f64, f64, bool)]) -> Table {
-    let mut table = Table::new(&["distance", "margin", "in_event"]);
+/// With a capital letter, for the beginning of a sentence.
+fn capital(text: &str) -> String {
+    let mut letters = text.chars();
+    letters.next().map_or(String::new(), |first| first.to_uppercase().chain(letters).collect())
+}
+
+fn table(data: &MarginData, draws: &[(f64, f64, bool)]) -> Table {
+    let columns = match data.sought {
+        Sought::Event => ["distance", "margin", "in_event"],
+        Sought::Integrand => ["distance", "integrand", "not_zero"],
+    };
+    let mut table = Table::new(&columns);
     for &(distance, margin, hit) in draws {
         table.push([distance.into(), margin.into(), if hit { "yes" } else { "no" }.into()]);
     }
@@ -153,6 +169,7 @@ mod tests {
     fn data(n: usize, scale: f64) -> MarginData {
         let mut stream = stream(5, Purpose::Trial, 0, 0);
         let mut data = MarginData {
+            sought: Sought::Event,
             margin_name: "freeboard at the crest".into(),
             unit: Some("m".into()),
             distance: vec![],
@@ -180,7 +197,15 @@ mod tests {
         missed.hit.fill(false);
         missed.nearest.clear();
         let empty = MarginData { distance: vec![], margin: vec![], hit: vec![], nearest: vec![], ..data(0, 1.0) };
-        for (name, data) in [("usual", data(4000, 1.0)), ("failed", failed), ("missed", missed), ("empty", empty)] {
+        let integrand = MarginData { sought: Sought::Integrand, margin_name: "integrand".into(), ..data(4000, 30.0) };
+        let cases = [
+            ("usual", data(4000, 1.0)),
+            ("failed", failed),
+            ("missed", missed),
+            ("empty", empty),
+            ("integrand", integrand),
+        ];
+        for (name, data) in cases {
             checks::check(&format!("margin-{name}"), |style| vec![draw(&data, style)]);
         }
     }
@@ -190,7 +215,7 @@ mod tests {
         let mut data = data(300, 1.0);
         data.margin[7] = f64::NAN;
         let drawing = draw(&data, &Style::default());
-        assert!(drawing.caption.contains("299 draws") && drawing.caption.contains("One draw has no margin"));
+        assert!(drawing.caption.contains("299 draws") && drawing.caption.contains("One draw has no finite value"));
         assert_eq!(drawing.table.rows().len(), 299);
         assert_eq!(thinned((0..5000).collect()).len(), DOTS);
     }

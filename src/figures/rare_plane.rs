@@ -9,24 +9,30 @@ use super::colour::MEASURED;
 use super::colour::MODELLED;
 use super::colour::PAPER;
 use super::colour::REFERENCE;
+use super::columns::quantiles;
 use super::frame::Frame;
 use super::frame::Side;
 use super::key::Sample;
 use super::numbers::count;
 use super::numbers::significant;
 use super::place::Area;
+use super::sought::Sought;
 use super::table::Table;
 
 /// Height of the panel in text sizes: about as high as wide.
 const HEIGHT: f64 = 27.0;
 /// Most dots of each kind; of more draws, evenly many are drawn.
 const DOTS: usize = 1500;
+/// Part of the draws that the axes show at least, as quantiles.
+const FRAMED: [f64; 2] = [0.0025, 0.9975];
 /// Radius of a dot, in text sizes.
 const DOT: f64 = 0.13;
 
 /// What the figure shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct PlaneData {
+    /// What is looked for.
+    pub sought: Sought,
     /// What all values are.
     pub space: Space,
     /// The variable along the bottom.
@@ -37,6 +43,8 @@ pub struct PlaneData {
     pub hit: Vec<bool>,
     /// Outlines of the components.
     pub components: Vec<PlaneOutline>,
+    /// How many components there are.
+    pub n_components: usize,
     /// Lines of equal nominal density around the middle.
     pub nominal: Vec<PlaneOutline>,
     /// Points of the event of the highest nominal density, found by the search.
@@ -96,24 +104,29 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         .map(|((&x, &y), &hit)| (x, y, hit))
         .filter(|(x, y, _)| x.is_finite() && y.is_finite())
         .collect();
-    let spots = || {
+    let fixed = || {
         let lines = data.components.iter().chain(&data.nominal).flat_map(PlaneOutline::points);
-        draws.iter().map(|d| (d.0, d.1)).chain(lines).chain(data.design_points.iter().copied())
+        lines.chain(data.design_points.iter().copied())
     };
-    let range = |pick: fn((f64, f64)) -> f64| padded_range(spots().map(pick), 0.04).unwrap_or((-1.0, 1.0));
+    // A few draws far out must not press all others together.
+    let usual = |values: Vec<f64>| quantiles(&values, &vec![1.0; values.len()], FRAMED).unwrap_or([f64::NAN; 2]);
+    let range = |pick: fn((f64, f64)) -> f64| {
+        let framed = usual(draws.iter().map(|d| pick((d.0, d.1))).collect());
+        padded_range(framed.into_iter().chain(fixed().map(pick)), 0.04).unwrap_or((-1.0, 1.0))
+    };
     let (xs, ys) = (range(|p| p.0), range(|p| p.1));
     let dot = DOT * unit;
     let nominal = Pen::solid(REFERENCE, 1.4 * style.hairline()).dashed(0.4 * unit, 0.3 * unit);
-    let component = Pen::solid(MODELLED, 0.12 * unit);
+    let component = Pen::solid(MODELLED, 0.1 * unit);
     let mut entries = vec![
-        (Sample::Dot(1.3 * dot, MEASURED, 0.8), "in the event".to_owned()),
-        (Sample::Dot(1.3 * dot, REFERENCE, 0.6), "outside".to_owned()),
+        (Sample::Dot(1.3 * dot, MEASURED, 0.8), data.sought.inside().to_owned()),
+        (Sample::Dot(1.3 * dot, REFERENCE, 0.6), data.sought.outside().to_owned()),
     ];
     if !data.components.is_empty() {
         entries.push((Sample::Outline(component), "component, 1 sd".to_owned()));
     }
     if !data.nominal.is_empty() {
-        entries.push((Sample::Outline(nominal), "nominal density".to_owned()));
+        entries.push((Sample::Outline(nominal), "nominal density, 1 to 3 sd".to_owned()));
     }
     let mut frame = frame(data, (xs, ys), &entries, style);
     for (hit, colour, opacity) in [(false, REFERENCE, 0.35), (true, MEASURED, 0.5)] {
@@ -121,7 +134,9 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
         let shown = kind.len().min(DOTS);
         for i in 0..shown {
             let &(x, y, _) = kind[i * kind.len() / shown];
-            frame.canvas.disc(frame.panels[0].spot(x, y), dot, colour, opacity);
+            if frame.panels[0].shows(x, y) {
+                frame.canvas.disc(frame.panels[0].spot(x, y), dot, colour, opacity);
+            }
         }
     }
     for line in &data.nominal {
@@ -138,7 +153,8 @@ pub fn draw(data: &PlaneData, style: &Style) -> Drawing {
     if draws.is_empty() {
         frame.say(0, "no draw");
     }
-    frame.finish("event", caption(data, &draws), table(data, &draws))
+    let caption = caption(data, &draws, |x, y| frame.panels[0].shows(x, y));
+    frame.finish("event", caption, table(data, &draws))
 }
 
 fn draw_cross(frame: &mut Frame, (x, y): (f64, f64), style: &Style) {
@@ -172,33 +188,55 @@ fn around(range: Range, length: f64) -> Range {
     (middle - length / 2.0, middle + length / 2.0)
 }
 
-fn caption(data: &PlaneData, draws: &[(f64, f64, bool)]) -> String {
+fn caption(data: &PlaneData, draws: &[(f64, f64, bool)], shows: impl Fn(f64, f64) -> bool) -> String {
     let hits = draws.iter().filter(|d| d.2).count();
     let mut parts = vec![format!(
-        "{} draws of the proposal, {} of them in the event, in the plane of {} and {}.",
+        "{} draws of the proposals in the plane of {} and {}; {} {}.",
         count(draws.len()),
-        count(hits),
         data.x.name,
-        data.y.name
+        data.y.name,
+        count(hits),
+        data.sought.of_them()
     )];
     if let (Some(x), Some(y)) = (data.x.importance, data.y.importance) {
         parts.push(format!(
-            "Their shares of the squared direction cosines are {} and {}; the other variables blur \
-             the limit of the event.",
+            "Their squared direction cosines at the nearest {} are {} and {}; the other variables blur the picture.",
+            data.sought.point(),
             significant(x, 2),
             significant(y, 2)
         ));
     }
+    match data.components.len() {
+        0 => {}
+        n if n == data.n_components => parts.push(
+            "Outlines: the fitted components of the chosen proposal, one standard deviation around their centres.".to_owned(),
+        ),
+        n => parts.push(format!(
+            "Outlines: the {n} largest of the {} fitted components of the chosen proposal, one standard deviation around their centres.",
+            data.n_components
+        )),
+    }
+    let beyond = draws.iter().filter(|d| !shows(d.0, d.1)).count();
+    if beyond > 0 {
+        parts.push(format!("{} draws lie outside of the axes.", count(beyond)));
+    }
+    if !data.nominal.is_empty() {
+        parts.push("Dashed: one, two and three standard deviations of the variables' own distribution.".to_owned());
+    }
     if !data.design_points.is_empty() {
-        parts.push("Crosses are the most likely points of the event that the search found.".to_owned());
+        parts.push(format!("Crosses are {}.", data.sought.points()));
     }
     parts.join(" ")
 }
 
 fn table(data: &PlaneData, draws: &[(f64, f64, bool)]) -> Table {
+    let (inside, outside) = match data.sought {
+        Sought::Event => ("event", "outside"),
+        Sought::Integrand => ("not zero", "zero"),
+    };
     let mut table = Table::new(&["series", "number", &data.x.name, &data.y.name]);
     for &(x, y, hit) in draws {
-        table.push([if hit { "event" } else { "outside" }.into(), None.into(), x.into(), y.into()]);
+        table.push([if hit { inside } else { outside }.into(), None.into(), x.into(), y.into()]);
     }
     for (series, lines) in [("component", &data.components), ("nominal", &data.nominal)] {
         for (k, line) in lines.iter().enumerate() {
@@ -208,7 +246,7 @@ fn table(data: &PlaneData, draws: &[(f64, f64, bool)]) -> Table {
         }
     }
     for (k, &(x, y)) in data.design_points.iter().enumerate() {
-        table.push(["design point".into(), (k as f64).into(), x.into(), y.into()]);
+        table.push([data.sought.point().into(), (k as f64).into(), x.into(), y.into()]);
     }
     table
 }
@@ -240,11 +278,13 @@ mod tests {
             values: vec![],
         };
         let mut data = PlaneData {
+            sought: Sought::Event,
             space: Space::Scores,
             x: side("score of inflow", 0.61),
             y: side("score of gate_friction", 0.3),
             hit: vec![],
             components: vec![ring((3.4, 0.3), (0.5, 1.1)), ring((0.6, -3.9), (1.1, 0.4))],
+            n_components: 2,
             nominal: vec![ring((0.0, 0.0), (1.0, 1.0)), ring((0.0, 0.0), (2.0, 2.0)), ring((0.0, 0.0), (3.0, 3.0))],
             design_points: vec![(3.1, 0.2), (0.5, -3.7)],
         };

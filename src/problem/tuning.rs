@@ -61,6 +61,8 @@ pub enum CoordinateChoice {
 pub struct TuningKeys {
     /// Evaluations in all: survey, rounds, confirm and report draws.
     pub budget: Option<u64>,
+    /// Earlier budgets, ascending, that were raised to this one; empty for most.
+    pub extended_from: Vec<u64>,
     /// Draws of a round.
     pub round_draws: Option<u64>,
     /// Rounds, at most.
@@ -88,8 +90,9 @@ pub struct TuningKeys {
 }
 
 /// The keys in the order in which the problem is written out.
-const KEYS: [&str; 13] = [
+const KEYS: [&str; 14] = [
     "budget",
+    "extended_from",
     "round_draws",
     "rounds",
     "report_share",
@@ -125,6 +128,11 @@ impl TuningKeys {
     pub fn overridden_by(&self, over: &Self) -> Self {
         Self {
             budget: over.budget.or(self.budget),
+            extended_from: if over.extended_from.is_empty() {
+                self.extended_from.clone()
+            } else {
+                over.extended_from.clone()
+            },
             round_draws: over.round_draws.or(self.round_draws),
             rounds: over.rounds.or(self.rounds),
             report_share: over.report_share.or(self.report_share),
@@ -140,14 +148,16 @@ impl TuningKeys {
         }
     }
 
-    /// Every key with its value or its default, as TOML writes it, in the order in which the table is written.
+    /// Every key with its value or its default, as TOML writes it, in the order in which the table is written. A budget that was
+    /// never raised has no `extended_from`.
     #[must_use]
-    pub fn listed(&self) -> [(&'static str, String); 13] {
+    pub fn listed(&self) -> Vec<(&'static str, String)> {
         let number = |value: Option<f64>| value.map_or("\"auto\"".into(), |x| format!("{x:?}"));
         let count = |value: Option<u64>| value.map_or("\"auto\"".into(), |n| n.to_string());
         let quoted = |word: &str| format!("\"{word}\"");
         let values = [
             self.budget.unwrap_or(Self::BUDGET).to_string(),
+            format!("{:?}", self.extended_from),
             count(self.round_draws),
             self.rounds.unwrap_or(Self::ROUNDS).to_string(),
             number(self.report_share),
@@ -161,8 +171,8 @@ impl TuningKeys {
             count(self.threads),
             self.seed.unwrap_or(Self::SEED).to_string(),
         ];
-        let mut values = values.into_iter();
-        KEYS.map(|key| (key, values.next().unwrap_or_default()))
+        let listed = KEYS.into_iter().zip(values);
+        listed.filter(|(key, _)| *key != "extended_from" || !self.extended_from.is_empty()).collect()
     }
 
     /// The table as TOML, every key with its value or its default.
@@ -209,6 +219,9 @@ pub(crate) fn read(reader: &mut Reader<'_>, table: &Table<'_>) -> TuningKeys {
             _ => {}
         }
     }
+    if let Some(entry) = table.entry("extended_from") {
+        keys.extended_from = earlier_budgets(reader, entry, keys.budget.unwrap_or(TuningKeys::BUDGET));
+    }
     if let (Some(Family::Gaussian), Some(_), Some(entry)) = (keys.family, keys.df, table.entry("df")) {
         reader.fault(
             Fault::new(entry.span.clone(), "Gaussian components have no degrees of freedom")
@@ -216,6 +229,29 @@ pub(crate) fn read(reader: &mut Reader<'_>, table: &Table<'_>) -> TuningKeys {
         );
     }
     keys
+}
+
+/// Budgets from 100 on that rise up to below `budget`.
+fn earlier_budgets(reader: &mut Reader<'_>, entry: &Entry<'_>, budget: u64) -> Vec<u64> {
+    let example = "extended_from = [20000], with budget = 40000: earlier budgets, each below the next and the last below `budget`";
+    let Some(list) = entry.value.as_array() else {
+        reader.wants(entry, "a list of whole numbers", example);
+        return Vec::new();
+    };
+    let whole = |x: f64| (100.0..9e15).contains(&x) && x.fract() == 0.0;
+    let budget_of = |value| plain_number(value).filter(|&x| whole(x)).map(|x| x as u64);
+    let budgets: Option<Vec<u64>> = list.iter().map(|item| budget_of(item.get_ref())).collect();
+    let rising = |budgets: &Vec<u64>| {
+        budgets.iter().zip(budgets[1.min(budgets.len())..].iter().chain([&budget])).all(|(a, b)| a < b)
+    };
+    match budgets.filter(rising) {
+        Some(budgets) => budgets,
+        None => {
+            let fault = Fault::new(entry.span.clone(), "`extended_from` must be budgets that rise up to `budget`");
+            reader.fault(fault.help(format!("write {example}")));
+            Vec::new()
+        }
+    }
 }
 
 fn is_auto(entry: &Entry<'_>) -> bool {

@@ -2,6 +2,7 @@
 
 use crate::adapt::Tuning;
 use crate::adapt::rare::RareDraws;
+use crate::numeric::Points;
 use crate::numeric::exp;
 use crate::numeric::ln;
 use crate::problem::Aim;
@@ -15,15 +16,15 @@ use std::path::Path;
 /// The last columns: log densities in natural units, and the weight.
 const LAST: [&str; 3] = ["log_target", "log_proposal", "weight"];
 /// Columns before those where the aim is a probability or an expectation.
-const RARE: [&str; 3] = ["round", "value", "log_nominal"];
+const RARE: [&str; 4] = ["round", "value", "score_distance", "log_nominal"];
 
 /// Every report draw: the variables in natural units, the estimates, `log_target`, `log_proposal` and `weight`, which
 /// sums to one.
 ///
 /// `log_target` is `-inf` outside the support and NaN where the model failed; both have weight zero. For a probability
 /// or an expectation the draws are those that the answer rests on, the target is the nominal density times the event or
-/// the size of the integrand, and three columns come before: the round, the margin or integrand, and `log_nominal`; the
-/// weight is the draw's part of the answer, by its size.
+/// the size of the integrand, and four columns come before: the round, the margin or integrand, the distance from the origin
+/// of the standard normal scores, and `log_nominal`; the weight is the draw's part of the answer, by its size.
 #[derive(Debug, Clone, PartialEq)]
 pub struct DrawsTable {
     table: Table,
@@ -76,6 +77,7 @@ impl DrawsTable {
         columns.extend(problem.estimates(&draws.points));
         columns.push(draws.round.iter().map(|&round| f64::from(round)).collect());
         columns.push(draws.value.clone());
+        columns.push(distances(&draws.points));
         columns.push(log_nominal);
         columns.push(log_target);
         columns.push(in_natural_units(&draws.log_proposal));
@@ -143,6 +145,16 @@ impl DrawsTable {
         (self.n_variables..self.n_own).map(|k| (self.table.names[k].as_str(), self.table.columns[k].as_slice()))
     }
 
+    /// Margins or integrands, distances from the origin of the scores, and whether each draw counts: in the event, or with an
+    /// integrand that is not zero. For a probability or an expectation alone.
+    #[must_use]
+    pub fn rare(&self) -> Option<(&[f64], &[f64], Vec<bool>)> {
+        let first = self.table.columns.len() - RARE.len() - LAST.len();
+        let target = &self.table.columns[first + RARE.len()];
+        let counts = target.iter().map(|&log| log > f64::NEG_INFINITY).collect();
+        self.rare.then(|| (self.table.columns[first + 1].as_slice(), self.table.columns[first + 2].as_slice(), counts))
+    }
+
     /// Weights, summing to one.
     #[must_use]
     pub fn weights(&self) -> &[f64] {
@@ -170,6 +182,12 @@ impl DrawsTable {
         let table = Table { names: self.table.names[..kept].to_vec(), columns: self.table.columns[..kept].to_vec() };
         write_table(path, &table, chosen)
     }
+}
+
+/// Distances of points from the origin.
+fn distances(points: &Points) -> Vec<f64> {
+    let square = |i| points.point(i).iter().map(|u| u * u).sum::<f64>();
+    (0..points.len()).map(|i| square(i).sqrt()).collect()
 }
 
 fn write_table(path: &Path, table: &Table, rows: &[usize]) -> Result<(), StoreError> {
@@ -200,7 +218,7 @@ fn weights(log_weights: &[f64]) -> Vec<f64> {
 /// Names of all columns. A variable or estimate that has the name of one of the last gets an underscore.
 fn names(problem: &Problem) -> Vec<String> {
     let own = problem.variables().iter().map(|v| v.name.clone()).chain(problem.estimate_names());
-    let last: Vec<&str> = if problem.aim() == Aim::Density { LAST.to_vec() } else { [RARE, LAST].concat() };
+    let last: Vec<&str> = if problem.aim() == Aim::Density { LAST.to_vec() } else { [&RARE[..], &LAST].concat() };
     let mut names: Vec<String> = Vec::new();
     for mut name in own {
         while last.contains(&name.as_str()) || names.contains(&name) {

@@ -4,6 +4,9 @@ use super::draws::DrawsTable;
 use super::marginal;
 use super::marginal::Direction;
 use super::outline::outlines;
+use super::outline::sizeable;
+use super::rare_facts::RareFacts;
+use super::rare_figures;
 use super::rounds::RoundRow;
 use crate::figures::Drawing;
 use crate::figures::Style;
@@ -56,6 +59,8 @@ pub struct RunData<'a> {
     pub survey_evaluations: u64,
     /// All evaluations.
     pub evaluations: u64,
+    /// What else there is of a probability or an expectation.
+    pub rare: Option<&'a RareFacts>,
 }
 
 /// All figures of a run; of the variables, those in `chosen` (all, up to 24, where it is empty).
@@ -64,6 +69,9 @@ pub fn draw_figures(run: &RunData, chosen: &[usize], style: &Style) -> Vec<Drawi
     let score = LogWeights::new(run.draws.log_weights()).ok().map(|weights| score(&weights, &[]));
     let weights = run.draws.weights().to_vec();
     let mut drawings = vec![progress::draw(&progress_data(run, score.as_ref()), style)];
+    if let Some(facts) = run.rare {
+        drawings.extend(rare_figures::draw(run, facts, chosen, style));
+    }
     if let Some(score) = &score {
         drawings.push(evenness::draw(&evenness_data(&weights, score), style));
     }
@@ -143,6 +151,11 @@ fn columns(run: &RunData) -> Vec<VariableColumn> {
 
 fn variables_data(run: &RunData, columns: &[VariableColumn], weights: &[f64], chosen: &[usize]) -> VariablesData {
     let directions = directions(run.problem);
+    let outlined = match run.rare {
+        // The many copies of components that are there for caution would hide the draws.
+        Some(_) => rare_figures::fitted(run),
+        None => sizeable(run.mixture),
+    };
     let values: Vec<&[f64]> = columns.iter().map(|column| column.values.as_slice()).collect();
     let partners = strongest_partners(&values, weights, PARTNERS);
     let all: Vec<usize> = (0..columns.len().min(MOST_ROWS)).collect();
@@ -153,9 +166,15 @@ fn variables_data(run: &RunData, columns: &[VariableColumn], weights: &[f64], ch
             Nature::Dependent { .. } => marginal::smoothed(&columns[j], weights),
             _ => marginal::closed(variable, run.mixture, &directions[j], &columns[j], weights),
         };
+        let whole = |j: usize| columns[j].discrete;
         let pair = |&k: &usize| Partner {
             variable: k,
-            outlines: outlines(run.problem, run.mixture, [(j, &directions[j]), (k, &directions[k])]),
+            // Over whole numbers an outline is a staircase that says nothing.
+            outlines: if whole(j) || whole(k) {
+                Vec::new()
+            } else {
+                outlines(run.problem, run.mixture, &outlined, [(j, &directions[j]), (k, &directions[k])])
+            },
         };
         VariableRow { variable: j, proposal_at, proposal_density, partners: partners[j].iter().map(pair).collect() }
     };
@@ -163,7 +182,7 @@ fn variables_data(run: &RunData, columns: &[VariableColumn], weights: &[f64], ch
 }
 
 /// For every variable the direction in coordinates along which its own score runs.
-fn directions(problem: &Problem) -> Vec<Direction> {
+pub(super) fn directions(problem: &Problem) -> Vec<Direction> {
     let d = problem.dim();
     let mut directions: Vec<Direction> =
         (0..d).map(|j| (0..d).map(|i| f64::from(u8::from(i == j))).collect()).collect();

@@ -15,14 +15,20 @@ mod draws;
 mod figure_data;
 mod marginal;
 mod outline;
+mod places;
+mod rare_facts;
+mod rare_figures;
 mod rare_summary;
 mod rounds;
 mod summary;
+mod summary_head;
 
 pub mod page;
 
 pub use draws::DrawsTable;
 pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};
+pub use places::places;
+pub use rare_facts::{RareFacts, RareRow};
 pub use rare_summary::{
     NoHit, PROBABILITY_NOTE, Pooled, RareCandidateSummary, RareRoundCandidates, RareSummary, RareSurveySummary,
 };
@@ -33,3 +39,4 @@ pub use summary::{
     CandidateSummary, Evaluations, FinalistSummary, NamedValues, ProposalSummary, Provenance, RoundCandidates,
     SUMMARY_FORMAT, Summary, SummaryCheck, SurveySummary, ValueWithError, read_evaluations,
 };
+pub use summary_head::SummaryHead;

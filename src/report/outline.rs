@@ -13,14 +13,23 @@ const CORNERS: usize = 72;
 /// Components with a smaller share are not drawn.
 const LEAST_SHARE: f64 = 0.005;
 
-/// The outlines of all components of some share, in natural units.
+/// Components of some share.
+pub(super) fn sizeable(mixture: &Mixture) -> Vec<usize> {
+    (0..mixture.len()).filter(|&k| mixture.shares()[k] >= LEAST_SHARE).collect()
+}
+
+/// The outlines of the components `which`, in natural units.
 ///
 /// With `P` the directions of the two scores and `S` the covariance (the scale where a Student-t has none), the outline
 /// is `m + S P' C^-T (cos t, sin t)`, `C C' = P S P'`: on it the pair is one standard deviation from its centre and every other
 /// coordinate is where it is expected given the pair.
-pub(super) fn outlines(problem: &Problem, mixture: &Mixture, rows: [(usize, &Direction); 2]) -> Vec<Outline> {
-    let shares = mixture.shares().iter().enumerate().filter(|(_, share)| **share >= LEAST_SHARE);
-    shares.filter_map(|(k, _)| outline(problem, &mixture.components()[k], k, rows)).collect()
+pub(super) fn outlines(
+    problem: &Problem,
+    mixture: &Mixture,
+    which: &[usize],
+    rows: [(usize, &Direction); 2],
+) -> Vec<Outline> {
+    which.iter().filter_map(|&k| outline(problem, &mixture.components()[k], k, rows)).collect()
 }
 
 fn outline(problem: &Problem, component: &Component, k: usize, rows: [(usize, &Direction); 2]) -> Option<Outline> {
@@ -69,14 +78,14 @@ mod tests {
         let component = Component::new(vec![1.0, -1.0, 0.2], &scale, f64::INFINITY).unwrap();
         let mixture = Mixture::single(component);
         let unit = |j: usize| (0..3).map(|i| f64::from(u8::from(i == j))).collect::<Vec<f64>>();
-        let found = outlines(&problem, &mixture, [(0, &unit(0)), (1, &unit(1))]);
+        let found = outlines(&problem, &mixture, &sizeable(&mixture), [(0, &unit(0)), (1, &unit(1))]);
         let determinant = 2.0 * 1.0 - 0.25;
         for (x, y) in found[0].x.iter().zip(&found[0].y) {
             let (u, v) = (x - 1.0, y + 1.0);
             let distance = (u * u - 2.0 * 0.5 * u * v + 2.0 * v * v) / determinant;
             assert!((distance - 1.0).abs() < 1e-12, "{distance}");
         }
-        let with_half_line = outlines(&problem, &mixture, [(2, &unit(2)), (0, &unit(0))]);
+        let with_half_line = outlines(&problem, &mixture, &[0], [(2, &unit(2)), (0, &unit(0))]);
         assert!(with_half_line[0].x.iter().all(|&c| c > 0.0));
         let widest = with_half_line[0].x.iter().copied().fold(0.0, f64::max);
         assert!((widest - libm::exp(0.2 + 0.4_f64.sqrt())).abs() < 0.01 * widest);

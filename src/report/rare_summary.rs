@@ -2,8 +2,7 @@
 
 use super::rounds::rare_step;
 use super::summary::Provenance;
-use super::summary::SUMMARY_FORMAT;
-use super::summary::SummaryCheck;
+use super::summary_head::SummaryHead;
 use crate::adapt::rare::FailuresCounted;
 use crate::adapt::rare::RareAnswer;
 use crate::adapt::rare::RareRound;
@@ -16,7 +15,6 @@ use crate::problem::Aim;
 use crate::problem::Problem;
 use crate::store::ScoresEntry;
 use crate::store::finite;
-use crate::weights::verdict::Word;
 use crate::weights::verdict::checks::TAIL_SOUND;
 use serde::Serialize;
 
@@ -28,29 +26,12 @@ pub const PROBABILITY_NOTE: &str = "A computed probability depends on the model 
 /// The summary of a tuning whose aim is a probability or an expectation.
 #[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct RareSummary {
-    /// [`SUMMARY_FORMAT`].
-    pub format: &'static str,
-    /// Title of the problem.
-    pub title: String,
-    /// `probability` or `expectation`.
-    pub aim: &'static str,
-    /// What the reader may do with the numbers.
-    pub verdict: Word,
-    /// Why it is not "sound"; the worst reason first.
-    pub reasons: Vec<String>,
-    /// What no check can see.
-    pub caution: String,
+    /// What the summaries of all aims share.
+    #[serde(flatten)]
+    pub head: SummaryHead,
     /// [`PROBABILITY_NOTE`], for a probability.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub note: Option<&'static str>,
-    /// Every check.
-    pub checks: Vec<SummaryCheck>,
-    /// All evaluations.
-    pub evaluations: u64,
-    /// Those that failed.
-    pub failed: u64,
-    /// Draws that the answer rests on.
-    pub draws: u64,
     /// Effective draws of the answer over those.
     pub ess_fraction: Option<f64>,
     /// Variance of the parts of the answer scaled to mean one.
@@ -154,18 +135,10 @@ impl RareSummary {
         let draws = tuning.draws.log_nominal.len();
         let event = problem.aim() == Aim::Probability;
         let ess_fraction = value.and_then(|v| finite(v.answer.effective_draws / draws as f64));
+        let counts = [tuning.evaluations, tuning.failed, draws as u64];
         Self {
-            format: SUMMARY_FORMAT,
-            title: problem.title().to_owned(),
-            aim: problem.aim().word(),
-            verdict: tuning.verdict.word,
-            reasons: tuning.verdict.reasons.clone(),
-            caution: tuning.verdict.caution.clone(),
+            head: SummaryHead::of(problem, &tuning.verdict, counts, &tuning.extended_from),
             note: event.then_some(PROBABILITY_NOTE),
-            checks: tuning.verdict.checks.iter().map(SummaryCheck::of).collect(),
-            evaluations: tuning.evaluations,
-            failed: tuning.failed,
-            draws: draws as u64,
             ess_fraction,
             weight_variance: ess_fraction.and_then(|fraction| finite(1.0 / fraction - 1.0)),
             tail_shape: value.and_then(|v| finite(v.answer.tail.shape)),
@@ -201,7 +174,7 @@ impl RareSummary {
     pub fn scores(&self, tuning: &RareTuning) -> ScoresEntry {
         let value = tuning.answer.value();
         ScoresEntry {
-            draws: self.draws,
+            draws: self.head.draws,
             ess_fraction: self.ess_fraction,
             ess_fraction_interval: None,
             weight_variance: self.weight_variance,

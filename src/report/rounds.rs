@@ -117,9 +117,7 @@ fn write_rows(path: &Path, columns: &[&str], rows: &[Vec<String>]) -> Result<(),
 /// # Errors
 /// As [`Table::read`].
 pub fn read_rounds(path: &Path) -> Result<Vec<RoundRow>, StoreError> {
-    let text =
-        std::fs::read(path).map_err(|source| StoreError::Io { action: "read", path: path.to_path_buf(), source })?;
-    let table = Table::read_csv(without_texts(&text).as_slice(), path)?;
+    let table = numbers_of(path)?;
     let column = |name: &str| {
         table.column(name).ok_or_else(|| StoreError::Table {
             path: path.to_path_buf(),
@@ -149,6 +147,13 @@ pub fn read_rounds(path: &Path) -> Result<Vec<RoundRow>, StoreError> {
             weight_variance: known(variance[i]),
         })
         .collect())
+}
+
+/// Every column of numbers.
+pub(super) fn numbers_of(path: &Path) -> Result<Table, StoreError> {
+    let text =
+        std::fs::read(path).map_err(|source| StoreError::Io { action: "read", path: path.to_path_buf(), source })?;
+    Table::read_csv(without_texts(&text).as_slice(), path)
 }
 
 impl From<&Round> for RoundRow {

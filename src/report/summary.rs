@@ -2,6 +2,7 @@
 //!
 //! `null` stands for a number that is not known, or not finite (the tail shape of weights whose largest are all equal).
 
+use super::summary_head::SummaryHead;
 use crate::adapt::Finalist;
 use crate::adapt::Round;
 use crate::adapt::StopReason;
@@ -35,26 +36,9 @@ pub struct Provenance {
 /// The summary of a tuning.
 #[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct Summary {
-    /// [`SUMMARY_FORMAT`].
-    pub format: &'static str,
-    /// Title of the problem.
-    pub title: String,
-    /// `density`, `expectation` or `probability`.
-    pub aim: &'static str,
-    /// What the reader may do with the numbers.
-    pub verdict: Word,
-    /// Why it is not "sound"; the worst reason first.
-    pub reasons: Vec<String>,
-    /// What no check can see.
-    pub caution: String,
-    /// Every check.
-    pub checks: Vec<SummaryCheck>,
-    /// All evaluations.
-    pub evaluations: u64,
-    /// Those that failed.
-    pub failed: u64,
-    /// Report draws.
-    pub draws: u64,
+    /// What the summaries of all aims share.
+    #[serde(flatten)]
+    pub head: SummaryHead,
     /// Effective sample size over report draws.
     pub ess_fraction: Option<f64>,
     /// Its 95 % interval.
@@ -198,17 +182,9 @@ impl Summary {
         let score = tuning.score.as_ref();
         let known = |read: &dyn Fn(&crate::weights::Score) -> f64| score.and_then(|s| finite(read(s)));
         let se = known(&|s| s.log_normaliser_se);
+        let counts = [tuning.evaluations, tuning.failed, tuning.report.labels.len() as u64];
         Self {
-            format: SUMMARY_FORMAT,
-            title: problem.title().to_owned(),
-            aim: problem.aim().word(),
-            verdict: tuning.verdict.word,
-            reasons: tuning.verdict.reasons.clone(),
-            caution: tuning.verdict.caution.clone(),
-            checks: tuning.verdict.checks.iter().map(SummaryCheck::of).collect(),
-            evaluations: tuning.evaluations,
-            failed: tuning.failed,
-            draws: tuning.report.labels.len() as u64,
+            head: SummaryHead::of(problem, &tuning.verdict, counts, &tuning.extended_from),
             ess_fraction: known(&|s| s.ess_fraction),
             ess_fraction_interval: score.and_then(|s| s.ess_fraction_interval),
             weight_variance: known(&|s| s.weight_variance),
@@ -289,22 +265,31 @@ pub struct Evaluations {
 /// # Errors
 /// [`StoreError::Io`], [`StoreError::Json`].
 pub fn read_evaluations(path: &Path) -> Result<Evaluations, StoreError> {
-    let text = std::fs::read_to_string(path).map_err(|source| StoreError::Io {
-        action: "read",
-        path: path.to_path_buf(),
-        source,
-    })?;
-    let wrong = |at: &str, reason: String| StoreError::Json { path: path.to_path_buf(), at: at.to_owned(), reason };
-    let value: serde_json::Value =
-        serde_json::from_str(&text).map_err(|error| wrong("the whole", error.to_string()))?;
-    if value["format"] != SUMMARY_FORMAT {
-        return Err(wrong("format", format!("is {}; this program reads {SUMMARY_FORMAT:?}", value["format"])));
-    }
+    let value = read_summary(path)?;
     let count = |at: &str, value: &serde_json::Value| {
-        value.as_u64().ok_or_else(|| wrong(at, format!("is {value}; expected a whole number")))
+        value.as_u64().ok_or_else(|| wrong(path, at, format!("is {value}; expected a whole number")))
     };
     Ok(Evaluations {
         all: count("evaluations", &value["evaluations"])?,
         survey: count("survey.evaluations", &value["survey"]["evaluations"])?,
     })
+}
+
+/// Reads a summary of this format.
+pub(super) fn read_summary(path: &Path) -> Result<serde_json::Value, StoreError> {
+    let text = std::fs::read_to_string(path).map_err(|source| StoreError::Io {
+        action: "read",
+        path: path.to_path_buf(),
+        source,
+    })?;
+    let value: serde_json::Value =
+        serde_json::from_str(&text).map_err(|error| wrong(path, "the whole", error.to_string()))?;
+    if value["format"] != SUMMARY_FORMAT {
+        return Err(wrong(path, "format", format!("is {}; this program reads {SUMMARY_FORMAT:?}", value["format"])));
+    }
+    Ok(value)
+}
+
+fn wrong(path: &Path, at: &str, reason: String) -> StoreError {
+    StoreError::Json { path: path.to_path_buf(), at: at.to_owned(), reason }
 }

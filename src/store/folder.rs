@@ -11,8 +11,9 @@ use std::path::PathBuf;
 
 /// Everything that a run writes into its folder. The journal makes it the folder of a run: it is written first
 /// ([`Journal::create`](super::Journal::create) before any other file), and removed last.
-pub const RUN_ENTRIES: [&str; 15] = [
+pub const RUN_ENTRIES: [&str; 16] = [
     "report.html",
+    "report.md",
     "summary.json",
     "proposal.json",
     "points.csv",

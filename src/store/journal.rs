@@ -162,6 +162,33 @@ impl Journal {
         Ok((journal, read.replay))
     }
 
+    /// Reads what the run in a folder was begun with.
+    ///
+    /// # Errors
+    /// [`StoreError::JournalUnusable`], [`StoreError::Io`].
+    pub fn header(folder: &Path) -> Result<JournalHeader, StoreError> {
+        let path = journal_path(folder);
+        let mut input = BufReader::new(File::open(&path).map_err(StoreError::io("read", &path))?);
+        Ok(header_of(&path, &mut input)?.0)
+    }
+
+    /// Puts another header in the place of that which the journal has, whole or not at all: the records stay as they are.
+    ///
+    /// # Errors
+    /// [`StoreError::Changed`] where the journal has another header than `before`; [`StoreError::JournalUnusable`],
+    /// [`StoreError::Io`].
+    pub fn replace_header(folder: &Path, before: &JournalHeader, now: &JournalHeader) -> Result<(), StoreError> {
+        let path = journal_path(folder);
+        let mut input = BufReader::new(File::open(&path).map_err(StoreError::io("read", &path))?);
+        let (header, _) = header_of(&path, &mut input)?;
+        compare(&path, &header, before)?;
+        let bytes = header_bytes(now).map_err(StoreError::io("write", &path))?;
+        write_atomically(&path, |file| {
+            file.write_all(&bytes)?;
+            io::copy(&mut input, file).map(|_| ())
+        })
+    }
+
     /// Reads the journal in a run's folder and changes nothing.
     ///
     /// # Errors
@@ -204,11 +231,16 @@ fn read_all(path: &Path) -> Result<Found, StoreError> {
     let file = File::open(path).map_err(StoreError::io("read", path))?;
     let size = file.metadata().map_err(StoreError::io("read", path))?.len();
     let mut input = BufReader::new(file);
-    let (header, header_length) = read_header(&mut input)
-        .map_err(StoreError::io("read", path))?
-        .map_err(|reason| StoreError::JournalUnusable { path: path.to_path_buf(), reason })?;
+    let (header, header_length) = header_of(path, &mut input)?;
     let (replay, length) = read_records(&mut input, header_length, size).map_err(StoreError::io("read", path))?;
     Ok(Found { header, replay, length })
+}
+
+/// The header and its length in bytes.
+fn header_of(path: &Path, input: &mut impl Read) -> Result<(JournalHeader, u64), StoreError> {
+    read_header(input)
+        .map_err(StoreError::io("read", path))?
+        .map_err(|reason| StoreError::JournalUnusable { path: path.to_path_buf(), reason })
 }
 
 /// The header and its length in bytes, or why it cannot be used.

@@ -5,5 +5,6 @@
 mod common;
 mod endings;
 mod others;
+mod rare;
 mod schema;
 mod tune;

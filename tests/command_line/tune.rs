@@ -19,6 +19,7 @@ fn a_tuning_writes_its_files_and_shows_its_verdict() {
         "points.csv",
         "summary.json",
         "report.html",
+        "report.md",
         "figures/captions.md",
         "figures/progress.png",
         "figures/progress.csv",

@@ -105,11 +105,16 @@ impl Case {
 
     /// Asserts that a run ended like the one that nothing interrupted.
     pub(crate) fn assert_whole(&self, run: &str) {
+        self.assert_same("whole.run", run);
+    }
+
+    /// Asserts that a run ended like another, to the last byte, and left nothing else behind.
+    pub(crate) fn assert_same(&self, wanted: &str, run: &str) {
         for folder in ["", "figures"] {
-            for entry in fs::read_dir(self.path("whole.run").join(folder)).unwrap() {
+            for entry in fs::read_dir(self.path(wanted).join(folder)).unwrap() {
                 let name = entry.unwrap().file_name();
                 let at = Path::new(folder).join(&name);
-                let whole = self.path("whole.run").join(&at);
+                let whole = self.path(wanted).join(&at);
                 if whole.is_file() && name != "timings.json" && name != "log.txt" {
                     let same = fs::read(&whole).unwrap() == fs::read(self.path(run).join(&at)).unwrap();
                     assert!(same, "{} differs after {run}", at.display());
@@ -126,7 +131,12 @@ impl Case {
 
     /// A copy of the finished run with nothing but its journal and its problem.
     pub(crate) fn journal_alone(&self, run: &str) -> PathBuf {
-        let from = self.path("whole.run");
+        self.journal_of("whole.run", run)
+    }
+
+    /// A copy of a run with nothing but its journal and its problem.
+    pub(crate) fn journal_of(&self, whole: &str, run: &str) -> PathBuf {
+        let from = self.path(whole);
         let to = self.path(run);
         fs::create_dir_all(to.join("evaluations")).unwrap();
         fs::copy(from.join("problem.toml"), to.join("problem.toml")).unwrap();

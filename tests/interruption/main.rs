@@ -4,5 +4,7 @@
 
 mod common;
 mod damage;
+mod disks;
 mod kills;
+mod raises;
 mod refusals;

@@ -45,6 +45,11 @@ use plan::Plan;
 use scores::Scores;
 use survey::{Explored, Found, Scouts};
 
+/// As [`super::check_budget`].
+pub(crate) fn check_budget(dim: usize, settings: &Settings) -> Result<(), TuneError> {
+    Plan::parts(settings, dim).map(|_| ())
+}
+
 /// Tunes a proposal for a problem whose aim is a probability or an expectation, and answers it: the one loop, top to bottom.
 ///
 /// Same problem, settings and seed give the same bits, whatever the number of threads.
@@ -70,16 +75,17 @@ pub fn tune_rare(problem: &Problem, settings: &Settings, observer: &mut dyn Obse
     if problem.aim() == Aim::Density {
         return Err(TuneError::Aim { aim: problem.aim().word() });
     }
-    let plan = Plan::new(settings, problem.dim())?;
+    let plans = Plan::parts(settings, problem.dim())?;
+    let plan = &plans[0];
     let target = Scores::new(problem, observer);
 
     target.enter(Stage::Survey);
-    let scouts = survey::scouts(&target, &plan)?;
-    let explored = survey::explore(&target, &plan, &scouts)?;
+    let scouts = survey::scouts(&target, plan)?;
+    let explored = survey::explore(&target, plan, &scouts)?;
     let survey = surveyed(&target, &scouts, &explored);
     target.tell(|o| o.rare_surveyed(&survey));
 
-    let mut course = rounds::run(&target, &plan, &scouts, &explored)?;
+    let mut course = rounds::run(&target, &plans, &scouts, &explored)?;
     let answering = answer::of(&mut course, &scouts, target.is_event(), target.failures_are_inside());
     let (evaluations, failed) = (target.spent(), target.failed());
     let failures = judgement::Failures {
@@ -92,6 +98,7 @@ pub fn tune_rare(problem: &Problem, settings: &Settings, observer: &mut dyn Obse
     let pooled = answer::pooled(&course);
     let kappa_claimed = answering.answer.value().map(|v| v.cv * v.cv * evaluations as f64);
     Ok(RareTuning {
+        extended_from: course.extended_from,
         survey,
         rounds: course.rounds,
         chosen,

@@ -21,6 +21,8 @@ const ROUND_LEAST: usize = 100;
 /// Rounds at the event itself, as shares of the budget; then all that is left, which a rest under `LAST_LEAST` joins.
 const SCHEDULE: [f64; 4] = [0.06, 0.08, 0.14, 0.24];
 const LAST_LEAST: f64 = 0.12;
+/// A raised budget begins with the round of this number: the proposal has learnt enough for larger ones.
+const RAISED_FIRST_ROUND: usize = 2;
 /// Effective pooled draws that a smoothing must leave: a share of a round, and so many a coordinate.
 const EFFECTIVE_SHARE: f64 = 0.15;
 const EFFECTIVE_PER_COORDINATE: usize = 5;
@@ -35,6 +37,10 @@ const NOMINAL: f64 = 0.03;
 #[derive(Debug, Clone)]
 pub(crate) struct Plan {
     pub(crate) budget: u64,
+    /// The budget before it was raised to this one, and 0 in the first part.
+    pub(crate) from: u64,
+    /// The round of [`SCHEDULE`] that the part begins with.
+    first_round: usize,
     pub(crate) seed: u64,
     pub(crate) scouts: usize,
     /// Evaluations that searches may spend beyond the scouts.
@@ -62,6 +68,8 @@ impl Plan {
         let round = settings.round_draws.map_or(SMOOTH_ROUND * n, |r| (r as f64).min(0.25 * n));
         Ok(Self {
             budget,
+            from: 0,
+            first_round: 0,
             seed: settings.seed,
             scouts: ((SCOUTS * n) as usize).clamp(SCOUTS_LEAST.min(budget as usize / 5), SCOUTS_MOST),
             search_cap: (searches * n) as u64,
@@ -77,14 +85,39 @@ impl Plan {
         })
     }
 
-    /// Draws of the next round: `at_event` rounds were drawn at the event itself, none while it is smoothed (`None`).
+    /// The plans of all parts: one for the first budget, and one for every raise, whose rounds are shares of what it adds.
+    pub(crate) fn parts(settings: &Settings, dim: usize) -> Result<Vec<Self>, TuneError> {
+        let mut plans: Vec<Self> = Vec::new();
+        for part in settings.parts() {
+            let Some(before) = plans.last() else {
+                plans.push(Self::new(&part, dim)?);
+                continue;
+            };
+            let least = LEAST_BUDGET.max(4 * (dim as u64 + 1));
+            let added = part.budget.saturating_sub(before.budget);
+            if added < least {
+                return Err(TuneError::Raise {
+                    budget: part.budget,
+                    from: before.budget,
+                    least: before.budget + least,
+                });
+            }
+            let of_added = Self::new(&Settings { budget: added, ..part.clone() }, dim)?;
+            plans.push(Self { budget: part.budget, from: before.budget, first_round: RAISED_FIRST_ROUND, ..of_added });
+        }
+        Ok(plans)
+    }
+
+    /// Draws of the next round: `at_event` rounds of this part were drawn at the event itself, none while it is smoothed (`None`);
+    /// `drawn` rounds of this part were drawn in all.
     pub(crate) fn next_round(&self, at_event: Option<usize>, spent: u64, drawn: u32) -> usize {
         let left = self.budget.saturating_sub(spent) as usize;
+        let added = (self.budget - self.from) as f64;
         let wanted = match at_event {
             None => self.smooth_round,
-            Some(t) => SCHEDULE.get(t).map_or(left, |share| (share * self.budget as f64) as usize),
+            Some(t) => SCHEDULE.get(self.first_round + t).map_or(left, |share| (share * added) as usize),
         };
-        let last = drawn + 1 >= self.rounds || left < wanted + (LAST_LEAST * self.budget as f64) as usize;
+        let last = drawn + 1 >= self.rounds || left < wanted + (LAST_LEAST * added) as usize;
         if last { left } else { wanted }
     }
 
@@ -109,6 +142,23 @@ pub(crate) fn wide_sd(d: usize) -> f64 {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// 14 % and 24 % of what is added, and the rest; a second raise likewise.
+    #[test]
+    fn a_raise_spends_what_it_adds() {
+        let settings = Settings { extended_from: vec![10_000, 20_000], ..Settings::new(25_000, 1) };
+        let plans = Plan::parts(&settings, 5).unwrap();
+        assert_eq!(
+            plans.iter().map(|p| (p.from, p.budget)).collect::<Vec<_>>(),
+            [(0, 10_000), (10_000, 20_000), (20_000, 25_000)]
+        );
+        let sizes =
+            [(0, 10_000), (1, 11_400), (2, 13_800)].map(|(t, spent)| plans[1].next_round(Some(t), spent, t as u32));
+        assert_eq!(sizes, [1400, 2400, 6200]);
+        assert_eq!(plans[2].next_round(Some(0), 20_000, 0), 700);
+        let small = Settings { extended_from: vec![10_000], ..Settings::new(10_100, 1) };
+        assert!(matches!(Plan::parts(&small, 5), Err(TuneError::Raise { least: 10_200, .. })));
+    }
 
     #[test]
     fn the_rounds_spend_the_budget_and_no_more() {

@@ -14,6 +14,7 @@ use super::survey::{Explored, Scouts, scout_density};
 use super::tuning::{RareRound, RareStep};
 use crate::adapt::TuneError;
 use crate::adapt::observer::Stage;
+use crate::adapt::tuning::Extension;
 use crate::numeric::{Points, Purpose, exp};
 use crate::weights::StratifiedMean;
 
@@ -46,6 +47,21 @@ pub(crate) struct Course {
     pub(crate) twin: Twin,
     /// Regions first met in the last refits: the round and its new component.
     pub(crate) born: Vec<(usize, Part)>,
+    /// Earlier budgets.
+    pub(crate) extended_from: Vec<Extension>,
+}
+
+impl Course {
+    /// What there is when a budget is spent that was raised later.
+    fn extension(&self, budget: u64) -> Extension {
+        let counted = self.drawn.iter().filter(|drawn| drawn.counted);
+        Extension {
+            budget,
+            rounds: self.rounds.len() as u32,
+            confirm_draws: 0,
+            report_draws: counted.map(|drawn| drawn.terms.len() as u64).sum(),
+        }
+    }
 }
 
 /// Responsibility of the fitted components below which a draw is not explained by them.
@@ -55,10 +71,12 @@ const BLIND_VARIANCE: f64 = 2.0;
 const WIDEN: f64 = 1.5;
 
 /// Runs all rounds.
-pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Explored) -> Result<Course, TuneError> {
+pub(crate) fn run(target: &Scores, plans: &[Plan], scouts: &Scouts, explored: &Explored) -> Result<Course, TuneError> {
     let space = &explored.space;
     let (k, rest) = (space.k(), space.rest_dim());
     let event = target.is_event();
+    let (mut plan, mut raises) = (&plans[0], plans[1..].iter());
+    let budget = plans[plans.len() - 1].budget;
     let planes = planes(&explored.found, space);
     let layers = Layers::new(plan, k, rest, scouts.sd)?;
     let mut pool = Pool::new(if rest > 0 { k + 1 } else { k }, event, plan.seed);
@@ -69,14 +87,27 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
 
     let mut twin = Twin::same(first_fit(explored)?);
     let mut earlier: Option<Twin> = None;
-    let mut course =
-        Course { rounds: Vec::new(), drawn: Vec::new(), pool, layers, twin: twin.clone(), born: Vec::new() };
-    let mut at_event: Option<usize> = None;
+    let mut course = Course {
+        rounds: Vec::new(),
+        drawn: Vec::new(),
+        pool,
+        layers,
+        twin: twin.clone(),
+        born: Vec::new(),
+        extended_from: Vec::new(),
+    };
+    let (mut at_event, mut before) = (None::<usize>, 0);
     let (mut step, mut predicted) = (RareStep::Survey, None);
-    while target.spent() < plan.budget {
+    while target.spent() < budget {
+        if target.spent() >= plan.budget
+            && let Some(raise) = raises.next()
+        {
+            course.extended_from.push(course.extension(plan.budget));
+            (plan, before, at_event) = (raise, course.rounds.len() as u32, at_event.map(|_| 0));
+        }
         let index = course.rounds.len() as u32 + 1;
         target.enter(Stage::Round(index));
-        let n = plan.next_round(at_event, target.spent(), course.rounds.len() as u32);
+        let n = plan.next_round(at_event, target.spent(), index - 1 - before);
         let whole = course.layers.whole(&twin.full)?;
         let (drawn, reduced) = draw(target, plan, (space, &planes), &whole, &twin, n, index, at_event.is_some())?;
         let mut record = record(&drawn, &reduced, &whole, &twin, index, target.spent());
@@ -84,7 +115,7 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
         course.pool.add(&reduced, &drawn.answered, &drawn.log_proposal, whole);
         course.drawn.push(drawn);
         at_event = at_event.map(|t| t + 1);
-        if target.spent() < plan.budget {
+        if target.spent() < budget {
             let wanted = plan.effective(k);
             match FitTarget::of(&course.pool, event, wanted) {
                 Some(fit) => {

@@ -1,14 +1,16 @@
 //! What the loop gives back: plain values, in the order in which they came to be.
 
+use crate::adapt::tuning::Extension;
 use crate::numeric::Points;
 use crate::proposal::Mixture;
 use crate::weights::Answer;
 use crate::weights::verdict::Verdict;
+use serde::Deserialize;
 use serde::Serialize;
 
 /// A point of the event that lies nearest to the origin of the scores in its neighbourhood; for an expectation, a mode of the integrand
 /// times the nominal density.
-#[derive(Debug, Clone, PartialEq, Serialize)]
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct DesignPoint {
     /// In natural units.
     pub natural: Vec<f64>,
@@ -202,6 +204,8 @@ pub struct FailuresCounted {
 /// The whole of a tuning whose aim is a probability or an expectation.
 #[derive(Debug, Clone)]
 pub struct RareTuning {
+    /// Earlier budgets, where the budget was raised: the rounds simply went on.
+    pub extended_from: Vec<Extension>,
     /// What the survey found.
     pub survey: RareSurvey,
     /// The rounds.

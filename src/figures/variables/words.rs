@@ -30,7 +30,7 @@ pub(super) fn caption(data: &VariablesData, rows: &[Prepared], sample: &Thinned)
     if pairs {
         text = format!(
             "{text} To the right, the same draws over the variables that depend on it most: every dot stands for 1/{DOTS} of \
-             the weight (larger ones for several), lines for one standard deviation of each component."
+             the weight (larger ones for several), lines for one standard deviation of components."
         );
     }
     if outside > 5e-4 {

@@ -8,6 +8,7 @@ use super::numbers::{UNKNOWN, count, measured, number, share, short};
 use super::sources::Bibliography;
 use crate::problem::Aim;
 use crate::report::PROBABILITY_NOTE;
+use crate::report::places::resolved;
 use crate::weights::TailReason;
 use crate::weights::verdict::Word;
 
@@ -123,14 +124,10 @@ fn problem(data: &PageData) -> Vec<Block> {
         };
         let support = if v.discrete { format!("{support}, whole numbers") } else { support };
         let [centre, low, high] = v.start;
-        vec![
-            name,
-            v.unit.clone().unwrap_or_else(|| "–".into()),
-            v.law.clone(),
-            support,
-            v.coordinate.to_owned(),
-            format!("{} ({} to {})", short(centre), short(low), short(high)),
-        ]
+        vec![name, v.unit.clone().unwrap_or_else(|| "–".into()), v.law.clone(), support, v.coordinate.to_owned(), {
+            let [centre, low, high] = [centre, low, high].map(|x| resolved(x, high - low));
+            format!("{centre} ({low} to {high})")
+        }]
     });
     let mut blocks = vec![
         Block::Heading(2, "Problem".into()),

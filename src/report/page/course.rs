@@ -3,7 +3,8 @@
 use super::blocks::{Block, Span, plain};
 use super::data::{PageData, ScheduleKind};
 use super::method;
-use super::numbers::{NOTHING, column, count, share, share_column, short};
+use super::numbers::{NOTHING, column, count, share, share_column};
+use crate::report::places::resolved;
 
 /// Points of the survey and variables of a point that are shown.
 const MOST_POINTS: usize = 12;
@@ -19,7 +20,7 @@ pub(crate) fn survey(data: &PageData) -> Vec<Block> {
                 .iter()
                 .zip(&point.location)
                 .take(MOST_COORDINATES)
-                .map(|(v, x)| format!("{} = {}", v.name, short(*x)))
+                .map(|(v, x)| format!("{} = {}", v.name, resolved(*x, v.start[2] - v.start[1])))
                 .collect();
             if point.location.len() > MOST_COORDINATES {
                 place.push("…".into());
@@ -65,6 +66,9 @@ pub(crate) fn tuning(data: &PageData) -> Vec<Block> {
     )));
     blocks.push(rounds(data));
     blocks.push(Block::text(format!("The rounds ended because {}.", data.stop)));
+    for raise in &data.raises {
+        blocks.push(Block::Paragraph(vec![Span::Strong("A raised budget. ".into()), plain(raise.clone())]));
+    }
     blocks.extend(winners(data));
     if !data.finalists.is_empty() {
         let rows = data.finalists.iter().map(|f| {

@@ -38,6 +38,8 @@ pub struct PageData {
     pub answers: Vec<AnswerLine>,
     /// What else is to be said about them, a sentence each.
     pub remarks: Vec<String>,
+    /// How the budget was raised, a sentence for each time; empty for most.
+    pub raises: Vec<String>,
     /// Figures, in the order in which they are shown.
     pub figures: Vec<PageFigure>,
     /// Seed, versions, digests, evaluations.
@@ -198,6 +200,14 @@ impl PageFigure {
             "variables" => {
                 "Charts in rows, one a variable: its distribution with the proposal's, then its draws against those of its closest partners."
             }
+            "convergence" => {
+                "Two charts: the estimate with its interval after every counted round, and its standard error."
+            }
+            "margin" => "Chart: every draw by its distance from the origin of the scores and its margin or integrand.",
+            "event" => {
+                "Chart: the draws in the plane of two variables, with the outlines of the proposal's components over them."
+            }
+            "importance" => "Bar chart: the signed squared direction cosine of every variable, the largest first.",
             "heavy" => "Chart: where the heaviest draws lie in every variable, against an even spread.",
             _ => "Chart; its numbers stand in the CSV file of the same name.",
         };

@@ -5,13 +5,12 @@ use super::data::{
     VariableLine,
 };
 use super::numbers::{count, number, share};
+use super::raises::raises;
 use crate::adapt::{Finalist, Round, StopReason, Survey, Tuning};
 use crate::numeric::{Points, exp, log_sum_exp};
 use crate::problem::{Nature, Problem};
+use crate::report::places::starts;
 use crate::weights::{Estimate, Score, normal_interval};
-
-/// Half the width of the central 95 % of a standard normal distribution.
-const CENTRAL_95: f64 = 1.959_963_984_540_054;
 
 impl PageData {
     /// The page of a density's tuning.
@@ -40,6 +39,7 @@ impl PageData {
             score: tuning.score.clone(),
             answers,
             remarks: Vec::new(),
+            raises: raises(problem.aim(), &tuning.extended_from, run.evaluations),
             figures,
             run,
         }
@@ -48,31 +48,22 @@ impl PageData {
 
 /// The variables of a problem, whatever its aim.
 pub(crate) fn variables(problem: &Problem) -> Vec<VariableLine> {
-    let start = problem.start();
-    let at = |j: usize, shift: f64| {
-        let mut z = start.near.clone();
-        z[j] += shift * start.spread[j];
-        problem.to_natural(&Points::from_rows(z.len(), &z)).point(0)[j]
+    let line = |(start, v): ([f64; 3], &crate::problem::Variable)| VariableLine {
+        name: v.name.clone(),
+        label: v.label.clone(),
+        unit: v.unit.clone(),
+        note: v.note.clone(),
+        law: law(&v.nature),
+        support: match &v.nature {
+            Nature::Range { low, high } => [*low, *high],
+            Nature::Random(distribution) => distribution.support().into(),
+            Nature::Dependent { .. } => [f64::NAN; 2],
+        },
+        discrete: v.is_discrete(),
+        coordinate: v.coordinate.word(),
+        start,
     };
-    let line = |(j, v): (usize, &crate::problem::Variable)| {
-        let ends = [at(j, -CENTRAL_95), at(j, CENTRAL_95)];
-        VariableLine {
-            name: v.name.clone(),
-            label: v.label.clone(),
-            unit: v.unit.clone(),
-            note: v.note.clone(),
-            law: law(&v.nature),
-            support: match &v.nature {
-                Nature::Range { low, high } => [*low, *high],
-                Nature::Random(distribution) => distribution.support().into(),
-                Nature::Dependent { .. } => [f64::NAN; 2],
-            },
-            discrete: v.is_discrete(),
-            coordinate: v.coordinate.word(),
-            start: [at(j, 0.0), ends[0].min(ends[1]), ends[0].max(ends[1])],
-        }
-    };
-    problem.variables().iter().enumerate().map(line).collect()
+    starts(problem).into_iter().zip(problem.variables()).map(line).collect()
 }
 
 fn law(nature: &Nature) -> String {

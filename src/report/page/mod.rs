@@ -16,6 +16,7 @@ mod html;
 mod markdown;
 mod method;
 mod numbers;
+mod raises;
 mod rare;
 mod sources;
 

@@ -3,6 +3,7 @@
 use super::data::{AnswerLine, PageData, PageFigure, PointLine, RoundLine, RunFacts, ScheduleKind, SurveyLine};
 use super::density::{notes, variables};
 use super::numbers::{NOTHING, count, share, short};
+use super::raises::raises;
 use crate::adapt::rare::{DesignPoint, RareAnswer, RareRound, RareSurvey, RareTuning, RareValue, ValueWithError};
 use crate::problem::{Aim, Problem};
 use crate::report::rounds::rare_step;
@@ -37,6 +38,7 @@ impl PageData {
             score: None,
             answers: answers(problem, tuning),
             remarks: remarks(problem, tuning),
+            raises: raises(problem.aim(), &tuning.extended_from, run.evaluations),
             figures,
             run,
         }
@@ -129,7 +131,7 @@ fn surveyed(problem: &Problem, survey: &RareSurvey) -> SurveyLine {
             count(survey.evaluations)
         ),
     ];
-    let mut fact_titles = vec!["distance from the origin of the scores#", "carried by"];
+    let mut fact_titles = vec!["distance from the origin of the scores#", "squared direction cosines"];
     if event {
         fact_titles.push("first-order probability#");
     }
@@ -140,11 +142,13 @@ fn surveyed(problem: &Problem, survey: &RareSurvey) -> SurveyLine {
         }
         PointLine { location: point.natural.clone(), facts }
     };
+    let mut nearest: Vec<&DesignPoint> = survey.points.iter().collect();
+    nearest.sort_by(|a, b| a.distance.total_cmp(&b.distance));
     SurveyLine {
         sentences,
         point_name,
         fact_titles,
-        points: survey.points.iter().map(point).collect(),
+        points: nearest.into_iter().map(point).collect(),
         basin_share: no_hit_bound(survey.scouts + survey.searches),
         evaluations: survey.evaluations,
     }
