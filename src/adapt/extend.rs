@@ -5,18 +5,20 @@
 //! own, from another stream.
 
 use super::TuneError;
-use super::course::{Course, Next, go_on as go_on_with_rounds, learn};
+use super::course::{Course, Next, go_on as go_on_with_rounds, learn, survey_on};
 use super::finish::Choice;
 use super::plan::Plan;
-use super::refine::Fit;
+use super::refine::{Fit, join};
 use super::settings::Settings;
 use super::standard::Standard;
-use super::tuning::{Extension, ReportDraws, Round};
+use super::survey::Found;
+use super::tuning::{Extension, ReportDraws, Round, Survey};
 use crate::proposal::Mixture;
 use crate::refit::Step;
 use crate::weights::Score;
 
-/// Makes rounds of the confirm and report draws of the part that ends, and goes on with the rounds of the next.
+/// Makes rounds of the confirm and report draws of the part that ends, goes on with the survey where it had not seen enough, and then
+/// with the rounds of the next part.
 pub(crate) fn go_on(
     target: &Standard,
     settings: &Settings,
@@ -24,6 +26,7 @@ pub(crate) fn go_on(
     wide: &Mixture,
     course: &mut Course,
     (choice, report, score): (&Choice, &ReportDraws, Option<Score>),
+    known: (&mut Found, &mut Survey),
 ) -> Result<Extension, TuneError> {
     let (n_confirm, n_report) = (choice.confirm.labels.len() as u64, report.labels.len() as u64);
     let spent = target.spent();
@@ -43,9 +46,16 @@ pub(crate) fn go_on(
     reported.predicted_ess_fraction = chosen.and_then(|f| f.predicted_ess_fraction);
     reported.score = score;
     pool(course, settings, &choice.chosen, &in_start_units(target, report));
+    let df = last_fit(course).full.components()[0].df();
+    let new_modes = survey_on(target, settings, plan, known, df)?;
     let next = Next { fit: last_fit(course), predicted: None };
     let mut births_left = plan.births;
-    let next = learn(target, settings, plan, wide, course, &mut reported, next, Some(&mut births_left))?;
+    let mut next = learn(target, settings, plan, wide, course, &mut reported, next, Some(&mut births_left))?;
+    if let Some(modes) = new_modes {
+        next.fit = join(&next.fit, &modes)?;
+        reported.births += modes.len() as u32;
+        course.born.push((reported.index, modes));
+    }
     reported.evaluations = target.spent();
     target.tell(|o| o.round(&reported));
     course.rounds.push(reported);
