@@ -9,7 +9,7 @@ use super::pool::Pool;
 use super::refine::{Fit, Refined, births, has_mass, join, refine};
 use super::settings::Settings;
 use super::standard::Standard;
-use super::survey::{Found, Limits, identity, survey};
+use super::survey::{Found, Limits, identity, look_on, survey};
 use super::tuning::{Mode, Round, StopReason, Survey};
 use crate::numeric::{Purpose, exp, log_sum_exp};
 use crate::proposal::{Component, Drawn, Mixture};
@@ -40,7 +40,11 @@ const LEAST_LOG_MASS: f64 = 14.0;
 const PROBED: f64 = 0.4;
 
 /// Surveys and makes the first proposal from what was found.
-pub(crate) fn first_proposal(target: &Standard, settings: &Settings, plan: &Plan) -> Result<(Fit, Survey), TuneError> {
+pub(crate) fn first_proposal(
+    target: &Standard,
+    settings: &Settings,
+    plan: &Plan,
+) -> Result<(Fit, Survey, Found), TuneError> {
     target.enter(Stage::Survey);
     let exact = target.gradient_cost() == 1;
     let limits = Limits {
@@ -66,7 +70,36 @@ pub(crate) fn first_proposal(target: &Standard, settings: &Settings, plan: &Plan
     };
     let layers = settings.layered().then_some(FIRST_LAYERS);
     let survey = summary(target, &found, probed);
-    Ok((Fit { full: main.clone(), trained: main, layers }, survey))
+    Ok((Fit { full: main.clone(), trained: main, layers }, survey, found))
+}
+
+/// Goes on with the survey under a raised budget, and gives components at modes that it had not found before.
+pub(crate) fn survey_on(
+    target: &Standard,
+    settings: &Settings,
+    plan: &Plan,
+    (found, survey): (&mut Found, &mut Survey),
+    df: f64,
+) -> Result<Option<Mixture>, TuneError> {
+    target.enter(Stage::Survey);
+    let (before, known) = (target.spent(), found.modes.len());
+    let limits = Limits {
+        least: before,
+        all: before + plan.survey_cap,
+        enough: before + plan.survey_enough,
+        first_mode: before + plan.survey_cap,
+    };
+    look_on(target, settings.seed, limits, found)?;
+    let later = target.spent() - before;
+    if later == 0 {
+        return Ok(None);
+    }
+    let (evaluations, later_evaluations) = (survey.evaluations, survey.later_evaluations + later);
+    *survey = Survey { evaluations, later_evaluations, ..summary(target, found, survey.probed) };
+    target.tell(|o| o.surveyed(survey));
+    let new = &found.modes[known..];
+    let components = new.iter().map(|m| Component::new(m.x.clone(), &m.scale, df)).collect::<Result<Vec<_>, _>>()?;
+    Ok(if new.is_empty() { None } else { Some(Mixture::new(&vec![1.0; new.len()], components)?) })
 }
 
 fn summary(target: &Standard, found: &Found, probed: u32) -> Survey {
@@ -89,6 +122,7 @@ fn summary(target: &Standard, found: &Found, probed: u32) -> Survey {
         modes: modes.collect(),
         probed,
         evaluations: target.spent(),
+        later_evaluations: 0,
         basin_share: if found.finished == 0 { 1.0 } else { 1.0 - libm::pow(0.05, 1.0 / f64::from(found.finished)) },
     }
 }

@@ -5,17 +5,19 @@
 //! own, from another stream.
 
 use super::TuneError;
-use super::course::{Course, Next, go_on as go_on_with_rounds, learn};
+use super::course::{Course, Next, go_on as go_on_with_rounds, learn, survey_on};
 use super::finish::{Choice, Reported};
 use super::plan::Plan;
-use super::refine::Fit;
+use super::refine::{Fit, join};
 use super::settings::Settings;
 use super::standard::Standard;
-use super::tuning::{Extension, ReportDraws, Round};
+use super::survey::Found;
+use super::tuning::{Extension, ReportDraws, Round, Survey};
 use crate::proposal::Mixture;
 use crate::refit::Step;
 
-/// Makes rounds of the confirm and report draws of the part that ends, and goes on with the rounds of the next.
+/// Makes rounds of the confirm and report draws of the part that ends, goes on with the survey where it had not seen enough, and then
+/// with the rounds of the next part.
 pub(crate) fn go_on(
     target: &Standard,
     settings: &Settings,
@@ -23,6 +25,7 @@ pub(crate) fn go_on(
     wide: &Mixture,
     course: &mut Course,
     (choice, report): (&Choice, &Reported),
+    known: (&mut Found, &mut Survey),
 ) -> Result<Extension, TuneError> {
     let (n_confirm, n_report) = (choice.confirm.draws.labels.len() as u64, report.draws.labels.len() as u64);
     let spent = target.spent();
@@ -41,17 +44,21 @@ pub(crate) fn go_on(
     let mut reported = as_round(course, &choice.chosen, &report.draws, spent);
     reported.predicted_ess_fraction = chosen.and_then(|f| f.predicted_ess_fraction);
     reported.score = report.score.clone();
-    pool(
-        course,
-        settings,
-        &choice.chosen,
-        &Reported { draws: in_start_units(target, &report.draws), ..report.clone() },
-    );
+    let draws = in_start_units(target, &report.draws);
+    pool(course, settings, &choice.chosen, &Reported { draws, ..report.clone() });
+    let df = last_fit(course).full.components()[0].df();
+    let new_modes = survey_on(target, settings, plan, known, df)?;
     let next = Next { fit: last_fit(course), predicted: None };
     let mut births_left = plan.births;
-    let cap = births_left.min(plan.left_for_rounds(spent) / 2);
-    let next = learn(target, settings, wide, course, &mut reported, next, cap)?;
-    births_left -= target.spent() - spent;
+    let before = target.spent();
+    let cap = births_left.min(plan.left_for_rounds(before) / 2);
+    let mut next = learn(target, settings, wide, course, &mut reported, next, cap)?;
+    births_left -= target.spent() - before;
+    if let Some(modes) = new_modes {
+        next.fit = join(&next.fit, &modes)?;
+        reported.births += modes.len() as u32;
+        course.born.push((reported.index, modes));
+    }
     reported.evaluations = target.spent();
     target.tell(|o| o.round(&reported));
     course.rounds.push(reported);

@@ -146,14 +146,15 @@ pub fn tune(problem: &Problem, settings: &Settings, observer: &mut dyn Observer)
     let target = Standard::new(problem, observer);
     let wide = layers::wide(problem.dim())?;
 
-    let (first, survey) = course::first_proposal(&target, settings, plan)?;
+    let (first, mut survey, mut found) = course::first_proposal(&target, settings, plan)?;
     target.tell(|o| o.surveyed(&survey));
     let mut course = course::rounds(&target, settings, plan, &wide, first)?;
     let mut choice = finish::choose(&target, settings, plan, &wide, &course)?;
     let mut reported = finish::report(&target, settings, plan, &choice.chosen)?;
     let mut extended_from = Vec::new();
     for plan in raises {
-        extended_from.push(extend::go_on(&target, settings, plan, &wide, &mut course, (&choice, &reported))?);
+        let known = (&mut found, &mut survey);
+        extended_from.push(extend::go_on(&target, settings, plan, &wide, &mut course, (&choice, &reported), known)?);
         choice = finish::choose(&target, settings, plan, &wide, &course)?;
         reported = finish::report(&target, settings, plan, &choice.chosen)?;
     }

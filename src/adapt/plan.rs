@@ -94,7 +94,7 @@ impl Plan {
 
     /// The plans of all parts: one for the first budget, and one for every raise.
     ///
-    /// A raise spends nothing on a survey. Its report draws are a share of the new budget, a quarter unless set, as far as what it
+    /// A raise goes on with a survey that had not seen enough. Its report draws are a share of the new budget, a quarter unless set, as far as what it
     /// adds reaches: they alone carry the answer.
     pub(crate) fn parts(settings: &Settings, dim: usize) -> Result<Vec<Self>, TuneError> {
         let mut plans: Vec<Self> = Vec::new();
@@ -119,6 +119,8 @@ impl Plan {
         Ok(Self {
             part: self.part + 1,
             from: self.budget,
+            survey_cap: of(SURVEY),
+            survey_enough: of(SURVEY_ENOUGH),
             probe: of(PROBE),
             births: of(BIRTHS),
             confirm: of(CONFIRM).max(of(0.1).min(200)),

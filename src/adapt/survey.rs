@@ -41,8 +41,14 @@ pub(crate) struct Limits {
 
 /// Climbs until every mode repeats itself or the limits are reached.
 pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Found, TuneError> {
-    let d = target.dim();
     let mut found = Found::default();
+    look_on(target, seed, limits, &mut found)?;
+    Ok(found)
+}
+
+/// Goes on with a survey: the climbs go on where they ended, from starts of their own.
+pub(crate) fn look_on(target: &Standard, seed: u64, limits: Limits, found: &mut Found) -> Result<(), TuneError> {
+    let d = target.dim();
     let identity = identity(d);
     while found.starts < MOST {
         let cap = match (found.modes.is_empty(), found.finished < ENOUGH) {
@@ -64,7 +70,7 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
         let mut rng = stream(seed, Purpose::Survey, found.starts, 0);
         let start: Vec<f64> = (0..d).map(|_| radius * normal::draw(&mut rng)).collect();
         // Three climbs of four walk in the scale of the first mode, the fourth in the start's, for what that scale would step over.
-        let borrowed = found.modes.first().filter(|_| found.starts % 4 != 0).map(|m| m.scale.clone());
+        let borrowed = found.modes.first().filter(|_| !found.starts.is_multiple_of(4)).map(|m| m.scale.clone());
         let own_scale = borrowed.is_none();
         let metric = borrowed.unwrap_or_else(|| identity.clone());
         let steps = if found.modes.is_empty() { 40 + 6 * d as u64 } else { 60 };
@@ -103,7 +109,7 @@ pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Fou
             End::Spent => break,
         }
     }
-    Ok(found)
+    Ok(())
 }
 
 pub(crate) fn identity(d: usize) -> Vec<f64> {

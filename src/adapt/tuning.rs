@@ -39,8 +39,10 @@ pub struct Survey {
     pub modes: Vec<Mode>,
     /// Components added by probing along the soft axes of the modes.
     pub probed: u32,
-    /// Evaluations spent.
+    /// Evaluations spent before the first round.
     pub evaluations: u64,
+    /// Evaluations spent when the budget was raised and the survey went on.
+    pub later_evaluations: u64,
     /// Basins of attraction smaller than this share of the start could have been missed with chance above 5 %: `1 - 0.05^(1/starts)`.
     pub basin_share: f64,
 }

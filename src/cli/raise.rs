@@ -59,10 +59,10 @@ impl Budgets {
     }
 
     /// The keys of a problem as the run has them from now on.
-    pub(crate) fn over(&self, keys: TuningKeys) -> TuningKeys {
+    pub(crate) fn over(&self, keys: &TuningKeys) -> TuningKeys {
         match self.raised {
-            Some(_) => TuningKeys { budget: self.raised, extended_from: self.before.clone(), ..keys },
-            None => self.of_before(&keys),
+            Some(_) => TuningKeys { budget: self.raised, extended_from: self.before.clone(), ..keys.clone() },
+            None => self.of_before(keys),
         }
     }
 

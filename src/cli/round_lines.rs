@@ -38,8 +38,11 @@ pub(crate) fn survey(survey: &Survey) -> String {
             numbers::percent(survey.basin_share)
         )
     };
-    let found =
-        format!("{} climbs in {} evaluations: {modes}. {missed}", survey.starts, numbers::count(survey.evaluations));
+    let found = format!(
+        "{} climbs in {} evaluations: {modes}. {missed}",
+        survey.starts,
+        numbers::count(survey.evaluations + survey.later_evaluations)
+    );
     hanging("Survey    ", &found) + &heading(&ROUND_HEADING)
 }
 

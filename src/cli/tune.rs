@@ -61,7 +61,7 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let problem = problem_file::read(&located.file, |keys| {
         let keys = args.tuning.over(keys);
         match &resumed {
-            Some(resumed) => resumed.budgets.over(keys),
+            Some(resumed) => resumed.budgets.over(&keys),
             // A budget on the command line is a plan of its own, whatever the file says of earlier ones.
             None if args.tuning.budget.is_some() => TuningKeys { extended_from: Vec::new(), ..keys },
             None => keys,

@@ -109,8 +109,11 @@ pub struct SurveySummary {
     pub modes: usize,
     /// Climbs that ended in each mode, in the order found.
     pub hits: Vec<u32>,
-    /// Evaluations spent.
+    /// Evaluations spent before the first round.
     pub evaluations: u64,
+    /// Evaluations spent when the budget was raised and the survey went on.
+    #[serde(skip_serializing_if = "none")]
+    pub later_evaluations: u64,
     /// Share of the start whose basin could have been missed with a chance of 5 %.
     pub basin_share: f64,
 }
@@ -175,6 +178,11 @@ impl<T: Serialize> Serialize for NamedValues<T> {
     }
 }
 
+#[expect(clippy::trivially_copy_pass_by_ref, reason = "the form that serde asks for")]
+fn none(count: &u64) -> bool {
+    *count == 0
+}
+
 impl Summary {
     /// The summary of a tuning.
     #[must_use]
@@ -201,6 +209,7 @@ impl Summary {
                 modes: tuning.survey.modes.len(),
                 hits: tuning.survey.modes.iter().map(|mode| mode.hits).collect(),
                 evaluations: tuning.survey.evaluations,
+                later_evaluations: tuning.survey.later_evaluations,
                 basin_share: tuning.survey.basin_share,
             },
             candidates: tuning.rounds.iter().map(RoundCandidates::of).collect(),

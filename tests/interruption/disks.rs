@@ -4,6 +4,7 @@
 //! is not permitted, a counted line says what was skipped.
 
 #![cfg(target_os = "linux")]
+#![allow(clippy::print_stdout, reason = "what is skipped is said")]
 
 use super::common::{Case, said};
 use std::fs;

@@ -50,6 +50,9 @@ fn old_evaluations_count_as_rounds_and_new_draws_carry_the_answer() {
     assert_eq!(new["evaluations"].as_u64(), Some(4000));
     assert!((1000..2000).contains(&new["draws"].as_u64().unwrap()));
     assert!(old["extended_from"].is_null());
+    // A survey that had made too few climbs goes on.
+    let climbs = |summary: &Value| summary["survey"]["finished"].as_u64().unwrap();
+    assert!(climbs(&old) < 60 && climbs(&new) > climbs(&old), "{} {}", climbs(&old), climbs(&new));
     let points = |run: &str| Table::read(&case.path(run).join("points.csv")).unwrap();
     let (old_points, new_points) = (points("whole.run"), points("more.run"));
     let known: Vec<u64> = old_points.columns[0].iter().map(|x| x.to_bits()).collect();

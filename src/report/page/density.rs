@@ -121,7 +121,7 @@ fn surveyed(problem: &Problem, survey: &Survey) -> SurveyLine {
         "{} started from points spread over the start and outside of it; {} in a mode, in {} evaluations.",
         many(survey.starts, "climb", "climbs"),
         many(survey.finished, "ended", "ended"),
-        count(survey.evaluations)
+        count(survey.evaluations + survey.later_evaluations)
     )];
     let others = [
         (survey.stuck, "stopped at a wall or on a ridge"),
@@ -150,7 +150,7 @@ fn surveyed(problem: &Problem, survey: &Survey) -> SurveyLine {
         fact_titles: vec!["share of the mass by curvature#", "searches that ended there#"],
         points: points.collect(),
         basin_share: survey.basin_share,
-        evaluations: survey.evaluations,
+        evaluations: survey.evaluations + survey.later_evaluations,
     }
 }
 
