@@ -23,11 +23,13 @@ mod mode;
 mod plan;
 mod planes;
 mod pool;
+mod quadric;
 mod refit;
 mod rounds;
 mod scores;
 mod smoothing;
 mod subspace;
+mod surrogate;
 mod survey;
 mod tuning;
 
@@ -70,6 +72,7 @@ pub fn tune_rare(problem: &Problem, settings: &Settings, observer: &mut dyn Obse
     if problem.aim() == Aim::Density {
         return Err(TuneError::Aim { aim: problem.aim().word() });
     }
+    Plan::refuse(settings, problem.aim().word())?;
     let plan = Plan::new(settings, problem.dim())?;
     let target = Scores::new(problem, observer);
 

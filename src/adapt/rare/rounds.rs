@@ -10,11 +10,12 @@ use super::pool::{Pool, counted};
 use super::refit::{Decision, Twin, refit};
 use super::scores::{Answered, Scores};
 use super::subspace::Subspace;
+use super::surrogate::{Surrogate, surrogates};
 use super::survey::{Explored, Scouts, scout_density};
 use super::tuning::{RareRound, RareStep};
 use crate::adapt::TuneError;
 use crate::adapt::observer::Stage;
-use crate::numeric::{Points, Purpose, exp};
+use crate::numeric::{Points, Purpose, exp, ln, log_sum_exp};
 use crate::weights::StratifiedMean;
 
 /// One round's draws and what is known of the proposal that they came from.
@@ -54,6 +55,13 @@ const EXPLAINED: f64 = 0.05;
 const BLIND_VARIANCE: f64 = 2.0;
 const WIDEN: f64 = 1.5;
 
+/// What has a known mean, fixed before a round is drawn.
+struct Known<'a> {
+    space: &'a Subspace,
+    planes: &'a [Plane],
+    surrogates: &'a [Surrogate],
+}
+
 /// Runs all rounds.
 pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Explored) -> Result<Course, TuneError> {
     let space = &explored.space;
@@ -78,7 +86,10 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
         target.enter(Stage::Round(index));
         let n = plan.next_round(at_event, target.spent(), course.rounds.len() as u32);
         let whole = course.layers.whole(&twin.full)?;
-        let (drawn, reduced) = draw(target, plan, (space, &planes), &whole, &twin, n, index, at_event.is_some())?;
+        let fits =
+            if event && at_event.is_some() { surrogates(&course.pool, &explored.found, space) } else { Vec::new() };
+        let known = Known { space, planes: &planes, surrogates: &fits };
+        let (drawn, reduced) = draw(target, plan, &known, &whole, &twin, n, index, at_event.is_some())?;
         let mut record = record(&drawn, &reduced, &whole, &twin, index, target.spent());
         (record.step, record.predicted_ess_fraction) = (step, predicted);
         course.pool.add(&reduced, &drawn.answered, &drawn.log_proposal, whole);
@@ -101,6 +112,19 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
                     step = won;
                     predicted =
                         (fit.at_event && predicted_known(predicted_variance)).then(|| 1.0 / (1.0 + predicted_variance));
+                    if fit.at_event {
+                        let rows: Vec<usize> =
+                            (0..course.pool.len()).filter(|&i| fit.log_weights[i] > f64::NEG_INFINITY).collect();
+                        let of = |values: &[f64]| -> Vec<f64> { rows.iter().map(|&i| values[i]).collect() };
+                        let log_mean = log_sum_exp(&fit.log_weights) - ln(course.pool.len() as f64);
+                        course.layers.put_outposts(
+                            &next.full,
+                            &course.pool.points.select(&rows),
+                            &of(&fit.log_target),
+                            &of(&fit.log_weights),
+                            log_mean,
+                        )?;
+                    }
                     earlier = Some(std::mem::replace(&mut twin, next));
                 }
                 None => twin = Twin::same(widened(&twin.full)?),
@@ -156,7 +180,7 @@ fn widened(fitted: &Directed) -> Result<Directed, TuneError> {
 fn draw(
     target: &Scores,
     plan: &Plan,
-    (space, planes): (&Subspace, &[Plane]),
+    known: &Known<'_>,
     whole: &Directed,
     twin: &Twin,
     n: usize,
@@ -164,6 +188,7 @@ fn draw(
     counts: bool,
 ) -> Result<(Drawn, Points), TuneError> {
     let spent_before = target.spent();
+    let Known { space, planes, surrogates } = known;
     let (points, labels) = space.draw(whole, n, plan.seed, Purpose::Round, index);
     let reduced = space.reduce(&points);
     let log_proposal = whole.log_density(&reduced);
@@ -181,6 +206,7 @@ fn draw(
     let needed = controls.len();
     if event {
         let log_ratio: Vec<f64> = answered.log_nominal.iter().zip(&log_proposal).map(|(p, q)| p - q).collect();
+        controls.extend(surrogates.iter().flat_map(|fit| fit.controls(&reduced, &log_ratio)));
         controls.extend(planes.iter().flat_map(|plane| plane.controls(&points, &log_ratio)));
     }
     let Controlled { terms: controlled, mean } =
