@@ -39,8 +39,8 @@ pub(crate) struct Controlled {
 ///
 /// The coefficients minimise the variance within strata and come, for every fifth of the draws, from the other four: a draw never
 /// sets the coefficients that correct it, so the mean keeps no bias beyond the rounding of the strata's sizes. The first `needed`
-/// controls are used together or not at all, the others as far as the draws go; with too few draws, or draws that count, the terms come
-/// back as they are.
+/// controls are used together or not at all, after the others, which are used as far as the draws go; with too few draws, or draws that
+/// count, the terms come back as they are.
 ///
 /// # Shapes
 /// `labels[i]` is the component of draw `i`, in ascending order.
@@ -58,9 +58,10 @@ pub(crate) fn controlled(
     let hits = terms.iter().filter(|z| **z != 0.0).count();
     let room = (n / DRAWS_PER_CONTROL).min(hits / HITS_PER_CONTROL);
     let (own, others) = controls.split_at(needed.min(controls.len()));
-    let own = if room < needed { &[] } else { own };
-    let extra = (n / DRAWS_PER_EXTRA).min(room - own.len());
-    let used: Vec<&Control> = own.iter().chain(others.iter().filter(|c| covered(c)).take(extra)).collect();
+    // What resembles the event first: it explains most.
+    let alike: Vec<&Control> = others.iter().filter(|c| covered(c)).take((n / DRAWS_PER_EXTRA).min(room)).collect();
+    let own = if room - alike.len() < needed { &[] } else { own };
+    let used: Vec<&Control> = own.iter().chain(alike).collect();
     let p = used.len();
     if p == 0 {
         return Controlled { terms: terms.to_vec(), mean: Strata::new(labels).mean(terms) };

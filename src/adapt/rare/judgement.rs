@@ -10,7 +10,7 @@ use crate::weights::TailShape;
 use crate::weights::verdict::{self, Check, FailureFacts, RareEvidence, Verdict, Word, judge_rare};
 
 /// A scout whose weight under the last fit and its copies is below this many times the answer is explained by that fit.
-const EXPLAINING_WEIGHT: f64 = 20.0;
+const EXPLAINING_WEIGHT: f64 = 50.0;
 /// Last refits whose new regions are late.
 const LAST_REFITS: usize = 2;
 /// A region is separate where it lies so many standard deviations (per coordinate, in the mean) from everything fitted before.

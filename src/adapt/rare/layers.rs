@@ -19,11 +19,11 @@ const INFLATE: f64 = 4.0;
 /// Added to the variances of inflated copies: without it the copies of a strip of width .02 cover nothing where the strip bends.
 const INFLATED_FLOOR: f64 = 0.02;
 /// Share of the outposts, where there are any; how many, and their variance.
-const OUTPOSTS: f64 = 0.06;
-const OUTPOSTS_MOST: usize = 6;
+const OUTPOSTS: f64 = 0.04;
+const OUTPOSTS_MOST: usize = 4;
 const OUTPOST_VARIANCE: f64 = 0.7;
 /// A draw whose weight under the new proposal would be above this many times the mean gets an outpost.
-const OUTPOST_WEIGHT: f64 = 5.0;
+const OUTPOST_WEIGHT: f64 = 20.0;
 /// The rest's variance is inflated by this, or to one where it is smaller.
 const INFLATE_REST: f64 = 1.1;
 /// Unit copies nearer than this are one.
@@ -67,7 +67,7 @@ impl Layers {
     pub(crate) fn whole(&self, fitted: &Directed) -> Result<Directed, ProposalError> {
         let rest = 1.0 - self.nominal_share;
         let outposts = if self.outposts.is_empty() { 0.0 } else { OUTPOSTS };
-        // Together with a nominal share of .03 the fitted components have .63, with outposts .57.
+        // Together with a nominal share of .03 the fitted components have .63, with outposts .59.
         let scale = rest.min(0.97) / 0.97;
         let others = WIDE + UNIT + INFLATED + outposts;
         let posted = if self.outposts.is_empty() { None } else { Some(Directed::new(&self.outposts, self.rest_dim)?) };
@@ -117,11 +117,15 @@ impl Layers {
         Ok(())
     }
 
-    /// The layers that follow the fit: fitted components with their unit and inflated copies.
+    /// The layers that follow the fit: fitted components with their unit and inflated copies, and outposts.
     pub(crate) fn following(&self, fitted: &Directed) -> Result<Directed, ProposalError> {
-        let parts =
-            [(1.0 - UNIT - INFLATED, fitted), (UNIT, &self.unit_copies(fitted)?), (INFLATED, &inflated(fitted)?)];
-        Directed::union(&parts)
+        let (unit, inflated) = (self.unit_copies(fitted)?, inflated(fitted)?);
+        if self.outposts.is_empty() {
+            return Directed::union(&[(1.0 - UNIT - INFLATED, fitted), (UNIT, &unit), (INFLATED, &inflated)]);
+        }
+        let outposts = Directed::new(&self.outposts, self.rest_dim)?;
+        let own = 1.0 - UNIT - INFLATED - OUTPOSTS;
+        Directed::union(&[(own, fitted), (UNIT, &unit), (INFLATED, &inflated), (OUTPOSTS, &outposts)])
     }
 
     /// The layer of component `i` of the whole proposal around `fitted` components.
@@ -177,6 +181,7 @@ pub(crate) fn squared_distance(a: &[f64], b: &[f64]) -> f64 {
 mod tests {
     use super::*;
     use crate::adapt::Settings;
+    use crate::numeric::normal;
 
     #[test]
     fn shares_and_order_are_as_said() {
@@ -193,5 +198,24 @@ mod tests {
         assert!((shares[7..].iter().sum::<f64>() - 0.25).abs() < 1e-12);
         assert_eq!(whole.mixture().components()[5].location(), &[2.5, 0.0]);
         assert_eq!([2, 3, 4].map(|i| layers.layer_of(i, 3)), [Layer::Fitted, Layer::Nominal, Layer::Defensive]);
+    }
+
+    /// A draw far from the fit that would be heavy under it gets an outpost; one that is covered gets none.
+    #[test]
+    fn heavy_draws_get_outposts() {
+        let plan = Plan::new(&Settings::new(5000, 1), 2).unwrap();
+        let mut layers = Layers::new(&plan, 2, 0, 3.0).unwrap();
+        let part = Part { mass: 1.0, mean: vec![3.0, 0.0], covariance: vec![0.1, 0.0, 0.0, 1.0], rest: 1.0 };
+        let fitted = Directed::new(&[part], 0).unwrap();
+        let points = Points::from_rows(2, &[3.2, 0.1, 3.5, 0.5, -3.2, 0.3]);
+        let log_target: Vec<f64> =
+            (0..3).map(|i| points.point(i).iter().map(|&u| normal::log_density(u)).sum()).collect();
+        let before = layers.whole(&fitted).unwrap().log_density(&points);
+        layers.put_outposts(&fitted, &points, &log_target, &[0.0; 3], normal::log_upper_tail(3.0)).unwrap();
+        let after = layers.whole(&fitted).unwrap();
+        assert_eq!(after.len(), 6);
+        assert_eq!(after.mixture().components()[5].location(), &[-3.2, 0.3]);
+        let after = after.log_density(&points);
+        assert!(after[2] > before[2] + 1.0 && after[0] > before[0] - 0.15);
     }
 }

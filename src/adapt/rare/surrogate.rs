@@ -251,3 +251,64 @@ impl Surrogate {
         self.views.iter().map(|view| Control { values: of(view), mean: view.probability }).collect()
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::super::directed::Directed;
+    use super::super::scores::Answered;
+    use super::*;
+    use crate::numeric::Purpose;
+
+    /// Draws from a wide Gaussian with the margin `.1 (a-b)^2 - (a+b)/sqrt(2) + 2.5`, and a rest of eight coordinates that adds `.05 r^2`
+    /// where there is one.
+    fn pool_of(rest: usize) -> Pool {
+        let wide = Directed::central(2, rest, 4.0, 1.0).unwrap();
+        let rows: Vec<Vec<f64>> =
+            (0..2).map(|j| (0..2 + rest).map(|i| f64::from(u8::from(i == j))).collect()).collect();
+        let space = if rest > 0 { Subspace::leading(&rows, 2 + rest).unwrap() } else { Subspace::whole(2) };
+        let (points, _) = space.draw(&wide, 4000, 1, Purpose::Trial, 1);
+        let reduced = space.reduce(&points);
+        let margin = |u: &[f64]| {
+            let (a, b) = (u[0], u[1]);
+            0.1 * (a - b) * (a - b) - (a + b) / 2.0_f64.sqrt() + 2.5 + 0.05 * u.get(2).unwrap_or(&0.0)
+        };
+        let value: Vec<f64> = (0..4000).map(|i| margin(&reduced.point(i))).collect();
+        let log_nominal: Vec<f64> =
+            (0..4000).map(|i| points.point(i).iter().map(|&u| normal::log_density(u)).sum()).collect();
+        let hit = value.iter().map(|&v| v <= 0.0).collect();
+        let mut pool = Pool::new(reduced.dim(), true, 1);
+        let log_q = wide.log_density(&reduced);
+        pool.add(&reduced, &Answered { log_nominal, value, hit }, &log_q, wide);
+        pool
+    }
+
+    /// A margin that is a quadratic is found again, and so is its probability. Source: quadrature over one variable, mpmath 1.3.0 (as
+    /// in `quadric`); with the rest, `P(t >= 2.5 + .2 v^2 + .05 r^2)`, nested `scipy.integrate.quad`, SciPy 1.17.1.
+    #[test]
+    fn a_quadratic_margin_is_found_again() {
+        for (rest, exact, dim) in [(0, 4.207_305_511_3e-3, 2), (8, 1.4387044004e-03, 10)] {
+            let pool = pool_of(rest);
+            let rows: Vec<Vec<f64>> = (0..2).map(|j| (0..dim).map(|i| f64::from(u8::from(i == j))).collect()).collect();
+            let space = if rest > 0 { Subspace::leading(&rows, dim).unwrap() } else { Subspace::whole(2) };
+            let fits = surrogates(&pool, &[], &space);
+            assert_eq!(fits.len(), 1);
+            let ratio: Vec<f64> = pool.log_nominal.iter().zip(pool.log_mixture()).map(|(p, q)| p - q).collect();
+            let controls = fits[0].controls(&pool.points, &ratio);
+            assert!((controls[0].mean / exact - 1.0).abs() < 1e-3, "{:e}", controls[0].mean);
+            // The draws' own mean of every view is its probability: 4.5 standard errors.
+            for control in controls {
+                let n = control.values.len() as f64;
+                let mean = control.values.iter().sum::<f64>() / n;
+                let square = control.values.iter().map(|v| v * v).sum::<f64>() / n;
+                assert!((mean - control.mean).abs() < 4.5 * (square / n).sqrt());
+            }
+        }
+    }
+
+    #[test]
+    fn few_draws_give_no_stand_in() {
+        let pool = pool_of(0);
+        let weights = vec![1.0; pool.len()];
+        assert!(fit(&pool, &weights, &[0, 1, 2, 3, 4, 5, 6, 7, 8, 9], 2, 0).is_none());
+    }
+}
