@@ -42,6 +42,18 @@ pub(crate) struct Layers {
     outposts: Vec<Part>,
 }
 
+/// Draws that count, met so far.
+pub(crate) struct Seen {
+    pub(crate) points: Points,
+    pub(crate) log_target: Vec<f64>,
+    /// `ln (target / pool)`.
+    pub(crate) log_weights: Vec<f64>,
+    /// Survey draws that no found point explains.
+    pub(crate) unexplained: Vec<bool>,
+    /// `ln` of the pool's mean weight.
+    pub(crate) log_mean: f64,
+}
+
 /// Which layer a component of the whole proposal belongs to.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(crate) enum Layer {
@@ -82,37 +94,22 @@ impl Layers {
     }
 
     /// Puts outposts where draws met before would be heavy under the whole proposal around `fitted`: a part of the event that the fit
-    /// lacks is then drawn from, and not left to a rare heavy draw.
-    ///
-    /// `log_target` and `log_weights` are those of the points, the latter under the pool.
-    pub(crate) fn put_outposts(
-        &mut self,
-        fitted: &Directed,
-        points: &Points,
-        log_target: &[f64],
-        log_weights: &[f64],
-        log_mean: f64,
-    ) -> Result<(), ProposalError> {
+    /// lacks is then drawn from, and not left to a rare heavy draw. Survey draws that no found point explains come first.
+    pub(crate) fn put_outposts(&mut self, fitted: &Directed, seen: &Seen) -> Result<(), ProposalError> {
         self.outposts.clear();
         // Told from the directions alone, heaviness is mostly the rest's: in many dimensions outposts were no help (20 exponentials).
         if self.rest_dim > 0 {
             return Ok(());
         }
         while self.outposts.len() < OUTPOSTS_MOST {
-            let log_q = self.whole(fitted)?.log_density(points);
-            let heavy = |i: usize| log_target[i] - log_q[i] > log_mean + ln(OUTPOST_WEIGHT);
-            let term = |i: usize| log_weights[i] + log_target[i] - log_q[i];
-            let Some(worst) = (0..points.len()).filter(|&i| heavy(i)).max_by(|&a, &b| term(a).total_cmp(&term(b)))
-            else {
-                break;
-            };
-            let mean = points.point(worst)[..self.k].to_vec();
-            self.outposts.push(Part {
-                mass: 1.0,
-                mean,
-                covariance: scaled_identity(self.k, OUTPOST_VARIANCE),
-                rest: 1.0,
-            });
+            let log_q = self.whole(fitted)?.log_density(&seen.points);
+            let heavy = |i: &usize| seen.log_target[*i] - log_q[*i] > seen.log_mean + ln(OUTPOST_WEIGHT);
+            let term = |i: usize| (seen.unexplained[i], seen.log_weights[i] + seen.log_target[i] - log_q[i]);
+            let worse = |a: &usize, b: &usize| term(*a).0.cmp(&term(*b).0).then(term(*a).1.total_cmp(&term(*b).1));
+            let Some(worst) = (0..seen.points.len()).filter(heavy).max_by(worse) else { break };
+            let mean = seen.points.point(worst)[..self.k].to_vec();
+            let covariance = scaled_identity(self.k, OUTPOST_VARIANCE);
+            self.outposts.push(Part { mass: 1.0, mean, covariance, rest: 1.0 });
         }
         Ok(())
     }
@@ -211,7 +208,14 @@ mod tests {
         let log_target: Vec<f64> =
             (0..3).map(|i| points.point(i).iter().map(|&u| normal::log_density(u)).sum()).collect();
         let before = layers.whole(&fitted).unwrap().log_density(&points);
-        layers.put_outposts(&fitted, &points, &log_target, &[0.0; 3], normal::log_upper_tail(3.0)).unwrap();
+        let seen = Seen {
+            points: points.clone(),
+            log_target,
+            log_weights: vec![0.0; 3],
+            unexplained: vec![false; 3],
+            log_mean: normal::log_upper_tail(3.0),
+        };
+        layers.put_outposts(&fitted, &seen).unwrap();
         let after = layers.whole(&fitted).unwrap();
         assert_eq!(after.len(), 6);
         assert_eq!(after.mixture().components()[5].location(), &[-3.2, 0.3]);

@@ -3,7 +3,7 @@
 use super::aim::FitTarget;
 use super::control::{Controlled, controlled};
 use super::directed::{Directed, Part, scaled_identity};
-use super::layers::{Layer, Layers};
+use super::layers::{Layer, Layers, Seen};
 use super::plan::Plan;
 use super::planes::{Control, Plane, planes};
 use super::pool::{Pool, counted};
@@ -113,17 +113,8 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
                     predicted =
                         (fit.at_event && predicted_known(predicted_variance)).then(|| 1.0 / (1.0 + predicted_variance));
                     if fit.at_event {
-                        let rows: Vec<usize> =
-                            (0..course.pool.len()).filter(|&i| fit.log_weights[i] > f64::NEG_INFINITY).collect();
-                        let of = |values: &[f64]| -> Vec<f64> { rows.iter().map(|&i| values[i]).collect() };
-                        let log_mean = log_sum_exp(&fit.log_weights) - ln(course.pool.len() as f64);
-                        course.layers.put_outposts(
-                            &next.full,
-                            &course.pool.points.select(&rows),
-                            &of(&fit.log_target),
-                            &of(&fit.log_weights),
-                            log_mean,
-                        )?;
+                        let seen = seen(&course.pool, &fit, explored);
+                        course.layers.put_outposts(&next.full, &seen)?;
                     }
                     earlier = Some(std::mem::replace(&mut twin, next));
                 }
@@ -135,6 +126,19 @@ pub(crate) fn run(target: &Scores, plan: &Plan, scouts: &Scouts, explored: &Expl
     }
     course.twin = twin;
     Ok(course)
+}
+
+/// The pool's draws that count; its first ones are the scouts.
+fn seen(pool: &Pool, fit: &FitTarget, explored: &Explored) -> Seen {
+    let rows: Vec<usize> = (0..pool.len()).filter(|&i| fit.log_weights[i] > f64::NEG_INFINITY).collect();
+    let of = |values: &[f64]| -> Vec<f64> { rows.iter().map(|&i| values[i]).collect() };
+    Seen {
+        points: pool.points.select(&rows),
+        log_target: of(&fit.log_target),
+        log_weights: of(&fit.log_weights),
+        unexplained: rows.iter().map(|i| explored.unexplained.binary_search(i).is_ok()).collect(),
+        log_mean: log_sum_exp(&fit.log_weights) - ln(pool.len() as f64),
+    }
 }
 
 fn predicted_known(variance: f64) -> bool {

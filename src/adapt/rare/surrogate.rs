@@ -72,97 +72,11 @@ pub(crate) fn surrogates(pool: &Pool, found: &[Found], space: &Subspace) -> Vec<
 
 /// Weighted least squares of the margin on a quadratic, in a layer around the surface where the event has its weight.
 fn fit(pool: &Pool, weights: &[f64], rows: &[usize], k: usize, rest: usize) -> Option<Surrogate> {
-    let inside: Vec<usize> = rows.iter().copied().filter(|&i| pool.size[i] != 0.0).collect();
-    let mass: f64 = inside.iter().map(|&i| weights[i]).sum();
-    let depth = inside.iter().map(|&i| weights[i] * pool.margin[i].abs()).sum::<f64>() / mass;
-    if !(depth > 0.0 && depth.is_finite()) {
-        return None;
-    }
     let coefficients = 1 + k + k * (k + 1) / 2 + usize::from(rest > 0);
-    let mut width = depth;
-    let mut used = Vec::new();
-    for _ in 0..WIDENINGS {
-        used = layer(pool, weights, rows, width);
-        let (sum, squares) = used.iter().fold((0.0, 0.0), |(s, q), (_, w)| (s + w, q + w * w));
-        if sum * sum >= POINTS_PER_COEFFICIENT * coefficients as f64 * squares {
-            break;
-        }
-        width *= WIDER;
-    }
-    let sum: f64 = used.iter().map(|(_, w)| w).sum();
-    let squares: f64 = used.iter().map(|(_, w)| w * w).sum();
-    if used.is_empty() || sum * sum < POINTS_PER_COEFFICIENT * coefficients as f64 * squares {
-        return None;
-    }
-    let dim = k + usize::from(rest > 0);
-    let mut centre = vec![0.0; dim];
-    let mut spread = vec![0.0; dim];
-    for &(i, w) in &used {
-        let point = pool.points.point(i);
-        (0..dim).for_each(|j| centre[j] += w / sum * point[j]);
-    }
-    for &(i, w) in &used {
-        let point = pool.points.point(i);
-        (0..dim).for_each(|j| spread[j] += w / sum * (point[j] - centre[j]) * (point[j] - centre[j]));
-    }
-    spread.iter_mut().for_each(|v| *v = v.sqrt().max(1e-9));
-    let features = |point: &[f64]| -> Vec<f64> {
-        let v: Vec<f64> = (0..dim).map(|j| (point[j] - centre[j]) / spread[j]).collect();
-        let mut row = vec![1.0];
-        row.extend_from_slice(&v);
-        for a in 0..k {
-            for b in 0..=a {
-                row.push(v[a] * v[b]);
-            }
-        }
-        row
-    };
-    let p = coefficients;
-    let (mut matrix, mut right) = (vec![0.0; p * p], vec![0.0; p]);
-    for &(i, w) in &used {
-        let row = features(&pool.points.point(i));
-        for a in 0..p {
-            right[a] += w / sum * row[a] * pool.margin[i] / width;
-            for b in 0..=a {
-                matrix[a * p + b] += w / sum * row[a] * row[b];
-            }
-        }
-    }
-    for a in 0..p {
-        for b in 0..a {
-            matrix[b * p + a] = matrix[a * p + b];
-        }
-        matrix[a * p + a] += RIDGE * matrix[a * p + a];
-    }
-    let solution = solved(&cholesky(&matrix, p)?, &right);
-    let residual = used
-        .iter()
-        .map(|&(i, w)| {
-            let away = dot(&features(&pool.points.point(i)), &solution) - pool.margin[i] / width;
-            w / sum * away * away
-        })
-        .sum::<f64>()
-        .sqrt();
-    // Back to the coordinates themselves.
-    let mut bend = vec![0.0; k * k];
-    let mut at = 1 + dim;
-    for a in 0..k {
-        for b in 0..=a {
-            let second = solution[at] / (spread[a] * spread[b]);
-            bend[a * k + b] += second;
-            bend[b * k + a] += second;
-            at += 1;
-        }
-    }
-    let mut slope: Vec<f64> = (0..k).map(|j| solution[1 + j] / spread[j]).collect();
-    let mut constant = solution[0] - (0..dim).map(|j| solution[1 + j] / spread[j] * centre[j]).sum::<f64>();
-    for a in 0..k {
-        let along = dot(&bend[a * k..(a + 1) * k], &centre[..k]);
-        slope[a] -= along;
-        constant += 0.5 * along * centre[a];
-    }
-    let rest_bend = if rest > 0 { 2.0 * solution[1 + k] / spread[k] } else { 0.0 };
-    let mut surrogate = Surrogate { constant, slope, bend, rest_bend, views: Vec::new() };
+    let (used, width) = wide_enough(pool, weights, rows, POINTS_PER_COEFFICIENT * coefficients as f64)?;
+    let frame = Frame::of(pool, &used, k, k + usize::from(rest > 0));
+    let (solution, residual) = frame.least_squares(pool, &used, width)?;
+    let mut surrogate = frame.unscaled(&solution, rest > 0);
     let terms = surrogate.terms(rest)?;
     surrogate.views = VIEWS
         .iter()
@@ -175,6 +89,115 @@ fn fit(pool: &Pool, weights: &[f64], rows: &[usize], k: usize, rest: usize) -> O
         })
         .collect();
     (!surrogate.views.is_empty()).then_some(surrogate)
+}
+
+/// The layer around the surface, as deep as the event's margins are large and widened until it has so many effective points; and its
+/// width.
+fn wide_enough(pool: &Pool, weights: &[f64], rows: &[usize], wanted: f64) -> Option<(Vec<(usize, f64)>, f64)> {
+    let inside: Vec<usize> = rows.iter().copied().filter(|&i| pool.size[i] != 0.0).collect();
+    let mass: f64 = inside.iter().map(|&i| weights[i]).sum();
+    let mut width = inside.iter().map(|&i| weights[i] * pool.margin[i].abs()).sum::<f64>() / mass;
+    if !(width > 0.0 && width.is_finite()) {
+        return None;
+    }
+    for _ in 0..WIDENINGS {
+        let used = layer(pool, weights, rows, width);
+        let (sum, squares) = used.iter().fold((0.0, 0.0), |(s, q), (_, w)| (s + w, q + w * w));
+        if squares > 0.0 && sum * sum >= wanted * squares {
+            return Some((used, width));
+        }
+        width *= WIDER;
+    }
+    None
+}
+
+/// Coordinates in which the points of a fit have mean zero and variance one.
+struct Frame {
+    centre: Vec<f64>,
+    spread: Vec<f64>,
+    k: usize,
+    sum: f64,
+}
+
+impl Frame {
+    fn of(pool: &Pool, used: &[(usize, f64)], k: usize, dim: usize) -> Self {
+        let sum: f64 = used.iter().map(|(_, w)| w).sum();
+        let (mut centre, mut spread) = (vec![0.0; dim], vec![0.0; dim]);
+        for &(i, w) in used {
+            let point = pool.points.point(i);
+            (0..dim).for_each(|j| centre[j] += w / sum * point[j]);
+        }
+        for &(i, w) in used {
+            let point = pool.points.point(i);
+            (0..dim).for_each(|j| spread[j] += w / sum * (point[j] - centre[j]) * (point[j] - centre[j]));
+        }
+        spread.iter_mut().for_each(|v| *v = v.sqrt().max(1e-9));
+        Self { centre, spread, k, sum }
+    }
+
+    /// One, the coordinates (the rest's square among them), and the products of the first `k`.
+    fn features(&self, point: &[f64]) -> Vec<f64> {
+        let v: Vec<f64> = self.centre.iter().zip(&self.spread).zip(point).map(|((c, s), x)| (x - c) / s).collect();
+        let mut row = vec![1.0];
+        row.extend_from_slice(&v);
+        for a in 0..self.k {
+            for b in 0..=a {
+                row.push(v[a] * v[b]);
+            }
+        }
+        row
+    }
+
+    /// Coefficients of the margin in units of `width`, and the residual's standard deviation in those of the margin.
+    fn least_squares(&self, pool: &Pool, used: &[(usize, f64)], width: f64) -> Option<(Vec<f64>, f64)> {
+        let p = 1 + self.centre.len() + self.k * (self.k + 1) / 2;
+        let (mut matrix, mut right) = (vec![0.0; p * p], vec![0.0; p]);
+        for &(i, w) in used {
+            let row = self.features(&pool.points.point(i));
+            for a in 0..p {
+                right[a] += w / self.sum * row[a] * pool.margin[i] / width;
+                for b in 0..=a {
+                    matrix[a * p + b] += w / self.sum * row[a] * row[b];
+                }
+            }
+        }
+        for a in 0..p {
+            for b in 0..a {
+                matrix[b * p + a] = matrix[a * p + b];
+            }
+            matrix[a * p + a] += RIDGE * matrix[a * p + a];
+        }
+        let mut solution = solved(&cholesky(&matrix, p)?, &right);
+        let away = |i: usize| dot(&self.features(&pool.points.point(i)), &solution) - pool.margin[i] / width;
+        let squares: f64 = used.iter().map(|&(i, w)| w / self.sum * (away(i) * away(i))).sum();
+        solution.iter_mut().for_each(|c| *c *= width);
+        Some((solution, squares.sqrt() * width))
+    }
+
+    /// The quadratic in the coordinates themselves.
+    fn unscaled(&self, solution: &[f64], has_rest: bool) -> Surrogate {
+        let (k, dim) = (self.k, self.centre.len());
+        let mut bend = vec![0.0; k * k];
+        let mut at = 1 + dim;
+        for a in 0..k {
+            for b in 0..=a {
+                let second = solution[at] / (self.spread[a] * self.spread[b]);
+                bend[a * k + b] += second;
+                bend[b * k + a] += second;
+                at += 1;
+            }
+        }
+        let mut slope: Vec<f64> = (0..k).map(|j| solution[1 + j] / self.spread[j]).collect();
+        let mut constant =
+            solution[0] - (0..dim).map(|j| solution[1 + j] / self.spread[j] * self.centre[j]).sum::<f64>();
+        for a in 0..k {
+            let along = dot(&bend[a * k..(a + 1) * k], &self.centre[..k]);
+            slope[a] -= along;
+            constant += 0.5 * along * self.centre[a];
+        }
+        let rest_bend = if has_rest { 2.0 * solution[1 + k] / self.spread[k] } else { 0.0 };
+        Surrogate { constant, slope, bend, rest_bend, views: Vec::new() }
+    }
 }
 
 /// Points around the surface with their weights, truncated at `sqrt(n)` times the mean.
