@@ -197,7 +197,8 @@ mod tests {
         assert_eq!([2, 3, 4].map(|i| layers.layer_of(i, 3)), [Layer::Fitted, Layer::Nominal, Layer::Defensive]);
     }
 
-    /// A draw far from the fit that would be heavy under it gets an outpost; one that is covered gets none.
+    /// A draw far from the fit that would be heavy under it gets an outpost (more than one while it stays heavy); one that is covered gets
+    /// none.
     #[test]
     fn heavy_draws_get_outposts() {
         let plan = Plan::new(&Settings::new(5000, 1), 2).unwrap();
@@ -217,8 +218,8 @@ mod tests {
         };
         layers.put_outposts(&fitted, &seen).unwrap();
         let after = layers.whole(&fitted).unwrap();
-        assert_eq!(after.len(), 6);
-        assert_eq!(after.mixture().components()[5].location(), &[-3.2, 0.3]);
+        let posts = &after.mixture().components()[5..];
+        assert!(!posts.is_empty() && posts.iter().all(|c| c.location() == [-3.2, 0.3]));
         let after = after.log_density(&points);
         assert!(after[2] > before[2] + 1.0 && after[0] > before[0] - 0.15);
     }
