@@ -4,7 +4,7 @@
 //! errors has a chance below 3e-5.
 #![allow(clippy::unwrap_used, missing_docs)]
 
-use evenpoise::adapt::rare::{RareAnswer, RareTuning, tune_rare};
+use evenpoise::adapt::rare::{RareAnswer, RareStep, RareTuning, tune_rare};
 use evenpoise::adapt::{Settings, Silent, TuneError};
 use evenpoise::numeric::normal::upper_tail;
 use evenpoise::problem::Problem;
@@ -147,6 +147,27 @@ fn discrete_variables_are_summed_over() {
     check(&event(&variables, "a + 1.5*gates >= 4.5"), 5000, exact, 0.04);
 }
 
+/// Counts and a gate together, events and means, against sums over all their values (the Poisson sum to 40 terms, the rest below 1e-60).
+#[test]
+fn counts_and_gates_against_exact_sums() {
+    let (rate, stuck) = (0.4_f64, 0.1);
+    let variables = format!(
+        "n = {{ distribution = \"poisson\", mean = {rate} }}\ng = {{ distribution = \"bernoulli\", p = {stuck} }}\na = {STANDARD}\n"
+    );
+    let (mut exact, mut mass) = (0.0, (-rate).exp());
+    for n in 0..40 {
+        for (gate, p) in [(0.0, 1.0 - stuck), (1.0, stuck)] {
+            exact += mass * p * upper_tail(5.0 - 0.8 * f64::from(n) - 1.5 * gate);
+        }
+        mass *= rate / f64::from(n + 1);
+    }
+    check(&event(&variables, "a + 0.8*n + 1.5*g >= 5"), 6000, exact, 0.06);
+    // E (n - 2)+ = rate - 2 + 2 P(0) + P(1); E exp(a/2) = exp(1/8).
+    let excess = rate - 2.0 + (2.0 + rate) * (-rate).exp();
+    let mean_exact = excess * 0.125_f64.exp() * stuck;
+    check(&mean(&variables, "g * max(n - 2, 0) * exp(0.5*a)"), 6000, mean_exact, 0.06);
+}
+
 /// A model that fails on a strip: P(a > 3) with 20 % of the draws beyond lost; both ways of counting are given.
 #[test]
 fn failures_are_counted_both_ways() {
@@ -203,6 +224,48 @@ fn what_cannot_be_asked_is_refused() {
     assert!(matches!(tune_rare(&density, &Settings::new(1000, 1), &mut Silent), Err(TuneError::Aim { .. })));
     let small = event(&pair(), "a > 3");
     assert!(matches!(tune_rare(&small, &Settings::new(50, 1), &mut Silent), Err(TuneError::Budget { .. })));
+}
+
+/// What a problem file may say about a tuning either works here or is refused with its key and the reason.
+#[test]
+fn tuning_keys_work_or_are_refused() {
+    let hat = |keys: &str| {
+        problem(&format!(
+            "[variables]\n{}[target]\naim = \"probability\"\nevent = \"0.5*(a-2)^2 - 1.5*(b-5)^3 - 3 <= 0\"\n[tuning]\nbudget = 4000\n{keys}\n",
+            pair()
+        ))
+    };
+    let run = |keys: &str| {
+        let problem = hat(keys);
+        tune_rare(&problem, &Settings::from_keys(problem.tuning()), &mut Silent)
+    };
+    for (keys, key) in [
+        ("family = \"student-t\"", "family"),
+        ("df = 5", "df"),
+        ("report_share = 0.4", "report_share"),
+        ("method = \"moments\"", "method"),
+    ] {
+        let refusal = run(keys).unwrap_err();
+        assert!(matches!(refusal, TuneError::Setting { key: named, .. } if named == key), "{keys}: {refusal}");
+        assert!(refusal.to_string().starts_with(&format!("`{key}` cannot be set")), "{refusal}");
+    }
+    let auto = run("").unwrap();
+    for keys in [
+        "family = \"gaussian\"",
+        "structure = \"diagonal\"",
+        "structure = \"full\"",
+        "method = \"variance\"",
+        "method = \"cross-entropy\"",
+    ] {
+        let tuning = run(keys).unwrap();
+        let value = tuning.answer.value().unwrap();
+        assert!((value.value - 2.874_537_609_2e-5).abs() < 4.5 * value.se, "{keys}: {value:?}");
+        let diagonal = tuning.chosen.components().iter().all(|c| c.scale()[1] == 0.0);
+        assert_eq!(diagonal, keys.contains("diagonal"), "{keys}");
+        let steps: Vec<RareStep> = tuning.rounds.iter().filter(|r| r.counted).map(|r| r.step).collect();
+        assert!(!keys.contains("cross-entropy") || !steps.contains(&RareStep::Variance));
+        assert!(tuning.chosen == auto.chosen || !(keys.contains("gaussian") || keys.contains("full")), "{keys}");
+    }
 }
 
 /// The examples in `examples/`, as they stand: sound at their own budget. Source of the values: plain Monte Carlo, 4e7 draws with NumPy

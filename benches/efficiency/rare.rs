@@ -1,6 +1,6 @@
-//! The rare-event rows over their seeds: `-- --rare [--rows a,b] [--seeds N] [--first S] [--plain] [--rounds]`.
+//! The rare-event rows over their seeds: `-- --rare [--traps] [--rows a,b] [--seeds N] [--first S] [--plain] [--rounds]`.
 
-use crate::rare_rows::{Row, all};
+use crate::rare_rows::{Row, all, traps};
 use evenpoise::adapt::rare::{RareTuning, tune_rare};
 use evenpoise::adapt::{Settings, Silent};
 use evenpoise::weights::verdict::Word;
@@ -19,7 +19,8 @@ pub fn run(args: &[String]) {
     let first: u64 = value("--first").map_or(7000, |v| v.parse().unwrap());
     let plain = args.iter().any(|a| a == "--plain");
     let verbose = args.iter().any(|a| a == "--rounds");
-    for row in all() {
+    let rows = if args.iter().any(|a| a == "--traps") { traps() } else { all() };
+    for row in rows {
         if wanted.as_ref().is_some_and(|w| !w.split(',').any(|n| n == row.name)) {
             continue;
         }
@@ -45,6 +46,15 @@ fn errors(row: &Row, tuning: &RareTuning) -> (f64, f64) {
     tuning.answer.value().map_or((-1.0, f64::NAN), |v| (v.value / row.exact - 1.0, v.se / row.exact))
 }
 
+/// Runs that are off by more than a factor of two; those of them that call themselves sound.
+fn off(row: &Row, outcomes: &[Outcome], sound: bool) -> usize {
+    let far = |o: &&Outcome| {
+        let ratio = 1.0 + errors(row, &o.tuning).0;
+        !(0.5..=2.0).contains(&ratio) && (!sound || o.tuning.verdict.word == Word::Sound)
+    };
+    outcomes.iter().filter(far).count()
+}
+
 fn line(row: &Row, outcomes: &[Outcome]) -> String {
     let n = outcomes.len() as f64;
     let pairs: Vec<(f64, f64)> = outcomes.iter().map(|o| errors(row, &o.tuning)).collect();
@@ -61,7 +71,7 @@ fn line(row: &Row, outcomes: &[Outcome]) -> String {
     let mean = |f: &dyn Fn(&RareTuning) -> f64| outcomes.iter().map(|o| f(&o.tuning)).sum::<f64>() / n;
     let kappa = rmse * rmse * evaluations as f64;
     format!(
-        "{:8} ev {:5} survey {:4.0} to event {:4.0} points {:.1} rmse {:.4} kappa {:5.2} (goal {:.2}, before {:.2}) claimed kappa {:5.2} claimed/true {:.2} bias {:+.4} cov {:.2} range {:.3}-{:.3} flagged {} last ess {:.2} {:.2} s",
+        "{:8} ev {:5} survey {:4.0} to event {:4.0} points {:.1} rmse {:.4} kappa {:5.2} (goal {:.2}, before {:.2}) claimed kappa {:5.2} claimed/true {:.2} bias {:+.4} cov {:.2} range {:.3}-{:.3} flagged {} off 2x {} (sound {}) last ess {:.2} {:.2} s",
         row.name,
         evaluations,
         mean(&|t| t.survey.evaluations as f64),
@@ -82,6 +92,8 @@ fn line(row: &Row, outcomes: &[Outcome]) -> String {
         1.0 + pairs.iter().map(|(e, _)| *e).fold(f64::INFINITY, f64::min),
         1.0 + pairs.iter().map(|(e, _)| *e).fold(f64::NEG_INFINITY, f64::max),
         outcomes.iter().filter(|o| o.tuning.verdict.word > Word::Sound).count(),
+        off(row, outcomes, false),
+        off(row, outcomes, true),
         mean(&|t| t.rounds.last().map_or(0.0, |r| r.ess_fraction)),
         outcomes.iter().map(|o| o.seconds).sum::<f64>() / n,
     )

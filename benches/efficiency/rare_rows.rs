@@ -232,6 +232,35 @@ pub fn all() -> Vec<Row> {
     rows
 }
 
+/// Events that hide a part of themselves. Exact answers: SciPy 1.17.1, `scipy.stats.norm.sf`, `scipy.stats.ncx2.cdf(r^2, 2, 9)` for a disc
+/// of radius `r` at distance 3, `scipy.integrate.quad` over `a` for the strip.
+pub fn traps() -> Vec<Row> {
+    let two = standard(&["a", "b"]);
+    let trap = |name, budget, exact, variables: &str, event: &str| row(name, budget, exact, 0.0, 0.0, variables, event);
+    let branches = "3.6 - max(u[1] + 0.4, max(u[2] + 0.3, max(u[3] + 0.2, max(u[4] + 0.1, u[5])))) <= 0";
+    // A disc of radius .25 holds 92 % of the probability, a half-plane on the other side the rest.
+    let disc = "min(sqrt((a + 3)^2 + b^2) - 0.25, 4 - a) <= 0";
+    let walls = "min(3 - a, max(3.8 - b, abs(a) - 0.5)) <= 0";
+    vec![
+        trap("disc2", 2_000, DISC, &two, disc),
+        trap("disc10", 10_000, DISC, &two, disc),
+        trap("multi10", 5_000, MULTI, &group("u", 10, NORMAL), branches),
+        trap("multi20", 5_000, MULTI, &group("u", 20, NORMAL), branches),
+        trap("multi50", 5_000, MULTI, &group("u", 50, NORMAL), branches),
+        trap("opp20", 5_000, OPPOSITE, &group("u", 20, NORMAL), "abs(sum(u)/sqrt(20)) >= 3.5"),
+        trap("opp100", 5_000, OPPOSITE, &group("u", 100, NORMAL), "abs(sum(u)/10) >= 3.5"),
+        trap("strip", 5_000, STRIP, &two, "max(3 - a, abs(b - 0.3*a^2) - 0.05) <= 0"),
+        trap("walls2", 5_000, WALLS, &two, walls),
+        trap("walls6", 5_000, WALLS, &standard(&["a", "b", "c", "d", "e", "f"]), walls),
+    ]
+}
+
+const DISC: f64 = 3.979313685439e-04;
+const MULTI: f64 = 1.897875337322e-03;
+const OPPOSITE: f64 = 4.652581580711e-04;
+const STRIP: f64 = 5.426715330550e-07;
+const WALLS: f64 = 1.377601900747e-03;
+
 const DAMPED: &str = "Fs - 3*ks*sqrt(pi*S0/(4*zs*sqrt(ks/ms)^3) * ((zp+zs)/2*zs/(zp*zs*(4*((zp+zs)/2)^2 + \
 ((sqrt(kp/mp)-sqrt(ks/ms))/((sqrt(kp/mp)+sqrt(ks/ms))/2))^2) + ms/mp*((zp+zs)/2)^2)) * \
 (zp*sqrt(kp/mp)^3 + zs*sqrt(ks/ms)^3)*sqrt(kp/mp)/(4*(zp+zs)/2*((sqrt(kp/mp)+sqrt(ks/ms))/2)^4)) <= 0";

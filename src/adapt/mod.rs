@@ -80,6 +80,16 @@ pub enum TuneError {
         /// The problem's aim.
         aim: &'static str,
     },
+    /// A setting that this loop has no use for.
+    #[error("`{key}` cannot be set where the aim is {aim}: {reason}; leave it out")]
+    Setting {
+        /// Its key.
+        key: &'static str,
+        /// The problem's aim.
+        aim: &'static str,
+        /// Why not.
+        reason: &'static str,
+    },
     /// The survey's optimiser failed.
     #[error("the survey failed: {0}")]
     Survey(String),

@@ -42,7 +42,8 @@ pub(crate) fn of(course: &mut Course, scouts: &Scouts, event: bool, failures_are
         course.rounds[t].share = *share;
     }
     let draws = gather(course, &used, &combined, few);
-    let halves_z = halves(course, &used, &draws);
+    // Plain terms: the folds of the controls tie the halves to each other.
+    let halves_z = halves(course, &used, &combined.contributions(&terms));
     let failed = draws.value.iter().any(|v| v.is_nan());
     let mean_size = mean_size(course, &used, &combined);
     let failing = failed.then(|| failing(course, &used, &combined));
@@ -110,14 +111,14 @@ fn gather(course: &Course, used: &[usize], combined: &CombinedRounds, plain: boo
 }
 
 /// Halves of the counted draws, every round's components being strata of their own.
-fn halves(course: &Course, used: &[usize], draws: &RareDraws) -> f64 {
-    let (mut labels, mut offset) = (Vec::with_capacity(draws.round.len()), 0);
+fn halves(course: &Course, used: &[usize], contributions: &[f64]) -> f64 {
+    let (mut labels, mut offset) = (Vec::with_capacity(contributions.len()), 0);
     for &t in used {
         let own = &course.drawn[t].labels;
         labels.extend(own.iter().map(|l| l + offset));
         offset += own.iter().max().map_or(0, |m| m + 1);
     }
-    if labels.is_empty() { f64::NAN } else { Strata::new(&labels).halves_z(&draws.contributions) }
+    if labels.is_empty() { f64::NAN } else { Strata::new(&labels).halves_z(contributions) }
 }
 
 /// The probability that the model fails, from the same draws.

@@ -13,7 +13,7 @@ const HITS_PER_CONTROL: usize = 2;
 const DRAWS_PER_EXTRA: usize = 30;
 /// Effective draws that must carry a control, and standard errors that its mean may be off.
 const COVERED_DRAWS: f64 = 30.0;
-const COVERED_ERRORS: f64 = 3.0;
+const COVERED_ERRORS: f64 = 4.5;
 /// Ridge as a share of a control's own sum of squares: the controls sum to one, so their matrix is singular without.
 const RIDGE: f64 = 1e-3;
 /// And in squares of the control's largest value: a control that rests on a few large values (a half-space that few draws entered) must
@@ -22,8 +22,10 @@ const RIDGE_LARGEST: f64 = 0.1;
 /// A component with fewer draws makes no stratum of its own when coefficients are sought.
 const STRATUM: usize = 8;
 
-/// Part of the plain variance that is kept whatever the controls explain: an event that is a half-space would else claim no error at all.
-const BELIEVED: f64 = 1e-3;
+/// How far the controls are believed: coefficients are shrunk to this, so that a small part of the plain error stays both in the value
+/// and in what is claimed. Believed wholly, an event that is a half-space would claim no error at all, and rounds whose few stray draws
+/// happen to agree would disagree with each other beyond all measure.
+const BELIEVED: f64 = 0.94;
 
 /// Terms with control variates, and their mean.
 #[derive(Debug, Clone, PartialEq)]
@@ -37,8 +39,8 @@ pub(crate) struct Controlled {
 ///
 /// The coefficients minimise the variance within strata and come, for every fifth of the draws, from the other four: a draw never
 /// sets the coefficients that correct it, so the mean keeps no bias beyond the rounding of the strata's sizes. The first `needed`
-/// controls are used together or not at all, the others as far as the draws go; with too few draws, or draws that count, the terms come
-/// back as they are.
+/// controls are used together or not at all, after the others, which are used as far as the draws go; with too few draws, or draws that
+/// count, the terms come back as they are.
 ///
 /// # Shapes
 /// `labels[i]` is the component of draw `i`, in ascending order.
@@ -55,13 +57,15 @@ pub(crate) fn controlled(
     let n = terms.len();
     let hits = terms.iter().filter(|z| **z != 0.0).count();
     let room = (n / DRAWS_PER_CONTROL).min(hits / HITS_PER_CONTROL);
-    if room < needed {
+    let (own, others) = controls.split_at(needed.min(controls.len()));
+    // What resembles the event first: it explains most.
+    let alike: Vec<&Control> = others.iter().filter(|c| covered(c)).take((n / DRAWS_PER_EXTRA).min(room)).collect();
+    let own = if room - alike.len() < needed { &[] } else { own };
+    let used: Vec<&Control> = own.iter().chain(alike).collect();
+    let p = used.len();
+    if p == 0 {
         return Controlled { terms: terms.to_vec(), mean: Strata::new(labels).mean(terms) };
     }
-    let extra = n / DRAWS_PER_EXTRA;
-    let (own, others) = controls.split_at(needed.min(controls.len()));
-    let used: Vec<&Control> = own.iter().chain(others.iter().filter(|c| covered(c)).take(extra)).take(room).collect();
-    let p = used.len();
     let largest = |values: &[f64]| values.iter().fold(0.0_f64, |a, v| a.max(v.abs()));
     let unit = largest(terms);
     let units: Vec<f64> = used.iter().map(|c| largest(&c.values).max(f64::MIN_POSITIVE)).collect();
@@ -92,13 +96,12 @@ pub(crate) fn controlled(
             let Some(b) = &coefficients[i % FOLDS] else { return factor * terms[i] };
             let of =
                 |value: &dyn Fn(&Control) -> f64| -> f64 { (0..p).map(|k| b[k] * (value(used[k]) / units[k])).sum() };
-            factor * (terms[i] - unit * of(&|c| c.values[i])) + unit * of(&|c| c.mean)
+            factor * (terms[i] - BELIEVED * unit * of(&|c| c.values[i])) + BELIEVED * unit * of(&|c| c.mean)
         })
         .collect();
     let StratifiedMean { mean, se } = Strata::new(labels).mean(&corrected);
-    let plain = Strata::new(labels).mean(terms).se;
     // The folds' coefficients share draws: their common error shows in no fold's spread.
-    let variance = se * se * (1.0 + p as f64 / n as f64) + BELIEVED * plain * plain;
+    let variance = se * se * (1.0 + p as f64 / n as f64);
     Controlled { terms: corrected, mean: StratifiedMean { mean, se: variance.sqrt() } }
 }
 

@@ -14,6 +14,8 @@ pub(crate) struct Ended {
     pub(crate) converged: bool,
     /// Unit gradient of the margin there, where it is known.
     pub(crate) normal: Option<Vec<f64>>,
+    /// Distance from there to the surface by that gradient, against it positive.
+    pub(crate) short: f64,
     /// Unit gradients met on the way.
     pub(crate) gradients: Vec<Vec<f64>>,
 }
@@ -51,7 +53,7 @@ const DECREASE: f64 = 1e-4;
 /// Der Kiureghian, "Two improved algorithms for reliability analysis" (1995); cuts, lengths and limits are ours.
 pub(crate) fn search(target: &Scores, start: Look, cap: u64) -> Result<Ended, TuneError> {
     let mut best = start.hit.then(|| start.at.clone());
-    let mut ended = Ended { at: None, converged: false, normal: None, gradients: Vec::new() };
+    let mut ended = Ended { at: None, converged: false, normal: None, short: 0.0, gradients: Vec::new() };
     let mut cuts: Vec<Cut> = Vec::new();
     let mut failures = 0;
     let mut afresh = false;
@@ -88,6 +90,7 @@ pub(crate) fn search(target: &Scores, start: Look, cap: u64) -> Result<Ended, Tu
             }
             ended.converged = true;
             ended.normal = Some(normal);
+            ended.short = here.value / length;
             best = Some(here.at.clone());
             break;
         }

@@ -10,7 +10,8 @@ use rayon::prelude::*;
 pub(crate) enum Covariances {
     /// The mean of an inverse-Wishart posterior whose prior is centred on the component's covariance at the start of the fit, with
     /// `strength * k` (rest: `strength`) effective points.
-    Anchored { strength: f64 },
+    /// `diagonal`: without covariances between coordinates.
+    Anchored { strength: f64, diagonal: bool },
     /// The nominal ones: unit.
     Unit,
 }
@@ -114,7 +115,7 @@ fn updated(sums: &Sums, anchor: &Part, effective: f64, covariances: Covariances,
     let k = sums.mean.len();
     let points = sums.mass * effective;
     let mass = points + 1.0;
-    let Covariances::Anchored { strength } = covariances else {
+    let Covariances::Anchored { strength, diagonal } = covariances else {
         return Part { mass, mean: sums.mean.clone(), covariance: scaled_identity(k, 1.0), rest: 1.0 };
     };
     let prior = strength * k as f64;
@@ -122,7 +123,12 @@ fn updated(sums: &Sums, anchor: &Part, effective: f64, covariances: Covariances,
         .spread
         .iter()
         .zip(&anchor.covariance)
-        .map(|(s, a)| (s * effective + prior * a) / (points + prior))
+        .enumerate()
+        .map(
+            |(at, (s, a))| {
+                if diagonal && at % (k + 1) != 0 { 0.0 } else { (s * effective + prior * a) / (points + prior) }
+            },
+        )
         .collect();
     let rest = if rest_dim == 0 {
         1.0
@@ -150,7 +156,7 @@ mod tests {
         let x = space.reduce(&points);
         let w: Vec<f64> = truth.log_density(&x).iter().zip(wide.log_density(&x)).map(|(t, q)| exp(t - q)).collect();
         let start = Directed::new(&[part(0.5, -1.0, 1.0, 1.0), part(0.5, 1.0, 1.0, 1.0)], 3).unwrap();
-        let fitted = em(&start, &x, &w, Covariances::Anchored { strength: 2.0 }, 30).unwrap();
+        let fitted = em(&start, &x, &w, Covariances::Anchored { strength: 2.0, diagonal: false }, 30).unwrap();
         // The directions are found up to order and sign: compare what does not depend on them.
         let parts = fitted.parts();
         let means: Vec<f64> = parts.iter().map(|p| p.mean.iter().map(|m| m * m).sum::<f64>().sqrt()).collect();
@@ -158,6 +164,8 @@ mod tests {
         let rests: Vec<f64> = parts.iter().map(|p| p.rest).collect();
         assert!((rests[0].min(rests[1]) - 0.8).abs() < 0.05 && (rests[0].max(rests[1]) - 1.2).abs() < 0.05);
         assert!((parts[0].mass.min(parts[1].mass) - 0.3).abs() < 0.02);
+        let diagonal = em(&start, &x, &w, Covariances::Anchored { strength: 2.0, diagonal: true }, 5).unwrap();
+        assert!(diagonal.parts().iter().all(|p| p.covariance[1] == 0.0 && p.covariance[0] > 0.0));
         let unit = em(&start, &x, &w, Covariances::Unit, 5).unwrap();
         assert!(unit.parts().iter().all(|p| p.covariance[0] == 1.0 && p.rest == 1.0));
     }

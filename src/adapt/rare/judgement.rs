@@ -10,7 +10,7 @@ use crate::weights::TailShape;
 use crate::weights::verdict::{self, Check, FailureFacts, RareEvidence, Verdict, Word, judge_rare};
 
 /// A scout whose weight under the last fit and its copies is below this many times the answer is explained by that fit.
-const EXPLAINING_WEIGHT: f64 = 20.0;
+const EXPLAINING_WEIGHT: f64 = 50.0;
 /// Last refits whose new regions are late.
 const LAST_REFITS: usize = 2;
 /// A region is separate where it lies so many standard deviations (per coordinate, in the mean) from everything fitted before.
@@ -45,10 +45,12 @@ pub(crate) fn judge(
         .failures
         .as_ref()
         .map_or(value.value, |f| if failures.inside_is_value { f.outside.value } else { f.inside.value });
-    let outside = counted
+    // Of the answer, not of the worst round: the first rounds are small, and their proposals rough.
+    let outside: f64 = counted
         .iter()
-        .map(|&t| course.rounds[t].outside_share * course.rounds[t].value.abs() / answering.mean_size)
-        .fold(0.0, f64::max);
+        .map(|&t| &course.rounds[t])
+        .map(|round| round.share * round.outside_share * round.value.abs() / answering.mean_size)
+        .sum();
     let unexplained = unexplained(course, scouts, explored, answering.mean_size);
     let late = late_regions(course);
     judge_rare(&RareEvidence {

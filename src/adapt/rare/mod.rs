@@ -3,8 +3,8 @@
 //! Everything lives in standard normal scores `u`, where the nominal density is `N(0, I)`. In reading order: `scores` (the
 //! problem there), `plan` (budget and constants), `directed`, `subspace` (mixtures that know a few directions), `survey` with
 //! `design_point`, `least_distance` and `mode` (where the event lies), `layers` (what bounds the weights), `pool`, `smoothing`,
-//! `aim`, `em`, `refit` (the next proposal), `planes`, `control` (variance won back), `rounds` (the loop), `answer` (the value), `judgement` (the
-//! verdict).
+//! `aim`, `em`, `refit` (the next proposal), `planes`, `quadric`, `surrogate`, `control` (variance won back), `rounds` (the loop), `answer`
+//! (the value), `judgement` (the verdict).
 //!
 //! The answer combines the rounds drawn after the event was first reached, each with a weight that was fixed before it was drawn: no
 //! draw is chosen, dropped or reweighted for what it showed, so the combination is unbiased. The pool of all draws fits the
@@ -23,11 +23,13 @@ mod mode;
 mod plan;
 mod planes;
 mod pool;
+mod quadric;
 mod refit;
 mod rounds;
 mod scores;
 mod smoothing;
 mod subspace;
+mod surrogate;
 mod survey;
 mod tuning;
 
@@ -75,6 +77,7 @@ pub fn tune_rare(problem: &Problem, settings: &Settings, observer: &mut dyn Obse
     if problem.aim() == Aim::Density {
         return Err(TuneError::Aim { aim: problem.aim().word() });
     }
+    Plan::refuse(settings, problem.aim().word())?;
     let plans = Plan::parts(settings, problem.dim())?;
     let plan = &plans[0];
     let target = Scores::new(problem, observer);

@@ -19,7 +19,7 @@ const GAIN: f64 = 0.02;
 /// Climbs `ln |f| - |u|^2/2` from a point with `f != 0`: the step goes to `grad ln |f|`, which is the mode where `ln |f|` is linear.
 pub(crate) fn climb(target: &Scores, start: Look, cap: u64) -> Result<Ended, TuneError> {
     let height = |look: &Look| log_size(look.value) - 0.5 * dot(&look.at, &look.at);
-    let mut ended = Ended { at: None, converged: false, normal: None, gradients: Vec::new() };
+    let mut ended = Ended { at: None, converged: false, normal: None, short: 0.0, gradients: Vec::new() };
     let mut here = start;
     for _ in 0..ITERATIONS {
         if target.spent() + target.slope_cost() + TRIALS as u64 > cap {

@@ -2,12 +2,14 @@
 
 use crate::adapt::TuneError;
 use crate::adapt::settings::Settings;
+use crate::problem::Family;
 use crate::problem::Structure;
+use crate::refit::Preference;
 
 /// Share of the budget for the scouts, and their number at least (or a fifth of the budget) and at most.
-const SCOUTS: f64 = 0.05;
+const SCOUTS: f64 = 0.08;
 const SCOUTS_LEAST: usize = 60;
-const SCOUTS_MOST: usize = 500;
+const SCOUTS_MOST: usize = 1000;
 /// Share of the budget that searches may spend, below and from ten dimensions on. With .05 in ten dimensions and more no
 /// search of a quadratic margin in 100 dimensions completes (differences for gradients).
 const SEARCHES: f64 = 0.08;
@@ -49,6 +51,10 @@ pub(crate) struct Plan {
     pub(crate) smooth_round: usize,
     /// Whether a few directions are told from the rest.
     pub(crate) directions: bool,
+    /// Whether covariances are kept diagonal.
+    pub(crate) diagonal: bool,
+    /// Kinds of refit that are asked for.
+    pub(crate) method: Preference,
     pub(crate) most_components: usize,
     /// Share of the nominal density.
     pub(crate) nominal: f64,
@@ -79,10 +85,42 @@ impl Plan {
                 Some(Structure::Full | Structure::Diagonal) => false,
                 None => dim > FULL,
             },
+            diagonal: settings.structure == Some(Structure::Diagonal),
+            method: settings.method,
             most_components: settings.components.unwrap_or(COMPONENTS).max(1),
             nominal: settings.defensive.unwrap_or(NOMINAL).clamp(0.0, 0.5),
             rounds: settings.rounds.max(2),
         })
+    }
+
+    /// Settings that have no meaning for a probability or an expectation are refused with their reason, not passed over.
+    pub(crate) fn refuse(settings: &Settings, aim: &'static str) -> Result<(), TuneError> {
+        let refused = |key, reason| Err(TuneError::Setting { key, aim, reason });
+        if settings.family == Some(Family::StudentT) {
+            return refused(
+                "family",
+                "its components are Gaussian, and copies of them with unit and with inflated covariance take the place of heavy tails",
+            );
+        }
+        if settings.df.is_some_and(f64::is_finite) {
+            return refused(
+                "df",
+                "its components are Gaussian, and copies of them with unit and with inflated covariance take the place of heavy tails",
+            );
+        }
+        if settings.report_share.is_some() {
+            return refused(
+                "report_share",
+                "every round drawn after the event was reached counts in the answer, and no share is set aside to report",
+            );
+        }
+        if settings.method == Preference::Moments {
+            return refused(
+                "method",
+                "moments matched to an event that ends at a surface give weights without a finite variance; \"cross-entropy\" and \"variance\" can be chosen",
+            );
+        }
+        Ok(())
     }
 
     /// The plans of all parts: one for the first budget, and one for every raise, whose rounds are shares of what it adds.
@@ -161,9 +199,28 @@ mod tests {
     }
 
     #[test]
+    fn what_has_no_meaning_here_is_refused() {
+        let plain = Settings::new(2000, 1);
+        let refused = |settings: &Settings| match Plan::refuse(settings, "probability") {
+            Err(TuneError::Setting { key, .. }) => Some(key),
+            _ => None,
+        };
+        assert_eq!(refused(&plain), None);
+        assert_eq!(
+            refused(&Settings { family: Some(Family::Gaussian), df: Some(f64::INFINITY), ..plain.clone() }),
+            None
+        );
+        assert_eq!(refused(&Settings { family: Some(Family::StudentT), ..plain.clone() }), Some("family"));
+        assert_eq!(refused(&Settings { df: Some(5.0), ..plain.clone() }), Some("df"));
+        assert_eq!(refused(&Settings { report_share: Some(0.3), ..plain.clone() }), Some("report_share"));
+        assert_eq!(refused(&Settings { method: Preference::Moments, ..plain.clone() }), Some("method"));
+        assert_eq!(refused(&Settings { method: Preference::Variance, ..plain }), None);
+    }
+
+    #[test]
     fn the_rounds_spend_the_budget_and_no_more() {
         let plan = Plan::new(&Settings::new(10_000, 1), 5).unwrap();
-        assert_eq!((plan.scouts, plan.smooth_round, plan.search_cap), (500, 400, 800));
+        assert_eq!((plan.scouts, plan.smooth_round, plan.search_cap), (800, 400, 800));
         let mut spent = 1300;
         let mut sizes = Vec::new();
         for t in 0.. {

@@ -42,7 +42,7 @@ pub(crate) fn planes(found: &[Found], space: &Subspace) -> Vec<Plane> {
 fn plane(found: &Found, space: &Subspace) -> Option<Plane> {
     let inward: Vec<f64> = found.normal.as_ref()?.iter().map(|n| -n).collect();
     let length = dot(&found.at, &found.at).sqrt();
-    let distance = dot(&inward, &found.at);
+    let distance = dot(&inward, &found.at) + found.short;
     if !found.converged || distance < ALONG * length || distance <= 0.0 {
         return None;
     }
@@ -104,6 +104,7 @@ mod tests {
             at: slope.iter().map(|v| 1.2 * v).collect(),
             converged: true,
             normal: Some(slope.iter().map(|v| -v).collect()),
+            short: 0.0,
         };
         let planes = planes(&[found], &Subspace::whole(3));
         let mut rng = stream(4, Purpose::Trial, 0, 0);
@@ -123,7 +124,7 @@ mod tests {
 
     #[test]
     fn a_kink_gives_no_plane() {
-        let found = Found { at: vec![2.0, 2.0], converged: true, normal: Some(vec![-1.0, 0.0]) };
+        let found = Found { at: vec![2.0, 2.0], converged: true, normal: Some(vec![-1.0, 0.0]), short: 0.0 };
         assert!(planes(&[found], &Subspace::whole(2)).is_empty());
     }
 }

@@ -11,6 +11,7 @@ use super::tuning::{RareCandidate, RareStep};
 use crate::adapt::TuneError;
 use crate::numeric::linear::eigen;
 use crate::numeric::{Points, Purpose, exp, ln, stream};
+use crate::refit::Preference;
 use rayon::prelude::*;
 
 /// A proposal that exists twice: trained without the held-out draws (ranked), and on all (drawn from).
@@ -40,6 +41,9 @@ pub(crate) struct Decision {
 const ANCHORS: [f64; 2] = [2.0, 20.0];
 const ANCHOR_VARIANCE: f64 = 5.0;
 const ANCHOR_SPLIT: f64 = 3.0;
+/// A split by the variance of the rest, told by its own anchor.
+const ANCHOR_SPLIT_REST: f64 = 3.5;
+const REST_APART: f64 = 1.25;
 const ITERATIONS: usize = 6;
 const ITERATIONS_SEEDED: usize = 8;
 const ITERATIONS_SPLIT: usize = 10;
@@ -72,13 +76,14 @@ struct Material {
 }
 
 /// The candidates that a target offers: kind and strength of the anchor.
-const AT_EVENT: [(RareStep, f64); 6] = [
+const AT_EVENT: [(RareStep, f64); 7] = [
     (RareStep::CrossEntropy, ANCHORS[0]),
     (RareStep::CrossEntropy, ANCHORS[1]),
     (RareStep::Shift, 0.0),
     (RareStep::Variance, ANCHOR_VARIANCE),
     (RareStep::Seeded, ANCHOR_VARIANCE),
     (RareStep::Split, ANCHOR_SPLIT),
+    (RareStep::Split, ANCHOR_SPLIT_REST),
 ];
 const SMOOTHED: [(RareStep, f64); 4] = [AT_EVENT[0], AT_EVENT[1], AT_EVENT[2], AT_EVENT[5]];
 
@@ -100,7 +105,9 @@ pub(crate) fn refit(
     let training = Material::new(pool, target, layers, &present.trained, &weights, &log_mixture, &rows(false))?;
     let judge = Judge::new(pool, target, &weights);
 
-    let kinds: &[(RareStep, f64)] = if target.at_event { &AT_EVENT } else { &SMOOTHED };
+    let kinds: Vec<(RareStep, f64)> = if target.at_event { AT_EVENT.to_vec() } else { SMOOTHED.to_vec() };
+    let kinds: Vec<(RareStep, f64)> =
+        kinds.into_iter().filter(|(step, _)| allowed(plan.method, *step, target.at_event)).collect();
     let make = |kind: (RareStep, f64), start: &Directed, from: &Material| -> Option<Directed> {
         candidate(kind, start, from, plan, round)
     };
@@ -138,6 +145,15 @@ pub(crate) fn refit(
         None => present.full.clone(),
     };
     Ok(Decision { twin: Twin { trained, full }, step, predicted_variance: scores[best] - 1.0, candidates })
+}
+
+/// Whether a kind of refit is asked for. While the event is smoothed there is only the cross-entropy to go by.
+fn allowed(method: Preference, step: RareStep, at_event: bool) -> bool {
+    match method {
+        Preference::CrossEntropy => step != RareStep::Variance,
+        Preference::Variance => step != RareStep::CrossEntropy || !at_event,
+        Preference::Auto | Preference::Moments => true,
+    }
 }
 
 /// The held-out draws, ready to rank.
@@ -227,7 +243,7 @@ fn candidate(
     plan: &Plan,
     round: u32,
 ) -> Option<Directed> {
-    let anchored = Covariances::Anchored { strength };
+    let anchored = Covariances::Anchored { strength, diagonal: plan.diagonal };
     let fit = |start: &Directed, weights: &[f64], covariances, iterations| {
         em(start, &from.points, weights, covariances, iterations).ok()
     };
@@ -243,7 +259,11 @@ fn candidate(
             fit(&grown, &from.weights, anchored, ITERATIONS_SEEDED)
         }
         RareStep::Split if start.len() + 2 < plan.most_components => {
-            let grown = split(start, from, plan.most_components)?;
+            let grown = if strength == ANCHOR_SPLIT_REST {
+                split_rest(start, from, plan.most_components)?
+            } else {
+                split(start, from, plan.most_components)?
+            };
             fit(&grown, &from.weights, anchored, ITERATIONS_SPLIT)
         }
         _ => None,
@@ -322,6 +342,32 @@ fn split(start: &Directed, from: &Material, most: usize) -> Option<Directed> {
             let moved =
                 mean.iter().zip(&main.vectors[k - 1]).map(|(m, v)| m + side * SPLIT_APART * length * v).collect();
             grown.push(Part { mass: 0.5 * shares[i], mean: moved, covariance: covariance.clone(), rest: part.rest });
+        }
+    }
+    (grown.len() > parts.len()).then(|| Directed::new(&grown, start.rest_dim()).ok()).flatten()
+}
+
+/// Components split by the variance of the rest: what the event wants there often changes along it.
+fn split_rest(start: &Directed, from: &Material, most: usize) -> Option<Directed> {
+    if start.rest_dim() == 0 {
+        return None;
+    }
+    let (columns, _) = start.responsibilities(&from.points);
+    let total: f64 = from.weights.iter().sum();
+    let parts = start.parts();
+    let shares: Vec<f64> =
+        columns.iter().map(|c| c.iter().zip(&from.weights).map(|(r, w)| r * w).sum::<f64>() / total).collect();
+    let mut order: Vec<usize> = (0..parts.len()).collect();
+    order.sort_by(|&a, &b| shares[b].total_cmp(&shares[a]));
+    let chosen = &order[..parts.len().min(most - parts.len()).max(1)];
+    let mut grown = Vec::new();
+    for (i, part) in parts.iter().enumerate() {
+        if !chosen.contains(&i) || shares[i] <= SPLIT_LEAST {
+            grown.push(Part { mass: shares[i].max(1e-3), ..part.clone() });
+            continue;
+        }
+        for factor in [REST_APART, 1.0 / REST_APART] {
+            grown.push(Part { mass: 0.5 * shares[i], rest: part.rest * factor, ..part.clone() });
         }
     }
     (grown.len() > parts.len()).then(|| Directed::new(&grown, start.rest_dim()).ok()).flatten()

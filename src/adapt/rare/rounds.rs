@@ -3,19 +3,20 @@
 use super::aim::FitTarget;
 use super::control::{Controlled, controlled};
 use super::directed::{Directed, Part, scaled_identity};
-use super::layers::{Layer, Layers};
+use super::layers::{Layer, Layers, Seen};
 use super::plan::Plan;
 use super::planes::{Control, Plane, planes};
 use super::pool::{Pool, counted};
 use super::refit::{Decision, Twin, refit};
 use super::scores::{Answered, Scores};
 use super::subspace::Subspace;
+use super::surrogate::{Surrogate, surrogates};
 use super::survey::{Explored, Scouts, scout_density};
 use super::tuning::{RareRound, RareStep};
 use crate::adapt::TuneError;
 use crate::adapt::observer::Stage;
 use crate::adapt::tuning::Extension;
-use crate::numeric::{Points, Purpose, exp};
+use crate::numeric::{Points, Purpose, exp, ln, log_sum_exp};
 use crate::weights::StratifiedMean;
 
 /// One round's draws and what is known of the proposal that they came from.
@@ -70,6 +71,13 @@ const EXPLAINED: f64 = 0.05;
 const BLIND_VARIANCE: f64 = 2.0;
 const WIDEN: f64 = 1.5;
 
+/// What has a known mean, fixed before a round is drawn.
+struct Known<'a> {
+    space: &'a Subspace,
+    planes: &'a [Plane],
+    surrogates: &'a [Surrogate],
+}
+
 /// Runs all rounds.
 pub(crate) fn run(target: &Scores, plans: &[Plan], scouts: &Scouts, explored: &Explored) -> Result<Course, TuneError> {
     let space = &explored.space;
@@ -109,7 +117,10 @@ pub(crate) fn run(target: &Scores, plans: &[Plan], scouts: &Scouts, explored: &E
         target.enter(Stage::Round(index));
         let n = plan.next_round(at_event, target.spent(), index - 1 - before);
         let whole = course.layers.whole(&twin.full)?;
-        let (drawn, reduced) = draw(target, plan, (space, &planes), &whole, &twin, n, index, at_event.is_some())?;
+        let fits =
+            if event && at_event.is_some() { surrogates(&course.pool, &explored.found, space) } else { Vec::new() };
+        let known = Known { space, planes: &planes, surrogates: &fits };
+        let (drawn, reduced) = draw(target, plan, &known, &whole, &twin, n, index, at_event.is_some())?;
         let mut record = record(&drawn, &reduced, &whole, &twin, index, target.spent());
         (record.step, record.predicted_ess_fraction) = (step, predicted);
         course.pool.add(&reduced, &drawn.answered, &drawn.log_proposal, whole);
@@ -132,6 +143,10 @@ pub(crate) fn run(target: &Scores, plans: &[Plan], scouts: &Scouts, explored: &E
                     step = won;
                     predicted =
                         (fit.at_event && predicted_known(predicted_variance)).then(|| 1.0 / (1.0 + predicted_variance));
+                    if fit.at_event {
+                        let seen = seen(&course.pool, &fit, explored);
+                        course.layers.put_outposts(&next.full, &seen)?;
+                    }
                     earlier = Some(std::mem::replace(&mut twin, next));
                 }
                 None => twin = Twin::same(widened(&twin.full)?),
@@ -142,6 +157,19 @@ pub(crate) fn run(target: &Scores, plans: &[Plan], scouts: &Scouts, explored: &E
     }
     course.twin = twin;
     Ok(course)
+}
+
+/// The pool's draws that count; its first ones are the scouts.
+fn seen(pool: &Pool, fit: &FitTarget, explored: &Explored) -> Seen {
+    let rows: Vec<usize> = (0..pool.len()).filter(|&i| fit.log_weights[i] > f64::NEG_INFINITY).collect();
+    let of = |values: &[f64]| -> Vec<f64> { rows.iter().map(|&i| values[i]).collect() };
+    Seen {
+        points: pool.points.select(&rows),
+        log_target: of(&fit.log_target),
+        log_weights: of(&fit.log_weights),
+        unexplained: rows.iter().map(|i| explored.unexplained.binary_search(i).is_ok()).collect(),
+        log_mean: log_sum_exp(&fit.log_weights) - ln(pool.len() as f64),
+    }
 }
 
 fn predicted_known(variance: f64) -> bool {
@@ -187,7 +215,7 @@ fn widened(fitted: &Directed) -> Result<Directed, TuneError> {
 fn draw(
     target: &Scores,
     plan: &Plan,
-    (space, planes): (&Subspace, &[Plane]),
+    known: &Known<'_>,
     whole: &Directed,
     twin: &Twin,
     n: usize,
@@ -195,6 +223,7 @@ fn draw(
     counts: bool,
 ) -> Result<(Drawn, Points), TuneError> {
     let spent_before = target.spent();
+    let Known { space, planes, surrogates } = known;
     let (points, labels) = space.draw(whole, n, plan.seed, Purpose::Round, index);
     let reduced = space.reduce(&points);
     let log_proposal = whole.log_density(&reduced);
@@ -212,6 +241,7 @@ fn draw(
     let needed = controls.len();
     if event {
         let log_ratio: Vec<f64> = answered.log_nominal.iter().zip(&log_proposal).map(|(p, q)| p - q).collect();
+        controls.extend(surrogates.iter().flat_map(|fit| fit.controls(&reduced, &log_ratio)));
         controls.extend(planes.iter().flat_map(|plane| plane.controls(&points, &log_ratio)));
     }
     let Controlled { terms: controlled, mean } =

@@ -30,6 +30,8 @@ pub(crate) struct Found {
     pub(crate) converged: bool,
     /// Unit gradient of the margin there.
     pub(crate) normal: Option<Vec<f64>>,
+    /// Distance from the point on to the surface, by the gradient there.
+    pub(crate) short: f64,
 }
 
 /// What the survey leaves for the rounds.
@@ -232,7 +234,7 @@ impl<'a, 'b> Searching<'a, 'b> {
         if self.found.iter().any(|p| distance(&p.at, &at) < SAME) {
             return Ok(false);
         }
-        self.found.push(Found { at, converged: ended.converged, normal: ended.normal });
+        self.found.push(Found { at, converged: ended.converged, normal: ended.normal, short: ended.short });
         Ok(true)
     }
 
