@@ -117,7 +117,7 @@ fn estimate(args: &Args, source: &Source) -> anyhow::Result<Ending> {
     let draws = producer.state.parts.job.draws;
     match producer.work(shard.part(draws.unwrap_or(MOST_DRAWS)))? {
         Stop::Signal(signal) => interrupted(args, signal, producer),
-        Stop::End | Stop::Time => finish(args, &place, producer),
+        Stop::End | Stop::Time => finish(args, place, producer),
     }
 }
 
@@ -235,7 +235,7 @@ impl Args {
     }
 }
 
-fn finish(args: &Args, place: &Place, mut producer: Producer) -> anyhow::Result<Ending> {
+fn finish(args: &Args, place: Place, mut producer: Producer) -> anyhow::Result<Ending> {
     if let Some(kept) = &mut producer.kept {
         kept.sync()?;
     }
@@ -256,6 +256,8 @@ fn finish(args: &Args, place: &Place, mut producer: Producer) -> anyhow::Result<
         output::say(&closing)?;
     }
     let unfit = outcome.verdict == Word::Unfit;
-    place.clear(producer.state.parts.shard)?;
+    let shard = producer.state.parts.shard;
+    drop(producer);
+    place.clear(shard)?;
     Ok(if unfit { Ending::Unfit } else { Ending::Done })
 }

@@ -37,7 +37,7 @@ pub(crate) struct Place {
     pub(crate) result: PathBuf,
     /// Folder of what belongs to the run while it works.
     pub(crate) work: PathBuf,
-    _lock: Lock,
+    lock: Lock,
 }
 
 impl Place {
@@ -51,7 +51,7 @@ impl Place {
         };
         fs::create_dir_all(&work).with_context(|| format!("cannot create the folder {}", work.display()))?;
         let lock = Lock::take(&work)?;
-        let place = Self { result, work, _lock: lock };
+        let place = Self { result, work, lock };
         if force || (resume && place.state().is_file()) {
             return Ok(place);
         }
@@ -72,15 +72,17 @@ impl Place {
         self.work.join("state.json")
     }
 
-    /// The state has done its work.
-    pub(crate) fn clear(&self, shard: Shard) -> anyhow::Result<()> {
+    /// The state has done its work. What a shard leaves is its one file.
+    pub(crate) fn clear(self, shard: Shard) -> anyhow::Result<()> {
         let state = self.state();
         if state.is_file() {
             fs::remove_file(&state).with_context(|| format!("cannot remove {}", state.display()))?;
         }
-        if shard != Shard::WHOLE {
-            // What a shard leaves is its one file.
-            let _ = fs::remove_file(self.work.join("log.txt"));
+        let Self { work, lock, .. } = self;
+        drop(lock);
+        if shard != Shard::WHOLE && fs::remove_file(work.join("log.txt")).is_ok() {
+            // Fails, as it should, when the folder holds anything else.
+            let _ = fs::remove_dir(work);
         }
         Ok(())
     }

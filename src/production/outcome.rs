@@ -374,3 +374,174 @@ pub fn course_stop(draws: u64) -> u64 {
 fn by_name<S: Serializer>(estimates: &[(String, EstimateOutcome)], serializer: S) -> Result<S::Ok, S::Error> {
     serializer.collect_map(estimates.iter().map(|(name, estimate)| (name, estimate)))
 }
+
+#[cfg(test)]
+mod tests {
+    use super::super::EstimateJob;
+    use super::super::Production;
+    use super::super::Sequence;
+    use super::*;
+    use crate::model::Closure;
+    use crate::problem::Aim;
+    use crate::problem::Problem;
+    use crate::problem::Variable;
+    use crate::proposal::Component;
+    use crate::proposal::Mixture;
+    use crate::weights::LogWeights;
+    use crate::weights::Strata;
+    use crate::weights::plain_mean;
+    use crate::weights::probability_interval;
+    use crate::weights::ratio_estimate;
+    use crate::weights::score;
+
+    fn mixture() -> Mixture {
+        let one = |x: f64, df: f64| Component::new(vec![x, 0.2], &[1.2, 0.3, 0.3, 1.5], df).unwrap();
+        Mixture::new(&[0.6, 0.3, 0.1], vec![one(0.0, 7.0), one(1.0, 9.0), one(-1.0, 5.0)]).unwrap()
+    }
+
+    fn density() -> Problem {
+        let range = |name| Variable::range(name, f64::NEG_INFINITY, f64::INFINITY, 0.0, 1.0);
+        let target =
+            Closure::new(2, |x: &[f64]| if x[0] > 2.5 { f64::NAN } else { -0.5 * (x[0] * x[0] + x[1] * x[1]) - 40.0 });
+        Problem::from_model("A pond", vec![range("a"), range("b")], Aim::Density, Box::new(target))
+            .unwrap()
+            .with_estimates(
+                &["sum", "high"],
+                Box::new(Closure::vector(2, 2, |x, out| {
+                    out[0] = 1e6 + x[0] + x[1];
+                    out[1] = x[1] * x[1];
+                })),
+            )
+            .unwrap()
+    }
+
+    fn gates() -> Problem {
+        use crate::distribution::Distribution;
+        let normal = |name| Variable::random(name, Distribution::new("normal", &[("mean", 0.0), ("sd", 1.0)]).unwrap());
+        let margin = Closure::new(2, |x: &[f64]| if x[1] > 2.8 { f64::NAN } else { 2.0 - x[0] - 0.2 * x[1] * x[1] });
+        Problem::from_model("Gates", vec![normal("a"), normal("b")], Aim::Probability, Box::new(margin)).unwrap()
+    }
+
+    fn job(problem: &Problem, mixture: &Mixture, draws: u64) -> Job {
+        let centres = [1e6 + 0.1, 1.0];
+        let names = problem.estimate_names();
+        let estimates =
+            names.into_iter().zip(centres).map(|(name, centre)| EstimateJob { name, centre, borders: Vec::new() });
+        Job {
+            program: "test".into(),
+            title: problem.title().into(),
+            aim: problem.aim().word().into(),
+            problem: problem.digest(),
+            proposal: "none".into(),
+            seed: 11,
+            stage: 1,
+            draws: Some(draws),
+            failed: None,
+            log_scale: -37.0,
+            predicted_ess_fraction: None,
+            proposal_verdict: None,
+            strata: 1 + Sequence::new(mixture, 0, 0, Some(draws)).strata().into_iter().max().unwrap(),
+            quantiles: Vec::new(),
+            estimates: estimates.collect(),
+        }
+    }
+
+    fn close(got: f64, want: f64, relative: f64) {
+        assert!((got - want).abs() <= relative * want.abs(), "{got:e} {want:e}");
+    }
+
+    /// Sums of 5,000 draws say what the batch formulas say of the same draws kept in memory.
+    #[test]
+    fn sums_say_what_the_draws_say() {
+        let (problem, mixture) = (density(), mixture());
+        let job = job(&problem, &mixture, 5000);
+        let mut production = Production::new(&problem, &mixture, &job, Sums::new(&job));
+        let step = production.advance(0..5000).unwrap();
+        let outcome = Outcome::of(&job, production.sums());
+        let log: Vec<f64> = step
+            .evaluation
+            .log_density
+            .iter()
+            .zip(&step.log_proposal)
+            .map(|(t, q)| if t.is_nan() { f64::NEG_INFINITY } else { t - q })
+            .collect();
+        let labels = Sequence::new(&mixture, job.seed, 1, Some(5000)).labels(0..5000);
+        let weights = LogWeights::new(log).unwrap();
+        let batch = score(&weights, &labels);
+        assert_eq!(outcome.failed as usize, step.evaluation.log_density.iter().filter(|l| l.is_nan()).count());
+        assert!(outcome.failed > 10);
+        close(outcome.log_normaliser.value, batch.log_normaliser, 1e-13);
+        close(outcome.log_normaliser.se, batch.log_normaliser_se, 1e-10);
+        close(outcome.ess_fraction, batch.ess_fraction, 1e-12);
+        close(outcome.tail_shape, batch.tail.shape, 1e-9);
+        close(outcome.largest_share, batch.largest_share, 1e-12);
+        let strata = Strata::new(&labels);
+        for (k, column) in step.estimates.iter().enumerate() {
+            let (batch, own) = (ratio_estimate(&weights, column, &strata), &outcome.estimates[k].1);
+            close(own.value, batch.value, 1e-13);
+            close(own.se, batch.se, 1e-6);
+            close(own.effective_draws, batch.effective_draws, 1e-6);
+            close(own.evenness.effective_draws, batch.answer.effective_draws, 1e-9);
+            close(own.evenness.largest_share, batch.answer.largest_share, 1e-9);
+        }
+        let halves = production.sums().cells.iter().map(|c| c.draws).collect::<Vec<_>>();
+        assert!(halves.iter().all(|&n| n > 50) && outcome.estimates[0].1.halves_z.abs() < 5.0, "{halves:?}");
+    }
+
+    /// A probability with failures: the value, both ways of counting, and the interval are those of the batch formulas.
+    #[test]
+    fn failures_count_both_ways() {
+        let (problem, mixture) = (gates(), mixture());
+        for draws in [6000, 60] {
+            let mut job = job(&problem, &mixture, draws);
+            job.log_scale = -4.0;
+            let mut production = Production::new(&problem, &mixture, &job, Sums::new(&job));
+            let step = production.advance(0..draws).unwrap();
+            let outcome = Outcome::of(&job, production.sums());
+            let of = |counts: &dyn Fn(usize) -> bool| -> Vec<f64> {
+                (0..draws as usize).map(|i| f64::from(u8::from(counts(i)))).collect()
+            };
+            let log: Vec<f64> =
+                step.evaluation.log_density.iter().zip(&step.log_proposal).map(|(t, q)| t - q).collect();
+            let labels = Sequence::new(&mixture, job.seed, 1, Some(draws)).labels(0..draws);
+            let weights = LogWeights::new(log).unwrap();
+            let strata = if draws > 100 { Strata::new(&labels) } else { Strata::single(draws as usize) };
+            let hit = plain_mean(&weights, &of(&|i| step.evaluation.hit[i]), &strata);
+            let both =
+                plain_mean(&weights, &of(&|i| step.evaluation.hit[i] || step.evaluation.value[i].is_nan()), &strata);
+            let value = outcome.value().unwrap();
+            close(value.value, hit.value, 1e-12);
+            let terms: Vec<f64> = (0..draws as usize)
+                .map(|i| if step.evaluation.hit[i] { exp(weights.as_slice()[i]) / draws as f64 } else { 0.0 })
+                .collect();
+            let (interval, method) = probability_interval(hit.value, value.se, &hit.answer, &terms);
+            assert_eq!(value.interval_method, method);
+            if draws > 100 {
+                let counted = outcome.failures_counted.unwrap();
+                close(counted.inside.value, both.value, 1e-12);
+                close(counted.inside.se, both.se, 1e-8);
+                close(value.interval_95[0], interval[0], 1e-10);
+                assert!(value.interval_95[1] > interval[1]);
+            }
+        }
+    }
+
+    #[test]
+    fn without_a_draw_nothing_is_said() {
+        let (problem, mixture) = (density(), mixture());
+        let job = job(&problem, &mixture, 5000);
+        let outcome = Outcome::of(&job, &Sums::new(&job));
+        assert_eq!((outcome.verdict, outcome.draws), (Word::Unfit, 0));
+        assert!(serde_json::to_string(&outcome).unwrap().contains("\"log_normaliser\":{\"value\":null"));
+    }
+
+    #[test]
+    fn the_course_is_noted_eight_times_to_a_power_of_ten() {
+        let mut stops = vec![course_stop(0)];
+        while stops.len() < 17 {
+            stops.push(course_stop(stops[stops.len() - 1]));
+        }
+        assert_eq!(stops[..9], [100, 133, 178, 237, 316, 422, 562, 750, 1000]);
+        assert_eq!(stops[16], 10_000);
+    }
+}

@@ -16,8 +16,10 @@ pub struct WeightedDraws<'a> {
     pub points: &'a Points,
     /// Weights, summing to one: the draws as a sample of the target.
     pub weights: &'a [f64],
-    /// `ln` of target over proposal at each, up to one constant: of the proposal that production will draw from.
+    /// `ln` of target over proposal at each: of the proposal that production will draw from.
     pub log_ratio: &'a [f64],
+    /// `ln` of the target's normalising constant.
+    pub log_mean: f64,
 }
 
 /// What production will have as variance, and the draws that it asks for.
@@ -58,11 +60,7 @@ pub fn size(mixture: &Mixture, draws: &WeightedDraws, values: Option<&[f64]>) ->
     let n = draws.weights.len();
     let log_q = mixture.log_density(draws.points);
     let live: Vec<usize> = (0..n).filter(|&i| draws.weights[i] > 0.0).collect();
-    // t/q relative to its mean under q: E_t[q/t] is one over that mean.
-    let log_ratio = |i: usize| draws.log_ratio[i];
-    let largest = live.iter().map(|&i| log_ratio(i)).fold(f64::NEG_INFINITY, f64::max);
-    let inverse: f64 = live.iter().map(|&i| draws.weights[i] * exp(largest - log_ratio(i))).sum();
-    let relative = |i: usize| exp(log_ratio(i) - largest) * inverse;
+    let relative = |i: usize| exp(draws.log_ratio[i] - draws.log_mean);
     let mean: f64 = values.map_or(1.0, |f| live.iter().map(|&i| draws.weights[i] * f[i]).sum());
     let g = |i: usize| values.map_or(1.0, |f| (f[i] - mean) / mean);
     let terms: Vec<f64> = live.iter().map(|&i| draws.weights[i] * relative(i) * g(i) * g(i)).collect();
@@ -95,4 +93,55 @@ fn between(mixture: &Mixture, draws: &WeightedDraws, log_q: &[f64], g: &dyn Fn(u
         }
     }
     means.iter().zip(mixture.shares()).map(|(sum, share)| sum * sum / share).sum()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::numeric::Purpose;
+    use crate::proposal::Component;
+
+    /// Target N(0, 1), proposal N(0, 1.3^2): `E[W^2] - 1 = s^2/sqrt(2 s^2 - 1) - 1` in closed form, one component, so nothing lies
+    /// between. The relative variance of the mean of `x + 4` is `E_q[W^2 x^2]/16`, with `E_q[W^2 x^2] = E_q[W^2] s^2/(2 s^2 - 1)`.
+    /// Within 5 % from 200,000 draws; the bound lies above and not far.
+    #[test]
+    fn variances_are_their_closed_forms() {
+        let s2 = 1.69_f64;
+        let mixture = Mixture::single(Component::new(vec![0.0], &[s2], f64::INFINITY).unwrap());
+        let points = mixture.draw(200_000, 3, Purpose::Trial, 0).points;
+        let log_q = mixture.log_density(&points);
+        // Scaled by e^7: constants play no part.
+        let log_ratio: Vec<f64> =
+            (0..points.len()).map(|i| crate::numeric::normal::log_density(points.get(i, 0)) - log_q[i] + 7.0).collect();
+        let raw: Vec<f64> = log_ratio.iter().map(|l| exp(*l)).collect();
+        let total: f64 = raw.iter().sum();
+        let weights: Vec<f64> = raw.iter().map(|w| w / total).collect();
+        let draws = WeightedDraws { points: &points, weights: &weights, log_ratio: &log_ratio, log_mean: 7.0 };
+        let second = s2 / (2.0 * s2 - 1.0).sqrt();
+        let values: Vec<f64> = points.coordinate(0).iter().map(|x| x + 4.0).collect();
+        for (sized, want) in [
+            (size(&mixture, &draws, None), second - 1.0),
+            (size(&mixture, &draws, Some(&values)), second * s2 / (2.0 * s2 - 1.0) / 16.0),
+        ] {
+            assert!((sized.variance / want - 1.0).abs() < 0.05, "{} {want}", sized.variance);
+            assert!(sized.upper > sized.variance && sized.upper < 1.1 * sized.variance, "{sized:?}");
+            assert_eq!(sized.draws(0.01)[0], (1e4 * sized.variance).ceil());
+            assert!((sized.relative_error(sized.variance * 1e4) - 0.01).abs() < 1e-12);
+        }
+    }
+
+    /// Two components that are each exact: nothing varies within them, however different they are.
+    #[test]
+    fn what_lies_between_components_costs_nothing() {
+        let far = |x: f64| Component::new(vec![x], &[1.0], f64::INFINITY).unwrap();
+        let mixture = Mixture::new(&[0.2, 0.8], vec![far(-50.0), far(50.0)]).unwrap();
+        let points = mixture.draw(4000, 3, Purpose::Trial, 0).points;
+        // The target has the components the other way round: weights 4 and 1/4.
+        let raw: Vec<f64> = points.coordinate(0).iter().map(|x| if *x < 0.0 { 4.0 } else { 0.25 }).collect();
+        let total: f64 = raw.iter().sum();
+        let weights: Vec<f64> = raw.iter().map(|w| w / total).collect();
+        let log_ratio: Vec<f64> = raw.iter().map(|w| crate::numeric::ln(*w)).collect();
+        let draws = WeightedDraws { points: &points, weights: &weights, log_ratio: &log_ratio, log_mean: 0.0 };
+        assert!(size(&mixture, &draws, None).variance < 1e-12);
+    }
 }

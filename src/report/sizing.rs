@@ -2,6 +2,7 @@
 
 use crate::numeric::Points;
 use crate::numeric::exp;
+use crate::numeric::ln;
 use crate::problem::Aim;
 use crate::problem::Problem;
 use crate::production::Sized;
@@ -90,7 +91,9 @@ pub fn plan_of(
         (0..table.len()).map(|i| if finite(i) { ages[i] * exp(own_ratio[i] - largest) } else { 0.0 }).collect();
     let total: f64 = raw.iter().sum();
     let weights: Vec<f64> = raw.iter().map(|w| if total > 0.0 { w / total } else { 0.0 }).collect();
-    let draws = WeightedDraws { points: &points, weights: &weights, log_ratio: &log_ratio };
+    // Draws of no weight count too: the constant is the mean over all of them.
+    let log_mean = largest + ln(total / ages.iter().sum::<f64>());
+    let draws = WeightedDraws { points: &points, weights: &weights, log_ratio: &log_ratio, log_mean };
     let tail = |values: Option<&[f64]>| tail_draws(&own_ratio, &ages, largest, values);
     let answer = match problem.aim() {
         Aim::Density => "normalising constant",
