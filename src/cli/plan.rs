@@ -3,6 +3,7 @@
 use super::ending::Ending;
 use super::layout::HEADING;
 use super::layout::QUIET;
+use super::layout::WIDTH;
 use super::layout::cut;
 use super::layout::hanging;
 use super::layout::styled;
@@ -18,6 +19,7 @@ use evenpoise::production::CHUNK;
 use evenpoise::production::Sequence;
 use evenpoise::report::ProductionPlan;
 use evenpoise::report::plan_of;
+use std::path::Path;
 use std::path::PathBuf;
 use std::time::Instant;
 
@@ -55,13 +57,13 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     Ok(Ending::Done)
 }
 
-fn table(args: &Args, run: &std::path::Path, source: &Source, plan: &ProductionPlan) -> String {
+fn table(args: &Args, run: &Path, source: &Source, plan: &ProductionPlan) -> String {
     let own = seconds_per_draw(source);
     let title = format!("{}: relative error {}", run.display(), percent(args.relative_error));
     let word = source.file.verdict.as_deref().unwrap_or("not judged");
-    let facts =
-        format!("{} (from {} weighted draws, verdict {word})", cut(source.problem.title(), 40), count(plan.draws));
-    let mut out = format!("{}\n{}\n", styled(&title, HEADING), styled(&facts, QUIET));
+    let facts = format!("{} weighted draws, verdict {word}", count(plan.draws));
+    let problem = cut(source.problem.title(), WIDTH);
+    let mut out = format!("{}\n{problem}\n{}\n", styled(&title, HEADING), styled(&facts, QUIET));
     let head = format!("  {:<24} {:>12} {:>14} {:>11} {:>11}", "", "draws", "9 in 10", "model", "in all");
     out.push_str(&format!("{}\n", styled(&head, QUIET)));
     for quantity in plan.quantities.iter().take(MOST + 1) {
