@@ -187,6 +187,11 @@ fn pilot(args: &Args, source: &Source, producer: &mut Producer) -> anyhow::Resul
         }
         let parts = &mut producer.state.parts;
         if let Some(number) = pilot_draws(&parts.job, &parts.sums, relative_error) {
+            anyhow::ensure!(
+                number.draws <= MOST_DRAWS,
+                "a relative error of {relative_error} takes {} draws; tune the proposal longer, or aim lower",
+                number.draws
+            );
             let job = estimate_files::with_draws(&parts.job, source, Some(number.draws), args.stage);
             parts.pilot = Some(number);
             parts.sums = Sums::new(&job);
@@ -255,8 +260,9 @@ fn finish(args: &Args, place: Place, mut producer: Producer) -> anyhow::Result<E
         producer.screen.log(&closing);
         output::say(&closing)?;
     }
-    let unfit = outcome.verdict == Word::Unfit;
     let shard = producer.state.parts.shard;
+    // A shard is not judged: its pool is.
+    let unfit = outcome.verdict == Word::Unfit && shard == Shard::WHOLE;
     drop(producer);
     place.clear(shard)?;
     Ok(if unfit { Ending::Unfit } else { Ending::Done })

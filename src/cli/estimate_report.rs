@@ -107,12 +107,12 @@ pub(crate) fn interrupted(draws: u64, command: &str) -> String {
     format!("interrupted after {} draws; all are kept. Go on with\n  {command}", count(draws))
 }
 
-/// Answer, estimates and verdict.
+/// Answer, estimates and verdict; of a shard, where it is and what to do with it.
 pub(crate) fn closing(parts: &EstimateParts, outcome: &Outcome, file: &Path, seconds: f64) -> String {
-    let mut out = format!("{}\n", report(parts, outcome));
-    out.push_str(&format!("File      {}\n", file.display()));
-    out.push_str(&format!("Time      {}\n", duration(seconds)));
-    if parts.shard != Shard::WHOLE {
+    let whole = parts.shard == Shard::WHOLE;
+    let told = if whole { report(parts, outcome) } else { format!("\n{} draws made", count(outcome.draws)) };
+    let mut out = format!("{told}\nFile      {}\nTime      {}\n", file.display(), duration(seconds));
+    if !whole {
         let folder = file.parent().unwrap_or(Path::new(".")).display();
         out.push_str(&format!("Next      evenpoise pool {folder}/shard-*-of-{}.json\n", parts.shard.of));
     }

@@ -101,6 +101,7 @@ impl<'a> Producer<'a> {
                 break Stop::Signal(signal);
             }
             if self.time.is_some_and(|time| self.seconds() >= time) {
+                self.note(&job, production.sums());
                 break Stop::Time;
             }
             let began = Instant::now();

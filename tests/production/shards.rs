@@ -89,3 +89,14 @@ fn a_relative_error_is_aimed_at_in_two_stages() {
     assert_eq!(value["probability"], plain["probability"]);
     assert_ne!(value["pilot"], plain["pilot"]);
 }
+
+/// A run may end by time: whatever it has made by then is an answer.
+#[test]
+fn a_run_may_end_by_time() {
+    let folder = tempfile::tempdir().unwrap();
+    let run = run_of("balance").display().to_string();
+    finish(folder.path(), &["estimate", &run, "--time", "1s", "--out", "timed"]);
+    let value: serde_json::Value = serde_json::from_str(&text(&folder.path().join("timed/estimate.json"))).unwrap();
+    let (draws, answer) = (value["draws"].as_u64().unwrap(), &value["expectation"]);
+    assert!(draws > 0 && answer["value"].is_number(), "{draws} draws, {answer}");
+}
