@@ -226,7 +226,7 @@ impl Outcome {
             }),
             failures_counted: failures,
             failing: (sums.failed > 0 && (job.is_event() || job.signed()))
-                .then(|| Pair { value: failing.mean * scale, se: failing.se * scale }),
+                .then_some(Pair { value: failing.mean * scale, se: failing.se * scale }),
             estimates,
             checks,
         }
