@@ -146,14 +146,19 @@ impl Case {
     }
 }
 
+/// Value, error and interval of a quantity, where it is given.
+type Read = fn(&Outcome) -> Option<(f64, f64, [f64; 2])>;
+/// A name, a problem and its rows.
+type Named = (&'static str, &'static str, fn() -> Vec<Row>);
+
 /// A row: a quantity, its truth, and how it is read from an outcome as value, error and interval.
 struct Row {
     name: String,
     truth: f64,
-    read: fn(&Outcome) -> Option<(f64, f64, [f64; 2])>,
+    read: Read,
 }
 
-fn row(name: &str, truth: f64, read: fn(&Outcome) -> Option<(f64, f64, [f64; 2])>) -> Row {
+fn row(name: &str, truth: f64, read: Read) -> Row {
     Row { name: name.to_owned(), truth, read }
 }
 
@@ -233,7 +238,7 @@ fn signed_rows() -> Vec<Row> {
 }
 
 fn coverage(seeds: u64, out: &mut Vec<String>) {
-    let cases: [(&str, &str, fn() -> Vec<Row>); 4] = [
+    let cases: [Named; 4] = [
         ("pond", POND, pond_rows),
         ("gates", GATES, gates_rows),
         ("cost", COST, cost_rows),
