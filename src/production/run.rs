@@ -16,8 +16,8 @@ use rayon::prelude::*;
 use std::ops::Range;
 use thiserror::Error;
 
-/// Draws that are added up by one thread at a time.
-const PIECE: usize = 4096;
+/// Fewest draws that are worth a thread of their own.
+const PIECE: usize = 2048;
 
 /// Why production cannot go on.
 #[derive(Debug, Error)]
@@ -132,7 +132,9 @@ impl<'a> Production<'a> {
 
     fn add(&mut self, terms: &Terms) {
         let n = terms.term.len();
-        let pieces: Vec<Range<usize>> = (0..n).step_by(PIECE).map(|from| from..(from + PIECE).min(n)).collect();
+        // A piece for each thread: how the draws are cut up cannot be seen in the sums, but each piece takes memory.
+        let each = n.div_ceil(rayon::current_num_threads()).max(PIECE);
+        let pieces: Vec<Range<usize>> = (0..n).step_by(each).map(|from| from..(from + each).min(n)).collect();
         let job = self.job;
         // Bins are many: they are counted estimate by estimate instead, and only once.
         let mut empty = Sums::new(job);

@@ -15,7 +15,7 @@ pub const CHUNK: u64 = 1024;
 /// Streams of a chunk: one for the components, one for each block of points.
 const STREAMS: u32 = 1 + CHUNK as u32 / BLOCK as u32;
 /// A stratum is closed once it holds this share of the draws ...
-const STRATUM_SHARE: f64 = 1.0 / 32.0;
+const STRATUM_SHARE: f64 = 1.0 / 128.0;
 /// ... and this many draws of every chunk.
 const STRATUM_DRAWS: f64 = 8.0;
 
@@ -227,7 +227,8 @@ mod tests {
     #[test]
     fn strata_are_never_small() {
         let mixture = mixture();
-        assert_eq!(Sequence::new(&mixture, 1, 1, None).strata(), [0, 1, 2, 2]);
+        assert_eq!(Sequence::new(&mixture, 1, 1, None).strata(), [0, 1, 2, 3]);
+        assert_eq!(Sequence::new(&mixture, 1, 1, Some(200)).strata(), [0, 1, 2, 2]);
         assert_eq!(Sequence::new(&mixture, 1, 1, Some(30)).strata(), [0, 1, 1, 1]);
         assert_eq!(Sequence::new(&mixture, 1, 1, Some(5)).strata(), [0, 0, 0, 0]);
     }

@@ -22,8 +22,8 @@ const STATE_FORMAT: &str = "evenpoise-estimate-state/1";
 
 /// Shards that a run may have.
 pub const MOST_SHARDS: u32 = 1_000_000;
-/// Strata that a run can have: each holds a 32nd of the draws, or nearly.
-const MOST_STRATA: u32 = 64;
+/// Strata that a run can have: each holds a 128th of the draws, or nearly.
+const MOST_STRATA: u32 = 130;
 
 /// What of an estimate is read again: all that its numbers follow from.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
