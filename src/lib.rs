@@ -11,6 +11,7 @@
 //! * [`weights`]: log weights and what is said about them: effective sample size, tail shape, errors, verdict;
 //! * [`refit`]: fits of a mixture to weighted points;
 //! * [`adapt`]: the loop: survey, rounds, choice, report;
+//! * [`production`]: production draws in one sequence, exact sums over them, and what they say;
 //! * [`store`]: files: whole or not at all, the journal, tables;
 //! * [`figures`]: data in, drawing out;
 //! * [`report`]: tables, summary and figures of a run.
@@ -22,6 +23,7 @@ pub mod figures;
 pub mod model;
 pub mod numeric;
 pub mod problem;
+pub mod production;
 pub mod proposal;
 pub mod refit;
 pub mod report;

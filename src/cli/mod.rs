@@ -5,15 +5,23 @@
 
 mod check;
 mod check_report;
+mod density;
+mod draw;
 mod ending;
+mod estimate;
+mod estimate_files;
+mod estimate_report;
 mod figures;
 mod header;
 mod layout;
 mod numbers;
 mod options;
 mod output;
+mod plan;
 mod points;
+mod pool;
 mod problem_file;
+mod producing;
 mod raise;
 mod rare_report;
 mod round_lines;
@@ -21,6 +29,7 @@ mod run_files;
 mod schema;
 mod screen;
 mod signals;
+mod source;
 mod tune;
 mod tune_report;
 mod watch;
@@ -45,6 +54,11 @@ struct Cli {
 enum Command {
     Tune(Box<tune::Args>),
     Check(check::Args),
+    Plan(plan::Args),
+    Draw(draw::Args),
+    Density(density::Args),
+    Estimate(Box<estimate::Args>),
+    Pool(pool::Args),
     Points(points::Args),
     Figures(figures::Args),
     Schema(schema::Args),
@@ -59,6 +73,11 @@ pub(crate) fn main() -> ExitCode {
     let ended = match &parsed.command {
         Command::Tune(args) => tune::run(args),
         Command::Check(args) => check::run(args),
+        Command::Plan(args) => plan::run(args),
+        Command::Draw(args) => draw::run(args),
+        Command::Density(args) => density::run(args),
+        Command::Estimate(args) => estimate::run(args),
+        Command::Pool(args) => pool::run(args),
         Command::Points(args) => points::run(args),
         Command::Figures(args) => figures::run(args),
         Command::Schema(args) => schema::run(args),

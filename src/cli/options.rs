@@ -6,6 +6,8 @@ use evenpoise::problem::Family;
 use evenpoise::problem::Method;
 use evenpoise::problem::Structure;
 use evenpoise::problem::TuningKeys;
+use evenpoise::production::Shard;
+use evenpoise::store::MOST_SHARDS;
 use std::str::FromStr;
 
 /// Everything about a tuning that a problem file may say in `[tuning]`; what is said here wins.
@@ -123,6 +125,32 @@ pub(crate) fn count(text: &str) -> Result<u64, String> {
 pub(crate) fn count_from<const LEAST: u64>(text: &str) -> Result<u64, String> {
     let n = count(text)?;
     if n >= LEAST { Ok(n) } else { Err(format!("expected {LEAST} or more")) }
+}
+
+/// `3/64`: part 3 of 64.
+pub(crate) fn shard(text: &str) -> Result<Shard, String> {
+    let expected = || format!("expected I/N with I from 1 to N, as 3/64, and N at most {MOST_SHARDS}");
+    let (index, of) = text.split_once('/').ok_or_else(expected)?;
+    let shard = index.parse().ok().zip(of.parse().ok()).map(|(index, of)| Shard { index, of });
+    shard.filter(|s| (1..=s.of).contains(&s.index) && s.of <= MOST_SHARDS).ok_or_else(expected)
+}
+
+/// `5%` or `0.05`, above zero and below one.
+pub(crate) fn share(text: &str) -> Result<f64, String> {
+    let number = match text.strip_suffix('%') {
+        Some(number) => number.trim().parse::<f64>().map(|x| x / 100.0),
+        None => text.parse(),
+    };
+    number.ok().filter(|&x| x > 0.0 && x < 1.0).ok_or_else(|| "expected a share above 0, as 5% or 0.05".to_owned())
+}
+
+/// Seconds: `90`, `90s`, `15min`, `2h`.
+pub(crate) fn seconds(text: &str) -> Result<f64, String> {
+    let units = [("min", 60.0), ("h", 3600.0), ("s", 1.0)];
+    let unit = units.iter().find_map(|(unit, each)| text.strip_suffix(unit).map(|number| (number, *each)));
+    let (number, each) = unit.unwrap_or((text, 1.0));
+    let seconds = number.trim().parse::<f64>().ok().map(|x| x * each).filter(|&x| x > 0.0 && x.is_finite());
+    seconds.ok_or_else(|| "expected a time, as 90s, 15min or 2h".to_owned())
 }
 
 fn budget(text: &str) -> Result<u64, String> {

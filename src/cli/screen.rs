@@ -27,6 +27,11 @@ impl Screen {
         Ok(Self { log: Some(log), live: io::stderr().is_terminal(), shown: None })
     }
 
+    /// Whether anybody sees the line that changes.
+    pub(crate) fn is_live(&self) -> bool {
+        self.live
+    }
+
     /// Lines that stay.
     pub(crate) fn keep(&mut self, text: &str) {
         self.clear();

@@ -4,6 +4,7 @@
 //! * [`RunFolder`]: the folder of a run, held by one process at a time;
 //! * [`Journal`], [`Recorder`]: every evaluated point, written and synced before it is used, so that an interrupted run loses nothing;
 //! * [`ProposalFile`], [`read_proposal`]: the proposal, checked as it is read;
+//! * [`EstimateParts`], [`EstimateState`]: what a production run says, and where it stands;
 //! * [`Table`], [`TableWriter`]: points as CSV or NumPy files, numbers read back to the same bits.
 //!
 //! **Invariant:** nothing here computes. A file holds what it was given, or the caller is told, with the path, why not.
@@ -11,23 +12,28 @@
 mod atomic;
 mod checksum;
 mod error;
+mod estimate;
 mod folder;
 mod journal;
 mod json;
 mod lock;
 mod npy;
+mod points_file;
 mod proposal;
 mod proposal_reader;
+mod proposal_space;
 mod record;
 mod recorder;
 mod table;
 
 pub use atomic::{write_atomically, write_json};
 pub use error::StoreError;
+pub use estimate::{CourseRow, ESTIMATE_FORMAT, EstimateParts, EstimateState, MOST_SHARDS, fingerprint};
 pub use folder::{RUN_ENTRIES, RunFolder};
 pub use journal::{Journal, JournalHeader, Replay};
 pub use lock::Lock;
 pub use npy::{NpyWriter, read_npy};
+pub use points_file::PointsFile;
 pub use proposal::{
     ComponentEntry, CorrelationEntry, MadeBy, PROPOSAL_FORMAT, ProposalFile, ScoresEntry, VariableEntry, finite,
 };

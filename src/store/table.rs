@@ -47,7 +47,7 @@ impl<W: Write> TableWriter<W> {
     /// Those of `out`.
     pub fn csv(out: W, names: &[String]) -> io::Result<Self> {
         let mut out = csv::WriterBuilder::new().buffer_capacity(1 << 16).from_writer(out);
-        out.write_record(names)?;
+        out.write_record(names).map_err(of_csv)?;
         Ok(Self(Form::Csv { out: Box::new(out), columns: names.len() }))
     }
 
@@ -77,7 +77,7 @@ impl<W: Write> TableWriter<W> {
             Form::Csv { columns, .. } if row.len() != *columns => {
                 Err(io::Error::new(io::ErrorKind::InvalidInput, "a row of another length than the header"))
             }
-            Form::Csv { out, .. } => Ok(out.write_record(row.iter().map(|&x| decimal(x)))?),
+            Form::Csv { out, .. } => out.write_record(row.iter().map(|&x| decimal(x))).map_err(of_csv),
         }
     }
 
@@ -90,6 +90,14 @@ impl<W: Write> TableWriter<W> {
             Form::Csv { mut out, .. } => out.flush(),
             Form::Npy(npy) => npy.finish()?.flush(),
         }
+    }
+}
+
+/// The system's own error, where it is one: a broken pipe must be known as such.
+fn of_csv(error: csv::Error) -> io::Error {
+    match error.into_kind() {
+        csv::ErrorKind::Io(error) => error,
+        other => io::Error::other(format!("{other:?}")),
     }
 }
 

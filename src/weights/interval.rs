@@ -44,14 +44,23 @@ pub fn log_interval(value: f64, se: f64) -> [f64; 2] {
 #[must_use]
 pub fn gamma_interval(contributions: &[f64]) -> [f64; 2] {
     let m = contributions.iter().copied().fold(0.0, f64::max);
-    if m == 0.0 {
-        return [0.0, f64::NAN];
-    }
     // In units of the largest: a probability of 1e-200 has squares that a double does not hold.
     let (mut y, mut v) = (0.0, 0.0);
-    for c in contributions {
-        y += c / m;
-        v += (c / m) * (c / m);
+    if m > 0.0 {
+        for c in contributions {
+            y += c / m;
+            v += (c / m) * (c / m);
+        }
+    }
+    gamma_interval_of(m, y, v)
+}
+
+/// [`gamma_interval`] from what it rests on: the largest contribution `m`, and the sums of the contributions and of their
+/// squares, both in units of it.
+#[must_use]
+pub fn gamma_interval_of(m: f64, y: f64, v: f64) -> [f64; 2] {
+    if m == 0.0 {
+        return [0.0, f64::NAN];
     }
     let quantile =
         |y: f64, v: f64, upper: bool| 0.5 * (v / y) * chi_squared_quantile(2.0 * (y * y / v), ln(0.025), upper);

@@ -19,7 +19,9 @@ mod tail;
 pub mod verdict;
 
 pub use estimate::{Answer, Estimate, plain_mean, ratio_estimate};
-pub use interval::{gamma_interval, log_interval, no_hit_bound, normal_interval, probability_interval};
+pub use interval::{
+    gamma_interval, gamma_interval_of, log_interval, no_hit_bound, normal_interval, probability_interval,
+};
 pub use log_weights::{LogWeights, WeightError};
 pub use resample::resample;
 pub use rounds::{CombinedRounds, RoundMean, combine_rounds};

@@ -80,15 +80,24 @@ impl TailShape {
     /// Technometrics 51 (2009) 316-325.
     #[must_use]
     pub fn of(magnitudes: &[f64], log_unit: f64) -> Self {
-        let mut kept: Vec<f64> = magnitudes.iter().copied().filter(|&x| x > 0.0).collect();
+        let kept: Vec<f64> = magnitudes.iter().copied().filter(|&x| x > 0.0).collect();
         let draws = kept.len();
+        Self::of_largest(kept, draws, log_unit)
+    }
+
+    /// Tail shape of `draws` positive numbers of which only the `largest` are known, in any order. Where fewer are known than
+    /// `min(S/5, 3 sqrt S)`, the tail is what is known of it.
+    #[must_use]
+    pub fn of_largest(largest: Vec<f64>, draws: usize, log_unit: f64) -> Self {
+        let mut kept = largest;
+        let known = kept.len();
         let limit = tail_limit(draws);
-        let wanted = tail_size(draws);
+        let wanted = tail_size(draws).min(known.saturating_sub(1));
         if wanted < MIN_TAIL {
             return Self::unknown(TailReason::TooFew, draws, wanted, limit, f64::NAN);
         }
-        // wanted <= S/5 rounded up < S for the sizes met here, so the threshold is the next weight below the tail.
-        let (_, &mut threshold, above) = kept.select_nth_unstable_by(draws - wanted - 1, f64::total_cmp);
+        // wanted < the number known, so the threshold is the next weight below the tail.
+        let (_, &mut threshold, above) = kept.select_nth_unstable_by(known - wanted - 1, f64::total_cmp);
         above.sort_unstable_by(f64::total_cmp);
         let excesses: Vec<f64> = above.iter().map(|x| x - threshold).filter(|&x| x > 0.0).collect();
         let log_threshold = log_unit + ln(threshold);
