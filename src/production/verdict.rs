@@ -10,6 +10,7 @@ use crate::weights::verdict::Check;
 use crate::weights::verdict::Verdict;
 use crate::weights::verdict::Word;
 use crate::weights::verdict::checks;
+use crate::weights::verdict::tail_of;
 
 /// Claimed relative errors: beyond 15 % the answer is a size, beyond 50 % not even that.
 const ERROR_SOUND: f64 = 0.15;
@@ -51,10 +52,9 @@ pub(super) fn judge(
 
 fn of_density(sums: &Sums, main: &Main, fraction: f64) -> Vec<Check> {
     let evenness = &main.evenness;
-    let counts = tail_counts(evenness.largest_share, main.weight_variance);
     let share = (ORDINARY_SHARE / sums.draws as f64).clamp(checks::TAIL_COUNTS_SHARE, checks::SHARE_SOUND);
     vec![
-        checks::tail("the normalising constant", &evenness.tail, evenness.tail.upper, counts),
+        tail_of("the normalising constant", &evenness.tail, evenness.largest_share, main.weight_variance),
         checks::effective_draws("the normalising constant", evenness.effective_draws),
         checks::largest_share("the weight", evenness.largest_share, share),
         efficiency(fraction),
@@ -72,11 +72,6 @@ fn of_value(job: &Job, main: &Main) -> Vec<Check> {
         checks::largest_share("the answer", evenness.largest_share, checks::SHARE_SOUND),
         checks::tail("the answer", &evenness.tail, evenness.tail.shape, heavy),
     ]
-}
-
-/// Whether a heavy top matters; NaN does.
-fn tail_counts(largest_share: f64, weight_variance: f64) -> bool {
-    !(largest_share <= checks::TAIL_COUNTS_SHARE && weight_variance <= checks::TAIL_COUNTS_VARIANCE)
 }
 
 fn efficiency(fraction: f64) -> Check {
@@ -118,10 +113,7 @@ fn of_estimates(main: &Main, estimates: &[(String, EstimateOutcome)]) -> Vec<Che
     let each = |check: &dyn Fn(&str, &EstimateOutcome) -> Check| {
         worst(given.iter().map(|(name, e)| check(&format!("estimate {name}"), e)).collect())
     };
-    made.extend(each(&|what, e| {
-        let counts = tail_counts(e.evenness.largest_share, main.weight_variance);
-        checks::tail(what, &e.evenness.tail, e.evenness.tail.upper, counts)
-    }));
+    made.extend(each(&|what, e| tail_of(what, &e.evenness.tail, e.evenness.largest_share, main.weight_variance)));
     made.extend(each(&|what, e| checks::effective_draws(what, e.evenness.effective_draws)));
     made.extend(each(&|what, e| checks::largest_share(what, e.evenness.largest_share, checks::SHARE_SOUND)));
     made

@@ -12,7 +12,9 @@ pub const TAIL_SOUND: f64 = 0.5;
 /// A heavy top counts once one draw carries this share: weights of variance .1 may have a tiny top of any shape.
 pub const TAIL_COUNTS_SHARE: f64 = 0.01;
 /// ... or, for a density, once the weights are this uneven.
-pub const TAIL_COUNTS_VARIANCE: f64 = 0.05;
+pub const TAIL_COUNTS_VARIANCE: f64 = 0.1;
+/// ... and makes strained, never unfit, from here: a pole that can be integrated left weights of variance .08, and an answer six errors off.
+pub const TAIL_MAY_COUNT_VARIANCE: f64 = 0.05;
 /// Effective draws: a relative error of 10 % of the spread; and the least that a standard error can be read from.
 pub const DRAWS_SOUND: f64 = 100.0;
 /// Below this not even the standard error is known to 30 %.

@@ -5,6 +5,7 @@ use super::course::{self, RoundFacts, SurveyFacts};
 use super::{Check, Verdict, Word, percent, unseen_caution};
 use crate::weights::Estimate;
 use crate::weights::Score;
+use crate::weights::TailShape;
 
 /// Below this ESS fraction a proposal has not settled (5 of the 8 runs so scored were wrong).
 const FRACTION_UNFIT: f64 = 0.2;
@@ -70,20 +71,24 @@ fn share_limit(draws: usize) -> f64 {
     (ORDINARY_SHARE / draws as f64).clamp(checks::TAIL_COUNTS_SHARE, checks::SHARE_SOUND)
 }
 
-/// Whether a heavy top matters. Written so that NaN does.
-fn tail_counts(largest_share: f64, weight_variance: f64) -> bool {
-    !matches!(
-        (
-            largest_share.partial_cmp(&checks::TAIL_COUNTS_SHARE),
-            weight_variance.partial_cmp(&checks::TAIL_COUNTS_VARIANCE)
-        ),
-        (Some(a), Some(b)) if a.is_le() && b.is_le()
-    )
+/// The tail of `what`, as far as a heavy top matters: not at all in nearly even weights, as a strain in fairly even ones, else in full.
+/// Written so that NaN counts in full.
+pub(crate) fn tail_of(what: &str, tail: &TailShape, largest_share: f64, weight_variance: f64) -> Check {
+    let light = largest_share <= checks::TAIL_COUNTS_SHARE;
+    let counts = !(light && weight_variance <= checks::TAIL_MAY_COUNT_VARIANCE);
+    let check = checks::tail(what, tail, tail.upper, counts);
+    if check.word == Word::Unfit && light && weight_variance <= checks::TAIL_COUNTS_VARIANCE {
+        let detail = format!(
+            "The largest weights of {what} may have no finite variance, though none of them matters yet: its error may be too small; take \
+             more draws, or give the proposal heavier tails."
+        );
+        return Check { word: Word::Strained, detail, ..check };
+    }
+    check
 }
 
 fn weights_tail(score: &Score) -> Check {
-    let counts = tail_counts(score.largest_share, score.weight_variance);
-    checks::tail("the normalising constant", &score.tail, score.tail.upper, counts)
+    tail_of("the normalising constant", &score.tail, score.largest_share, score.weight_variance)
 }
 
 fn efficiency(fraction: f64) -> Check {
@@ -111,8 +116,7 @@ fn estimate_checks(score: &Score, estimates: &[(&str, &Estimate)]) -> Vec<Check>
         worst(given.iter().map(|(name, estimate)| check(name, estimate)).collect())
     };
     checks.extend(each(&|name, e| {
-        let counts = tail_counts(e.answer.largest_share, score.weight_variance);
-        checks::tail(&format!("estimate {name}"), &e.answer.tail, e.answer.tail.upper, counts)
+        tail_of(&format!("estimate {name}"), &e.answer.tail, e.answer.largest_share, score.weight_variance)
     }));
     checks.extend(each(&|name, e| checks::effective_draws(&format!("estimate {name}"), e.answer.effective_draws)));
     checks.extend(each(&|name, e| {

@@ -13,6 +13,7 @@ mod error_rates;
 mod rare;
 
 pub use course::{RoundFacts, SurveyFacts};
+pub(crate) use density::tail_of;
 pub use density::{DensityEvidence, judge};
 pub use rare::{FailureFacts, RareEvidence, judge_rare};
 
