@@ -13,9 +13,30 @@ const CORNERS: usize = 72;
 /// Components with a smaller share are not drawn.
 const LEAST_SHARE: f64 = 0.005;
 
-/// Components of some share.
+/// Outlines at most: more hide the points under them.
+const MOST: usize = 8;
+/// A centre nearer than this to a larger component's, in squared distance a dimension, with a width within a third: the same again.
+const NEAR: f64 = 0.15;
+const LIKE_WIDTH: f64 = 0.33;
+
+/// Components of some share, the largest first, that stand apart from larger ones: the last fits joined repeat one another.
 pub(super) fn sizeable(mixture: &Mixture) -> Vec<usize> {
-    (0..mixture.len()).filter(|&k| mixture.shares()[k] >= LEAST_SHARE).collect()
+    let shares = mixture.shares();
+    let mut order: Vec<usize> = (0..mixture.len()).filter(|&k| shares[k] >= LEAST_SHARE).collect();
+    order.sort_by(|&a, &b| shares[b].total_cmp(&shares[a]).then(a.cmp(&b)));
+    let mut chosen: Vec<usize> = Vec::new();
+    for k in order {
+        let one = &mixture.components()[k];
+        let repeats = |&c: &usize| {
+            let other = &mixture.components()[c];
+            let width = (one.log_det_factor() - other.log_det_factor()).abs() / mixture.dim() as f64;
+            other.distance(one.location()) < NEAR * mixture.dim() as f64 && width < LIKE_WIDTH
+        };
+        if chosen.len() < MOST && !chosen.iter().any(repeats) {
+            chosen.push(k);
+        }
+    }
+    chosen
 }
 
 /// The outlines of the components `which`, in natural units.
@@ -85,6 +106,10 @@ mod tests {
             let distance = (u * u - 2.0 * 0.5 * u * v + 2.0 * v * v) / determinant;
             assert!((distance - 1.0).abs() < 1e-12, "{distance}");
         }
+        // Its own copies are not drawn again; one that stands apart is.
+        let apart = Component::new(vec![3.0, -1.0, 0.2], &mixture.components()[0].scale(), f64::INFINITY).unwrap();
+        let copies = Mixture::union(&[(0.5, &mixture), (0.3, &mixture), (0.2, &Mixture::single(apart))]).unwrap();
+        assert_eq!(sizeable(&copies), [0, 2]);
         let with_half_line = outlines(&problem, &mixture, &[0], [(2, &unit(2)), (0, &unit(0))]);
         assert!(with_half_line[0].x.iter().all(|&c| c > 0.0));
         let widest = with_half_line[0].x.iter().copied().fold(0.0, f64::max);
