@@ -10,6 +10,7 @@ use super::refine::{Fit, Refined, births, has_mass, join, refine};
 use super::settings::Settings;
 use super::standard::Standard;
 use super::survey::{Found, Limits, identity, survey};
+use super::survey_together::survey_together;
 use super::tuning::{Mode, Round, StopReason, Survey};
 use crate::numeric::{Purpose, exp, log_sum_exp};
 use crate::proposal::{Component, Drawn, Mixture};
@@ -49,14 +50,19 @@ pub(crate) fn first_proposal(target: &Standard, settings: &Settings, plan: &Plan
         enough: plan.survey_enough,
         first_mode: if exact { plan.survey_cap } else { plan.first_mode_cap },
     };
-    let found = survey(target, settings.seed, limits)?;
+    // Probes and births ask for a point or two at a time: they are left to targets that are asked so.
+    let found = if target.in_batches() {
+        survey_together(target, settings.seed, limits)?
+    } else {
+        survey(target, settings.seed, limits)?
+    };
     let df = settings.first_df();
     let mut probed = 0;
     let main = if found.modes.is_empty() {
         at_start(target.dim(), df)?
     } else {
         let main = at_modes(&found, df)?;
-        if settings.layered() && settings.method != Preference::Moments {
+        if settings.layered() && settings.method != Preference::Moments && !target.in_batches() {
             let (main, count) = with_probes(target, &found, main, plan, df)?;
             probed = count;
             main
@@ -172,7 +178,8 @@ pub(crate) fn rounds(
             let refined = refine(&course.pool, &fit, wide, settings, r + 1, draws)?;
             (fit, predicted) = absorb(&mut round, refined);
             course.fits.push(fit.clone());
-            if r + 1 < count && fit.layers.is_some() && settings.method == Preference::Auto {
+            let may_bear = settings.method == Preference::Auto && !target.in_batches();
+            if r + 1 < count && fit.layers.is_some() && may_bear {
                 target.enter(Stage::Births(r + 1));
                 let before = target.spent();
                 let cap = (before + births_left).min(before + plan.left_for_rounds(before) / 2);

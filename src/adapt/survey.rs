@@ -19,7 +19,7 @@ pub(crate) struct Found {
 }
 
 /// Radii of the starts, in turn: 2 for modes outside the start, 1/2 and 1/4 for thin basins inside a wide one.
-const RADII: [f64; 5] = [1.0, 2.0, 0.5, 1.0, 0.25];
+pub(crate) const RADII: [f64; 5] = [1.0, 2.0, 0.5, 1.0, 0.25];
 /// Climbs that are enough for a basin share of 5 %, and the most that are made (1 %).
 const ENOUGH: u32 = 60;
 const MOST: u32 = 300;

@@ -9,6 +9,7 @@ mod ending;
 mod figures;
 mod header;
 mod layout;
+mod model_desk;
 mod numbers;
 mod options;
 mod output;

@@ -1,15 +1,40 @@
 //! Models: a batch of points in, a batch of values out.
 //!
 //! A [`Model`] is what a problem asks when its target is not (only) a formula. It knows nothing of distributions,
-//! coordinates or aims: it gets values in natural units and answers with numbers. [`Closure`] wraps a Rust function.
+//! coordinates or aims: it gets values in natural units and answers with numbers. [`Closure`] wraps a Rust function,
+//! [`ProgramModel`] a program in any language, [`LibraryModel`] compiled code with a C interface, and [`ExchangeModel`]
+//! whatever is run elsewhere and answers by files.
 //!
 //! **Invariant:** a model answers every point by its own values alone, so that the same point has the same answer in
 //! any batch, at any place in it and on any number of threads.
 
 mod closure;
+mod exchange;
+mod library;
+mod program;
+mod surroundings;
 
 pub use closure::Closure;
+pub use exchange::ExchangeModel;
+pub use exchange::Post;
+pub use library::LibraryError;
+pub use library::LibraryModel;
+pub use library::LibrarySpec;
+pub use program::Cause;
+pub use program::Mishap;
+pub use program::ProgramError;
+pub use program::ProgramFormat;
+pub use program::ProgramModel;
+pub use program::ProgramSpec;
+pub use program::Throughput;
+pub use program::throughput;
+pub use surroundings::Alone;
+pub use surroundings::Surroundings;
 
+pub(crate) use program::cores;
+pub(crate) use program::decimal;
+
+use std::sync::Arc;
 use thiserror::Error;
 
 use crate::numeric::Points;
@@ -51,6 +76,17 @@ pub trait Model: Send + Sync {
         let _ = (inputs, values, gradients);
         Err(ModelError::NoGradient)
     }
+
+    /// Tells the model whom to tell, and whom to ask, while it works; before it is first asked. Models inside the process
+    /// have nothing to say.
+    fn connect(&self, surroundings: &Arc<dyn Surroundings>) {
+        let _ = surroundings;
+    }
+
+    /// Gives an [`ExchangeModel`] its way to the outside. Other models have no use for it.
+    fn send_by(&self, post: Box<dyn Post>) {
+        drop(post);
+    }
 }
 
 /// What keeps a model from answering at all.
@@ -78,6 +114,32 @@ pub enum ModelError {
     /// Derivatives were asked of a model that has none.
     #[error("the model gives no derivatives; ask for its values alone")]
     NoGradient,
+    /// A program gives no answers.
+    #[error(transparent)]
+    Program(Box<ProgramError>),
+    /// Compiled code gives no answers.
+    #[error(transparent)]
+    Library(#[from] LibraryError),
+    /// The answers come later, from outside.
+    #[error("waiting for the answers to {points} points")]
+    Waiting {
+        /// Points that were asked.
+        points: usize,
+        /// What was written, what is missing, and what to do, for the user.
+        text: String,
+    },
+    /// What came from outside cannot be used, or nothing can be sent there.
+    #[error("{0}")]
+    Exchange(String),
+    /// Whoever runs the model wants to stop.
+    #[error("interrupted")]
+    Interrupted,
+}
+
+impl From<ProgramError> for ModelError {
+    fn from(error: ProgramError) -> Self {
+        Self::Program(Box::new(error))
+    }
 }
 
 /// Checks that `inputs` and `outputs` fit `model`.

@@ -8,6 +8,9 @@ use super::columns::DataTable;
 use super::expand::Expanded;
 use super::faults::Fault;
 use super::names::Names;
+use super::names::all_of;
+use super::outside::table_of;
+use super::outside_table::OutsideSpec;
 use super::statement::Statement;
 use super::table::Reader;
 use super::target::Aim;
@@ -21,6 +24,7 @@ use crate::expression::RowsId;
 use crate::expression::Scope;
 use crate::expression::Wanted;
 use crate::expression::is_name;
+use crate::expression::nearest;
 
 /// The target of a problem whose target is a formula.
 ///
@@ -57,6 +61,8 @@ pub(crate) struct Programs {
     pub(crate) estimate_labels: Vec<Option<Vec<String>>>,
     /// For each variable as stated: the program of its parameters that are formulas, in their order.
     pub(crate) parameters: Vec<Option<Program>>,
+    /// What a model outside the file takes, one output a value, and the names of these values.
+    pub(crate) takes: Option<(Program, Vec<String>)>,
 }
 
 /// One formula that is asked for.
@@ -74,7 +80,17 @@ pub(crate) fn compile(
     expanded: &[Expanded<'_>],
     tables: &[DataTable],
 ) -> Option<Programs> {
+    let taken = match &statement.outside {
+        Some(outside) => {
+            if !rows_known(reader, outside, tables) {
+                return None;
+            }
+            Some(taken(reader, statement, outside, expanded)?)
+        }
+        None => None,
+    };
     let (scope, kinds) = scope(statement, expanded, tables);
+    let take_outputs: Vec<Output<'_>> = taken.iter().flatten().map(Taken::output).collect();
     let target = target_outputs(statement);
     let estimates: Vec<Output<'_>> = statement
         .estimates
@@ -86,7 +102,8 @@ pub(crate) fn compile(
         })
         .collect();
     let parameters: Vec<Vec<Output<'_>>> = expanded.iter().map(parameter_outputs).collect();
-    let all: Vec<&Output<'_>> = target.iter().chain(&estimates).chain(parameters.iter().flatten()).collect();
+    let all: Vec<&Output<'_>> =
+        target.iter().chain(&estimates).chain(&take_outputs).chain(parameters.iter().flatten()).collect();
     let whole = match scope.compile(&asked(all.iter().copied())) {
         Ok(program) => program,
         Err(errors) => {
@@ -113,18 +130,129 @@ pub(crate) fn compile(
     };
     let estimate_labels =
         (0..statement.estimates.len()).map(|k| estimates.as_ref().and_then(|program| labels(program, k))).collect();
+    let n_variables = expanded.last().map_or(0, |variable| variable.places.end);
+    // Neither what a model takes nor a parameter can depend on what the model returns.
+    let beforehand = |reader: &mut Reader<'_>, outputs: &[Output<'_>]| -> Option<Program> {
+        let late = outputs.iter().find(|output| {
+            let alone = scope.compile(&asked(std::iter::once(*output))).ok();
+            alone.is_some_and(|alone| alone.narrowed(n_variables).is_none())
+        });
+        if let Some(late) = late {
+            reader.fault(
+                Fault::new(
+                    late.text.span.clone(),
+                    "this depends on what the model returns, and must be known before it is asked",
+                )
+                .help("use variables, constants, and formulas of these alone"),
+            );
+            return None;
+        }
+        program(outputs)?.narrowed(n_variables)
+    };
+    let takes = match &taken {
+        Some(taken) => {
+            Some((beforehand(reader, &take_outputs)?, taken.iter().map(|one| one.name.clone()).collect::<Vec<_>>()))
+        }
+        None => None,
+    };
+    let mut parameter_programs = Vec::new();
+    for outputs in &parameters {
+        parameter_programs.push(if outputs.is_empty() { None } else { Some(beforehand(reader, outputs)?) });
+    }
     let requirements = statement.target.require.len();
     let first_requirement = if statement.target.aim == Aim::Probability { 2 } else { 1 };
     Some(Programs {
         target: FormulaTarget { program: program(&target)?, first_requirement, requirements },
         estimates,
         estimate_labels,
-        parameters: parameters.iter().map(|outputs| if outputs.is_empty() { None } else { program(outputs) }).collect(),
+        parameters: parameter_programs,
+        takes,
     })
 }
 
-const UNKNOWN_NAME_HELP: &str =
-    "a formula knows the names under [constants], [variables] and [formulas] and the columns of the data";
+/// One value that a model takes.
+struct Taken {
+    name: String,
+    key: String,
+    text: Text,
+}
+
+impl Taken {
+    fn output(&self) -> Output<'_> {
+        Output { key: self.key.clone(), text: &self.text, wanted: Wanted::Number }
+    }
+}
+
+/// What the model takes: the names that it lists, a group standing for its members; or all variables.
+fn taken(
+    reader: &mut Reader<'_>,
+    statement: &Statement,
+    outside: &OutsideSpec,
+    expanded: &[Expanded<'_>],
+) -> Option<Vec<Taken>> {
+    let all = || expanded.iter().map(|variable| Text::unplaced(&variable.spec.name)).collect();
+    let listed: Vec<Text> = outside.takes.clone().unwrap_or_else(all);
+    let mut known: Vec<&str> = expanded.iter().map(|variable| variable.spec.name.as_str()).collect();
+    known.extend(statement.constants.iter().map(|(name, _, _)| name.as_str()));
+    known.extend(statement.formulas.iter().map(|formula| formula.name.as_str()));
+    let mut taken = Vec::new();
+    let mut whole = true;
+    for text in listed {
+        let name = text.value.clone();
+        if !known.contains(&name.as_str()) {
+            let fault = Fault::new(
+                text.span.clone(),
+                format!("`takes` names `{name}`, which is no variable, constant or formula"),
+            );
+            let help = nearest(&name, known.iter().copied())
+                .map_or_else(|| format!("there are {}", all_of(&known)), |near| format!("did you mean `{near}`?"));
+            reader.fault(fault.help(help));
+            whole = false;
+            continue;
+        }
+        let group = expanded.iter().find(|variable| variable.spec.name == name && variable.labels.is_some());
+        let members = group.map(Expanded::names).unwrap_or_default();
+        for (k, (member, _)) in members.iter().enumerate() {
+            let mut text = Text::unplaced(&format!("{name}[{}]", k + 1));
+            text.span = 0..0;
+            taken.push(Taken { name: member.clone(), key: format!("{} takes {member}", outside.table), text });
+        }
+        if members.is_empty() {
+            taken.push(Taken { key: format!("{} takes {name}", outside.table), name, text });
+        }
+    }
+    whole.then_some(taken)
+}
+
+/// Whether every column that the model returns has rows to run over.
+fn rows_known(reader: &mut Reader<'_>, outside: &OutsideSpec, tables: &[DataTable]) -> bool {
+    let before = reader.faults.len();
+    let known: Vec<&str> = tables.iter().filter_map(|table| table.raw.spec.name.as_deref()).collect();
+    for (column, named) in &outside.returns_rows {
+        if table_of(named.as_ref().map(|name| name.value.as_str()), tables).is_some() {
+            continue;
+        }
+        let span = named.as_ref().map_or(&column.span, |name| &name.span).clone();
+        let message = match named {
+            Some(name) => {
+                format!("there is no data table `{}` for the column `{}` to run over", name.value, column.value)
+            }
+            None if tables.is_empty() => {
+                format!("the column `{}` runs over the rows of data, and there are none", column.value)
+            }
+            None => format!("it is not said over which of the data files the column `{}` runs", column.value),
+        };
+        let help = if known.is_empty() {
+            "name the data file under [data]: file = \"readings.csv\"".to_owned()
+        } else {
+            format!("write returns_rows = {{ {} = \"{}\" }}; the tables are {}", column.value, known[0], all_of(&known))
+        };
+        reader.fault(Fault::new(span, message).help(help));
+    }
+    reader.faults.len() == before
+}
+
+const UNKNOWN_NAME_HELP: &str = "a formula knows the names under [constants], [variables] and [formulas], the columns of the data and what a model returns";
 
 fn asked<'a>(outputs: impl Iterator<Item = &'a Output<'a>>) -> Vec<(&'a str, &'a str, Wanted)> {
     outputs.map(|output| (output.key.as_str(), output.text.value.as_str(), output.wanted)).collect()
@@ -224,6 +352,19 @@ fn scope(statement: &Statement, expanded: &[Expanded<'_>], tables: &[DataTable])
         }
         scope.group(name, rows, labels);
         link_columns(&mut scope, name, labels, tables);
+    }
+    if let Some(outside) = &statement.outside {
+        for name in &outside.returns {
+            scope.model_value(&name.value);
+        }
+        for (name, table) in &outside.returns_rows {
+            let at = table_of(table.as_ref().map(|name| name.value.as_str()), tables)
+                .and_then(|table| tables.iter().position(|known| std::ptr::eq(known, table)));
+            // Every table made a kind of rows, in order, before anything else did.
+            if let Some((rows, _)) = at.and_then(|at| kinds.get(at)) {
+                scope.model_column(&name.value, *rows);
+            }
+        }
     }
     for formula in &statement.formulas {
         scope.formula(&formula.name, &formula.formula.value);

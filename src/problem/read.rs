@@ -19,6 +19,7 @@ use super::faults::Faults;
 use super::faults::Source;
 use super::names::Names;
 use super::natures;
+use super::outside::Outside;
 use super::programs;
 use super::programs::Programs;
 use super::start;
@@ -133,13 +134,17 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
         natures::check_numbers(reader, &expanded);
         return None;
     };
-    let Programs { target, estimates, estimate_labels, parameters } = programs;
+    let Programs { target, estimates, estimate_labels, parameters, takes } = programs;
     let settled = natures::settle(reader, &expanded, &parameters)?;
     let mut variables = settled.variables;
     let correlations = correlation::settle(reader, &statement.correlations, &expanded, &variables)?;
     if !reader.faults.is_empty() {
         return None;
     }
+    let outside = match (&statement.outside, takes) {
+        (Some(spec), Some(takes)) => Some(Outside::open(reader, spec, folder, takes, &tables)?),
+        _ => None,
+    };
     let aim = statement.target.aim;
     let choice = statement.tuning.coordinates;
     let placed = start::place(&mut variables, &settled.groups, &correlations, aim, choice);
@@ -161,6 +166,7 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
         space,
         start,
         target: Target::Formulas(Box::new(target)),
+        outside,
         estimate_names,
         estimates: estimates.map_or(Estimates::None, |program| Estimates::Formulas(Box::new(program))),
         tuning: statement.tuning.clone(),

@@ -10,6 +10,8 @@ use super::data;
 use super::data::DataSpec;
 use super::faults::Fault;
 use super::names::Names;
+use super::outside_table;
+use super::outside_table::OutsideSpec;
 use super::table::Entry;
 use super::table::Reader;
 use super::table::Table;
@@ -40,14 +42,27 @@ pub(crate) struct Statement {
     pub(crate) target: TargetSpec,
     pub(crate) estimates: Vec<NamedFormula>,
     pub(crate) correlations: Vec<CorrelationSpec>,
+    /// A model that is not a formula.
+    pub(crate) outside: Option<OutsideSpec>,
     pub(crate) tuning: TuningKeys,
     /// Whether all that bears a name in formulas was read: only then do formulas tell more than is known already.
     pub(crate) names_known: bool,
 }
 
-const TABLES: [&str; 9] =
-    ["title", "constants", "variables", "data", "formulas", "target", "estimates", "tuning", "correlation"];
-const MODEL_TABLES: [&str; 3] = ["program", "library", "exchange"];
+const TABLES: [&str; 12] = [
+    "title",
+    "constants",
+    "variables",
+    "data",
+    "formulas",
+    "target",
+    "estimates",
+    "tuning",
+    "correlation",
+    "program",
+    "library",
+    "exchange",
+];
 
 /// Reads the document. Faults go to `reader`; none is returned where there is no target to speak of.
 pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Statement> {
@@ -74,6 +89,7 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
         target: no_target(),
         estimates: Vec::new(),
         correlations: Vec::new(),
+        outside: None,
         tuning: TuningKeys::default(),
         names_known: tables_known,
     };
@@ -97,6 +113,14 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names) -> Option<Stateme
                 }
                 let named = ["constants", "variables", "data", "formulas"].contains(&entry.key);
                 statement.names_known &= !named || reader.faults.len() == before;
+            }
+            "program" | "library" | "exchange" => {
+                if let Some(first) = &statement.outside {
+                    outside_table::second(reader, entry, first);
+                    continue;
+                }
+                statement.outside = outside_table::read(reader, entry);
+                statement.names_known &= statement.outside.is_some();
             }
             "correlation" => statement.correlations = correlation_table::read(reader, entry),
             _ => {}
@@ -137,17 +161,7 @@ fn not_toml(message: &str, span: Range<usize>) -> Fault {
 
 fn check_top(reader: &mut Reader<'_>, file: &Table<'_>) {
     for entry in file.entries.iter().filter(|entry| !TABLES.contains(&entry.key)) {
-        if MODEL_TABLES.contains(&entry.key) {
-            reader.fault(
-                Fault::new(
-                    entry.key_span.clone(),
-                    format!("[{}]: models outside the file are not read by this version", entry.key),
-                )
-                .help("state the target as a formula"),
-            );
-        } else {
-            reader.unknown_key(entry, "a problem file", &TABLES);
-        }
+        reader.unknown_key(entry, "a problem file", &TABLES);
     }
 }
 
@@ -209,6 +223,10 @@ fn give_names(reader: &mut Reader<'_>, names: &mut Names, statement: &Statement)
     given.extend(statement.constants.iter().map(|(name, _, span)| (name.as_str(), "the constant", span)));
     given.extend(statement.variables.iter().map(|spec| (spec.name.as_str(), "the variable", &spec.name_span)));
     given.extend(statement.formulas.iter().map(|f| (f.name.as_str(), "the formula", &f.name_span)));
+    if let Some(outside) = &statement.outside {
+        let returned = outside.returns.iter().chain(outside.returns_rows.iter().map(|(name, _)| name));
+        given.extend(returned.map(|name| (name.value.as_str(), "the model's value", &name.span)));
+    }
     given.sort_by_key(|(_, _, span)| span.start);
     for (name, kind, span) in given {
         names.give_key(reader, name, kind, span);
