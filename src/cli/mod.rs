@@ -4,6 +4,7 @@
 //! library, and write.
 
 mod check;
+mod check_model;
 mod check_report;
 mod ending;
 mod figures;

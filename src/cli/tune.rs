@@ -89,7 +89,7 @@ fn tune(args: &Args, located: &Located, problem: &Problem) -> anyhow::Result<End
         }
         (Err(error), _) => {
             // Nothing was evaluated, so nothing is kept that would stand in the way of the next try.
-            if watch.recorder.is_empty() {
+            if watch.recorder.is_empty() && !args.resume {
                 drop(watch);
                 folder.discard()?;
             }

@@ -252,7 +252,8 @@ fn rows_known(reader: &mut Reader<'_>, outside: &OutsideSpec, tables: &[DataTabl
     reader.faults.len() == before
 }
 
-const UNKNOWN_NAME_HELP: &str = "a formula knows the names under [constants], [variables] and [formulas], the columns of the data and what a model returns";
+const UNKNOWN_NAME_HELP: &str =
+    "a formula knows the names under [constants], [variables] and [formulas] and the columns of the data";
 
 fn asked<'a>(outputs: impl Iterator<Item = &'a Output<'a>>) -> Vec<(&'a str, &'a str, Wanted)> {
     outputs.map(|output| (output.key.as_str(), output.text.value.as_str(), output.wanted)).collect()

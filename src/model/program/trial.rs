@@ -8,7 +8,7 @@ use crate::numeric::Points;
 use std::time::Duration;
 use std::time::Instant;
 
-/// The pace of one worker with batches of one size.
+/// The pace of a program with batches of one size.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Throughput {
     /// Points of a batch.
@@ -19,10 +19,10 @@ pub struct Throughput {
     pub rate: f64,
 }
 
-/// Measures one worker with batches of each of `sizes` in turn, each for about `patience` and at least one batch; a size
+/// Measures the workers of `spec` with batches of each of `sizes` in turn, each for about `patience` and at least one batch; a size
 /// that would take longer than that by the pace before it is left out.
 ///
-/// The process is started, and has answered its first point, before the clock is.
+/// The processes are started, and have answered a first point, before the clock is.
 ///
 /// # Errors
 /// What keeps the program from answering.
@@ -41,15 +41,18 @@ pub fn throughput(
         if measured.last().is_some_and(slow) {
             break;
         }
-        let model = ProgramModel::new(ProgramSpec { workers: 1, batch: Some(batch), ..spec.clone() });
-        let rows: Vec<usize> = (0..batch).map(|i| i % points.len()).collect();
+        let model = ProgramModel::new(ProgramSpec { batch: Some(batch), ..spec.clone() });
+        let together = batch * spec.workers.max(1);
+        let rows: Vec<usize> = (0..together).map(|i| i % points.len()).collect();
         let asked = points.select(&rows);
-        let mut answers = Points::zeros(model.n_outputs(), batch);
-        model.evaluate(&points.select(&[0]), &mut Points::zeros(model.n_outputs(), 1))?;
+        let mut answers = Points::zeros(model.n_outputs(), together);
+        // One point a worker, at least, before the clock is started.
+        let warm = points.select(&rows[..together.min(8 * spec.workers.max(1))]);
+        model.evaluate(&warm, &mut Points::zeros(model.n_outputs(), warm.len()))?;
         let (began, mut count) = (Instant::now(), 0);
         while count == 0 || began.elapsed() < patience {
             model.evaluate(&asked, &mut answers)?;
-            count += batch;
+            count += together;
         }
         let rate = count as f64 / began.elapsed().as_secs_f64().max(1e-9);
         measured.push(Throughput { batch, points: count, rate });
