@@ -48,7 +48,8 @@ def highest_level(peak, hours, start, blocked):
     return highest
 
 
-for line in sys.stdin:
-    values = line.split()
-    if values:  # an empty line ends a batch
-        print(highest_level(*map(float, values)), flush=True)
+if __name__ == "__main__":
+    for line in sys.stdin:
+        values = line.split()
+        if values:  # an empty line ends a batch
+            print(highest_level(*map(float, values)), flush=True)

@@ -32,7 +32,7 @@ const SETTLE: Duration = Duration::from_millis(5);
 const BARREN: u32 = 3;
 /// Points given up in a row after which the run stops.
 const GIVEN_UP: usize = 20;
-/// Points given up that are told one by one.
+/// Restarts, and points given up, that are told one by one; the others go to the log.
 const TOLD: u64 = 10;
 /// After a mishap the rest of a batch is cut into so many pieces.
 const PIECES: usize = 8;
@@ -76,6 +76,7 @@ pub(crate) struct Pool {
     barren: u32,
     given_up_in_a_row: usize,
     given_up: u64,
+    restarts: u64,
     surroundings: Arc<dyn Surroundings>,
 }
 
@@ -104,6 +105,7 @@ impl Pool {
             barren: 0,
             given_up_in_a_row: 0,
             given_up: 0,
+            restarts: 0,
             surroundings,
         }
     }
@@ -308,8 +310,12 @@ impl Pool {
                 return Err(ProgramError::NeverAnswered(mishap).into());
             }
         }
-        if self.barren <= 1 && self.given_up < TOLD {
-            self.surroundings.notice(&format!("A worker of the model program is started again. {mishap}"));
+        self.restarts += 1;
+        let text = format!("A worker of the model program is started again. {mishap}");
+        if self.restarts <= TOLD {
+            self.surroundings.notice(&text);
+        } else {
+            self.surroundings.said(&format!("evenpoise: {text}"));
         }
         self.ask_again(call, &task, answered);
         for &i in &task.points[answered..] {
