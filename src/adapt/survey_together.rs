@@ -22,6 +22,8 @@ pub(crate) fn survey_together(target: &Standard, seed: u64, limits: Limits) -> R
     let d = target.dim();
     let each = GRADIENTS * target.gradient_cost() + 2 * target.hessian_cost() + 1;
     let count = (limits.all / each).max(LEAST.min(limits.enough / each)).clamp(1, MOST) as usize;
+    // Where the budget is small against the dimension, even one climb must leave something for the rounds.
+    let allowed = each.min(limits.first_mode.max(limits.enough) / count as u64);
     let problem = target.problem();
     let ends = together(
         count,
@@ -30,10 +32,10 @@ pub(crate) fn survey_together(target: &Standard, seed: u64, limits: Limits) -> R
             let mut rng = stream(seed, Purpose::Survey, k as u32, 0);
             let radius = RADII[k % RADII.len()];
             let start: Vec<f64> = (0..d).map(|_| radius * normal::draw(&mut rng)).collect();
-            let reach = GRADIENTS * target.gradient_cost();
+            let reach = allowed.min(GRADIENTS * target.gradient_cost());
             let (end, _) = climb(&target, start, &identity(d), true, &[], GRADIENTS, reach)?;
             match &end {
-                End::Top(x, metric) => Ok((examine(&target, x, metric, each)?, end)),
+                End::Top(x, metric) => Ok((examine(&target, x, metric, allowed)?, end)),
                 _ => Ok((None, end)),
             }
         },

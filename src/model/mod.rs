@@ -44,6 +44,31 @@ use crate::numeric::Points;
 /// The contract: an answer depends on its own point only; the same point has the same answer, bit for bit, in every
 /// batch. NaN says "this evaluation failed": it is counted, and weighs nothing. An `Err` says that the model as a whole
 /// cannot go on.
+///
+/// ```
+/// use evenpoise::model::{Model, ModelError};
+/// use evenpoise::numeric::Points;
+/// /// Discharge over a weir, `1.7 width depth^2`; no answer for a dry one.
+/// struct Weir;
+/// impl Model for Weir {
+///     fn n_inputs(&self) -> usize {
+///         2
+///     }
+///     fn n_outputs(&self) -> usize {
+///         1
+///     }
+///     fn evaluate(&self, inputs: &Points, outputs: &mut Points) -> Result<(), ModelError> {
+///         for i in 0..inputs.len() {
+///             let (width, depth) = (inputs.get(i, 0), inputs.get(i, 1));
+///             outputs.set(i, 0, if depth > 0.0 { 1.7 * width * depth * depth } else { f64::NAN });
+///         }
+///         Ok(())
+///     }
+/// }
+/// let mut answers = Points::zeros(1, 2);
+/// Weir.evaluate(&Points::from_rows(2, &[10.0, 1.0, 10.0, -1.0]), &mut answers).unwrap();
+/// assert!(answers.get(0, 0) == 17.0 && answers.get(1, 0).is_nan());
+/// ```
 pub trait Model: Send + Sync {
     /// Values that a point has: `inputs.dim()`.
     fn n_inputs(&self) -> usize;

@@ -119,6 +119,16 @@ pub(crate) fn weir(model: &str) -> String {
     )
 }
 
+/// The same weir, and how likely a great flow over it is.
+pub(crate) fn flood(model: &str) -> String {
+    format!(
+        "title = \"A flood over a weir of the Ellenmere feeder (invented)\"\n[variables]\n\
+         depth = {{ distribution = \"normal\", mean = 1.0, sd = 0.2, between = [0.0, inf], unit = \"m\" }}\n\
+         width = {{ distribution = \"normal\", mean = 3.0, sd = 0.1, unit = \"m\" }}\n{model}\n\
+         [target]\naim = \"probability\"\nevent = \"flow > 12\"\n[estimates]\nflow_then = \"flow\"\n[tuning]\nbudget = 900\n"
+    )
+}
+
 /// The weir in Python, which a Rust test can check: 1.7 w d^1.5.
 pub(crate) const WEIR: &str = "import sys\nfor line in sys.stdin:\n    if line.split():\n        d, w = map(float, line.split())\n        \
     print(repr(1.7 * w * d ** 1.5), flush=True)\n";

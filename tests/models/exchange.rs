@@ -1,6 +1,6 @@
 //! `[exchange]`: points go out, a script answers them, and the run goes on.
 
-use crate::common::{WEIR, evenpoise, there, tune, weir};
+use crate::common::{WEIR, evenpoise, flood, there, tune, weir};
 use std::fs;
 use std::path::Path;
 
@@ -30,15 +30,28 @@ fn answer(run: &Path, number: u32, each: impl Fn(f64) -> String) {
 
 #[test]
 fn an_exchange_ends_with_the_bytes_of_a_program() {
-    if !there("python3") {
-        return;
+    if there("python3") {
+        exchanged(weir);
     }
+}
+
+#[test]
+fn so_does_the_exchange_of_a_rare_event() {
+    if there("python3") {
+        exchanged(flood);
+    }
+}
+
+fn exchanged(problem: fn(&str) -> String) {
     let folder = tempfile::tempdir().unwrap();
     let folder = folder.path();
     fs::write(folder.join("weir.py"), WEIR).unwrap();
-    fs::write(folder.join("program.toml"), weir("[program]\nrun = [\"python3\", \"weir.py\"]\nreturns = [\"flow\"]\n"))
-        .unwrap();
-    fs::write(folder.join("weir.toml"), weir(TABLE)).unwrap();
+    fs::write(
+        folder.join("program.toml"),
+        problem("[program]\nrun = [\"python3\", \"weir.py\"]\nreturns = [\"flow\"]\n"),
+    )
+    .unwrap();
+    fs::write(folder.join("weir.toml"), problem(TABLE)).unwrap();
     tune(folder, &["program.toml"]);
     let run = folder.join("weir.run");
     let (mut status, mut said) = step(folder, &["weir.toml"]);

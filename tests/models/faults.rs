@@ -226,7 +226,7 @@ fn a_program_that_fails_everywhere_is_stopped() {
     }
     let script = Script::new(&looped("", "if a > 10: sys.exit(1)"));
     let error = refused(ProgramSpec { tries: 1, batch: Some(1), ..script.spec() }, 400);
-    assert!(matches!(error, ProgramError::GivenUp { points: 20, .. }), "{error}");
+    assert!(matches!(error, ProgramError::GivenUp { times: 20, .. }), "{error}");
 }
 
 /// Lines of 4 KiB in a batch of 3,000 fill both pipes many times over, whether the program answers at once or at the end.

@@ -31,7 +31,7 @@ pub enum ProgramError {
     },
     /// It never answered a single point.
     #[error("the model program never answered.\n{0}")]
-    NeverAnswered(Mishap),
+    NeverAnswered(Box<Mishap>),
     /// It answered more than it was asked.
     #[error(
         "the model program answered {answered} points where {asked} were asked; which answer belongs to which point is not known: \
@@ -69,13 +69,13 @@ pub enum ProgramError {
         /// A line for a shell that asks it.
         command: String,
     },
-    /// Point after point was given up.
-    #[error("{points} points in a row had no answer, so the run stops here.\n{last}")]
+    /// Worker after worker ended without an answer.
+    #[error("{times} times in a row points were given up without any answer between, so the run stops here.\n{last}")]
     GivenUp {
-        /// Points.
-        points: usize,
+        /// Times.
+        times: usize,
         /// What befell the last of them.
-        last: Mishap,
+        last: Box<Mishap>,
     },
 }
 
@@ -169,7 +169,7 @@ mod tests {
             command: "echo \"62.5\" | ./tank".into(),
             said: vec!["no gate".into()],
         };
-        let text = ProgramError::NeverAnswered(mishap).to_string();
+        let text = ProgramError::NeverAnswered(Box::new(mishap)).to_string();
         for part in ["1.5 seconds", "flush", "3 of 8", "inflow = 62.5", "echo \"62.5\" | ./tank", "| no gate"] {
             assert!(text.contains(part), "{text}");
         }

@@ -12,18 +12,22 @@ const AT_ONCE: f64 = 1e-3;
 const FIRST: usize = 8;
 /// A size whose pace is within this factor of the best will do.
 const NEARLY_BEST: f64 = 1.15;
-const GOOD_ENOUGH: f64 = 1.5;
+/// The fixed price of a batch may be this share of the work in it, to keep all workers busy at the end.
+const PRICE: f64 = 0.5;
 
 /// Seconds a point, measured for batches of every size.
 #[derive(Debug, Clone, Default)]
 pub(crate) struct Pace {
     seconds: [Option<f64>; SIZES],
+    /// Points of the last batch of that size.
+    points: [f64; SIZES],
 }
 
 impl Pace {
     /// Learns that a batch of `n` points took `seconds`.
     pub(crate) fn learn(&mut self, n: usize, seconds: f64) {
         let each = seconds.max(1e-9) / n as f64;
+        self.points[bucket(n)] = n as f64;
         let known = &mut self.seconds[bucket(n)];
         *known = Some(known.map_or(each, |before| 0.5 * (before + each)));
     }
@@ -35,7 +39,7 @@ impl Pace {
             return left.div_ceil(4 * workers).clamp(1, FIRST).min(most);
         };
         let wanted = 1 << self.wanted(best);
-        let fair = left.div_ceil(2 * workers).max(1 << self.smallest_within(best * GOOD_ENOUGH));
+        let fair = left.div_ceil(2 * workers).max(self.least());
         let at_once = left as f64 * best < AT_ONCE;
         let size = if at_once { left } else { fair.min(wanted) };
         size.clamp(1, left.max(1)).min(most)
@@ -45,17 +49,35 @@ impl Pace {
         self.seconds.iter().flatten().copied().reduce(f64::min)
     }
 
+    /// The smallest batch whose fixed price is worth paying: `f` of `seconds = f + e n`, from the smallest and the largest
+    /// size that were measured.
+    fn least(&self) -> usize {
+        let measured = || (0..SIZES).filter_map(|k| self.seconds[k].map(|each| (self.points[k], each)));
+        let (Some((few, slow)), Some((many, fast))) = (measured().next(), measured().next_back()) else { return 1 };
+        if few == many {
+            return few as usize;
+        }
+        let fixed = ((slow - fast) / (1.0 / few - 1.0 / many)).max(0.0);
+        let each = fast - fixed / many;
+        if each > 0.0 { (fixed / (PRICE * each)).ceil().clamp(1.0, many) as usize } else { many as usize }
+    }
+
     fn smallest_within(&self, limit: f64) -> usize {
         self.seconds.iter().position(|each| each.is_some_and(|each| each <= limit)).unwrap_or(0)
     }
 
+    /// Which power of two to ask next: the smallest good one, larger ones as long as they take no time, and once a
+    /// neighbour that was never tried.
     fn wanted(&self, best: f64) -> usize {
-        let k = self.smallest_within(best * NEARLY_BEST);
-        let takes = self.seconds[k].unwrap_or(best) * (1_u64 << k) as f64;
-        let larger = k + 1 < SIZES;
-        if larger && (takes < AIM || (takes < PATIENT && self.seconds[k + 1].is_none())) {
+        let mut k = self.smallest_within(best * NEARLY_BEST);
+        let takes = |k: usize| self.seconds[k].map(|each| each * (1_u64 << k) as f64);
+        while k + 1 < SIZES && takes(k).is_some_and(|seconds| seconds < AIM) {
+            k += 1;
+        }
+        let Some(seconds) = takes(k) else { return k };
+        if k + 1 < SIZES && seconds < PATIENT && self.seconds[k + 1].is_none() {
             k + 1
-        } else if takes > AIM && k > 0 && self.seconds[k - 1].is_none() {
+        } else if seconds > AIM && k > 0 && self.seconds[k - 1].is_none() {
             k - 1
         } else {
             k
@@ -91,7 +113,7 @@ mod tests {
         let slow = batches(4000, 2, 1e-4, 0.02);
         assert!(slow.iter().all(|&n| n <= 16) && slow.last() == Some(&1), "{slow:?}");
         let fast = batches(1_000_000, 2, 1e-4, 1e-6);
-        assert!(fast.iter().any(|&n| n == 8192), "{fast:?}");
+        assert!(fast.contains(&8192), "{fast:?}");
         let fixed = batches(100_000, 2, 0.05, 1e-5);
         assert!(fixed.len() < 60, "a fixed price for a batch asks for few of them: {fixed:?}");
     }

@@ -30,7 +30,7 @@ const TICK: Duration = Duration::from_millis(50);
 const SETTLE: Duration = Duration::from_millis(5);
 /// Mishaps of a program that has never answered, after which it is not tried again.
 const BARREN: u32 = 3;
-/// Points given up in a row after which the run stops.
+/// Mishaps in a row that made points be given up, without any answer between, after which the run stops.
 const GIVEN_UP: usize = 20;
 /// Restarts, and points given up, that are told one by one; the others go to the log.
 const TOLD: u64 = 10;
@@ -307,7 +307,7 @@ impl Pool {
         if !self.ever_answered {
             self.barren += 1;
             if self.barren >= BARREN || matches!(mishap.cause, Cause::Hung { .. }) {
-                return Err(ProgramError::NeverAnswered(mishap).into());
+                return Err(ProgramError::NeverAnswered(Box::new(mishap)).into());
             }
         }
         self.restarts += 1;
@@ -318,11 +318,16 @@ impl Pool {
             self.surroundings.said(&format!("evenpoise: {text}"));
         }
         self.ask_again(call, &task, answered);
+        let before = self.given_up;
         for &i in &task.points[answered..] {
             let checked_only = task.check_first && i == task.points[0];
             if call.asked[i] >= self.spec.tries.max(1) && !checked_only {
-                self.give_up(call, i, &mishap)?;
+                self.give_up(call, i);
             }
+        }
+        self.given_up_in_a_row += usize::from(self.given_up > before);
+        if self.given_up_in_a_row >= GIVEN_UP {
+            return Err(ProgramError::GivenUp { times: self.given_up_in_a_row, last: Box::new(mishap) }.into());
         }
         Ok(())
     }
@@ -353,13 +358,9 @@ impl Pool {
         }
     }
 
-    fn give_up(&mut self, call: &mut Call<'_>, i: usize, mishap: &Mishap) -> Result<(), ModelError> {
+    fn give_up(&mut self, call: &Call<'_>, i: usize) {
         self.given_up += 1;
-        self.given_up_in_a_row += 1;
         let point = call.inputs.point(i);
-        if self.given_up_in_a_row >= GIVEN_UP {
-            return Err(ProgramError::GivenUp { points: self.given_up_in_a_row, last: mishap.clone() }.into());
-        }
         let (named, command) = (self.spec.named(&point), self.spec.reproduction(&point));
         let tries = self.spec.tries.max(1);
         if self.given_up <= TOLD {
@@ -370,7 +371,6 @@ impl Pool {
             self.surroundings.said(&format!("evenpoise: no answer after {tries} tries: {named}"));
         }
         self.keep(call, &[i], &vec![f64::NAN; call.width]);
-        Ok(())
     }
 
     fn too_many(&self, call: &Call<'_>, answered: usize, asked: usize, first: usize) -> ProgramError {

@@ -33,13 +33,13 @@ impl Searching<'_, '_> {
         let one = STEPS * (self.target.slope_cost() + 2);
         let count = (left / one).clamp(FEWEST, MOST) as usize;
         let starts = self.first_starts(count)?;
-        self.wave(starts, (FIRST_SHARE * left as f64) as u64)?;
+        self.wave(&starts, (FIRST_SHARE * left as f64) as u64)?;
         self.connect_at_once()?;
         let hunts = self.hunts()?;
-        self.wave(hunts, self.cap.saturating_sub(self.target.spent()) / 2)?;
+        self.wave(&hunts, self.cap.saturating_sub(self.target.spent()) / 2)?;
         let next: Vec<Start> =
             self.found.iter().flat_map(|p| self.target.neighbours(&p.at)).map(Start::New).take(MOST as usize).collect();
-        self.wave(next, self.cap.saturating_sub(self.target.spent()))?;
+        self.wave(&next, self.cap.saturating_sub(self.target.spent()))?;
         self.connect_at_once()
     }
 
@@ -76,7 +76,7 @@ impl Searching<'_, '_> {
     }
 
     /// One search from every start, which together spend at most `allowed`.
-    fn wave(&mut self, starts: Vec<Start>, allowed: u64) -> Result<(), TuneError> {
+    fn wave(&mut self, starts: &[Start], allowed: u64) -> Result<(), TuneError> {
         let room = 3 * (self.target.slope_cost() + 2);
         let count = starts.len().min(usize::try_from(allowed / room).unwrap_or(usize::MAX));
         if count == 0 {
