@@ -69,8 +69,8 @@ impl Post for ExchangeFolder {
         let waiting = |missing: &str| ModelError::Waiting {
             points: n,
             text: format!(
-                "{n} points are asked in\n  {}\n{missing}Put the answers into\n  {}\nwith the columns {ID},{}; rows and columns in any \
-                 order; a blank cell or nan says that a point failed.",
+                "{n} points are asked in\n  {}\n{missing}Put the answers into\n  {}\nwith the columns {ID},{} (rows and columns in any order).\n\
+                 A blank cell or nan says that a point failed.",
                 asked.display(),
                 path.display(),
                 returns.join(",")
