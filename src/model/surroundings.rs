@@ -16,6 +16,11 @@ pub trait Surroundings: Send + Sync {
         let _ = text;
     }
 
+    /// Whether [`Surroundings::answered`] is listened to; asked once a batch of answers.
+    fn keeps_answers(&self) -> bool {
+        false
+    }
+
     /// Points of the batch at hand that were answered, as they come in: to be kept in case the rest never does.
     fn answered(&self, inputs: &Points, answers: &Points) {
         let _ = (inputs, answers);

@@ -55,6 +55,10 @@ impl Surroundings for Heard {
         self.notices.lock().unwrap().push(text.to_owned());
     }
 
+    fn keeps_answers(&self) -> bool {
+        true
+    }
+
     fn answered(&self, inputs: &Points, answers: &Points) {
         let mut answered = self.answered.lock().unwrap();
         (0..inputs.len()).for_each(|i| answered.push((inputs.get(i, 0), answers.get(i, 0))));

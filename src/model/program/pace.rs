@@ -1,7 +1,7 @@
 //! How many points make a batch: enough to pay for the hand-over, few enough to keep every worker busy to the end.
 
 /// Powers of two up to which sizes are tried.
-const SIZES: usize = 14;
+const SIZES: usize = 17;
 /// Seconds that a batch should take: long against the hand-over, short against a timeout and a round.
 const AIM: f64 = 0.1;
 /// A larger batch is tried once where the present one takes less than this many seconds.

@@ -284,6 +284,9 @@ impl Pool {
     }
 
     fn keep(&self, call: &Call<'_>, points: &[usize], values: &[f64]) {
+        if !self.surroundings.keeps_answers() {
+            return;
+        }
         let inputs = call.inputs.select(points);
         self.surroundings.answered(&inputs, &Points::from_rows(call.width, values));
     }

@@ -1,7 +1,6 @@
 //! Points to bytes, bytes to answers.
 
 use super::spec::ProgramFormat;
-use std::io::Write as _;
 
 /// Digits of a line that a message shows.
 const SHOWN: usize = 120;
@@ -18,8 +17,7 @@ fn put_decimal(out: &mut Vec<u8>, x: f64) {
         out.extend_from_slice(b"nan");
         return;
     }
-    // A vector takes all that is written.
-    let _ = write!(out, "{x:?}");
+    out.extend_from_slice(ryu::Buffer::new().format(x).as_bytes());
     if out.ends_with(b".0") {
         out.truncate(out.len() - 2);
     }
