@@ -49,10 +49,16 @@ struct Keeping {
 pub(crate) struct ModelDesk(Arc<Desk>);
 
 impl ModelDesk {
-    /// Connects the model of a problem to a run's folder; none where the target is formulas alone.
-    pub(crate) fn open(problem: &Problem, folder: &Path, signals: &Signals) -> Result<Option<Self>, StoreError> {
+    /// Connects the model of a problem to the folder of a run, in which `unfinished` keeps answers of a batch that is not whole;
+    /// none where the target is formulas alone.
+    pub(crate) fn open(
+        problem: &Problem,
+        folder: &Path,
+        unfinished: &str,
+        signals: &Signals,
+    ) -> Result<Option<Self>, StoreError> {
         let Some(means) = problem.model_means() else { return Ok(None) };
-        let (file, found) = Unfinished::open(folder)?;
+        let (file, found) = Unfinished::open(&folder.join(unfinished))?;
         found.iter().for_each(|(questions, answers)| problem.remember_unfinished(questions, answers));
         let log = OpenOptions::new().create(true).append(true).open(folder.join("log.txt")).ok();
         let desk = Arc::new(Desk {

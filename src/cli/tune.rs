@@ -186,7 +186,7 @@ fn begin<'p>(
     if args.resume {
         screen.keep(&tune_report::resumed(recorder.found(), dropped.as_deref(), folder.stale_lock()));
     }
-    let desk = ModelDesk::open(problem, folder.path(), &signals)?;
+    let desk = ModelDesk::open(problem, folder.path(), "evaluations/unfinished", &signals)?;
     let about = (problem, settings.budget);
     let watch = Watch::new((recorder, screen, signals), folder.join("rounds.csv"), about, desk);
     Ok((folder, watch))

@@ -30,12 +30,12 @@ pub struct Unfinished {
 }
 
 impl Unfinished {
-    /// That of a run's folder, with what it holds: questions, each with its answers.
+    /// The file at `path`, with what it holds: questions, each with its answers. The first answers make it.
     ///
     /// # Errors
     /// [`StoreError::Io`] where it is there and cannot be read.
-    pub fn open(folder: &Path) -> Result<(Self, Vec<(Points, Points)>), StoreError> {
-        let path = folder.join("evaluations").join("unfinished");
+    pub fn open(path: &Path) -> Result<(Self, Vec<(Points, Points)>), StoreError> {
+        let path = path.to_path_buf();
         let bytes = match fs::read(&path) {
             Ok(bytes) => bytes,
             Err(error) if error.kind() == io::ErrorKind::NotFound => Vec::new(),
@@ -120,8 +120,8 @@ mod tests {
     #[test]
     fn answers_come_back_and_a_torn_end_is_left_out() {
         let folder = tempfile::tempdir().unwrap();
-        fs::create_dir(folder.path().join("evaluations")).unwrap();
-        let (mut unfinished, found) = Unfinished::open(folder.path()).unwrap();
+        let path = folder.path().join("unfinished");
+        let (mut unfinished, found) = Unfinished::open(&path).unwrap();
         assert!(found.is_empty());
         let (a, b) = (Points::from_rows(2, &[0.1, 0.2]), Points::from_rows(1, &[f64::NAN]));
         unfinished.add(&a, &b);
@@ -129,17 +129,16 @@ mod tests {
         unfinished.write().unwrap();
         unfinished.add(&Points::from_rows(1, &[3.0]), &b);
         unfinished.write().unwrap();
-        let (_, found) = Unfinished::open(folder.path()).unwrap();
+        let (_, found) = Unfinished::open(&path).unwrap();
         assert_eq!((found.len(), found[0].0.len(), found[1].0.point(0)), (2, 2, vec![3.0]));
         assert!(found[0].1.get(1, 0).is_nan());
-        let path = folder.path().join("evaluations/unfinished");
         let bytes = fs::read(&path).unwrap();
         fs::write(&path, &bytes[..bytes.len() - 3]).unwrap();
-        let (mut unfinished, found) = Unfinished::open(folder.path()).unwrap();
+        let (mut unfinished, found) = Unfinished::open(&path).unwrap();
         assert_eq!(found.len(), 1);
         unfinished.add(&a, &b);
         unfinished.write().unwrap();
-        assert_eq!(Unfinished::open(folder.path()).unwrap().1.len(), 2);
+        assert_eq!(Unfinished::open(&path).unwrap().1.len(), 2);
         unfinished.clear().unwrap();
         assert!(!path.exists());
     }

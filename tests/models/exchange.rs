@@ -13,7 +13,7 @@ fn step(folder: &Path, arguments: &[&str]) -> (i32, String) {
 }
 
 /// Answers a file as a laboratory would: last row first, columns turned about, `each` says what stands in the cell.
-fn answer(run: &Path, number: u32, each: impl Fn(f64) -> String) {
+pub(crate) fn answer(run: &Path, number: u32, each: impl Fn(f64) -> String) {
     let asked = fs::read_to_string(run.join(format!("asked/{number:04}.csv"))).unwrap();
     let mut lines = asked.lines();
     assert_eq!(lines.next(), Some("id,depth,width"));

@@ -8,4 +8,5 @@ mod exchange;
 mod faults;
 mod libraries;
 mod problems;
+mod production;
 mod runs;
