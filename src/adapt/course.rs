@@ -9,7 +9,8 @@ use super::pool::Pool;
 use super::refine::{Fit, Refined, births, has_mass, join, refine};
 use super::settings::Settings;
 use super::standard::Standard;
-use super::survey::{Found, Limits, identity, look_on, survey};
+use super::survey::{Found, Limits, identity, look_on};
+use super::survey_together::look_on_together;
 use super::tuning::{Mode, Round, StopReason, Survey};
 use crate::numeric::{Purpose, exp, log_sum_exp};
 use crate::proposal::{Component, Drawn, Mixture};
@@ -53,14 +54,16 @@ pub(crate) fn first_proposal(
         enough: plan.survey_enough,
         first_mode: if exact { plan.survey_cap } else { plan.first_mode_cap },
     };
-    let found = survey(target, settings.seed, limits)?;
+    let mut found = Found::default();
+    look(target, settings.seed, limits, &mut found)?;
     let df = settings.first_df();
     let mut probed = 0;
     let main = if found.modes.is_empty() {
         at_start(target.dim(), df)?
     } else {
         let main = at_modes(&found, df)?;
-        if settings.layered() && settings.method != Preference::Moments {
+        // Probes ask for a point or two at a time: they are left to targets that are asked so.
+        if settings.layered() && settings.method != Preference::Moments && !target.in_batches() {
             let (main, count) = with_probes(target, &found, main, plan, df)?;
             probed = count;
             main
@@ -71,6 +74,14 @@ pub(crate) fn first_proposal(
     let layers = settings.layered().then_some(FIRST_LAYERS);
     let survey = summary(target, &found, probed);
     Ok((Fit { full: main.clone(), trained: main, layers }, survey, found))
+}
+
+/// Begins or goes on with a survey, in the way in which the target is best asked.
+fn look(target: &Standard, seed: u64, limits: Limits, found: &mut Found) -> Result<(), TuneError> {
+    if target.in_batches() {
+        return look_on_together(target, seed, limits, found);
+    }
+    look_on(target, seed, limits, found)
 }
 
 /// Goes on with the survey under a raised budget, and gives components at modes that it had not found before.
@@ -89,7 +100,7 @@ pub(crate) fn survey_on(
         enough: before + plan.survey_enough,
         first_mode: before + plan.survey_cap,
     };
-    look_on(target, settings.seed, limits, found)?;
+    look(target, settings.seed, limits, found)?;
     let later = target.spent() - before;
     if later == 0 {
         return Ok(None);
@@ -217,7 +228,8 @@ pub(crate) fn go_on(
     course.stop = if count < plan.most_rounds { StopReason::Budget } else { StopReason::Rounds };
     for r in 0..count {
         let last = r + 1 == count;
-        let reserved = if last && gives_birth(settings, &next.fit) { plan.last_births.min(*births_left) } else { 0 };
+        let reserved =
+            if last && gives_birth(target, settings, &next.fit) { plan.last_births.min(*births_left) } else { 0 };
         let draws = plan.draws(r, count, target.spent() + reserved) as usize;
         if draws == 0 {
             course.stop = StopReason::Budget;
@@ -243,9 +255,9 @@ pub(crate) fn go_on(
     Ok(())
 }
 
-/// Whether components are born at heavy points.
-pub(crate) fn gives_birth(settings: &Settings, fit: &Fit) -> bool {
-    fit.layers.is_some() && settings.method == Preference::Auto
+/// Whether components are born at heavy points: that asks for a point or two at a time.
+fn gives_birth(target: &Standard, settings: &Settings, fit: &Fit) -> bool {
+    fit.layers.is_some() && settings.method == Preference::Auto && !target.in_batches()
 }
 
 /// What a round that is in the pool already teaches: the next fit, and components born where that is too low, which may spend
@@ -266,7 +278,7 @@ pub(crate) fn learn(
     let refined = refine(&course.pool, &next.fit, wide, settings, round.index, round.draws as usize)?;
     let (mut fit, predicted) = absorb(round, refined);
     course.fits.push(fit.clone());
-    if births_cap > 0 && gives_birth(settings, &fit) {
+    if births_cap > 0 && gives_birth(target, settings, &fit) {
         target.enter(Stage::Births(round.index));
         let now = layered(&fit.full, wide, fit.layers)?;
         let df = fit.full.components()[0].df();

@@ -19,6 +19,8 @@ mod refine;
 mod settings;
 mod standard;
 mod survey;
+mod survey_together;
+mod together;
 mod tuning;
 
 pub mod rare;

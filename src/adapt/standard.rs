@@ -1,6 +1,7 @@
 //! The target in the start's units: every evaluation of a tuning goes through here, is counted, and is told to the observer.
 
 use super::observer::{Batch, Observer, Stage};
+use super::together::Line;
 use super::{TuneError, observer::Answers};
 use crate::numeric::{Points, ln};
 use crate::problem::Problem;
@@ -13,8 +14,16 @@ pub(crate) struct Standard<'a> {
     state: RefCell<State<'a>>,
 }
 
+/// Who answers.
+enum Way<'a> {
+    /// The problem itself; the observer is told.
+    Observed(&'a mut dyn Observer),
+    /// Whoever evaluates for several searches at once, in the start's units.
+    Line(Line<f64>),
+}
+
 struct State<'a> {
-    observer: &'a mut dyn Observer,
+    way: Way<'a>,
     spent: u64,
     failed: u64,
     stage: Stage,
@@ -26,8 +35,23 @@ const DIFFERENCE: f64 = 1e-5;
 impl<'a> Standard<'a> {
     pub(crate) fn new(source: &'a Problem, observer: &'a mut dyn Observer) -> Self {
         let log_spread = source.start().spread.iter().map(|&s| ln(s)).sum();
-        let state = State { observer, spent: 0, failed: 0, stage: Stage::Survey };
+        let state = State { way: Way::Observed(observer), spent: 0, failed: 0, stage: Stage::Survey };
         Self { source, log_spread, state: RefCell::new(state) }
+    }
+
+    /// The target of one search among several; what it spends is counted here from zero, and where the line ends for all.
+    pub(crate) fn on_line(source: &'a Problem, line: Line<f64>) -> Self {
+        let state = State { way: Way::Line(line), spent: 0, failed: 0, stage: Stage::Survey };
+        Self { source, log_spread: 0.0, state: RefCell::new(state) }
+    }
+
+    pub(crate) fn problem(&self) -> &'a Problem {
+        self.source
+    }
+
+    /// Whether points are best asked for many at a time.
+    pub(crate) fn in_batches(&self) -> bool {
+        self.source.asks_in_batches()
     }
 
     pub(crate) fn dim(&self) -> usize {
@@ -63,11 +87,15 @@ impl<'a> Standard<'a> {
     pub(crate) fn enter(&self, stage: Stage) {
         let mut state = self.state.borrow_mut();
         state.stage = stage;
-        state.observer.stage(stage);
+        if let Way::Observed(observer) = &mut state.way {
+            observer.stage(stage);
+        }
     }
 
     pub(crate) fn tell(&self, say: impl FnOnce(&mut dyn Observer)) {
-        say(self.state.borrow_mut().observer);
+        if let Way::Observed(observer) = &mut self.state.borrow_mut().way {
+            say(*observer);
+        }
     }
 
     /// The points in the proposal's coordinates.
@@ -237,17 +265,30 @@ impl<'a> Standard<'a> {
     }
 
     fn ask(&self, z: &Points, gradient: bool, cost: u64) -> Result<Answers, TuneError> {
-        let mut state = self.state.borrow_mut();
-        if state.observer.interrupted() {
+        let state = &mut *self.state.borrow_mut();
+        let observer = match &mut state.way {
+            Way::Observed(observer) => observer,
+            Way::Line(line) => {
+                let log_density = line.ask(z)?;
+                state.spent += cost;
+                return Ok(Answers {
+                    log_density,
+                    gradients: Points::new(z.dim()),
+                    value: Vec::new(),
+                    hit: Vec::new(),
+                });
+            }
+        };
+        if observer.interrupted() {
             return Err(TuneError::Interrupted { evaluations: state.spent });
         }
         let x = self.coordinates(z);
         let batch = Batch { stage: state.stage, first: state.spent, points: &x, gradient };
-        let mut answers = match state.observer.recorded(&batch) {
+        let mut answers = match observer.recorded(&batch) {
             Some(answers) => answers,
             None => {
                 let answers = self.evaluate(&x, gradient)?;
-                state.observer.evaluated(&batch, &answers).map_err(TuneError::Observer)?;
+                observer.evaluated(&batch, &answers).map_err(TuneError::Observer)?;
                 answers
             }
         };

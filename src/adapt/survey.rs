@@ -19,7 +19,7 @@ pub(crate) struct Found {
 }
 
 /// Radii of the starts, in turn: 2 for modes outside the start, 1/2 and 1/4 for thin basins inside a wide one.
-const RADII: [f64; 5] = [1.0, 2.0, 0.5, 1.0, 0.25];
+pub(crate) const RADII: [f64; 5] = [1.0, 2.0, 0.5, 1.0, 0.25];
 /// Climbs that are enough for a basin share of 5 %, and the most that are made (1 %).
 const ENOUGH: u32 = 60;
 const MOST: u32 = 300;
@@ -39,14 +39,8 @@ pub(crate) struct Limits {
     pub(crate) first_mode: u64,
 }
 
-/// Climbs until every mode repeats itself or the limits are reached.
-pub(crate) fn survey(target: &Standard, seed: u64, limits: Limits) -> Result<Found, TuneError> {
-    let mut found = Found::default();
-    look_on(target, seed, limits, &mut found)?;
-    Ok(found)
-}
-
-/// Goes on with a survey: the climbs go on where they ended, from starts of their own.
+/// Climbs until every mode repeats itself or the limits are reached. After a survey the climbs go on where they ended, from starts
+/// of their own.
 pub(crate) fn look_on(target: &Standard, seed: u64, limits: Limits, found: &mut Found) -> Result<(), TuneError> {
     let d = target.dim();
     let identity = identity(d);

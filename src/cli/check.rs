@@ -1,5 +1,6 @@
 //! `evenpoise check`: the problem as it was understood, trial evaluations, and what looks wrong.
 
+use super::check_model;
 use super::check_report;
 use super::ending::Ending;
 use super::output;
@@ -24,7 +25,8 @@ pub(crate) struct Args {
 pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let problem = problem_file::read(&args.problem, TuningKeys::clone)?;
     output::say(&check_report::understood(&problem))?;
-    let points = start_points(&problem, TRIALS, problem.tuning().seed.unwrap_or(TuningKeys::SEED));
+    let Some(trials) = check_model::tried_before(&problem, TRIALS)? else { return Ok(Ending::Done) };
+    let points = start_points(&problem, trials, problem.tuning().seed.unwrap_or(TuningKeys::SEED));
     let began = Instant::now();
     let answers = problem.evaluate(&points)?;
     let took = began.elapsed();
@@ -32,5 +34,6 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
     let found = findings(&problem, &trial)?;
     output::say(&check_report::tried(&problem, &trial, took))?;
     output::say(&check_report::found(&found))?;
+    check_model::measured(&problem)?;
     Ok(Ending::Done)
 }

@@ -15,6 +15,8 @@ pub(crate) enum Ending {
     Unfit,
     /// Stopped by a signal of that number; everything is saved.
     Interrupted(u8),
+    /// The model's answers come from elsewhere, later.
+    Waiting,
     /// Failed.
     Failed(anyhow::Error),
 }
@@ -30,6 +32,8 @@ const FAILED: u8 = 1;
 const MISUSED: u8 = 2;
 /// Exit status of an unfit verdict.
 const UNFIT: u8 = 3;
+/// Exit status of a run that waits for answers.
+const WAITING: u8 = 4;
 /// A process that a signal ends has this much more than the signal's number.
 const SIGNALLED: u8 = 128;
 
@@ -48,6 +52,7 @@ pub(crate) fn status(ending: Ending) -> ExitCode {
     match ending {
         Ending::Done => ExitCode::SUCCESS,
         Ending::Unfit => ExitCode::from(UNFIT),
+        Ending::Waiting => ExitCode::from(WAITING),
         Ending::Interrupted(signal) => ExitCode::from(SIGNALLED + signal),
         Ending::Failed(error) => {
             let status = if error.is::<Misuse>() { MISUSED } else { FAILED };

@@ -6,6 +6,7 @@ use super::estimate_files;
 use super::estimate_files::Place;
 use super::estimate_files::Wanted;
 use super::estimate_report;
+use super::model_desk::ModelDesk;
 use super::options;
 use super::output;
 use super::producing::Producer;
@@ -15,6 +16,7 @@ use super::signals::Signals;
 use super::source;
 use super::source::Source;
 use anyhow::Context;
+use evenpoise::problem::ModelMeans;
 use evenpoise::production::Job;
 use evenpoise::production::MOST_DRAWS;
 use evenpoise::production::Outcome;
@@ -100,6 +102,11 @@ fn estimate(args: &Args, source: &Source) -> anyhow::Result<Ending> {
     if args.draws.is_some_and(|draws| draws > MOST_DRAWS) {
         return Err(Misuse(format!("at most {MOST_DRAWS} draws have streams of their own; use several stages")).into());
     }
+    if args.time.is_some() && source.problem.model_means() == Some(&ModelMeans::Exchange) {
+        let advice = "the model's answers come in files from elsewhere, whenever they do: --time has no meaning here; \
+                      give --draws or --relative-error";
+        return Err(Misuse(advice.to_owned()).into());
+    }
     let wanted = Wanted { seed: args.seed, stage: args.stage, draws: args.draws, quantiles: &args.quantiles };
     let job = estimate_files::job(source, &wanted)?;
     let signals = Signals::listen().context("listening for signals")?;
@@ -108,15 +115,17 @@ fn estimate(args: &Args, source: &Source) -> anyhow::Result<Ending> {
     let log = place.work.join("log.txt");
     let mut screen = Screen::new(&log).with_context(|| format!("cannot write {}", log.display()))?;
     screen.keep(&estimate_report::opening(&state, args.resume));
+    let desk = ModelDesk::open(&source.problem, &place.work, estimate_files::UNFINISHED, &signals)?;
     let mut producer = Producer::new(source, screen, signals, place.state(), state);
+    producer.desk = desk;
     producer.time = args.time;
     if let Some(stop) = pilot(args, source, &mut producer)? {
-        return interrupted(args, stop, producer);
+        return Ok(stopped(args, stop, producer));
     }
     producer.kept = kept(args, source, &producer.state)?;
     let draws = producer.state.parts.job.draws;
     match producer.work(shard.part(draws.unwrap_or(MOST_DRAWS)))? {
-        Stop::Signal(signal) => interrupted(args, signal, producer),
+        stop @ (Stop::Signal(_) | Stop::Waiting(_)) => Ok(stopped(args, stop, producer)),
         Stop::End | Stop::Time => finish(args, place, producer),
     }
 }
@@ -175,13 +184,13 @@ fn changed(place: &Place, parts: &EstimateParts, job: &Job, shard: Shard) -> Sto
     StoreError::Changed { path: place.state(), what: what.to_owned(), before, now }
 }
 
-/// Runs the pilot, where one is asked for, and fixes the number of draws. Gives the signal that stopped it.
-fn pilot(args: &Args, source: &Source, producer: &mut Producer) -> anyhow::Result<Option<u8>> {
+/// Runs the pilot, where one is asked for, and fixes the number of draws. Gives what stopped it.
+fn pilot(args: &Args, source: &Source, producer: &mut Producer) -> anyhow::Result<Option<Stop>> {
     let Some(relative_error) = args.relative_error.filter(|_| producer.state.in_pilot) else { return Ok(None) };
     let mut until = PILOT_DRAWS;
     loop {
         match producer.work(0..until)? {
-            Stop::Signal(signal) => return Ok(Some(signal)),
+            stop @ (Stop::Signal(_) | Stop::Waiting(_)) => return Ok(Some(stop)),
             Stop::Time => anyhow::bail!("the time was over before the pilot had fixed a number of draws; give it more"),
             Stop::End => {}
         }
@@ -222,10 +231,20 @@ fn kept(args: &Args, source: &Source, state: &EstimateState) -> anyhow::Result<O
     Ok(Some(PointsFile::begin(path, &kept_names(&source.problem), rows)?))
 }
 
-fn interrupted(args: &Args, signal: u8, mut producer: Producer) -> anyhow::Result<Ending> {
+/// Says how to go on with what was stopped before its end.
+fn stopped(args: &Args, stop: Stop, mut producer: Producer) -> Ending {
     let draws = producer.state.parts.sums.draws;
-    producer.screen.keep(&estimate_report::interrupted(draws, &args.again()));
-    Ok(Ending::Interrupted(signal))
+    match stop {
+        Stop::Waiting(text) => {
+            producer.screen.keep(&format!("{text}\nThen go on with\n  {}", args.again()));
+            Ending::Waiting
+        }
+        Stop::Signal(signal) => {
+            producer.screen.keep(&estimate_report::interrupted(draws, &args.again()));
+            Ending::Interrupted(signal)
+        }
+        Stop::End | Stop::Time => Ending::Done,
+    }
 }
 
 impl Args {

@@ -30,6 +30,11 @@ use std::path::PathBuf;
 /// Estimates up to which bands of columns are counted without being asked for: each takes some 130 kB.
 const MOST_BANDED: usize = 500;
 
+/// In the folder of a run: answers of a model that no sums hold yet.
+pub(crate) const UNFINISHED: &str = "unfinished";
+/// Questions to a model that is run elsewhere, and its answers.
+const EXCHANGED: [&str; 2] = ["asked", "answered"];
+
 /// Where a run writes.
 #[derive(Debug)]
 pub(crate) struct Place {
@@ -52,8 +57,11 @@ impl Place {
         fs::create_dir_all(&work).with_context(|| format!("cannot create the folder {}", work.display()))?;
         let lock = Lock::take(&work)?;
         let place = Self { result, work, lock };
-        if force || (resume && place.state().is_file()) {
+        if resume && place.state().is_file() {
             return Ok(place);
+        }
+        if force {
+            return place.emptied();
         }
         if place.result.is_file() {
             let how = if resume { "is finished" } else { "is there already" };
@@ -65,11 +73,23 @@ impl Place {
                 place.work.display()
             );
         }
-        Ok(place)
+        place.emptied()
     }
 
     pub(crate) fn state(&self) -> PathBuf {
         self.work.join("state.json")
+    }
+
+    /// Removes what a model was asked and answered: another estimate asks anew.
+    fn emptied(self) -> anyhow::Result<Self> {
+        let unfinished = self.work.join(UNFINISHED);
+        let exchanged = EXCHANGED.map(|name| self.work.join(name)).into_iter().filter(|path| path.is_dir());
+        let removed = |path: PathBuf| {
+            let done = if path.is_dir() { fs::remove_dir_all(&path) } else { fs::remove_file(&path) };
+            done.with_context(|| format!("cannot remove {}", path.display()))
+        };
+        exchanged.chain(unfinished.is_file().then_some(unfinished)).try_for_each(removed)?;
+        Ok(self)
     }
 
     /// The state has done its work. What a shard leaves is its one file.

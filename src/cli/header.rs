@@ -22,6 +22,7 @@ pub(crate) fn facts(problem: &Problem) -> JournalHeader {
             .filter(|(key, _)| *key != "threads")
             .map(|(key, value)| (format!("the setting {key}"), value)),
     );
+    facts.extend(problem.model_digests().iter().cloned());
     facts.insert("the statement of the problem".to_owned(), problem.digest());
     facts.insert("the program".to_owned(), PROGRAM.to_owned());
     JournalHeader { facts }
@@ -38,12 +39,16 @@ pub(crate) fn budgets(header: &JournalHeader) -> Vec<u64> {
 pub(crate) fn provenance(problem: &Problem, seed: u64) -> Provenance {
     let mut digests: BTreeMap<String, String> = data(problem).collect();
     digests.insert("problem".to_owned(), problem.digest());
+    digests.extend(problem.model_digests().iter().cloned());
     Provenance { seed, versions: [("program".to_owned(), PROGRAM.to_owned())].into(), digests }
 }
 
 /// What a proposal says of its making.
-pub(crate) fn made_by(provenance: &Provenance, evaluations: u64) -> MadeBy {
-    MadeBy { program: PROGRAM.to_owned(), digests: provenance.digests.clone(), seed: provenance.seed, evaluations }
+pub(crate) fn made_by(problem: &Problem, provenance: &Provenance, evaluations: u64) -> MadeBy {
+    // By what means a model was asked leaves no trace in the proposal: the same model gives the same bytes.
+    let mut digests = provenance.digests.clone();
+    problem.model_digests().iter().for_each(|(what, _)| drop(digests.remove(what)));
+    MadeBy { program: PROGRAM.to_owned(), digests, seed: provenance.seed, evaluations }
 }
 
 /// What the report says of a run.

@@ -4,6 +4,7 @@
 //! library, and write.
 
 mod check;
+mod check_model;
 mod check_report;
 mod density;
 mod draw;
@@ -14,6 +15,7 @@ mod estimate_report;
 mod figures;
 mod header;
 mod layout;
+mod model_desk;
 mod numbers;
 mod options;
 mod output;

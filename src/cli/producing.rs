@@ -1,12 +1,18 @@
 //! Production at work: steps as long as they are pleasant, state saved every few seconds, progress shown.
 
 use super::estimate_report;
+use super::model_desk::ModelDesk;
 use super::screen::Screen;
 use super::signals::Signals;
 use super::source::Source;
+use evenpoise::model::ModelError;
+use evenpoise::problem::EvaluateError;
+use evenpoise::problem::ModelMeans;
+use evenpoise::problem::Problem;
 use evenpoise::production::Job;
 use evenpoise::production::Outcome;
 use evenpoise::production::Production;
+use evenpoise::production::ProductionError;
 use evenpoise::production::Sums;
 use evenpoise::production::course_point;
 use evenpoise::production::course_stop;
@@ -25,6 +31,8 @@ const STEP: Duration = Duration::from_millis(250);
 /// Draws of the first step, and of the longest.
 const FIRST_STEP: u64 = 16;
 const LONGEST_STEP: u64 = 1 << 16;
+/// Draws of a step for each worker of a program, at least: all are busy for most of it.
+const WORKER_DRAWS: u64 = 4;
 /// The state is saved at least this often; more often in the first seconds.
 const SAVE_EVERY: Duration = Duration::from_secs(5);
 const FIRST_SAVE: Duration = Duration::from_millis(100);
@@ -32,7 +40,7 @@ const FIRST_SAVE: Duration = Duration::from_millis(100);
 const SHOW_EVERY: Duration = Duration::from_millis(500);
 
 /// Why the work stopped.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, PartialEq, Eq)]
 pub(crate) enum Stop {
     /// All draws are made.
     End,
@@ -40,6 +48,8 @@ pub(crate) enum Stop {
     Time,
     /// A signal came.
     Signal(u8),
+    /// The model's answers come from elsewhere, as this text says.
+    Waiting(String),
 }
 
 /// Who works, and where it stands.
@@ -50,6 +60,8 @@ pub(crate) struct Producer<'a> {
     pub(crate) state_file: PathBuf,
     pub(crate) state: EstimateState,
     pub(crate) kept: Option<PointsFile>,
+    /// None without a model outside the problem file.
+    pub(crate) desk: Option<ModelDesk>,
     /// Seconds after which to end.
     pub(crate) time: Option<f64>,
     clock: Clock,
@@ -64,6 +76,8 @@ struct Clock {
     save_after: Duration,
     shown: Instant,
     step: u64,
+    /// No step is made shorter.
+    least: u64,
 }
 
 impl<'a> Producer<'a> {
@@ -75,15 +89,17 @@ impl<'a> Producer<'a> {
         state: EstimateState,
     ) -> Self {
         let now = Instant::now();
+        let least = least_step(&source.problem);
         let clock = Clock {
             began: now,
             before: state.seconds,
             saved: now,
             save_after: FIRST_SAVE,
             shown: now,
-            step: FIRST_STEP,
+            step: FIRST_STEP.max(least),
+            least,
         };
-        Self { source, screen, signals, state_file, state, kept: None, time: None, clock }
+        Self { source, screen, signals, state_file, state, kept: None, desk: None, time: None, clock }
     }
 
     /// Makes the draws of `part` that the state does not hold yet.
@@ -92,6 +108,8 @@ impl<'a> Producer<'a> {
         let empty = Sums::new(&job);
         let sums = std::mem::replace(&mut self.state.parts.sums, empty);
         let mut next = part.start + sums.draws;
+        // A file of questions holds as many as it can.
+        let in_files = self.source.problem.model_means() == Some(&ModelMeans::Exchange);
         let mut production = Production::new(&self.source.problem, &self.source.mixture, &job, sums);
         let stop = loop {
             if next >= part.end {
@@ -105,9 +123,16 @@ impl<'a> Producer<'a> {
                 break Stop::Time;
             }
             let began = Instant::now();
-            let noted = part.start + course_stop(next - part.start);
+            let noted = if in_files { part.end } else { part.start + course_stop(next - part.start) };
             let until = (next + self.clock.step).min(part.end).min(noted);
-            let step = production.advance(next..until)?;
+            let step = match production.advance(next..until) {
+                Ok(step) => step,
+                Err(error) => match self.halted(&error) {
+                    Some(stop) => break stop,
+                    None => return Err(self.failed(error, production.sums())),
+                },
+            };
+            self.told();
             if let Some(kept) = &mut self.kept {
                 kept.append(&kept_columns(&self.source.problem, &step))?;
             }
@@ -119,12 +144,18 @@ impl<'a> Producer<'a> {
             self.show(&job, production.sums(), part.end - part.start);
             if self.clock.saved.elapsed() >= self.clock.save_after {
                 self.save(production.sums())?;
+                self.finished()?;
             }
         };
+        self.told();
         self.state.parts.sums = production.sums().clone();
         self.state.parts.sums.settle();
-        if matches!(stop, Stop::Signal(_)) {
-            self.save(production.sums())?;
+        match stop {
+            Stop::Signal(_) | Stop::Waiting(_) => {
+                self.save(production.sums())?;
+                self.desk.as_ref().map_or(Ok(()), ModelDesk::keep)?;
+            }
+            Stop::End | Stop::Time => self.finished()?,
         }
         self.screen.clear();
         Ok(stop)
@@ -146,6 +177,36 @@ impl<'a> Producer<'a> {
         self.clock.saved = Instant::now();
         self.clock.save_after = (2 * self.clock.save_after).min(SAVE_EVERY);
         Ok(())
+    }
+
+    /// What stopped the model in the middle of a step, where that is no failure.
+    fn halted(&self, error: &ProductionError) -> Option<Stop> {
+        let ProductionError::Evaluation(EvaluateError::Model(error)) = error else { return None };
+        match error {
+            ModelError::Interrupted => Some(Stop::Signal(self.signals.came().unwrap_or_default())),
+            ModelError::Waiting { text, .. } => Some(Stop::Waiting(text.clone())),
+            _ => None,
+        }
+    }
+
+    /// Keeps what was made before the model failed: with a mended one the work can go on.
+    fn failed(&mut self, error: ProductionError, sums: &Sums) -> anyhow::Error {
+        self.screen.clear();
+        self.told();
+        let kept = matches!(error, ProductionError::Evaluation(_)) && sums.draws > 0;
+        let saved = if kept { self.save(sums) } else { Ok(()) };
+        saved.err().unwrap_or_else(|| error.into())
+    }
+
+    /// Shows what the model has to say.
+    fn told(&mut self) {
+        let notices = self.desk.as_ref().map(ModelDesk::notices).unwrap_or_default();
+        notices.iter().for_each(|notice| self.screen.keep(notice));
+    }
+
+    /// The sums hold all that the model has answered.
+    fn finished(&self) -> anyhow::Result<()> {
+        Ok(self.desk.as_ref().map_or(Ok(()), ModelDesk::finished)?)
     }
 
     /// Notes a point of the course, once.
@@ -180,9 +241,18 @@ impl Clock {
     /// The next step is longer where this one was short, and shorter where it was long.
     fn paced(&mut self, took: Duration, draws: u64) {
         if took > 2 * STEP {
-            self.step = (draws / 2).max(1);
+            self.step = (draws / 2).max(self.least);
         } else if 2 * took < STEP && draws == self.step {
             self.step = (2 * self.step).min(LONGEST_STEP);
         }
+    }
+}
+
+/// Draws of a step, at least. Where files are answered, a step is a file: it is as long as can be.
+fn least_step(problem: &Problem) -> u64 {
+    match problem.model_means() {
+        Some(ModelMeans::Program(program)) => WORKER_DRAWS * program.workers as u64,
+        Some(ModelMeans::Exchange) => LONGEST_STEP,
+        Some(ModelMeans::Library { .. }) | None => 1,
     }
 }

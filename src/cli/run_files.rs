@@ -42,7 +42,7 @@ pub(crate) enum Form {
 /// Writes everything but the timings and the log, and gives the summary back.
 pub(crate) fn write(folder: &RunFolder, problem: &Problem, tuning: &Tuning, seed: u64) -> anyhow::Result<Summary> {
     let provenance = header::provenance(problem, seed);
-    let made_by = header::made_by(&provenance, tuning.evaluations);
+    let made_by = header::made_by(problem, &provenance, tuning.evaluations);
     let mut proposal = ProposalFile::new(problem, &tuning.chosen, made_by);
     proposal.scores = tuning.score.as_ref().map(ScoresEntry::of);
     proposal.verdict = Some(tuning.verdict.word.to_string());
@@ -67,7 +67,7 @@ pub(crate) fn write_rare(
     seed: u64,
 ) -> anyhow::Result<RareSummary> {
     let provenance = header::provenance(problem, seed);
-    let made_by = header::made_by(&provenance, tuning.evaluations);
+    let made_by = header::made_by(problem, &provenance, tuning.evaluations);
     let facts = header::facts_of_run(
         &provenance,
         tuning.evaluations,

@@ -2,6 +2,7 @@
 
 use super::ending::Ending;
 use super::header;
+use super::model_desk::ModelDesk;
 use super::options;
 use super::options::TuningOptions;
 use super::output;
@@ -22,7 +23,9 @@ use evenpoise::adapt::TuneError;
 use evenpoise::adapt::Tuning;
 use evenpoise::adapt::rare::RareTuning;
 use evenpoise::adapt::rare::tune_rare;
+use evenpoise::model::ModelError;
 use evenpoise::problem::Aim;
+use evenpoise::problem::EvaluateError;
 use evenpoise::problem::Problem;
 use evenpoise::problem::TuningKeys;
 use evenpoise::store::Recorder;
@@ -97,16 +100,22 @@ fn tune(args: &Args, located: &Located, problem: &Problem, resumed: Option<Resum
     };
     watch.screen.clear();
     watch.recorder.sync()?;
-    match (tuned, watch.refused()) {
+    watch.told()?;
+    match (settled(tuned, watch.spent), watch.refused()) {
         (Err(TuneError::Interrupted { evaluations }), _) => {
             let resume = format!("evenpoise tune {} --resume", located.run.display());
             let kept = format!("interrupted after {evaluations} evaluations; all are kept. Go on with\n  {resume}");
             watch.screen.keep(&kept);
             Ok(Ending::Interrupted(signals.came().unwrap_or_default()))
         }
+        (Err(TuneError::Evaluation(EvaluateError::Model(ModelError::Waiting { text, .. }))), _) => {
+            let resume = format!("evenpoise tune {} --resume", located.run.display());
+            watch.screen.keep(&format!("{text}\nThen go on with\n  {resume}"));
+            Ok(Ending::Waiting)
+        }
         (Err(error), _) => {
             // Nothing was evaluated, so nothing is kept that would stand in the way of the next try.
-            if watch.recorder.is_empty() {
+            if watch.recorder.is_empty() && !args.resume {
                 drop(watch);
                 folder.discard()?;
             }
@@ -124,6 +133,16 @@ fn tune(args: &Args, located: &Located, problem: &Problem, resumed: Option<Resum
     }
 }
 
+/// A model that was stopped by a signal is an interruption, in the middle of a batch.
+fn settled(tuned: Result<Tuned, TuneError>, evaluations: u64) -> Result<Tuned, TuneError> {
+    match tuned {
+        Err(TuneError::Evaluation(EvaluateError::Model(ModelError::Interrupted))) => {
+            Err(TuneError::Interrupted { evaluations })
+        }
+        other => other,
+    }
+}
+
 /// What came out, by the kind of aim.
 enum Tuned {
     Density(Box<Tuning>),
@@ -131,13 +150,13 @@ enum Tuned {
 }
 
 /// Takes the folder and its journal.
-fn begin(
+fn begin<'p>(
     args: &Args,
     located: &Located,
-    problem: &Problem,
+    problem: &'p Problem,
     resumed: Option<Resumed>,
     signals: Signals,
-) -> anyhow::Result<(RunFolder, Watch)> {
+) -> anyhow::Result<(RunFolder, Watch<'p>)> {
     let facts = header::facts(problem);
     let (folder, recorder, dropped, raised) = match resumed {
         Some(Resumed { folder, budgets }) => {
@@ -167,8 +186,9 @@ fn begin(
     if args.resume {
         screen.keep(&tune_report::resumed(recorder.found(), dropped.as_deref(), folder.stale_lock()));
     }
-    let about = (problem.aim(), settings.budget);
-    let watch = Watch::new((recorder, screen, signals), folder.join("rounds.csv"), about);
+    let desk = ModelDesk::open(problem, folder.path(), "evaluations/unfinished", &signals)?;
+    let about = (problem, settings.budget);
+    let watch = Watch::new((recorder, screen, signals), folder.join("rounds.csv"), about, desk);
     Ok((folder, watch))
 }
 
@@ -176,7 +196,7 @@ fn begin(
 fn finish(
     args: &Args,
     folder: &RunFolder,
-    mut watch: Watch,
+    mut watch: Watch<'_>,
     closing: &str,
     word: Word,
     summary: &impl Serialize,

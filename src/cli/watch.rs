@@ -1,5 +1,6 @@
 //! The observer of a tuning: journal, signals, clock and screen in one.
 
+use super::model_desk::ModelDesk;
 use super::numbers;
 use super::round_lines;
 use super::screen::Screen;
@@ -14,6 +15,7 @@ use evenpoise::adapt::Survey;
 use evenpoise::adapt::rare::RareRound;
 use evenpoise::adapt::rare::RareSurvey;
 use evenpoise::problem::Aim;
+use evenpoise::problem::Problem;
 use evenpoise::report::write_rare_rounds;
 use evenpoise::report::write_rounds;
 use evenpoise::store::Recorder;
@@ -24,7 +26,10 @@ use std::time::Duration;
 use std::time::Instant;
 
 /// Watches a tuning.
-pub(crate) struct Watch {
+pub(crate) struct Watch<'p> {
+    problem: &'p Problem,
+    /// None without a model outside the problem file.
+    desk: Option<ModelDesk>,
     pub(crate) recorder: Recorder,
     pub(crate) screen: Screen,
     pub(crate) timings: Timings,
@@ -40,6 +45,8 @@ pub(crate) struct Watch {
     /// When the first batch that no journal held was asked for, and evaluations before it.
     working: Option<(Instant, u64)>,
     refused: Option<StoreError>,
+    /// Evaluations so far.
+    pub(crate) spent: u64,
 }
 
 /// Seconds spent, part by part.
@@ -55,26 +62,31 @@ struct StageTime {
     stage: String,
     /// Seconds that the model worked.
     model_seconds: f64,
+    /// Seconds of everything else: fits, choices, files.
+    tool_seconds: f64,
     /// Seconds of the stage in all.
     seconds: f64,
     #[serde(skip)]
     began: Instant,
 }
 
-impl Watch {
+impl<'p> Watch<'p> {
     /// Watches a tuning of that aim and budget; the rounds go to `rounds_file`.
     pub(crate) fn new(
         (recorder, screen, signals): (Recorder, Screen, Signals),
         rounds_file: PathBuf,
-        (aim, budget): (Aim, u64),
+        (problem, budget): (&'p Problem, u64),
+        desk: Option<ModelDesk>,
     ) -> Self {
         Self {
+            problem,
+            desk,
             recorder,
             screen,
             timings: Timings::default(),
             signals,
             rounds_file,
-            aim,
+            aim: problem.aim(),
             rounds: Vec::new(),
             rare_rounds: Vec::new(),
             budget,
@@ -82,6 +94,7 @@ impl Watch {
             asked: Instant::now(),
             working: None,
             refused: None,
+            spent: 0,
         }
     }
 
@@ -90,11 +103,26 @@ impl Watch {
         self.refused.take()
     }
 
+    /// Shows what the model still has to say, and keeps what it answered of a batch that is not whole.
+    pub(crate) fn told(&mut self) -> Result<(), StoreError> {
+        let Some(desk) = &self.desk else { return Ok(()) };
+        desk.notices().iter().for_each(|notice| self.screen.keep(notice));
+        desk.keep()
+    }
+
     /// The line that changes.
     fn show_progress(&mut self, spent: u64) {
         let left = self.seconds_left(spent).map_or(String::new(), |s| format!(", about {} left", numbers::duration(s)));
-        let line =
-            format!("{}: {} of {} evaluations{left}", self.stage, numbers::count(spent), numbers::count(self.budget));
+        let times = match self.desk.as_ref().and(self.timings.apart()) {
+            Some((model, tool)) => format!(", model {}, rest {}", numbers::duration(model), numbers::duration(tool)),
+            None => String::new(),
+        };
+        let line = format!(
+            "{}: {} of {} evaluations{left}{times}",
+            self.stage,
+            numbers::count(spent),
+            numbers::count(self.budget)
+        );
         self.screen.now(&line);
     }
 
@@ -111,6 +139,7 @@ impl Timings {
         self.stages.push(StageTime {
             stage: stage.to_string(),
             model_seconds: 0.0,
+            tool_seconds: 0.0,
             seconds: 0.0,
             began: Instant::now(),
         });
@@ -122,18 +151,30 @@ impl Timings {
         }
     }
 
+    /// Seconds of the model and of everything else, so far.
+    fn apart(&self) -> Option<(f64, f64)> {
+        let model: f64 = self.stages.iter().map(|stage| stage.model_seconds).sum();
+        self.stages.first().map(|first| (model, first.began.elapsed().as_secs_f64() - model))
+    }
+
     /// The last stage is over.
     pub(crate) fn end(&mut self) {
         if let Some(stage) = self.stages.last_mut() {
             stage.seconds = stage.began.elapsed().as_secs_f64();
+            stage.tool_seconds = stage.seconds - stage.model_seconds;
         }
         self.total_seconds = self.stages.first().map_or(0.0, |stage| stage.began.elapsed().as_secs_f64());
     }
 }
 
-impl Observer for Watch {
+impl Observer for Watch<'_> {
     fn recorded(&mut self, batch: &Batch) -> Option<Answers> {
-        let answers = self.recorder.recorded(batch);
+        let found = self.recorder.recorded_with_model(batch);
+        if let Some((_, Some(values))) = &found {
+            self.problem.remember(batch.points, values);
+        }
+        let answers = found.map(|(answers, _)| answers);
+        self.spent = batch.first;
         self.asked = Instant::now();
         if answers.is_none() && self.working.is_none() {
             self.working = Some((self.asked, batch.first));
@@ -144,7 +185,13 @@ impl Observer for Watch {
     fn evaluated(&mut self, batch: &Batch, answers: &Answers) -> Result<(), BoxError> {
         let worked = self.asked.elapsed();
         self.timings.worked(worked);
-        self.recorder.record(batch, answers, worked)?;
+        let model = self.desk.is_some().then(|| self.problem.model_values(batch.points)).flatten();
+        self.recorder.record_with_model(batch, answers, model.as_ref(), worked)?;
+        if let Some(desk) = &self.desk {
+            desk.finished()?;
+            desk.notices().iter().for_each(|notice| self.screen.keep(notice));
+        }
+        self.spent = batch.first + batch.points.len() as u64;
         self.show_progress(batch.first + batch.points.len() as u64);
         self.refused.take().map_or(Ok(()), |error| Err(error.into()))
     }

@@ -65,6 +65,16 @@ impl Program {
         self.outputs.len()
     }
 
+    /// The same program for points that bring only the first `n` of its inputs; none where an output uses another.
+    #[must_use]
+    pub fn narrowed(mut self, n: usize) -> Option<Self> {
+        if n > self.n_inputs || (n..self.n_inputs).any(|i| self.uses_input(i)) {
+            return None;
+        }
+        self.n_inputs = n;
+        Some(self)
+    }
+
     /// The number of the (first) output called `key`.
     #[must_use]
     pub fn output(&self, key: &str) -> Option<usize> {

@@ -58,10 +58,18 @@ impl Problem {
         let x = self.space.to_natural(points);
         let base = self.space.log_base(points, &x);
         match &self.target {
-            super::Target::Formulas(target) => {
-                let outputs = target.program.values(&x);
-                Ok(self.evaluation_of_formulas(target, base, &outputs))
-            }
+            super::Target::Formulas(target) => match &self.outside {
+                None => {
+                    let outputs = target.program.values(&x);
+                    Ok(self.evaluation_of_formulas(target, base, &outputs))
+                }
+                Some(outside) => {
+                    let known = outside.ask(&x, &inside(&base), false)?;
+                    let outputs = target.program.values(&known.inputs);
+                    let evaluation = self.evaluation_of_formulas(target, base, &outputs);
+                    Ok(self.with_failures(target, evaluation, &outputs, &known.failed))
+                }
+            },
             super::Target::Model(model) => {
                 let inside = inside(&base);
                 let answers = ask(model.as_ref(), &chosen(&x, &inside))?;
@@ -85,11 +93,21 @@ impl Problem {
         let x = self.space.to_natural(points);
         let base = self.space.log_base(points, &x);
         let (evaluation, slopes) = match &self.target {
-            super::Target::Formulas(target) => {
-                let outputs = target.program.values(&x);
-                let (_, slopes) = target.program.value_and_gradient(0, &x);
-                (self.evaluation_of_formulas(target, base, &outputs), slopes)
-            }
+            super::Target::Formulas(target) => match &self.outside {
+                None => {
+                    let outputs = target.program.values(&x);
+                    let (_, slopes) = target.program.value_and_gradient(0, &x);
+                    (self.evaluation_of_formulas(target, base, &outputs), slopes)
+                }
+                Some(outside) => {
+                    let known = outside.ask(&x, &inside(&base), true)?;
+                    let outputs = target.program.values(&known.inputs);
+                    let (_, both) = target.program.value_and_gradient(0, &known.inputs);
+                    let evaluation = self.evaluation_of_formulas(target, base, &outputs);
+                    let slopes = through_the_model(&both, known.slopes.as_ref(), self.dim());
+                    (self.with_failures(target, evaluation, &outputs, &known.failed), slopes)
+                }
+            },
             super::Target::Model(model) => {
                 let inside = inside(&base);
                 let chosen = chosen(&x, &inside);
@@ -119,7 +137,7 @@ impl Problem {
     #[must_use]
     pub fn has_gradient(&self) -> bool {
         match &self.target {
-            super::Target::Formulas(_) => true,
+            super::Target::Formulas(_) => self.outside.as_ref().is_none_or(super::Outside::has_gradient),
             super::Target::Model(model) => model.has_gradient(),
         }
     }
@@ -135,7 +153,14 @@ impl Problem {
     /// [`Problem::estimate_names`]. NaN where an estimate is undefined.
     #[must_use]
     pub fn estimates(&self, points: &Points) -> Vec<Vec<f64>> {
-        self.estimates_at(&self.space.to_natural(points))
+        let x = self.space.to_natural(points);
+        let (super::Estimates::Formulas(program), Some(outside)) = (&self.estimates, &self.outside) else {
+            return self.estimates_at(&x);
+        };
+        let asks = (self.dim()..program.n_inputs()).any(|i| program.uses_input(i));
+        let inside = if asks { inside(&self.space.log_base(points, &x)) } else { Vec::new() };
+        let inputs = outside.recall(&x, &inside).unwrap_or_else(|_| outside.padded(&x));
+        self.estimates_at(&inputs)
     }
 
     /// Whether there are inequalities that must hold.
@@ -151,7 +176,15 @@ impl Problem {
     pub fn fulfils(&self, points: &Points) -> Result<Vec<bool>, EvaluateError> {
         self.check_dimension(points)?;
         let super::Target::Formulas(target) = &self.target else { return Ok(vec![true; points.len()]) };
-        let outputs = target.program.values(&self.space.to_natural(points));
+        let x = self.space.to_natural(points);
+        let outputs = match &self.outside {
+            None => target.program.values(&x),
+            Some(outside) if target.requires().any(|k| self.uses_model(target, k)) => {
+                let inside = inside(&self.space.log_base(points, &x));
+                target.program.values(&outside.recall(&x, &inside)?)
+            }
+            Some(outside) => target.program.values(&outside.padded(&x)),
+        };
         Ok((0..points.len()).map(|i| target.requires().all(|k| outputs[k].get(i, 0) == 1.0)).collect())
     }
 
@@ -170,6 +203,36 @@ impl Problem {
                     .collect()
             }
         }
+    }
+
+    /// Whether output `k` of the target depends on what a model outside the file returns.
+    fn uses_model(&self, target: &FormulaTarget, k: usize) -> bool {
+        (self.dim()..target.program.n_inputs()).any(|i| target.program.output_uses_input(k, i))
+    }
+
+    /// The evaluation with NaN where the model failed, unless the point is known to be outside without it.
+    fn with_failures(
+        &self,
+        target: &FormulaTarget,
+        mut evaluation: Evaluation,
+        outputs: &[Points],
+        failed: &[bool],
+    ) -> Evaluation {
+        let known: Vec<usize> = target.requires().filter(|&k| !self.uses_model(target, k)).collect();
+        for i in (0..failed.len()).filter(|&i| failed[i]) {
+            if known.iter().any(|&k| outputs[k].get(i, 0) != 1.0) {
+                continue;
+            }
+            match self.aim {
+                Aim::Density => evaluation.log_density[i] = f64::NAN,
+                Aim::Expectation => evaluation.value[i] = f64::NAN,
+                Aim::Probability => {
+                    evaluation.value[i] = f64::NAN;
+                    evaluation.hit[i] = false;
+                }
+            }
+        }
+        evaluation
     }
 
     fn check_dimension(&self, points: &Points) -> Result<(), EvaluateError> {
@@ -236,6 +299,21 @@ fn total(base: f64, factor: f64) -> f64 {
     let sum = base + factor;
     // +inf is no density: a division by zero, or an overflow, at a point that the formula should have ruled out.
     if sum.is_nan() || sum == f64::INFINITY { f64::NEG_INFINITY } else { sum }
+}
+
+/// Derivatives with respect to the variables: the direct ones, and those through the one value that the model returns.
+fn through_the_model(both: &Points, model: Option<&Points>, dim: usize) -> Points {
+    let mut slopes = Points::zeros(dim, both.len());
+    for i in 0..both.len() {
+        let outer = both.get(i, dim);
+        for j in 0..dim {
+            let inner = model.map_or(0.0, |model| model.get(i, j));
+            // A target that does not move with the model there does not care for its derivative.
+            let through = if outer == 0.0 { 0.0 } else { outer * inner };
+            slopes.set(i, j, both.get(i, j) + through);
+        }
+    }
+    slopes
 }
 
 /// The points that have any density: a model is not asked about the others.

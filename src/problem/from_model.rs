@@ -58,6 +58,7 @@ impl Problem {
             space,
             start,
             target: Target::Model(model),
+            outside: None,
             estimates: Estimates::None,
             estimate_names: Vec::new(),
             tuning,

@@ -21,8 +21,12 @@ mod faults;
 mod foreign;
 mod from_model;
 mod given;
+mod memo;
 mod names;
 mod natures;
+mod outside;
+mod outside_table;
+mod outside_text;
 mod programs;
 mod read;
 mod slips;
@@ -47,6 +51,7 @@ pub use evaluate::EvaluateError;
 pub use evaluate::Evaluation;
 pub use faults::Fault;
 pub use faults::ProblemErrors;
+pub use outside::ModelMeans;
 pub use read::DataFile;
 pub use start::Start;
 pub use target::Aim;
@@ -66,6 +71,7 @@ use crate::model::Model;
 use crate::numeric::Points;
 
 use columns::DataTable;
+use outside::Outside;
 use programs::FormulaTarget;
 use space::Space;
 use statement::Statement;
@@ -98,6 +104,8 @@ pub struct Problem {
     space: Space,
     start: Start,
     target: Target,
+    /// A model of the problem file that is no formula; the formulas of the target know its values.
+    outside: Option<Outside>,
     estimates: Estimates,
     estimate_names: Vec<String>,
     tuning: TuningKeys,
@@ -215,6 +223,7 @@ impl Problem {
         let Target::Formulas(target) = &self.target else { return Vec::new() };
         let used = |i: usize| {
             target.program.uses_input(i)
+                || self.outside.as_ref().is_some_and(|outside| outside.uses_variable(i))
                 || matches!(&self.estimates, Estimates::Formulas(program) if program.uses_input(i))
                 || self.space.groups.iter().any(|group| group.program.uses_input(i))
         };

@@ -7,6 +7,9 @@ use super::columns::Cells;
 use super::columns::DataTable;
 use super::expand::Expanded;
 use super::faults::Fault;
+use super::names::all_of;
+use super::outside::table_of;
+use super::outside_table::OutsideSpec;
 use super::statement::Stated;
 use super::statement::Statement;
 use super::table::Reader;
@@ -22,6 +25,7 @@ use crate::expression::Scope;
 use crate::expression::Wanted;
 use crate::expression::is_name;
 use crate::expression::is_reserved;
+use crate::expression::nearest;
 
 /// The target of a problem whose target is a formula.
 ///
@@ -56,6 +60,8 @@ pub(crate) struct Programs {
     pub(crate) estimates: Option<Program>,
     /// Names of what each estimate that is a column runs over: labels of members, numbers of rows.
     pub(crate) estimate_labels: Vec<Option<Vec<String>>>,
+    /// What a model outside the file takes, one output a value, and the names of these values.
+    pub(crate) takes: Option<(Program, Vec<String>)>,
 }
 
 /// The formulas among the parameters of a variable.
@@ -85,7 +91,12 @@ pub(crate) fn compile(
     tables: &[DataTable],
 ) -> (Option<Programs>, Vec<ParameterProgram>) {
     let statement = &stated.statement;
+    let taken = statement.outside.as_ref().map(|outside| {
+        check_rows(reader, statement, outside);
+        taken(reader, statement, outside, expanded)
+    });
     let (scope, kinds) = scope(reader, statement, expanded, tables);
+    let take_outputs: Vec<Output<'_>> = taken.iter().flatten().map(Taken::output).collect();
     let target: Vec<Output<'_>> = stated.target.texts.iter().map(target_output).collect();
     let estimates: Vec<Output<'_>> = statement
         .estimates
@@ -97,7 +108,8 @@ pub(crate) fn compile(
         })
         .collect();
     let parameters: Vec<Vec<Output<'_>>> = expanded.iter().map(parameter_outputs).collect();
-    let all: Vec<&Output<'_>> = target.iter().chain(&estimates).chain(parameters.iter().flatten()).collect();
+    let all: Vec<&Output<'_>> =
+        target.iter().chain(&estimates).chain(&take_outputs).chain(parameters.iter().flatten()).collect();
     let errors = scope.compile(&asked(all.iter().copied())).err().unwrap_or_default();
     let texts = texts_by_key(statement, &all);
     for error in &errors {
@@ -106,13 +118,29 @@ pub(crate) fn compile(
     tell_assumed(reader, &texts, tables);
     unused(reader, statement, &scope, &all, &errors);
     let program = |outputs: &[Output<'_>]| scope.compile_alone(&asked(outputs.iter())).ok();
-    let parameters = parameters.iter().map(|outputs| match program(outputs) {
-        _ if outputs.is_empty() => ParameterProgram::Numbers,
-        Some(program) => ParameterProgram::Formulas(Box::new(program)),
-        None => ParameterProgram::Faulty,
+    let n_variables = expanded.last().map_or(0, |variable| variable.places.end);
+    // Neither what a model takes nor a parameter can depend on what the model returns.
+    let mut beforehand = |outputs: &[Output<'_>]| {
+        check_early(reader, &scope, outputs, n_variables);
+        program(outputs)?.narrowed(n_variables)
+    };
+    let takes = taken.as_ref().map(|taken| {
+        let names: Vec<String> = taken.iter().map(|one| one.name.clone()).collect();
+        beforehand(&take_outputs).map(|program| (program, names))
+    });
+    let parameters = parameters.iter().map(|outputs| match outputs.as_slice() {
+        [] => ParameterProgram::Numbers,
+        outputs => match beforehand(outputs) {
+            Some(program) => ParameterProgram::Formulas(Box::new(program)),
+            None => ParameterProgram::Faulty,
+        },
     });
     let parameters = parameters.collect();
     let whole = || {
+        let takes = match takes {
+            Some(takes) => Some(takes?),
+            None => None,
+        };
         let target = program(&target)?;
         let estimates = if estimates.is_empty() { None } else { Some(program(&estimates)?) };
         let labels = |program: &Program, k: usize| {
@@ -124,7 +152,7 @@ pub(crate) fn compile(
         let requirements = statement.target.require.len();
         let first_requirement = if statement.target.aim == Aim::Probability { 2 } else { 1 };
         let target = FormulaTarget { program: target, first_requirement, requirements };
-        Some(Programs { target, estimates, estimate_labels })
+        Some(Programs { target, estimates, estimate_labels, takes })
     };
     let sound = errors.is_empty() && reader.faults.is_empty();
     (if sound { whole() } else { None }, parameters)
@@ -170,6 +198,107 @@ fn tell_assumed(reader: &mut Reader<'_>, texts: &BTreeMap<String, &Text>, tables
                 table.raw.shown,
                 news.join(", ")
             )));
+        }
+    }
+}
+
+/// One value that a model takes.
+struct Taken {
+    name: String,
+    key: String,
+    text: Text,
+}
+
+impl Taken {
+    fn output(&self) -> Output<'_> {
+        Output { key: self.key.clone(), text: &self.text, wanted: Wanted::Number }
+    }
+}
+
+/// What the model takes: the names that it lists, a group standing for its members; or all variables. Names of nothing
+/// are left out.
+fn taken(
+    reader: &mut Reader<'_>,
+    statement: &Statement,
+    outside: &OutsideSpec,
+    expanded: &[Expanded<'_>],
+) -> Vec<Taken> {
+    let all = || expanded.iter().map(|variable| Text::unplaced(&variable.spec.name)).collect();
+    let listed: Vec<Text> = outside.takes.clone().unwrap_or_else(all);
+    let mut known: Vec<&str> = expanded.iter().map(|variable| variable.spec.name.as_str()).collect();
+    known.extend(statement.constants.iter().map(|(name, _, _)| name.as_str()));
+    known.extend(statement.formulas.iter().map(|formula| formula.name.as_str()));
+    let mut taken = Vec::new();
+    for text in listed {
+        let name = text.value.clone();
+        if !known.contains(&name.as_str()) {
+            let near = nearest(&name, known.iter().copied());
+            let help =
+                near.map_or_else(|| format!("there are {}", all_of(&known)), |near| format!("did you mean `{near}`?"));
+            // One that is meant is used; one that is stated wrongly was told.
+            reader.mentions.extend(near.map(str::to_owned));
+            if !reader.may_be_a_column(&name) {
+                let message = format!("`takes` names `{name}`, which is no variable, constant or formula");
+                reader.fault(Fault::new(text.span.clone(), message).help(help));
+            }
+            continue;
+        }
+        let group = expanded.iter().find(|variable| variable.spec.name == name && variable.labels.is_some());
+        let members = group.map(Expanded::names).unwrap_or_default();
+        for (k, (member, _)) in members.iter().enumerate() {
+            let mut text = Text::unplaced(&format!("{name}[{}]", k + 1));
+            text.span = 0..0;
+            taken.push(Taken { name: member.clone(), key: format!("{} takes {member}", outside.table), text });
+        }
+        if members.is_empty() {
+            taken.push(Taken { key: format!("{} takes {name}", outside.table), name, text });
+        }
+    }
+    taken
+}
+
+/// Whether every column that the model returns has rows to run over, as far as data are stated.
+fn check_rows(reader: &mut Reader<'_>, statement: &Statement, outside: &OutsideSpec) {
+    // A plain [data] that cannot be made out was told.
+    if reader.may_be_a_column("") {
+        return;
+    }
+    let stated = &statement.data;
+    let known: Vec<&str> = stated.iter().filter_map(|spec| spec.name.as_deref()).collect();
+    for (column, named) in &outside.returns_rows {
+        let message = match named {
+            Some(name) if !known.contains(&name.value.as_str()) => {
+                format!("there is no data table `{}` for the column `{}` to run over", name.value, column.value)
+            }
+            None if stated.is_empty() => {
+                format!("the column `{}` runs over the rows of data, and there are none", column.value)
+            }
+            None if stated.len() > 1 => {
+                format!("it is not said over which of the data files the column `{}` runs", column.value)
+            }
+            _ => continue,
+        };
+        let span = named.as_ref().map_or(&column.span, |name| &name.span).clone();
+        let help = if known.is_empty() {
+            "name the data file under [data]: file = \"readings.csv\"".to_owned()
+        } else {
+            format!("write returns_rows = {{ {} = \"{}\" }}; the tables are {}", column.value, known[0], all_of(&known))
+        };
+        reader.fault(Fault::new(span, message).help(help));
+    }
+}
+
+/// A fault for every output that depends on more than the first `n_variables` inputs.
+fn check_early(reader: &mut Reader<'_>, scope: &Scope, outputs: &[Output<'_>], n_variables: usize) {
+    if scope.n_inputs() == n_variables {
+        return;
+    }
+    for output in outputs {
+        let alone = scope.compile_alone(&asked(std::iter::once(output))).ok();
+        if alone.is_some_and(|alone| alone.narrowed(n_variables).is_none()) {
+            let message = "this depends on what the model returns, and must be known before it is asked";
+            let fault = Fault::new(output.text.span.clone(), message);
+            reader.fault(fault.help("use variables, constants, and formulas of these alone"));
         }
     }
 }
@@ -297,6 +426,20 @@ fn scope(
         }
         scope.group(name, rows, labels);
         link_columns(&mut scope, name, labels, tables);
+    }
+    if let Some(outside) = &statement.outside {
+        for name in &outside.returns {
+            scope.model_value(&name.value);
+        }
+        for (name, table) in &outside.returns_rows {
+            let at = table_of(table.as_ref().map(|name| name.value.as_str()), tables)
+                .and_then(|table| tables.iter().position(|known| std::ptr::eq(known, table)));
+            // Every table made a kind of rows, in order, before anything else did.
+            match at.and_then(|at| kinds.get(at)) {
+                Some((rows, _)) => drop(scope.model_column(&name.value, *rows)),
+                None => scope.faulty(&name.value),
+            }
+        }
     }
     for formula in &statement.formulas {
         scope.formula(&formula.name, &formula.formula.value);

@@ -24,6 +24,7 @@ use super::names::Piece;
 use super::names::pieces;
 use super::natures;
 use super::natures::Natures;
+use super::outside::Outside;
 use super::programs;
 use super::programs::Programs;
 use super::start;
@@ -157,8 +158,12 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
     if !reader.faults.is_empty() {
         return None;
     }
-    let Programs { target, estimates, estimate_labels } = programs?;
+    let Programs { target, estimates, estimate_labels, takes } = programs?;
     let mut variables: Vec<Variable> = natures.variables.into_iter().collect::<Option<_>>()?;
+    let outside = match (&statement.outside, takes) {
+        (Some(spec), Some(takes)) => Some(Outside::open(reader, spec, folder, takes, &tables)?),
+        _ => None,
+    };
     let aim = statement.target.aim;
     let placed = start::place(&mut variables, &natures.groups, &correlations, aim, choice);
     let (space, start) = match placed {
@@ -179,6 +184,7 @@ fn assemble(reader: &mut Reader<'_>, folder: &Path, change: KeysChange<'_>) -> O
         space,
         start,
         target: Target::Formulas(Box::new(target)),
+        outside,
         estimate_names,
         estimates: estimates.map_or(Estimates::None, |program| Estimates::Formulas(Box::new(program))),
         tuning: statement.tuning.clone(),

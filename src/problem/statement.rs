@@ -11,6 +11,8 @@ use super::data;
 use super::data::DataSpec;
 use super::faults::Fault;
 use super::names::Names;
+use super::outside_table;
+use super::outside_table::OutsideSpec;
 use super::table::Entry;
 use super::table::Reader;
 use super::table::Table;
@@ -44,6 +46,8 @@ pub(crate) struct Statement {
     pub(crate) target: TargetSpec,
     pub(crate) estimates: Vec<NamedFormula>,
     pub(crate) correlations: Vec<CorrelationSpec>,
+    /// A model that is not a formula.
+    pub(crate) outside: Option<OutsideSpec>,
     pub(crate) tuning: TuningKeys,
 }
 
@@ -56,9 +60,20 @@ pub(crate) struct Stated {
     pub(crate) target: TargetTable,
 }
 
-const TABLES: [&str; 9] =
-    ["title", "constants", "variables", "data", "formulas", "target", "estimates", "tuning", "correlation"];
-const MODEL_TABLES: [&str; 3] = ["program", "library", "exchange"];
+const TABLES: [&str; 12] = [
+    "title",
+    "constants",
+    "variables",
+    "data",
+    "formulas",
+    "target",
+    "estimates",
+    "tuning",
+    "correlation",
+    "program",
+    "library",
+    "exchange",
+];
 
 /// Reads the document. Faults go to `reader`, and reading goes on after each: a misspelt table is taken for the one that
 /// is meant.
@@ -74,6 +89,7 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanne
         target: no_target(),
         estimates: Vec::new(),
         correlations: Vec::new(),
+        outside: None,
         tuning: TuningKeys::default(),
     };
     let mut target = TargetTable::default();
@@ -110,6 +126,13 @@ pub(crate) fn read(reader: &mut Reader<'_>, names: &mut Names, document: &Spanne
                     target = target::read(reader, &inside);
                 }
             }
+            "program" | "library" | "exchange" => match &statement.outside {
+                Some(first) => {
+                    outside_table::second(reader, entry, first);
+                    outside_table::leave(reader, &table);
+                }
+                None => statement.outside = Some(outside_table::read(reader, meant, entry, &table)),
+            },
             _ => statement.tuning = tuning::read(reader, &table),
         }
     }
@@ -184,18 +207,6 @@ fn near_table(key: &str) -> Option<&'static str> {
 
 fn check_top(reader: &mut Reader<'_>, file: &Table<'_>) {
     for entry in file.entries.iter().filter(|entry| !TABLES.contains(&entry.key)) {
-        if MODEL_TABLES.contains(&entry.key) {
-            reader.fault(
-                Fault::new(
-                    entry.key_span.clone(),
-                    format!("[{}]: models outside the file are not read by this version", entry.key),
-                )
-                .help("state the target as a formula"),
-            );
-            reader.open.push(String::new());
-            reader.mention(entry.value);
-            continue;
-        }
         match near_table(entry.key) {
             Some(near) => reader.fault(
                 Fault::new(entry.key_span.clone(), format!("`{}` is no key of {}", entry.key, file.name))
@@ -287,6 +298,10 @@ fn give_names(reader: &mut Reader<'_>, names: &mut Names, statement: &Statement)
     given.extend(statement.constants.iter().map(|(name, _, span)| (name.as_str(), "the constant", span)));
     given.extend(statement.variables.iter().map(|spec| (spec.name.as_str(), "the variable", &spec.name_span)));
     given.extend(statement.formulas.iter().map(|f| (f.name.as_str(), "the formula", &f.name_span)));
+    if let Some(outside) = &statement.outside {
+        let returned = outside.returns.iter().chain(outside.returns_rows.iter().map(|(name, _)| name));
+        given.extend(returned.map(|name| (name.value.as_str(), "the model's value", &name.span)));
+    }
     given.sort_by_key(|(_, _, span)| span.start);
     for (name, kind, span) in given {
         names.give_key(reader, name, kind, span);

@@ -8,6 +8,8 @@ use std::path::PathBuf;
 use super::Problem;
 use super::columns::DataTable;
 use super::digest::Digest;
+use super::outside_text;
+use super::outside_text::Showing;
 use super::statement::NamedFormula;
 use super::statement::Statement;
 use super::variable::Nature;
@@ -22,23 +24,24 @@ impl Problem {
     /// The problem as a problem file with every default written out; paths of data as they were given.
     #[must_use]
     pub fn text(&self) -> String {
-        self.written(|table| table.raw.spec.file.value.clone())
+        self.written(|table| table.raw.spec.file.value.clone(), &Showing::Whole { folder: None })
     }
 
     /// [`Problem::text`] with the paths of data relative to `folder`, for a copy that is kept there.
     #[must_use]
     pub fn text_for(&self, folder: &Path) -> String {
-        self.written(|table| relative(&table.raw.path, folder))
+        self.written(|table| relative(&table.raw.path, folder), &Showing::Whole { folder: Some(folder) })
     }
 
     /// 32 hexadecimal digits that stand for the problem and the contents of its data files, wherever these lie.
     ///
     /// Two runs of the 64-bit FNV-1a hash over the text with every default and over the files. The model of a problem
-    /// that was built in code is not part of it.
+    /// that was built in code is not part of it, nor is the way in which a model outside the file is asked (what it takes
+    /// and returns is): the same model gives the same proposal as a program, as a library and by exchange.
     #[must_use]
     pub fn digest(&self) -> String {
         let mut digest = Digest::new();
-        digest.add(self.written(|_| String::new()).as_bytes());
+        digest.add(self.written(|_| String::new(), &Showing::Meaning).as_bytes());
         for table in &self.data {
             digest.add(&table.raw.bytes);
         }
@@ -56,10 +59,14 @@ impl Problem {
         self.data.iter().map(of).collect()
     }
 
-    fn written(&self, path: impl Fn(&DataTable) -> String) -> String {
+    fn written(&self, path: impl Fn(&DataTable) -> String, showing: &Showing<'_>) -> String {
         let mut out = format!("title = {}\n", quoted(&self.title));
         match &self.statement {
-            Some(statement) => write_statement(&mut out, statement, &self.data, path),
+            Some(statement) => {
+                let model = statement.outside.as_ref().zip(self.model_means());
+                let model = model.map(|(spec, means)| outside_text::written(spec, means, showing)).unwrap_or_default();
+                write_statement(&mut out, statement, &self.data, path, &model);
+            }
             None => self.write_built(&mut out),
         }
         out.push('\n');
@@ -106,7 +113,13 @@ impl Problem {
     }
 }
 
-fn write_statement(out: &mut String, statement: &Statement, data: &[DataTable], path: impl Fn(&DataTable) -> String) {
+fn write_statement(
+    out: &mut String,
+    statement: &Statement,
+    data: &[DataTable],
+    path: impl Fn(&DataTable) -> String,
+    model: &str,
+) {
     if !statement.constants.is_empty() {
         out.push_str("\n[constants]\n");
         for (name, value, _) in &statement.constants {
@@ -130,6 +143,7 @@ fn write_statement(out: &mut String, statement: &Statement, data: &[DataTable], 
     for table in data {
         write_data(out, table, &path(table));
     }
+    out.push_str(model);
     write_formulas(out, "formulas", &statement.formulas);
     let target = &statement.target;
     let _ = write!(out, "\n[target]\naim = {}\n", quoted(target.aim.word()));
@@ -243,13 +257,13 @@ fn write_data(out: &mut String, table: &DataTable, path: &str) {
 }
 
 /// A TOML key, in quotes where it needs them.
-fn key(name: &str) -> String {
+pub(crate) fn key(name: &str) -> String {
     let bare = !name.is_empty() && name.chars().all(|c| c.is_ascii_alphanumeric() || c == '_' || c == '-');
     if bare { name.to_owned() } else { quoted(name) }
 }
 
 /// A TOML text in double quotes.
-fn quoted(text: &str) -> String {
+pub(crate) fn quoted(text: &str) -> String {
     let mut out = String::from("\"");
     for character in text.chars() {
         match character {
@@ -269,7 +283,7 @@ fn quoted(text: &str) -> String {
 }
 
 /// `path` as seen from `folder`, with `/` between its parts; unchanged where they share no root.
-fn relative(path: &Path, folder: &Path) -> String {
+pub(crate) fn relative(path: &Path, folder: &Path) -> String {
     let (Some(path), Some(folder)) = (plain(path), plain(folder)) else { return path.display().to_string() };
     let (path_parts, folder_parts): (Vec<_>, Vec<_>) = (path.components().collect(), folder.components().collect());
     let shared = path_parts.iter().zip(&folder_parts).take_while(|(a, b)| a == b).count();

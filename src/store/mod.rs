@@ -3,6 +3,7 @@
 //! * [`write_atomically`], [`write_json`]: a file is there whole, or as it was before;
 //! * [`RunFolder`]: the folder of a run, held by one process at a time;
 //! * [`Journal`], [`Recorder`]: every evaluated point, written and synced before it is used, so that an interrupted run loses nothing;
+//! * [`ExchangeFolder`], [`Unfinished`]: points that somebody else evaluates, and answers of a batch that is not whole yet;
 //! * [`ProposalFile`], [`read_proposal`]: the proposal, checked as it is read;
 //! * [`EstimateParts`], [`EstimateState`]: what a production run says, and where it stands;
 //! * [`Table`], [`TableWriter`]: points as CSV or NumPy files, numbers read back to the same bits.
@@ -13,6 +14,7 @@ mod atomic;
 mod checksum;
 mod error;
 mod estimate;
+mod exchange;
 mod folder;
 mod journal;
 mod json;
@@ -25,10 +27,12 @@ mod proposal_space;
 mod record;
 mod recorder;
 mod table;
+mod unfinished;
 
 pub use atomic::{write_atomically, write_json};
 pub use error::StoreError;
 pub use estimate::{CourseRow, ESTIMATE_FORMAT, EstimateParts, EstimateState, MOST_SHARDS, fingerprint};
+pub use exchange::ExchangeFolder;
 pub use folder::{RUN_ENTRIES, RunFolder};
 pub use journal::{Journal, JournalHeader, Replay};
 pub use lock::Lock;
@@ -41,3 +45,4 @@ pub use proposal_reader::read_proposal;
 pub use record::{JournalBatch, JournalColumn};
 pub use recorder::Recorder;
 pub use table::{Table, TableWriter, decimal};
+pub use unfinished::Unfinished;

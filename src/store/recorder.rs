@@ -24,6 +24,8 @@ use std::time::Duration;
 const SYNC_AFTER: Duration = Duration::from_millis(50);
 /// Name of the gradients among a record's columns.
 const GRADIENT: &str = "gradient";
+/// Name of the values of a model outside the problem file.
+const MODEL: &str = "model";
 /// Columns of the margins or integrands, and of the hits (1 or 0).
 const VALUE: &str = "value";
 const HIT: &str = "hit";
@@ -84,6 +86,11 @@ impl Recorder {
 
     /// The answers to a batch that were recorded before, if the next record is that of this very batch.
     pub fn recorded(&mut self, batch: &Batch) -> Option<Answers> {
+        self.recorded_with_model(batch).map(|(answers, _)| answers)
+    }
+
+    /// [`Recorder::recorded`], and the values of a model that were recorded beside the answers.
+    pub fn recorded_with_model(&mut self, batch: &Batch) -> Option<(Answers, Option<Points>)> {
         let record = self.replay.pop_front()?;
         self.given += 1;
         if !is_of(&record, batch) {
@@ -92,12 +99,14 @@ impl Recorder {
         }
         let column = |name: &str| record.columns.iter().find(|column| column.name == name).map(|c| c.values.clone());
         let numbers = |name: &str| column(name).map(|c| c.coordinate(0)).unwrap_or_default();
-        Some(Answers {
+        let model = column(MODEL);
+        let answers = Answers {
             gradients: column(GRADIENT).unwrap_or_else(|| Points::new(batch.points.dim())),
             value: numbers(VALUE),
             hit: numbers(HIT).iter().map(|&h| h > 0.0).collect(),
             log_density: record.log_density,
-        })
+        };
+        Some((answers, model))
     }
 
     /// Records answers that the model worked `worked` for.
@@ -105,16 +114,32 @@ impl Recorder {
     /// # Errors
     /// [`StoreError::Io`] when the disk refuses; [`StoreError::Diverged`] when the journal held other points.
     pub fn record(&mut self, batch: &Batch, answers: &Answers, worked: Duration) -> Result<(), StoreError> {
+        self.record_with_model(batch, answers, None, worked)
+    }
+
+    /// [`Recorder::record`], with the values of a model beside the answers.
+    ///
+    /// # Errors
+    /// As [`Recorder::record`].
+    pub fn record_with_model(
+        &mut self,
+        batch: &Batch,
+        answers: &Answers,
+        model: Option<&Points>,
+        worked: Duration,
+    ) -> Result<(), StoreError> {
         if self.diverged {
             return Err(StoreError::Diverged { path: self.journal.path().to_path_buf(), record: self.given });
         }
         let (purpose, round) = place(batch.stage);
+        let mut columns = columns_of(batch, answers);
+        columns.extend(model.map(|values| JournalColumn { name: MODEL.to_owned(), values: values.clone() }));
         self.journal.write(&JournalBatch {
             purpose,
             round,
             points: batch.points.clone(),
             log_density: answers.log_density.clone(),
-            columns: columns_of(batch, answers),
+            columns,
         })?;
         self.unsynced += worked;
         if self.unsynced >= SYNC_AFTER { self.sync() } else { Ok(()) }

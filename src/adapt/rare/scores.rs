@@ -2,6 +2,7 @@
 
 use crate::adapt::TuneError;
 use crate::adapt::observer::{Answers, Batch, Observer, Stage};
+use crate::adapt::together::Line;
 use crate::numeric::{Points, ln};
 use crate::problem::{Aim, Failed, Problem};
 use std::cell::RefCell;
@@ -12,8 +13,19 @@ pub(crate) struct Scores<'a> {
     state: RefCell<State<'a>>,
 }
 
+/// Log nominal density, value, and whether it counts.
+pub(crate) type OnePoint = (f64, f64, bool);
+
+/// Who answers.
+enum Way<'a> {
+    /// The problem itself; the observer is told.
+    Observed(&'a mut dyn Observer),
+    /// Whoever evaluates for several searches at once.
+    Line(Line<OnePoint>),
+}
+
 struct State<'a> {
-    observer: &'a mut dyn Observer,
+    way: Way<'a>,
     spent: u64,
     failed: u64,
     stage: Stage,
@@ -28,6 +40,21 @@ pub(crate) struct Answered {
     pub(crate) value: Vec<f64>,
     /// Whether the point counts: inside the event, or an integrand that is not zero.
     pub(crate) hit: Vec<bool>,
+}
+
+impl Answered {
+    /// Answer by answer.
+    pub(crate) fn by_point(&self) -> Vec<OnePoint> {
+        (0..self.value.len()).map(|i| (self.log_nominal[i], self.value[i], self.hit[i])).collect()
+    }
+
+    fn of_points(points: &[OnePoint]) -> Self {
+        Self {
+            log_nominal: points.iter().map(|p| p.0).collect(),
+            value: points.iter().map(|p| p.1).collect(),
+            hit: points.iter().map(|p| p.2).collect(),
+        }
+    }
 }
 
 /// One point looked at by a search.
@@ -50,14 +77,21 @@ const HALVINGS: usize = 30;
 
 impl<'a> Scores<'a> {
     pub(crate) fn new(source: &'a Problem, observer: &'a mut dyn Observer) -> Self {
-        Self { source, state: RefCell::new(State { observer, spent: 0, failed: 0, stage: Stage::Survey }) }
+        let state = State { way: Way::Observed(observer), spent: 0, failed: 0, stage: Stage::Survey };
+        Self { source, state: RefCell::new(state) }
+    }
+
+    /// The target of one search among several; what it spends is counted here from zero, and where the line ends for all.
+    pub(crate) fn on_line(source: &'a Problem, line: Line<OnePoint>) -> Self {
+        let state = State { way: Way::Line(line), spent: 0, failed: 0, stage: Stage::Survey };
+        Self { source, state: RefCell::new(state) }
     }
 
     pub(crate) fn dim(&self) -> usize {
         self.source.dim()
     }
 
-    pub(crate) fn problem(&self) -> &Problem {
+    pub(crate) fn problem(&self) -> &'a Problem {
         self.source
     }
 
@@ -89,23 +123,36 @@ impl<'a> Scores<'a> {
     pub(crate) fn enter(&self, stage: Stage) {
         let mut state = self.state.borrow_mut();
         state.stage = stage;
-        state.observer.stage(stage);
+        if let Way::Observed(observer) = &mut state.way {
+            observer.stage(stage);
+        }
     }
 
     pub(crate) fn tell(&self, say: impl FnOnce(&mut dyn Observer)) {
-        say(self.state.borrow_mut().observer);
+        if let Way::Observed(observer) = &mut self.state.borrow_mut().way {
+            say(*observer);
+        }
     }
 
     /// Answers at `u`.
     pub(crate) fn answers(&self, u: &Points) -> Result<Answered, TuneError> {
+        if let State { way: Way::Line(line), spent, .. } = &mut *self.state.borrow_mut() {
+            let answers = line.ask(u)?;
+            *spent += u.len() as u64;
+            return Ok(Answered::of_points(&answers));
+        }
         Ok(self.answered(self.ask(u, false)?))
     }
 
     /// One point, with its gradient where that costs nothing more.
     pub(crate) fn look(&self, u: &[f64]) -> Result<Look, TuneError> {
         let gradient = self.source.has_gradient();
+        if !gradient {
+            let answered = self.answers(&Points::from_rows(u.len(), u))?;
+            return Ok(Look { at: u.to_vec(), value: answered.value[0], hit: answered.hit[0], gradient: None });
+        }
         let answers = self.ask(&Points::from_rows(u.len(), u), gradient)?;
-        let gradient = gradient.then(|| answers.gradients.point(0));
+        let gradient = Some(answers.gradients.point(0));
         let answered = self.answered(answers);
         Ok(Look { at: u.to_vec(), value: answered.value[0], hit: answered.hit[0], gradient })
     }
@@ -189,12 +236,15 @@ impl<'a> Scores<'a> {
     }
 
     fn ask(&self, u: &Points, gradient: bool) -> Result<Answers, TuneError> {
-        let mut state = self.state.borrow_mut();
-        if state.observer.interrupted() {
+        let state = &mut *self.state.borrow_mut();
+        let Way::Observed(observer) = &mut state.way else {
+            return Err(TuneError::Survey("searches that ask together have no gradients".to_owned()));
+        };
+        if observer.interrupted() {
             return Err(TuneError::Interrupted { evaluations: state.spent });
         }
         let batch = Batch { stage: state.stage, first: state.spent, points: u, gradient };
-        let answers = match state.observer.recorded(&batch) {
+        let answers = match observer.recorded(&batch) {
             Some(answers) => answers,
             None => {
                 let (evaluation, gradients) = if gradient {
@@ -208,7 +258,7 @@ impl<'a> Scores<'a> {
                     value: evaluation.value,
                     hit: evaluation.hit,
                 };
-                state.observer.evaluated(&batch, &answers).map_err(TuneError::Observer)?;
+                observer.evaluated(&batch, &answers).map_err(TuneError::Observer)?;
                 answers
             }
         };

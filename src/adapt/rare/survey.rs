@@ -1,5 +1,7 @@
 //! The survey: wide scouts, then searches from them for every design point or mode in reach.
 
+mod waves;
+
 use super::design_point::{self, Ended};
 use super::directed::Directed;
 use super::mode;
@@ -91,7 +93,11 @@ pub(crate) fn scout_density(k: usize, rest: usize, sd: f64, rest_sd: f64) -> Res
 /// Searches from the scouts, then (in many dimensions) the directions that matter.
 pub(crate) fn explore(target: &Scores, plan: &Plan, scouts: &Scouts) -> Result<Explored, TuneError> {
     let mut search = Searching::new(target, plan, scouts);
-    search.run()?;
+    if target.problem().asks_in_batches() {
+        search.run_together()?;
+    } else {
+        search.run()?;
+    }
     let space = if plan.directions { search.directions()? } else { Subspace::whole(target.dim()) };
     let unexplained = (0..scouts.points.len()).filter(|&i| search.unexplained[i]).collect();
     Ok(Explored { found: search.found, searches: search.searches, space, unexplained })
