@@ -92,13 +92,17 @@ fn read<'a>(key: &'a str, text: &'a str) -> (Text<'a>, Vec<Fault>) {
     (Text { key, text, syntax: parsed.syntax, words: parsed.words }, parsed.faults)
 }
 
-/// An event knows no equality: `=` is then no slip for `==`.
+/// An event knows no equality: `=` is then no slip for `==`, and what is told of it says so.
 fn forget_equal_signs(faults: &[Fault], key: &str, errors: &mut Vec<FormulaError>) {
     let equalities: Vec<&Fault> = faults.iter().filter(|fault| fault.message.contains("equality")).collect();
+    let is_sign = |error: &FormulaError| error.key == key && error.message.starts_with("`=`");
     errors.retain(|error| {
         let inside = |fault: &&Fault| fault.span.start <= error.span.start && error.span.end <= fault.span.end;
-        error.key != key || !error.message.starts_with("`=`") || !equalities.iter().any(inside)
+        !is_sign(error) || !equalities.iter().any(inside)
     });
+    for error in errors.iter_mut().filter(|error| is_sign(error)) {
+        error.help = Some("an event is made of inequalities: write >= or <=".to_owned());
+    }
 }
 
 fn take_faults(lowering: &mut Lowering<'_>, key: &str, errors: &mut Vec<FormulaError>) {

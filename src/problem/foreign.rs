@@ -71,8 +71,24 @@ pub(crate) fn meant_family(word: &str) -> Option<&'static str> {
     exact.or(foreign).or_else(|| nearest(word, Distribution::NAMES.iter().copied()))
 }
 
+/// What the parameters of the lognormal distribution are called elsewhere: those of the logarithm.
+pub(crate) const OF_LOGARITHM: [(&str, &str); 12] = [
+    ("mu", "log_mean"),
+    ("m", "log_mean"),
+    ("meanlog", "log_mean"),
+    ("mean_log", "log_mean"),
+    ("mulog", "log_mean"),
+    ("mu_log", "log_mean"),
+    ("sigma", "log_sd"),
+    ("s", "log_sd"),
+    ("sdlog", "log_sd"),
+    ("sd_log", "log_sd"),
+    ("sigmalog", "log_sd"),
+    ("sigma_log", "log_sd"),
+];
+
 /// What parameters are called elsewhere.
-pub(crate) const SYNONYMS: [(&str, &str); 31] = [
+pub(crate) const SYNONYMS: [(&str, &str); 35] = [
     ("cov", "cv"),
     ("sigma", "sd"),
     ("stdev", "sd"),
@@ -83,6 +99,10 @@ pub(crate) const SYNONYMS: [(&str, &str); 31] = [
     ("sigma", "log_sd"),
     ("sdlog", "log_sd"),
     ("mu", "mean"),
+    ("m", "mean"),
+    ("average", "mean"),
+    ("s", "sd"),
+    ("std_dev", "sd"),
     ("loc", "location"),
     ("mu", "location"),
     ("mean", "location"),
