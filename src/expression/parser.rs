@@ -464,7 +464,9 @@ impl Parser<'_> {
             loop {
                 let is_switch = self.argument_name(name, &mut named);
                 let argument = self.argument()?;
-                if !is_switch {
+                if is_switch {
+                    self.nodes[argument].0 = Node::Broken;
+                } else {
                     arguments.push(argument);
                 }
                 if !self.is_sign(",") {
@@ -520,9 +522,8 @@ impl Parser<'_> {
             matches!(node, Node::Broken | Node::Infix(Infix::Equal | Infix::Differ, ..))
         };
         let inside = |fault: &Fault| fault.span.start > name_span.start && fault.span.end <= end;
-        let sound = self.faults.len() == faults
-            && !self.faults.iter().any(inside)
-            && !self.nodes[nodes..].iter().any(doubtful);
+        let sound =
+            self.faults.len() == faults && !self.faults.iter().any(inside) && !self.nodes[nodes..].iter().any(doubtful);
         let parts: Vec<String> = arguments
             .iter()
             .map(|&place| {

@@ -178,7 +178,8 @@ mod tests {
                  [target]\naim = \"density\"\nlog_factor = \"-sin({argument})^2\"\n"
             )
         };
-        for (mean, argument, want) in [(30.0, "slope", 1), (30.0, "-slope", 1), (30.0, "4*slope", 0), (1.0, "slope", 0)] {
+        for (mean, argument, want) in [(30.0, "slope", 1), (30.0, "-slope", 1), (30.0, "4*slope", 0), (1.0, "slope", 0)]
+        {
             let problem = Problem::parse(&text(mean, argument), "pipe.toml", Path::new(".")).unwrap();
             let natural = problem.to_natural(&Points::from_rows(1, &problem.start().near));
             let found = problem.degrees(&natural);

@@ -474,6 +474,24 @@ mod tests {
         }
     }
 
+    /// The interval is that of the kind given: just inside its ends a matrix can be had, just outside it cannot.
+    #[test]
+    fn what_the_others_allow_is_told_in_the_kind_that_was_given() {
+        let gumbel =
+            |name: &str| Variable::random(name, Distribution::new("gumbel", &[("mean", 2.0), ("sd", 0.5)]).unwrap());
+        let variables: Vec<Variable> = ["a", "b", "c"].map(gumbel).to_vec();
+        for kind in [CorrelationKind::Linear, CorrelationKind::Rank, CorrelationKind::Score] {
+            let of = |first: f64| {
+                let matrix = [1.0, first, 0.9, first, 1.0, -0.8, 0.9, -0.8, 1.0];
+                of_matrix(&variables, vec![0, 1, 2], kind, &matrix)
+            };
+            let Err(CorrelationError::NotPositiveDefinite { pair: Some(pair), .. }) = of(0.9) else { panic!() };
+            assert_eq!((pair.kind, pair.value.clamp(0.9 - 1e-6, 0.9 + 1e-6)), (kind, pair.value));
+            assert!(of(pair.high - 1e-4).is_ok() && of(pair.low + 1e-4).is_ok(), "{pair:?}");
+            assert!(of(pair.high + 1e-4).is_err(), "{pair:?}");
+        }
+    }
+
     #[test]
     fn the_order_of_the_names_does_not_matter() {
         let variables: Vec<Variable> = ["a", "b", "c"].map(normal).to_vec();

@@ -213,11 +213,23 @@ impl Line<'_> {
                 Err(Slip::new(at..at + sign.len(), message, format!("write {key} = ...")).write(written))
             }
             None => {
-                let help = format!("write {key} = and its value");
+                let help = match (key.parse::<f64>(), self.parameters()) {
+                    (Ok(_), Some(names)) => format!("each parameter has its name: {names}"),
+                    _ => format!("write {key} = and its value"),
+                };
                 let slip = Slip::new(span, format!("`{key}` has no value"), help);
                 Err(Slip { mute: true, ..slip.edit(at..at, " = \"\"") })
             }
         }
+    }
+
+    /// The parameters of the distribution that the line names, as one writes them.
+    fn parameters(&self) -> Option<String> {
+        let (_, rest) = self.line.split_once("distribution")?;
+        let family = meant_family(rest.split(['"', '\'']).nth(1)?)?;
+        let set = Distribution::parameters_of(family)?.first()?;
+        let each: Vec<String> = set.required.iter().map(|key| format!("{key} = ...")).collect();
+        Some(each.join(", "))
     }
 
     fn sign(&self, at: usize) -> Option<&'static str> {
@@ -518,7 +530,10 @@ impl Line<'_> {
             return Slip::new(span, format!("`{text}` is no number"), help).write(number);
         }
         if let Some((number, rest)) = number_and_rest(text) {
-            let help = format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\"");
+            let help = match self.table {
+                "constants" => format!("write {number} alone; the unit may follow as a remark: {number} # {rest}"),
+                _ => format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\""),
+            };
             return Slip::new(span, format!("`{text}` is more than a number"), help).write(number);
         }
         if let Some(table) = called_family(text).filter(|_| self.table == "variables" && inside == Inside::Line) {
@@ -662,4 +677,26 @@ fn worked_out(text: &str) -> Option<f64> {
     let program = Scope::new().compile(&[("value", text, Wanted::Number)]).ok()?;
     let value = program.values(&Points::zeros(0, 1)).first()?.get(0, 0);
     value.is_finite().then_some(value)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn groups_of_thousands_are_told_from_decimal_commas() {
+        for (text, want) in [
+            ("1,250.0", Some("1250.0")),
+            ("-1,250,000", Some("-1250000")),
+            ("1.250,00", Some("1250.00")),
+            ("12.500.000", Some("12500000")),
+            ("1,250", None),
+            ("1.250", None),
+            ("0,250.0", None),
+            ("1,25,000", None),
+            ("1,2.5", None),
+        ] {
+            assert_eq!(ungrouped(text).as_deref(), want, "{text}");
+        }
+    }
 }

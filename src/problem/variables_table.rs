@@ -318,6 +318,11 @@ fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) ->
             }
         };
         let Some(key) = key else { continue };
+        // What a list is to a distribution that nobody knows cannot be told.
+        if family.is_none() && matches!(other.value, DeValue::Array(_)) {
+            reader.mention(other.value);
+            continue;
+        }
         match parameter(reader, other, key) {
             Some(parameter) => parameters.push(parameter),
             None => whole = false,
