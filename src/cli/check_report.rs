@@ -19,6 +19,7 @@ use evenpoise::problem::Correlation;
 use evenpoise::problem::Nature;
 use evenpoise::problem::Problem;
 use evenpoise::problem::Variable;
+use evenpoise::problem::Written;
 use evenpoise::report::trial::Finding;
 use evenpoise::report::trial::Trial;
 use std::time::Duration;
@@ -51,7 +52,7 @@ fn variables(problem: &Problem) -> String {
     let title = if d == 1 { "One variable".to_owned() } else { format!("{d} variables") };
     let mut out = heading(&title);
     for (j, variable) in problem.variables().iter().enumerate().take(MOST) {
-        out.push_str(&hanging(&format!("  {:<16}  ", cut(&variable.name, 16)), &nature(variable)));
+        out.push_str(&hanging(&format!("  {:<16}  ", cut(&variable.name, 16)), &nature(problem, j)));
         out.push_str(&hanging(&" ".repeat(20), &start(problem, j)));
     }
     if d > MOST {
@@ -77,7 +78,8 @@ fn start(problem: &Problem, j: usize) -> String {
     format!("{unit}coordinate {}; start {near} (95 % from {low} to {high}{given})", variable.coordinate.word())
 }
 
-fn nature(variable: &Variable) -> String {
+fn nature(problem: &Problem, j: usize) -> String {
+    let variable = &problem.variables()[j];
     match &variable.nature {
         Nature::Range { low, high } => format!("flat on {}", interval(*low, *high)),
         Nature::Random(distribution) => {
@@ -93,13 +95,31 @@ fn nature(variable: &Variable) -> String {
                 format!(", shifted by {}", trimmed(distribution.shift(), 4))
             };
             let kind = if distribution.is_discrete() { ", whole numbers" } else { "" };
-            format!("{}: {}{shift}; on {}{kind}", distribution.family(), parameters.join(", "), interval(low, high))
+            let own: Vec<&str> = distribution.parameters().iter().map(|(name, _)| *name).collect();
+            let parameters = match as_written(problem, j, &own) {
+                Some(written) => format!("{written} (that is {})", parameters.join(", ")),
+                None => parameters.join(", "),
+            };
+            format!("{}: {parameters}{shift}; on {}{kind}", distribution.family(), interval(low, high))
         }
         Nature::Dependent { family, parameters } => {
             let parameters: Vec<String> = parameters.iter().map(|(name, text)| format!("{name} = {text}")).collect();
             format!("{family} given other variables: {}", parameters.join(", "))
         }
     }
+}
+
+/// The parameters of a distribution as the file gives them, where they are others than its `own`.
+fn as_written(problem: &Problem, j: usize, own: &[&str]) -> Option<String> {
+    let written = problem.written_parameters(j);
+    if written.iter().all(|(name, value)| own.contains(&name.as_str()) && matches!(value, Written::Number(_))) {
+        return None;
+    }
+    let each = written.iter().map(|(name, value)| match value {
+        Written::Number(value) => format!("{name} {}", trimmed(*value, 4)),
+        Written::Formula(text) => format!("{name} = {text}"),
+    });
+    Some(each.collect::<Vec<_>>().join(", "))
 }
 
 fn interval(low: f64, high: f64) -> String {

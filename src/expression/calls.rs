@@ -118,6 +118,12 @@ impl Lowering<'_> {
             let one_number = reduces.iter().any(|begin| help.starts_with(begin));
             return Some(if one_number { Body::Reduce(Reduce::Sum) } else { Body::Unary(Unary::Abs) });
         }
+        if ["P", "Pr", "Prob", "prob", "probability", "E", "expectation"].contains(&name) {
+            let what = if name.starts_with('E') || name == "expectation" { "mean" } else { "probability" };
+            let help = format!("leave it out: the aim says that a {what} is asked, the formula says of what");
+            self.faults.push(fault.help(help));
+            return None;
+        }
         // The nearest name by its letters would be another function, and a wrong model without a word.
         let density = ["pdf", "pmf", "density", "mass", "logp", "likelihood"].iter().any(|part| name.contains(part));
         let like = density.then(|| density_like(name)).flatten();

@@ -58,6 +58,7 @@ pub(super) fn compile(
             take_faults(&mut lowering, text.key, &mut errors);
         }
     }
+    forget_units(&mut errors);
     if !errors.is_empty() {
         return Err(in_order_of_texts(errors, scope, outputs));
     }
@@ -92,12 +93,32 @@ fn read<'a>(key: &'a str, text: &'a str) -> (Text<'a>, Vec<Fault>) {
     (Text { key, text, syntax: parsed.syntax, words: parsed.words }, parsed.faults)
 }
 
-/// An event knows no equality: `=` is then no slip for `==`.
+/// An event knows no equality: `=` is then no slip for `==`, and what is told of it says so.
 fn forget_equal_signs(faults: &[Fault], key: &str, errors: &mut Vec<FormulaError>) {
     let equalities: Vec<&Fault> = faults.iter().filter(|fault| fault.message.contains("equality")).collect();
+    // `NOT(...)`: small letters do not help where there is no `not` at all.
+    let unknown: Vec<&Fault> = faults.iter().filter(|fault| fault.message.starts_with("an event knows no")).collect();
+    errors.retain(|error| {
+        let begins = |fault: &&Fault| fault.span.start == error.span.start;
+        error.key != key || !error.message.ends_with("small letters") || !unknown.iter().any(begins)
+    });
+    let is_sign = |error: &FormulaError| error.key == key && error.message.starts_with("`=`");
     errors.retain(|error| {
         let inside = |fault: &&Fault| fault.span.start <= error.span.start && error.span.end <= fault.span.end;
-        error.key != key || !error.message.starts_with("`=`") || !equalities.iter().any(inside)
+        !is_sign(error) || !equalities.iter().any(inside)
+    });
+    for error in errors.iter_mut().filter(|error| is_sign(error)) {
+        error.help = Some("an event is made of inequalities: write >= or <=".to_owned());
+    }
+}
+
+/// `20 kPa`: a unit after a number is told as such, and not once more as an unknown name.
+fn forget_units(errors: &mut Vec<FormulaError>) {
+    let follows = |error: &&FormulaError| error.message.ends_with("follows a number");
+    let units: Vec<_> = errors.iter().filter(follows).map(|error| (error.key.clone(), error.span.clone())).collect();
+    errors.retain(|error| {
+        let unknown = error.meant.is_none() && error.message.starts_with("nothing is called");
+        !unknown || !units.iter().any(|(key, span)| *key == error.key && *span == error.span)
     });
 }
 

@@ -197,6 +197,20 @@ fn label(text: &str, from: usize, quote: char, faults: &mut Vec<Fault>) -> (Toke
     (Token::Broken, text.len())
 }
 
+/// Whether the innermost bracket that is open is that of a call.
+fn in_call(found: &[(Token, Range<usize>)]) -> bool {
+    let mut closed = 0;
+    for (at, (token, _)) in found.iter().enumerate().rev() {
+        match token {
+            Token::Sign(")") => closed += 1,
+            Token::Sign("(") if closed == 0 => return at > 0 && matches!(found[at - 1].0, Token::Name(_)),
+            Token::Sign("(") => closed -= 1,
+            _ => {}
+        }
+    }
+    false
+}
+
 /// Reads a sign at `at`, or what stands for one elsewhere, and gives the place after it.
 fn sign(text: &str, at: usize, c: char, found: &mut Vec<(Token, Range<usize>)>, faults: &mut Vec<Fault>) -> usize {
     let rest = &text[at..];
@@ -214,6 +228,12 @@ fn sign(text: &str, at: usize, c: char, found: &mut Vec<(Token, Range<usize>)>, 
         return span.end;
     };
     let span = at..at + other.len();
+    if *other == ";" && in_call(found) {
+        let fault = Fault::new(span.clone(), "a semicolon stands between arguments");
+        faults.push(fault.help("arguments are separated by commas"));
+        found.push((Token::Sign(","), span.clone()));
+        return span.end;
+    }
     faults.push(Fault::new(span.clone(), format!("`{other}` is no part of a formula")).help(*help));
     match meant {
         Sign(sign) => found.push((Token::Sign(sign), span.clone())),

@@ -80,13 +80,58 @@ fn tell_no_inequality(lowering: &mut Lowering<'_>, syntax: &Syntax, place: Place
         return; // A number where a condition should be: that is the same said twice.
     }
     let fault = match node {
-        Node::Infix(Infix::Equal | Infix::Differ, ..) => {
-            Fault::new(span.clone(), "an event is made of < <= > >=; equality has no margin")
+        Node::Infix(Infix::Equal | Infix::Differ, a, b) => {
+            let help = instead_of_equality(lowering, syntax, node, *a, *b);
+            let fault = Fault::new(span.clone(), "an event is made of inequalities; equality has no margin");
+            return lowering.fault(fault.help(help));
         }
-        Node::Not(_) => Fault::new(span.clone(), "an event knows no `not`"),
+        Node::Not(of) => {
+            let help = match opposite(lowering, syntax, *of) {
+                Some(written) => format!("write {written}"),
+                None => "write the opposite inequalities, joined by `and`, `or` and parentheses".to_owned(),
+            };
+            return lowering.fault(Fault::new(span.clone(), "an event knows no `not`").help(help));
+        }
         Node::Call { name, .. } if name == "if" => Fault::new(span.clone(), "an event knows no `if`"),
         Node::Name(name) => Fault::new(span.clone(), format!("`{name}` is no inequality")),
         _ => Fault::new(span.clone(), "this is no inequality"),
     };
     lowering.fault(fault.help("write inequalities joined by `and`, `or` and parentheses, as in level > crest"));
+}
+
+/// What to write where two numbers are compared for equality.
+fn instead_of_equality(lowering: &Lowering<'_>, syntax: &Syntax, node: &Node, a: Place, b: Place) -> String {
+    let text = |place: Place| lowering.slice(&syntax.nodes[place].1);
+    let (left, right) = (text(a), text(b));
+    let (from, to) = (syntax.nodes[a].1.start, syntax.nodes[b].1.end);
+    if lowering.faults().iter().any(|fault| from <= fault.span.start && fault.span.end <= to) {
+        return "for a whole number write a >= b or a <= b".to_owned();
+    }
+    if matches!(node, Node::Infix(Infix::Differ, ..)) {
+        return format!("write {left} < {right} or {left} > {right}");
+    }
+    match syntax.nodes[b].0 {
+        Node::Number(value) => {
+            let (sign, other, word) = if value > 0.0 { (">=", "<=", "larger") } else { ("<=", ">=", "smaller") };
+            format!(
+                "for a whole number write {left} {sign} {right}; where {word} ones do not count, {left} {sign} {right} and \
+                 {left} {other} {right}"
+            )
+        }
+        _ => format!("write {left} >= {right} or {left} <= {right}: numbers that vary are never exactly equal"),
+    }
+}
+
+/// What holds where an inequality does not, as one writes it.
+fn opposite(lowering: &Lowering<'_>, syntax: &Syntax, place: Place) -> Option<String> {
+    let Node::Infix(infix, a, b) = &syntax.nodes[place].0 else { return None };
+    let sign = match infix {
+        Infix::Less => ">=",
+        Infix::LessEqual => ">",
+        Infix::Greater => "<=",
+        Infix::GreaterEqual => "<",
+        _ => return None,
+    };
+    let text = |place: Place| lowering.slice(&syntax.nodes[place].1);
+    Some(format!("{} {sign} {}", text(*a), text(*b)))
 }

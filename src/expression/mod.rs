@@ -15,6 +15,7 @@
 //! operations and the data only: of a column that depends on the point one row exists at a time.
 
 mod backward;
+mod call_places;
 mod calls;
 mod check;
 mod columns;
@@ -37,6 +38,7 @@ mod special;
 mod sums;
 mod sweep;
 
+pub use call_places::{CallPlace, call_places};
 pub use columns::{Rows, RowsId};
 pub use errors::{FormulaError, nearest};
 pub use program::{Program, Work};

@@ -107,13 +107,14 @@ pub(super) struct Parsed {
 /// The tree of `text`, and what is wrong with it. After a fault reading goes on with what was meant, or else with a
 /// node that is [`Node::Broken`], so that independent mistakes are told together.
 pub(super) fn parse(text: &str) -> Parsed {
-    let (tokens, faults) = tokens(text);
+    let (mut tokens, mut faults) = tokens(text);
+    small_letters(&mut tokens, &mut faults);
     let words = tokens.iter().filter_map(|(token, span)| match token {
         Token::Name(name) => Some((name.clone(), span.clone())),
         _ => None,
     });
     let words = words.collect();
-    let mut parser = Parser { tokens, at: 0, nodes: Vec::new(), depth: 0, faults, given_up: false };
+    let mut parser = Parser { text, tokens, at: 0, nodes: Vec::new(), depth: 0, faults, given_up: false };
     let whole = parser.whole();
     let mut faults = parser.faults;
     let syntax = match whole {
@@ -127,6 +128,42 @@ pub(super) fn parse(text: &str) -> Parsed {
     Parsed { syntax, faults, words }
 }
 
+/// Reads `AND`, `Or`, `NOT`, `IF` as the words in small letters where no name can stand, and tells of it.
+fn small_letters(tokens: &mut [(Token, Range<usize>)], faults: &mut Vec<Fault>) {
+    for at in 0..tokens.len() {
+        let Token::Name(word) = &tokens[at].0 else { continue };
+        let small = word.to_lowercase();
+        if *word == small || !["and", "or", "not", "if"].contains(&small.as_str()) {
+            continue;
+        }
+        let next = tokens.get(at + 1).map(|(token, _)| token);
+        let opens = matches!(next, Some(Token::Sign("(")));
+        let after_value = at > 0
+            && match &tokens[at - 1].0 {
+                Token::Number(_) | Token::Label(_) | Token::Sign(")" | "]") => true,
+                Token::Name(before) => !["and", "or", "not"].contains(&before.as_str()),
+                _ => false,
+            };
+        let before_value = matches!(next, Some(Token::Name(_) | Token::Number(_) | Token::Sign("(")));
+        let joins = small == "and" || small == "or";
+        let meant = match small.as_str() {
+            "if" => opens,
+            "not" => before_value,
+            _ => opens || after_value,
+        };
+        if !meant {
+            continue;
+        }
+        // A call `AND(a, b)` is told as a whole.
+        if !joins || after_value {
+            let help = if small == "if" { "write if(condition, a, b)".to_owned() } else { format!("write {small}") };
+            let message = format!("`{word}` is written with small letters");
+            faults.push(Fault::new(tokens[at].1.clone(), message).help(help));
+        }
+        tokens[at].0 = Token::Name(small);
+    }
+}
+
 /// Binding power of a prefix minus: between products and powers.
 const MINUS_POWER: u8 = 11;
 /// Binding power of `not`: between `and` and comparisons.
@@ -134,7 +171,8 @@ const NOT_POWER: u8 = 5;
 /// Left binding power of all comparisons, which do not chain.
 const COMPARE_POWER: u8 = 6;
 
-struct Parser {
+struct Parser<'t> {
+    text: &'t str,
     tokens: Vec<(Token, Range<usize>)>,
     at: usize,
     nodes: Vec<(Node, Range<usize>)>,
@@ -144,7 +182,7 @@ struct Parser {
     given_up: bool,
 }
 
-impl Parser {
+impl Parser<'_> {
     fn peek(&self) -> &Token {
         &self.tokens[self.at].0
     }
@@ -333,6 +371,9 @@ impl Parser {
                 Ok(self.push(Node::Not(of), span))
             }
             Token::Name(word) if word != "and" && word != "or" => self.name(word),
+            Token::Name(word) if matches!(self.tokens.get(self.at + 1), Some((Token::Sign("("), _))) => {
+                self.joined(&word)
+            }
             Token::Broken => {
                 let span = self.advance();
                 Ok(self.push(Node::Broken, span))
@@ -410,18 +451,106 @@ impl Parser {
     }
 
     fn call(&mut self, name: String, name_span: Range<usize>) -> Result<Place, Fault> {
+        let (arguments, end) = self.arguments(&name)?;
+        Ok(self.push(Node::Call { name, name_span: name_span.clone(), arguments }, name_span.start..end))
+    }
+
+    /// What stands in the brackets of a call, and the end of these.
+    fn arguments(&mut self, name: &str) -> Result<(Vec<Place>, usize), Fault> {
         let open = self.advance();
         let mut arguments = Vec::new();
+        let mut named: Vec<(Range<usize>, String)> = Vec::new();
         if !self.is_sign(")") {
-            arguments.push(self.argument()?);
-            while self.is_sign(",") {
+            loop {
+                let is_switch = self.argument_name(name, &mut named);
+                let argument = self.argument()?;
+                if is_switch {
+                    self.nodes[argument].0 = Node::Broken;
+                } else {
+                    arguments.push(argument);
+                }
+                if !self.is_sign(",") {
+                    break;
+                }
                 self.advance();
-                arguments.push(self.argument()?);
             }
         }
+        if let (Some((first, _)), Some((last, _))) = (named.first(), named.last()) {
+            let span = first.start..last.end;
+            let each: Vec<String> = named.iter().map(|(_, text)| format!("`{text}`")).collect();
+            let help = format!("leave out {}: their order tells what they are", each.join(", "));
+            self.faults.push(Fault::new(span, "arguments have no names").help(help));
+        }
         let close = self.close(")", &open)?;
-        let span = name_span.start..close.end;
-        Ok(self.push(Node::Call { name, name_span, arguments }, span))
+        Ok((arguments, close.end))
+    }
+
+    /// Passes over the name of an argument, `mean =`, and notes it. Whether the argument is a switch as `log = TRUE`,
+    /// which has no place at all.
+    fn argument_name(&mut self, function: &str, named: &mut Vec<(Range<usize>, String)>) -> bool {
+        let conditions = ["if", "and", "or", "not", "count", "where", "ifelse", "iif"];
+        let (Token::Name(name), Some((Token::Sign("=="), sign))) = (self.peek().clone(), self.tokens.get(self.at + 1))
+        else {
+            return false;
+        };
+        if sign.len() != 1 || conditions.contains(&function) {
+            return false;
+        }
+        let sign = sign.clone();
+        self.faults.retain(|fault| fault.span != sign);
+        let from = self.advance().start;
+        self.advance();
+        let is_switch = match self.peek() {
+            Token::Name(word) => matches!(word.to_lowercase().as_str(), "true" | "false"),
+            _ => false,
+        };
+        let (end, text) = match is_switch {
+            true => (self.span().end, self.text[from..self.span().end].to_owned()),
+            false => (sign.end, format!("{name} =")),
+        };
+        named.push((from..end, text));
+        is_switch
+    }
+
+    /// `and(a, b)`, read as `a and b`.
+    fn joined(&mut self, word: &str) -> Result<Place, Fault> {
+        let name_span = self.advance();
+        let (nodes, faults) = (self.nodes.len(), self.faults.len());
+        let (arguments, end) = self.arguments(word)?;
+        let infix = if word == "and" { Infix::And } else { Infix::Or };
+        let doubtful = |(node, _): &(Node, Range<usize>)| {
+            matches!(node, Node::Broken | Node::Infix(Infix::Equal | Infix::Differ, ..))
+        };
+        let inside = |fault: &Fault| fault.span.start > name_span.start && fault.span.end <= end;
+        let sound =
+            self.faults.len() == faults && !self.faults.iter().any(inside) && !self.nodes[nodes..].iter().any(doubtful);
+        let parts: Vec<String> = arguments
+            .iter()
+            .map(|&place| {
+                let text = self.text[self.span_of(place)].trim();
+                let weaker = infix == Infix::And && matches!(self.nodes[place].0, Node::Infix(Infix::Or, ..));
+                if weaker && !text.starts_with('(') { format!("({text})") } else { text.to_owned() }
+            })
+            .collect();
+        let written = parts.join(&format!(" {word} "));
+        let help = match sound && parts.len() > 1 && written.len() <= 70 {
+            true => format!("write {written}"),
+            false => format!("write a {word} b: it stands between the conditions"),
+        };
+        let own = &self.text[name_span.clone()];
+        self.faults.push(Fault::new(name_span.clone(), format!("`{own}` is no function")).help(help));
+        let mut whole: Option<Place> = None;
+        for place in arguments {
+            whole = Some(match whole {
+                None => place,
+                Some(so_far) => self.push(Node::Infix(infix, so_far, place), name_span.start..end),
+            });
+        }
+        Ok(match whole {
+            // The whole must come last.
+            Some(place) if place + 1 == self.nodes.len() => place,
+            _ => self.push(Node::Broken, name_span.start..end),
+        })
     }
 
     /// One argument, up to a comma or the closing bracket.
@@ -475,7 +604,7 @@ impl Parser {
             Token::Sign("[") => Fault::new(span, "square brackets follow a value")
                 .help("only the name of a variable made with `each` takes square brackets"),
             Token::Sign(",") => Fault::new(span, "a comma stands outside the brackets of a function")
-                .help("write decimals with a point"),
+                .help("write decimals with a point, and no comma between the digits of a large number"),
             Token::Sign(sign) => Fault::new(span, format!("`{sign}` closes no bracket that is open")),
             Token::End | Token::Broken => self.ends_early(),
         }

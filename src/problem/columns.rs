@@ -271,6 +271,12 @@ fn is_unit(cell: &str) -> bool {
 }
 
 fn number_help(cell: &str, marks: &[String]) -> String {
+    if let Some(written) = super::slips::ungrouped(cell) {
+        return format!("write it without groups of thousands: {written}");
+    }
+    if let Some(help) = beyond_a_limit(cell) {
+        return help;
+    }
     let pointed = cell.replacen(',', ".", 1);
     if number(&pointed).is_some() {
         let (whole, part) = cell.split_once(',').unwrap_or((cell, ""));
@@ -293,6 +299,22 @@ fn number_help(cell: &str, marks: &[String]) -> String {
     }
     let all: Vec<String> = all.iter().map(|mark| format!("\"{mark}\"")).collect();
     format!("mend the cell, or count it as missing: missing = [{}] under [data]", all.join(", "))
+}
+
+/// What to do with a reading of which only a limit is known, as `<4` or `> 10`.
+fn beyond_a_limit(cell: &str) -> Option<String> {
+    let limit = cell.trim_start_matches(['<', '>', '≤', '≥', '=', ' ']);
+    number(limit).filter(|_| limit.len() < cell.len())?;
+    let (side, function) = match cell.starts_with(['<', '≤']) {
+        true => ("below", "log_normal_below((limit - mean)/sd)"),
+        false => ("above", "log_normal_tail((limit - mean)/sd)"),
+    };
+    Some(format!(
+        "it is a censored reading, known to lie {side} {limit}: leave the cell empty, put {limit} into a further column \
+         `limit`, and give such rows {function}: \"Readings beyond a limit\" in docs/problem-file.md shows how. To drop them \
+         instead makes the rest look {} than they are",
+        if side == "below" { "larger" } else { "smaller" }
+    ))
 }
 
 /// The number that a cell holds; `nan` is none.

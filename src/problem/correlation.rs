@@ -76,8 +76,10 @@ pub struct Mendable {
     pub first: String,
     /// The other.
     pub second: String,
-    /// The correlation of their scores.
-    pub score: f64,
+    /// What the numbers are correlations of: of the variables, of their ranks or of their scores, as was given.
+    pub kind: CorrelationKind,
+    /// The correlation that was given.
+    pub value: f64,
     /// Low end of what the other correlations allow.
     pub low: f64,
     /// High end.
@@ -92,8 +94,13 @@ impl CorrelationError {
             let general = "bring the numbers nearer to zero, or check their signs";
             let help = match self {
                 Self::NotPositiveDefinite { pair: Some(pair), .. } => format!(
-                    "{general}; the others allow `{}` and `{}` a score correlation between {:.4} and {:.4}, and theirs is {:.4}",
-                    pair.first, pair.second, pair.low, pair.high, pair.score
+                    "{general}; the others allow `{}` and `{}` a {} correlation between {:.4} and {:.4}, and theirs is {:.4}",
+                    pair.first,
+                    pair.second,
+                    pair.kind.word(),
+                    (pair.low * 1e4).ceil() / 1e4,
+                    (pair.high * 1e4).floor() / 1e4,
+                    pair.value
                 ),
                 Self::NotPositiveDefinite { pair: None, .. } => {
                     format!("{general}; no single pair could be changed alone to mend it")
@@ -173,7 +180,7 @@ pub(crate) fn of_matrix(
     }
     let mut sorted = members;
     sorted.sort_unstable();
-    group(sorted, &scores, |place| variables[place].name.clone())
+    group(sorted, &scores, |first, second| Some((&variables[first], &variables[second], kind)))
 }
 
 /// All groups of the file; faults point at the number, the name or the table that is wrong. Pairs of variables that are
@@ -210,7 +217,12 @@ pub(crate) fn settle(
             scores.iter().copied().filter(|((i, _), _)| members.contains(i)).collect();
         let table = pairs.iter().find(|pair| members.contains(&pair.places.0)).map_or(0..0, |pair| pair.table.clone());
         let name = |place: usize| variables[place].as_ref().map_or_else(String::new, |variable| variable.name.clone());
-        match group(members, &inside, name) {
+        let given = |first: usize, second: usize| {
+            let pair = pairs.iter().find(|pair| pair.places == (first.max(second), first.min(second)));
+            let kind = pair.map_or(CorrelationKind::Score, |pair| pair.kind);
+            Some((variables[first].as_ref()?, variables[second].as_ref()?, kind))
+        };
+        match group(members, &inside, given) {
             Ok(found) => groups.push(found),
             Err(error) => {
                 let (message, help) = error.explained();
@@ -352,10 +364,23 @@ fn connected(pairs: &[Pair]) -> Vec<Vec<usize>> {
     groups
 }
 
-fn group(
+/// A correlation of a pair as it was given, from that of the scores.
+fn as_given(one: &Variable, other: &Variable, kind: CorrelationKind, score: f64) -> Option<f64> {
+    match (kind, &one.nature, &other.nature) {
+        (CorrelationKind::Score, ..) => Some(score),
+        (CorrelationKind::Rank, ..) => copula::rank_of_score(score).ok(),
+        (CorrelationKind::Linear, Nature::Random(first), Nature::Random(second)) => {
+            LinearCorrelation::new(first, second).ok()?.linear(score).ok()
+        }
+        (CorrelationKind::Linear, ..) => None,
+    }
+}
+
+/// The group of `members`; `given` tells of two places the variables and the kind of correlation that was given.
+fn group<'v>(
     members: Vec<usize>,
     scores: &[((usize, usize), f64)],
-    name: impl Fn(usize) -> String,
+    given: impl Fn(usize, usize) -> Option<(&'v Variable, &'v Variable, CorrelationKind)>,
 ) -> Result<Correlation, CorrelationError> {
     let d = members.len();
     let mut score = vec![0.0; d * d];
@@ -371,9 +396,15 @@ fn group(
         Some(lower) => Ok(Correlation { members, score, lower }),
         None => {
             let smallest = linear::eigen(&score, d).map_or(f64::NAN, |eigen| eigen.values[0]);
-            let pair = mendable(&score, d).map(|(i, j, low, high)| {
-                let (first, second) = (name(members[j]), name(members[i]));
-                Box::new(Mendable { first, second, score: score[i * d + j], low, high })
+            let pair = mendable(&score, d).and_then(|(i, j, low, high)| {
+                let (one, other, kind) = given(members[j], members[i])?;
+                let own = score[i * d + j];
+                let told = |score: f64| as_given(one, other, kind, score);
+                let (kind, value, low, high) = match (told(own), told(low), told(high)) {
+                    (Some(value), Some(low), Some(high)) => (kind, value, low, high),
+                    _ => (CorrelationKind::Score, own, low, high),
+                };
+                Some(Box::new(Mendable { first: one.name.clone(), second: other.name.clone(), kind, value, low, high }))
             });
             Err(CorrelationError::NotPositiveDefinite { smallest, pair })
         }
@@ -440,6 +471,24 @@ mod tests {
                 );
             }
             other => panic!("{other:?}"),
+        }
+    }
+
+    /// The interval is that of the kind given: just inside its ends a matrix can be had, just outside it cannot.
+    #[test]
+    fn what_the_others_allow_is_told_in_the_kind_that_was_given() {
+        let gumbel =
+            |name: &str| Variable::random(name, Distribution::new("gumbel", &[("mean", 2.0), ("sd", 0.5)]).unwrap());
+        let variables: Vec<Variable> = ["a", "b", "c"].map(gumbel).to_vec();
+        for kind in [CorrelationKind::Linear, CorrelationKind::Rank, CorrelationKind::Score] {
+            let of = |first: f64| {
+                let matrix = [1.0, first, 0.9, first, 1.0, -0.8, 0.9, -0.8, 1.0];
+                of_matrix(&variables, vec![0, 1, 2], kind, &matrix)
+            };
+            let Err(CorrelationError::NotPositiveDefinite { pair: Some(pair), .. }) = of(0.9) else { panic!() };
+            assert_eq!((pair.kind, pair.value.clamp(0.9 - 1e-6, 0.9 + 1e-6)), (kind, pair.value));
+            assert!(of(pair.high - 1e-4).is_ok() && of(pair.low + 1e-4).is_ok(), "{pair:?}");
+            assert!(of(pair.high + 1e-4).is_err(), "{pair:?}");
         }
     }
 

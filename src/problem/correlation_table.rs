@@ -165,7 +165,7 @@ fn read_matrix(reader: &mut Reader<'_>, entry: &Entry<'_>, d: usize) -> Option<(
     if let Some(triangle) = lower_triangle(&rows, d) {
         let message = format!("the {d} by {d} matrix stands here, or its upper half; its lower triangle is wanted");
         reader.fault(Fault::new(entry.span.clone(), message).help(format!("write {} = {triangle}", entry.key)));
-        return None;
+        return Some(pairs_of_whole(reader, &rows, d));
     }
     let (mut matrix, mut places) = (vec![0.0; d * d], Vec::new());
     for (i, row) in rows.iter().enumerate() {
@@ -219,6 +219,30 @@ fn lower_triangle(rows: &[Entry<'_>], d: usize) -> Option<String> {
         format!("[{}]", cells.join(", "))
     };
     Some(format!("[{}]", (0..d).map(row).collect::<Vec<_>>().join(", ")))
+}
+
+/// The numbers of a whole matrix, or of its upper half, with the places of those below the diagonal, or above it: the
+/// advice taken, the rest is looked at as well.
+fn pairs_of_whole(reader: &mut Reader<'_>, rows: &[Entry<'_>], d: usize) -> (Vec<f64>, Places) {
+    let (mut matrix, mut places) = (vec![0.0; d * d], Vec::new());
+    let cells: Vec<Vec<(f64, Range<usize>)>> = rows
+        .iter()
+        .map(|row| {
+            let cells = row.value.as_array().into_iter().flatten();
+            cells.map(|cell| (plain_number(cell.get_ref()).unwrap_or(f64::NAN), cell.span())).collect()
+        })
+        .collect();
+    for i in 0..d {
+        matrix[i * d + i] = 1.0;
+        for j in 0..i {
+            let cell = if cells[i].len() == d { cells[i].get(j) } else { cells[j].get(i - j) };
+            let Some((number, span)) = cell else { continue };
+            let number = if check_entry(reader, *number, span) { *number } else { f64::NAN };
+            (matrix[i * d + j], matrix[j * d + i]) = (number, number);
+            places.push((i, j, span.clone()));
+        }
+    }
+    (matrix, places)
 }
 
 fn check_entry(reader: &mut Reader<'_>, number: f64, span: &Range<usize>) -> bool {

@@ -71,8 +71,84 @@ pub(crate) fn meant_family(word: &str) -> Option<&'static str> {
     exact.or(foreign).or_else(|| nearest(word, Distribution::NAMES.iter().copied()))
 }
 
+/// What the parameters of the lognormal distribution are called elsewhere: those of the logarithm.
+pub(crate) const OF_LOGARITHM: [(&str, &str); 12] = [
+    ("mu", "log_mean"),
+    ("m", "log_mean"),
+    ("meanlog", "log_mean"),
+    ("mean_log", "log_mean"),
+    ("mulog", "log_mean"),
+    ("mu_log", "log_mean"),
+    ("sigma", "log_sd"),
+    ("s", "log_sd"),
+    ("sdlog", "log_sd"),
+    ("sd_log", "log_sd"),
+    ("sigmalog", "log_sd"),
+    ("sigma_log", "log_sd"),
+];
+
+/// What keys of `[target]`, `[[correlation]]` and `[tuning]` are called elsewhere.
+const FOREIGN_KEYS: [(&str, &str); 39] = [
+    ("log_likelihood", "log_factor"),
+    ("loglikelihood", "log_factor"),
+    ("loglik", "log_factor"),
+    ("log_posterior", "log_density"),
+    ("log_target", "log_density"),
+    ("logp", "log_density"),
+    ("log_prob", "log_density"),
+    ("failure", "event"),
+    ("limit_state", "event"),
+    ("condition", "event"),
+    ("function", "integrand"),
+    ("cost", "integrand"),
+    ("constraint", "require"),
+    ("constraints", "require"),
+    ("requirements", "require"),
+    ("goal", "aim"),
+    ("kind", "aim"),
+    ("variables", "among"),
+    ("between", "among"),
+    ("names", "among"),
+    ("rho", "linear"),
+    ("r", "linear"),
+    ("pearson", "linear"),
+    ("matrix", "linear"),
+    ("coefficient", "linear"),
+    ("value", "linear"),
+    ("spearman", "rank"),
+    ("copula", "score"),
+    ("samples", "budget"),
+    ("n_samples", "budget"),
+    ("draws", "budget"),
+    ("evaluations", "budget"),
+    ("iterations", "rounds"),
+    ("n_components", "components"),
+    ("random_seed", "seed"),
+    ("random_state", "seed"),
+    ("proposal", "family"),
+    ("cores", "threads"),
+    ("workers", "threads"),
+];
+
+/// The key among `known` that is probably meant by one that is none of them.
+pub(crate) fn meant_key<'k>(key: &str, known: &[&'k str]) -> Option<&'k str> {
+    let foreign = FOREIGN_KEYS.iter().filter(|(other, _)| *other == key);
+    let mut foreign = foreign.filter_map(|(_, meant)| known.iter().copied().find(|known| known == meant));
+    foreign.next().or_else(|| nearest(key, known.iter().copied()))
+}
+
+/// The aim that is meant by a word of another trade.
+pub(crate) fn meant_aim(word: &str) -> Option<&'static str> {
+    Some(match word.to_lowercase().as_str() {
+        "posterior" | "evidence" | "inference" | "bayes" | "normalisation" | "normalization" => "density",
+        "mean" | "average" | "expected" | "integral" | "risk" => "expectation",
+        "failure" | "reliability" | "rare" | "event" | "rare-event" | "rare event" => "probability",
+        _ => return None,
+    })
+}
+
 /// What parameters are called elsewhere.
-pub(crate) const SYNONYMS: [(&str, &str); 31] = [
+pub(crate) const SYNONYMS: [(&str, &str); 38] = [
     ("cov", "cv"),
     ("sigma", "sd"),
     ("stdev", "sd"),
@@ -83,6 +159,10 @@ pub(crate) const SYNONYMS: [(&str, &str); 31] = [
     ("sigma", "log_sd"),
     ("sdlog", "log_sd"),
     ("mu", "mean"),
+    ("m", "mean"),
+    ("average", "mean"),
+    ("s", "sd"),
+    ("std_dev", "sd"),
     ("loc", "location"),
     ("mu", "location"),
     ("mean", "location"),
@@ -102,6 +182,9 @@ pub(crate) const SYNONYMS: [(&str, &str); 31] = [
     ("a", "low"),
     ("b", "high"),
     ("nu", "df"),
+    ("mid", "mode"),
+    ("peak", "mode"),
+    ("most_likely", "mode"),
     ("prob", "p"),
     ("probability", "p"),
 ];

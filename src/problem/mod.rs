@@ -9,6 +9,7 @@
 //! `each`) -> `programs` (formulas) -> `natures` (distributions) -> `start` (coordinates) -> `space` (maps and
 //! Jacobians) -> `evaluate`. What is wrong is kept in `faults` on the way and shown together.
 
+mod angles;
 mod columns;
 mod coordinates;
 mod correlation;
@@ -41,7 +42,9 @@ mod text_value;
 mod tuning;
 mod variable;
 mod variables_table;
+mod written;
 
+pub use angles::Degrees;
 pub use correlation::Correlation;
 pub use correlation::CorrelationError;
 pub use correlation::Mendable;
@@ -65,6 +68,7 @@ pub use variable::Coordinate;
 pub use variable::Member;
 pub use variable::Nature;
 pub use variable::Variable;
+pub use written::Written;
 
 use crate::expression::Program;
 use crate::model::Model;

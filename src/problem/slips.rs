@@ -213,11 +213,23 @@ impl Line<'_> {
                 Err(Slip::new(at..at + sign.len(), message, format!("write {key} = ...")).write(written))
             }
             None => {
-                let help = format!("write {key} = and its value");
+                let help = match (key.parse::<f64>(), self.parameters()) {
+                    (Ok(_), Some(names)) => format!("each parameter has its name: {names}"),
+                    _ => format!("write {key} = and its value"),
+                };
                 let slip = Slip::new(span, format!("`{key}` has no value"), help);
                 Err(Slip { mute: true, ..slip.edit(at..at, " = \"\"") })
             }
         }
+    }
+
+    /// The parameters of the distribution that the line names, as one writes them.
+    fn parameters(&self) -> Option<String> {
+        let (_, rest) = self.line.split_once("distribution")?;
+        let family = meant_family(rest.split(['"', '\'']).nth(1)?)?;
+        let set = Distribution::parameters_of(family)?.first()?;
+        let each: Vec<String> = set.required.iter().map(|key| format!("{key} = ...")).collect();
+        Some(each.join(", "))
     }
 
     fn sign(&self, at: usize) -> Option<&'static str> {
@@ -376,6 +388,11 @@ impl Line<'_> {
             match self.char_at(at) {
                 Some(',') => {
                     let next = self.skip_blanks(at + 1);
+                    let run = self.line[value..].find(|c: char| !(c.is_ascii_digit() || matches!(c, ',' | '.' | '-')));
+                    let run = self.line[value..run.map_or(self.line.len(), |end| value + end)].trim_end_matches(',');
+                    if let Some(number) = ungrouped(run) {
+                        return Err(grouped(run, value..value + run.len(), &number));
+                    }
                     let digits = self.line[next..].len()
                         - self.line[next..].trim_start_matches(|c: char| c.is_ascii_digit()).len();
                     let number = self.line[value..end].trim();
@@ -462,6 +479,9 @@ impl Line<'_> {
             let help = format!("write {}", text.split_whitespace().collect::<Vec<_>>().join(", "));
             return Slip::new(at + gap..at + gap + 1, "a comma is missing", help).edit(at + gap..at + gap, ",");
         }
+        if let Some(number) = ungrouped(text) {
+            return grouped(text, span, &number);
+        }
         if let Some(mended) = mended_number(text) {
             let (message, mended) = mended;
             return Slip::new(span, message, format!("write {mended}")).write(mended);
@@ -510,7 +530,10 @@ impl Line<'_> {
             return Slip::new(span, format!("`{text}` is no number"), help).write(number);
         }
         if let Some((number, rest)) = number_and_rest(text) {
-            let help = format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\"");
+            let help = match self.table {
+                "constants" => format!("write {number} alone; the unit may follow as a remark: {number} # {rest}"),
+                _ => format!("write {number} alone; the unit of a variable is a key of its own: unit = \"{rest}\""),
+            };
             return Slip::new(span, format!("`{text}` is more than a number"), help).write(number);
         }
         if let Some(table) = called_family(text).filter(|_| self.table == "variables" && inside == Inside::Line) {
@@ -542,6 +565,38 @@ fn called_family(text: &str) -> Option<String> {
         if is_plain(value) { format!(", {key} = {value}") } else { format!(", {key} = \"{value}\"") }
     });
     Some(format!("{{ distribution = \"{family}\"{} }}", each.collect::<String>()))
+}
+
+/// A number whose thousands are grouped, by commas as `1,250.0` and `1,250,000` or by points as `1.250,00` and
+/// `1.250.000`, without them; none where a single comma or point may be a decimal one.
+pub(crate) fn ungrouped(text: &str) -> Option<String> {
+    let (sign, digits) = match text.strip_prefix('-') {
+        Some(rest) => ("-", rest),
+        None => ("", text),
+    };
+    for (group, point) in [(',', '.'), ('.', ',')] {
+        let (whole, part) = match digits.split_once(point) {
+            Some((whole, part)) => (whole, Some(part)),
+            None => (digits, None),
+        };
+        let groups: Vec<&str> = whole.split(group).collect();
+        let is_number = |text: &str| !text.is_empty() && text.chars().all(|c| c.is_ascii_digit());
+        let right = groups[1..].iter().all(|group| group.len() == 3) && groups.iter().all(|group| is_number(group));
+        let plain = part.is_none_or(is_number) && groups[0].len() <= 3 && groups[0] != "0";
+        let certain = groups.len() > 2 || (groups.len() == 2 && part.is_some());
+        if right && plain && certain {
+            let part = part.map_or(String::new(), |part| format!(".{part}"));
+            return Some(format!("{sign}{}{part}", groups.concat()));
+        }
+    }
+    None
+}
+
+fn grouped(text: &str, span: Range<usize>, number: &str) -> Slip {
+    let first = text.find([',', '.']).map_or("", |at| &text[at..=at]);
+    let sign = if first == "," { "commas" } else { "points" };
+    let message = format!("{sign} group the thousands of `{text}`");
+    Slip::new(span, message, format!("write {number}")).write(number)
 }
 
 fn decimal_comma(at: usize, whole: &str, part: &str, next: usize) -> Slip {
@@ -622,4 +677,26 @@ fn worked_out(text: &str) -> Option<f64> {
     let program = Scope::new().compile(&[("value", text, Wanted::Number)]).ok()?;
     let value = program.values(&Points::zeros(0, 1)).first()?.get(0, 0);
     value.is_finite().then_some(value)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn groups_of_thousands_are_told_from_decimal_commas() {
+        for (text, want) in [
+            ("1,250.0", Some("1250.0")),
+            ("-1,250,000", Some("-1250000")),
+            ("1.250,00", Some("1250.00")),
+            ("12.500.000", Some("12500000")),
+            ("1,250", None),
+            ("1.250", None),
+            ("0,250.0", None),
+            ("1,25,000", None),
+            ("1,2.5", None),
+        ] {
+            assert_eq!(ungrouped(text).as_deref(), want, "{text}");
+        }
+    }
 }

@@ -190,6 +190,8 @@ fn twice(mended: &Mended, source: &str, span: &Range<usize>) -> (Fault, bool) {
             };
             fault.also(first, "first here").help(help)
         }
+        None if is_header => fault
+            .help(format!("`{key}` has a line of its own already: put these keys into its braces, {key} = {{ ... }}")),
         None => fault.help("keep one of the two"),
     };
     (fault, !is_header)

@@ -8,6 +8,7 @@ use toml::de::DeValue;
 
 use super::faults::Fault;
 use super::faults::Faults;
+use super::foreign::meant_key;
 use super::names::all_of;
 use super::names::listed;
 use super::text_value::Text;
@@ -52,8 +53,7 @@ impl<'a> Table<'a> {
 
     /// The entry with this key or, failing that, one with an unknown key that is nearest to it among the `known` ones.
     pub(crate) fn entry_or_slip(&self, key: &str, known: &[&str]) -> Option<&Entry<'a>> {
-        let slip =
-            |entry: &&Entry<'a>| !known.contains(&entry.key) && nearest(entry.key, known.iter().copied()) == Some(key);
+        let slip = |entry: &&Entry<'a>| !known.contains(&entry.key) && meant_key(entry.key, known) == Some(key);
         self.entry(key).or_else(|| self.entries.iter().find(slip))
     }
 }
@@ -137,7 +137,7 @@ impl<'s> Reader<'s> {
         let fault =
             Fault::new(entry.key_span.clone(), format!("`{}` is no key of {place}", entry.key)).label("unknown key");
         let home = home_of(entry.key);
-        self.fault(match nearest(entry.key, known.iter().copied()) {
+        self.fault(match meant_key(entry.key, known) {
             Some(near) => fault.help(format!("did you mean `{near}`?")),
             None if home.is_some() => {
                 let home = home.unwrap_or_default();

@@ -1,6 +1,7 @@
 //! The `[target]` table: the aim, and the formula that is integrated.
 
 use super::faults::Fault;
+use super::foreign::meant_aim;
 use super::names::listed;
 use super::table::Entry;
 use super::table::Reader;
@@ -159,6 +160,13 @@ fn no_aim(
 
 fn read_aim(reader: &mut Reader<'_>, entry: &Entry<'_>) -> Option<Aim> {
     let known = [Aim::Density, Aim::Expectation, Aim::Probability];
+    let foreign = entry.value.as_str().and_then(|text| Some((text, meant_aim(text)?)));
+    if let Some((text, meant)) = foreign {
+        let fault =
+            Fault::new(entry.span.clone(), format!("`{}` knows no \"{text}\"", entry.key)).label("unknown word");
+        reader.fault(fault.help(format!("write \"{meant}\"")));
+        return known.into_iter().find(|aim| aim.word() == meant);
+    }
     let word = reader.word(entry, &known.map(Aim::word));
     // A misspelt aim is taken as the one that is suggested.
     let meant = entry.value.as_str().and_then(|text| nearest(text, known.map(Aim::word)).map(str::to_owned));

@@ -6,6 +6,7 @@ use toml::de::DeValue;
 
 use super::faults::Fault;
 use super::foreign::COMMON_SYNONYMS;
+use super::foreign::OF_LOGARITHM;
 use super::foreign::SYNONYMS;
 use super::foreign::meant_family;
 use super::names::all_of;
@@ -317,6 +318,11 @@ fn read_random(reader: &mut Reader<'_>, table: &Table<'_>, entry: &Entry<'_>) ->
             }
         };
         let Some(key) = key else { continue };
+        // What a list is to a distribution that nobody knows cannot be told.
+        if family.is_none() && matches!(other.value, DeValue::Array(_)) {
+            reader.mention(other.value);
+            continue;
+        }
         match parameter(reader, other, key) {
             Some(parameter) => parameters.push(parameter),
             None => whole = false,
@@ -382,6 +388,9 @@ fn unknown_parameter(
         {
             Some("to cut a distribution off write between = [low, high]; an end may be inf".to_owned())
         }
+        "scale" if family == "lognormal" => {
+            Some("give `log_mean`, the logarithm of that scale, with `log_sd`".to_owned())
+        }
         "median" if family == "lognormal" => {
             Some("give `log_mean`, the logarithm of the median, with `log_sd`; or `mean` with `sd` or `cv`".to_owned())
         }
@@ -393,7 +402,10 @@ fn unknown_parameter(
         reader.fault(fault.help(format!("{way}; {all}")));
         return None;
     }
-    let synonym = SYNONYMS.iter().find(|(other, meant)| *other == entry.key && own.contains(meant));
+    // `mu` of a lognormal is that of the logarithm, unless a parameter of the variable itself stands beside it.
+    let of_logarithm = family == "lognormal" && !["mean", "sd", "cv"].iter().any(|key| table.entry(key).is_some());
+    let own_words = OF_LOGARITHM.iter().filter(|_| of_logarithm).chain(&SYNONYMS);
+    let synonym = own_words.into_iter().find(|(other, meant)| *other == entry.key && own.contains(meant));
     if let Some((_, meant)) = synonym {
         reader.fault(fault.help(match table.entry(meant) {
             Some(_) => format!("take it out: `{meant}` is there already; {all}"),

@@ -11,3 +11,4 @@ mod whole;
 mod wrong;
 mod wrong_layers;
 mod wrong_tables;
+mod wrong_words;

@@ -5,9 +5,11 @@ use crate::numeric;
 use crate::numeric::Points;
 use crate::problem::Aim;
 use crate::problem::Coordinate;
+use crate::problem::Degrees;
 use crate::problem::EvaluateError;
 use crate::problem::Nature;
 use crate::problem::Problem;
+use crate::problem::Written;
 use std::fmt;
 
 /// A centre that lies so far below the best trial point, in nats, was put there by a wrong unit, not by a prior.
@@ -16,6 +18,8 @@ const FAR_BELOW: f64 = 1e4;
 const LITTLE: f64 = -13.815_510_557_964_274;
 /// Differences of the target below this part of its size are rounding.
 const ROUNDING: f64 = 1e-9;
+/// A coefficient of variation above this is probably a percentage.
+const LARGEST_CV: f64 = 3.0;
 /// More of the start than this outside the support is told.
 const MOSTLY: f64 = 0.9;
 /// An end carries mass where the density there is above this part of the largest along the variable.
@@ -38,6 +42,15 @@ pub enum Finding {
         variable: String,
         /// `ln` of the probability between the ends.
         log_probability: f64,
+    },
+    /// An angle that is probably in degrees reaches a function that takes radians.
+    Degrees(Degrees),
+    /// A coefficient of variation that is probably a percentage.
+    PercentCv {
+        /// The variable.
+        variable: String,
+        /// The coefficient of variation.
+        cv: f64,
     },
     /// Every trial point is outside the support.
     AllOutside {
@@ -89,6 +102,19 @@ impl fmt::Display for Finding {
                 "`between` leaves {} of the distribution of `{variable}`: a far tail stands for all of it. Check the ends and the \
                  parameters, and their units.",
                 probability(*log_probability)
+            ),
+            Self::Degrees(Degrees { function, name, said: true }) => write!(
+                f,
+                "`{function}` is given `{name}`, which is in degrees: sin, cos and tan take radians. Multiply degrees by pi/180."
+            ),
+            Self::Degrees(Degrees { function, name, said: false }) => write!(
+                f,
+                "`{function}` is given `{name}`, most of whose values are beyond 2 pi: sin, cos and tan take radians. If it is in \
+                 degrees, multiply it by pi/180."
+            ),
+            Self::PercentCv { variable, cv } => write!(
+                f,
+                "The `cv` of `{variable}` is {cv}: a standard deviation of {cv} times the mean. A cv is a share: 0.3 for 30 %."
             ),
             Self::AllOutside { points } => write!(
                 f,
@@ -146,6 +172,26 @@ fn little_left(problem: &Problem) -> Vec<Finding> {
     left.collect()
 }
 
+/// Coefficients of variation that are probably percentages, told once for the members of an `each`.
+fn percent_cv(problem: &Problem) -> Vec<Finding> {
+    let mut found: Vec<Finding> = Vec::new();
+    for (j, variable) in problem.variables().iter().enumerate() {
+        let name = variable.member.as_ref().map_or(&variable.name, |member| &member.group);
+        for (key, value) in problem.written_parameters(j) {
+            if let Written::Number(cv) = value
+                && key == "cv"
+                && cv > LARGEST_CV
+            {
+                let finding = Finding::PercentCv { variable: name.clone(), cv };
+                if !found.contains(&finding) {
+                    found.push(finding);
+                }
+            }
+        }
+    }
+    found
+}
+
 /// All that looks wrong, from the trial and a few evaluations more along variables that live on an interval.
 ///
 /// # Errors
@@ -154,6 +200,8 @@ pub fn findings(problem: &Problem, trial: &Trial) -> Result<Vec<Finding>, Evalua
     let unused = problem.unused_variables().into_iter().map(|name| Finding::Unused { variable: name.to_owned() });
     let mut found: Vec<Finding> = unused.collect();
     found.extend(little_left(problem));
+    found.extend(percent_cv(problem));
+    found.extend(problem.degrees(&problem.to_natural(&trial.points)).into_iter().map(Finding::Degrees));
     let tally = trial.tally(problem.aim());
     let points = trial.points.len();
     if tally.failed > 0 {
@@ -270,6 +318,16 @@ mod tests {
                 "depth = { distribution = \"normal\", mean = 2.0, sd = 0.1, between = [3.0, inf] }".into(),
                 "log_factor = \"-depth^2\"",
                 Finding::LittleLeft { variable: "depth".into(), log_probability: 0.0 },
+            ),
+            (
+                "depth = { distribution = \"gamma\", mean = 2.0, cv = 30.0 }".into(),
+                "log_factor = \"-depth^2\"",
+                Finding::PercentCv { variable: "depth".into(), cv: 30.0 },
+            ),
+            (
+                format!("{DEPTH}\nbearing = {{ distribution = \"normal\", mean = 40.0, sd = 5.0, unit = \"deg\" }}"),
+                "log_factor = \"-depth^2*cos(bearing)^2\"",
+                Finding::Degrees(Degrees { function: "cos".into(), name: "bearing".into(), said: true }),
             ),
             (ANGLE.into(), "log_density = \"3 * cos(angle)\"", Finding::BothEnds { variable: "angle".into() }),
             (LEVEL.into(), "log_density = \"-level^2\"\nrequire = [\"abs(level - 2) > 0.1\"]", Finding::CentreOutside),
