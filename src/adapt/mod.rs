@@ -21,6 +21,7 @@ mod standard;
 mod survey;
 mod tuning;
 
+pub mod compare;
 pub mod rare;
 
 pub use observer::{Answers, Batch, Observer, Silent, Stage};
