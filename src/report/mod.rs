@@ -4,6 +4,7 @@
 //! * [`round_rows`]: one row a round, as in `rounds.csv`;
 //! * [`Summary`], [`RareSummary`]: scores, verdict, choices and provenance, as in `summary.json`;
 //! * [`page`]: the page and its Markdown twin;
+//! * [`ComparisonSummary`], [`comparison_figures`]: a comparison of proposals, as in `comparison.json`;
 //! * [`trial`]: a look at a problem before it is tuned;
 //! * [`RunData`]: what the figures are drawn from, out of a tuning or out of a run's files alike.
 //!
@@ -11,6 +12,8 @@
 
 pub mod trial;
 
+mod comparison;
+mod comparison_figures;
 mod draws;
 mod figure_data;
 mod marginal;
@@ -25,6 +28,8 @@ mod summary_head;
 
 pub mod page;
 
+pub use comparison::{COMPARISON_FORMAT, ComparisonSummary, ContestantSummary, INTERVALS, YardstickSummary, shared};
+pub use comparison_figures::comparison_figures;
 pub use draws::DrawsTable;
 pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};
 pub use places::places;

@@ -172,7 +172,8 @@ fn title(kind: Kind, df: f64) -> String {
     match kind {
         Kind::Gaussian => "Gaussian".to_owned(),
         Kind::StudentT if df.is_finite() => format!("Student-t, fitted {shown}"),
-        Kind::StudentT => "Student-t, fitted".to_owned(),
+        Kind::StudentT if df.is_nan() => "Student-t, fitted".to_owned(),
+        Kind::StudentT => "Student-t, fitted ∞".to_owned(),
         Kind::FixedDf => format!("Student-t, df {shown}"),
         Kind::Moments => "Moments, one part".to_owned(),
         Kind::Tuned | Kind::Given => "As tuned".to_owned(),
@@ -189,5 +190,6 @@ mod tests {
         assert_eq!(title(Kind::FixedDf, 6.0), "Student-t, df 6");
         assert_eq!(title(Kind::FixedDf, 40.0), "Student-t, df 40");
         assert_eq!(title(Kind::StudentT, f64::NAN), "Student-t, fitted");
+        assert_eq!(title(Kind::StudentT, f64::INFINITY), "Student-t, fitted ∞");
     }
 }

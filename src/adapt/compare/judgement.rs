@@ -57,21 +57,25 @@ const NO_HEAVY_DRAW: f64 = 0.01;
 const POWER_TAIL: f64 = 12.0;
 
 /// What the top of a contestant's weights says.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
 pub(super) enum Risk {
-    /// Below the limit with nine chances in ten, or too even to matter.
+    /// The tail shape is below the limit with nine chances in ten, or the weights are too even for it to matter.
     None,
-    /// Above the limit, or too few draws in the tail.
-    Present,
+    /// Above it, but below the limit at which a mean still settles, with nine chances in ten.
+    Some,
+    /// Above that too, or not known.
+    Grave,
 }
 
-pub(super) fn risk(score: Option<&Score>) -> Risk {
-    let Some(score) = score else { return Risk::Present };
+/// The risk of a contestant. Even weights excuse a heavy top, but not where the tail of the target is known to be a power.
+pub(super) fn risk(score: Option<&Score>, power_tail: bool) -> Risk {
+    let Some(score) = score else { return Risk::Grave };
     let even = score.weight_variance <= EVEN && score.largest_share <= NO_HEAVY_DRAW;
     match score.tail.reason {
         TailReason::Bounded => Risk::None,
-        _ if even || score.tail.upper <= TAIL_SOUND => Risk::None,
-        _ => Risk::Present,
+        _ if score.tail.upper <= TAIL_SOUND || (even && !power_tail) => Risk::None,
+        _ if score.tail.upper <= score.tail.limit => Risk::Some,
+        _ => Risk::Grave,
     }
 }
 
@@ -113,8 +117,9 @@ pub(super) fn gains(difference: &Difference) -> bool {
     difference.value >= LEAST_GAIN && difference.significance.is_some_and(|chance| chance < SIGNIFICANT)
 }
 
-/// Heavy tails are preferred where the light contestant has a risk that they have not, or a significantly lower ESS fraction; light
-/// ones are enough where they have no risk and nothing is gained by heavy ones; all else is undecided.
+/// Heavy tails are preferred where the light contestant has a risk that they have not (or a grave one where theirs is less), or a
+/// significantly lower ESS fraction; light ones are enough where they have no risk and nothing is gained by heavy ones; all else is
+/// undecided.
 pub(super) fn recommend(contestants: &[Contestant], differences: &[Difference]) -> Recommendation {
     let light = contestants.iter().find(|c| c.kind == Kind::Gaussian);
     let (Some(light), Some(heavy)) = (light, best_heavy(contestants)) else {
@@ -122,15 +127,17 @@ pub(super) fn recommend(contestants: &[Contestant], differences: &[Difference]) 
     };
     let gain = differences.iter().find(|d| d.name == heavy.name);
     let gained = gain.is_some_and(gains);
-    let (of_light, of_heavy) = (risk(light.score.as_ref()), risk(heavy.score.as_ref()));
     let power = contestants.iter().find(|c| c.kind == Kind::StudentT).is_some_and(|c| c.df < POWER_TAIL);
+    let (of_light, of_heavy) = (risk(light.score.as_ref(), power), risk(heavy.score.as_ref(), false));
+    let lighter_top = upper(heavy) < upper(light);
     let (tails, sentence) = match (of_light, of_heavy) {
-        (Risk::Present, Risk::None) => (Tails::Heavy, sentences::removes_risk(light, heavy)),
+        (Risk::Some | Risk::Grave, Risk::None) => (Tails::Heavy, sentences::removes_risk(light, heavy)),
+        (Risk::Grave, Risk::Some) if lighter_top => (Tails::Heavy, sentences::lowers_risk(light, heavy)),
+        (Risk::Some | Risk::Grave, _) => (Tails::Undecided, sentences::both_at_risk(light, heavy)),
         (Risk::None, Risk::None) if gained => (Tails::Heavy, sentences::gains(light, heavy, gain)),
-        (Risk::None, _) if !gained && !power => (Tails::Light, sentences::enough(light, heavy, gain)),
+        (Risk::None, _) if gained => (Tails::Undecided, sentences::gain_with_risk(heavy)),
         (Risk::None, _) if power => (Tails::Undecided, sentences::power_tail(light, heavy)),
-        (Risk::None, _) => (Tails::Undecided, sentences::gain_with_risk(heavy)),
-        (Risk::Present, Risk::Present) => (Tails::Undecided, sentences::both_at_risk(light, heavy)),
+        (Risk::None, _) => (Tails::Light, sentences::enough(light, heavy, gain)),
     };
     let chosen = match tails {
         Tails::Heavy => Some(heavy),
@@ -140,13 +147,18 @@ pub(super) fn recommend(contestants: &[Contestant], differences: &[Difference]) 
     Recommendation { tails, contestant: chosen.map(|c| c.name.clone()), sentence }
 }
 
+/// Upper bound of the tail shape; above all where it is not known.
+fn upper(contestant: &Contestant) -> f64 {
+    contestant.score.as_ref().map(|s| s.tail.upper).filter(|u| !u.is_nan()).unwrap_or(f64::INFINITY)
+}
+
 /// The Student-t contestant with the fitted degrees of freedom, unless another is safer, or as safe and significantly better.
 fn best_heavy(contestants: &[Contestant]) -> Option<&Contestant> {
     let mut best: Option<&Contestant> = None;
     for one in contestants.iter().filter(|c| c.kind.is_heavy()) {
         let better = best.is_none_or(|best| {
-            let (now, then) = (risk(one.score.as_ref()), risk(best.score.as_ref()));
-            (now == Risk::None && then == Risk::Present) || (now == then && gains(&difference(one, best)))
+            let (now, then) = (risk(one.score.as_ref(), false), risk(best.score.as_ref(), false));
+            now < then || (now == then && gains(&difference(one, best)))
         });
         if better {
             best = Some(one);

@@ -6,15 +6,31 @@ use crate::weights::TailReason;
 use crate::weights::verdict::checks::TAIL_SOUND;
 
 pub(super) fn removes_risk(light: &Contestant, heavy: &Contestant) -> String {
-    let ratio = heavy.merits.ess_fraction.value / light.merits.ess_fraction.value;
-    let price = if ratio < 0.995 {
-        format!("costs {} of the ESS and removes", percent(1.0 - ratio))
+    let price = price(light, heavy);
+    format!("{}: {price} removes the risk of weights without a finite variance; {}.", heavy.name, tail(light))
+}
+
+pub(super) fn lowers_risk(light: &Contestant, heavy: &Contestant) -> String {
+    let price = price(light, heavy);
+    format!(
+        "{}: {price} lowers the risk of weights without a finite variance, though its own are not free of it; {}, and {}.",
+        heavy.name,
+        tail(light),
+        tail(heavy)
+    )
+}
+
+/// What heavy tails cost or gain, up to the next verb.
+fn price(light: &Contestant, heavy: &Contestant) -> String {
+    let [from, to] = [light, heavy].map(|c| c.merits.ess_fraction.value);
+    let ratio = to / from;
+    if ratio < 0.995 {
+        format!("costs {} of the ESS and", percent(1.0 - ratio))
     } else if ratio > 1.005 {
-        format!("gains {} of the ESS and removes", percent(ratio - 1.0))
+        format!("raises the ESS fraction from {} to {} and", percent(from), percent(to))
     } else {
-        "costs nothing of the ESS and removes".to_owned()
-    };
-    format!("{}: {price} the risk of weights without a finite variance; {}.", heavy.name, tail(light))
+        "costs nothing of the ESS and".to_owned()
+    }
 }
 
 pub(super) fn gains(light: &Contestant, heavy: &Contestant, gain: Option<&Difference>) -> String {
@@ -78,7 +94,7 @@ fn tail(contestant: &Contestant) -> String {
             } else {
                 ""
             };
-            format!("the tail shape of the weights of {name} is {shape}, at most {upper} (limit {TAIL_SOUND}){even}")
+            format!("the weights of {name} have the tail shape {shape}, at most {upper} (limit {TAIL_SOUND}){even}")
         }
     }
 }
