@@ -5,6 +5,9 @@
 
 mod check;
 mod check_report;
+mod compare;
+mod compare_report;
+mod compare_watch;
 mod ending;
 mod figures;
 mod header;
@@ -45,6 +48,7 @@ struct Cli {
 enum Command {
     Tune(Box<tune::Args>),
     Check(check::Args),
+    Compare(compare::Args),
     Points(points::Args),
     Figures(figures::Args),
     Schema(schema::Args),
@@ -59,6 +63,7 @@ pub(crate) fn main() -> ExitCode {
     let ended = match &parsed.command {
         Command::Tune(args) => tune::run(args),
         Command::Check(args) => check::run(args),
+        Command::Compare(args) => compare::run(args),
         Command::Points(args) => points::run(args),
         Command::Figures(args) => figures::run(args),
         Command::Schema(args) => schema::run(args),

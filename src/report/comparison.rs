@@ -161,7 +161,10 @@ pub fn shared(aim: Aim, comparison: &Comparison) -> String {
         Aim::Density => {
             let each = comparison.contestants.first().map_or(0, |c| c.tuning_evaluations);
             let survey = if comparison.survey_evaluations > 0 {
-                format!("; the {} of the survey are the same for all and were paid once", count(comparison.survey_evaluations))
+                format!(
+                    "; the {} of the survey are the same for all and were paid once",
+                    count(comparison.survey_evaluations)
+                )
             } else {
                 String::new()
             };

@@ -48,7 +48,8 @@ const RADII: usize = 60;
 #[must_use]
 pub fn comparison_figures(aim: Aim, comparison: &Comparison, seed: u64, style: &Style) -> Vec<Drawing> {
     let shown: Vec<&Contestant> = comparison.contestants.iter().filter(|c| c.score.is_some()).take(MOST).collect();
-    let mut drawings = vec![compare_tails::draw(&TailsData { contestants: shown.iter().map(|c| tail(c)).collect() }, style)];
+    let mut drawings =
+        vec![compare_tails::draw(&TailsData { contestants: shown.iter().map(|c| tail(c)).collect() }, style)];
     if let Some(heavy) = shown.iter().find(|c| c.kind == Kind::StudentT) {
         drawings.push(compare_df::draw(&degrees(heavy), style));
     }

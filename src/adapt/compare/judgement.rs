@@ -95,7 +95,8 @@ pub(super) fn difference(a: &Contestant, b: &Contestant) -> Difference {
         se = Some(of_draws.map(|(a, b)| (a - b) * (a - b)).sum::<f64>().sqrt() / n);
         se_independent = Some((of_a * of_a + of_b * of_b).sqrt());
     }
-    let chance = |se: f64| if se > 0.0 { 2.0 * upper_tail(value.abs() / se) } else { f64::from(u8::from(value == 0.0)) };
+    let chance =
+        |se: f64| if se > 0.0 { 2.0 * upper_tail(value.abs() / se) } else { f64::from(u8::from(value == 0.0)) };
     Difference { name: a.name.clone(), value, se, se_independent, significance: se.map(chance) }
 }
 
