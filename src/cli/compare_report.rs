@@ -21,7 +21,7 @@ const NUMBER: usize = 19;
 pub(crate) fn closing(summary: &ComparisonSummary, folder: &str) -> String {
     let mut out = String::from("\n");
     let heading = |out: &mut String, titles: [&str; 4]| out.push_str(&format!("{}\n", styled(&line(titles), QUIET)));
-    out.push_str(&format!("{}\n", styled("Scores on fresh draws, with 95 % intervals", HEADING)));
+    out.push_str(&format!("{}\n", styled("Scores on fresh draws: value and 95 % interval", HEADING)));
     heading(&mut out, ["", "ESS fraction %", "weight variance", "tail shape"]);
     for c in &summary.contestants {
         out.push_str(&format!("{}\n", weights(c)));
@@ -83,7 +83,7 @@ fn against(d: &Difference) -> String {
     line([&d.name, &points(d.value), &se, &chance])
 }
 
-/// `value low..high`, short enough for a column.
+/// `value low..high`.
 fn with_interval(x: Interval, write: impl Fn(f64) -> String) -> String {
     if x.value == f64::NEG_INFINITY {
         return "bounded".to_owned();
@@ -94,15 +94,29 @@ fn with_interval(x: Interval, write: impl Fn(f64) -> String) -> String {
     if x.low.is_nan() || x.high.is_nan() {
         return write(x.value);
     }
-    let text = format!("{} ({} to {})", write(x.value), write(x.low), write(x.high));
-    if text.chars().count() < NUMBER {
-        text
-    } else {
-        format!("{} ({}..{})", write(x.value), write(x.low), write(x.high))
-    }
+    format!("{} {}..{}", write(x.value), write(x.low), write(x.high))
 }
 
 /// A number of draws, two digits; large ones with a power of ten.
 fn whole(x: f64) -> String {
-    if x < 1e5 { rough(x) } else { format!("{x:.1e}") }
+    if x < 9_950.0 { rough(x) } else { format!("{x:.1e}") }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_widest_numbers_leave_a_space_between_columns() {
+        let interval = |value, low, high| Interval { value, low, high };
+        let cells = [
+            with_interval(interval(9_900.0, 8_700.0, 9_900.0), whole),
+            with_interval(interval(2.3e12, 1.1e12, 4.5e12), whole),
+            with_interval(interval(0.066, 0.056, 0.077), |x| trimmed(x, 2)),
+            with_interval(interval(-0.21, -0.43, -0.01), |x| format!("{x:.2}")),
+            with_interval(interval(f64::NEG_INFINITY, f64::NAN, f64::NAN), |x| trimmed(x, 2)),
+        ];
+        assert!(cells.iter().all(|cell| cell.chars().count() < NUMBER), "{cells:?}");
+        assert_eq!(line(["a proposal with a long name", "1", "2", "3"]).chars().count(), NAME + 3 * NUMBER);
+    }
 }

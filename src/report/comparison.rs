@@ -99,7 +99,7 @@ pub struct YardstickSummary {
 /// How intervals were made.
 pub const INTERVALS: &str = "95 %: ESS fraction and weight variance by the delta method on the logit scale (resampled where the tail shape is above 0.5); \
                              tail shape k ± 1.96 (1 + k)/sqrt(tail points); largest share, relative error and draws for 1 % by 400 resamples of the \
-                             draws within components";
+                             draws within components, which can show no larger share than was drawn";
 
 impl ComparisonSummary {
     /// The summary of a comparison.

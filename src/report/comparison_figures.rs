@@ -43,6 +43,9 @@ const FIRST: f64 = 50.0;
 const DISTANCES: usize = 20_000;
 /// Points of a curve of distances.
 const RADII: usize = 60;
+/// A share further out rests on so many draws, and is no smaller than this.
+const BEYOND: usize = 5;
+const LEAST_SHARE: f64 = 1e-6;
 
 /// Draws all figures of a comparison.
 #[must_use]
@@ -133,9 +136,9 @@ fn errors(aim: Aim, comparison: &Comparison, shown: &[&Contestant], seed: u64) -
         });
     }
     let quantity = match aim {
-        Aim::Density => "the normalising constant, relative",
-        Aim::Expectation => "the mean, relative",
-        Aim::Probability => "the probability, relative",
+        Aim::Density => "the normalising constant (relative)",
+        Aim::Expectation => "the mean (relative)",
+        Aim::Probability => "the probability (relative)",
     };
     ErrorsData { quantity: quantity.to_owned(), unit: None, contestants }
 }
@@ -158,7 +161,7 @@ fn radial(shown: &[&Contestant], seed: u64) -> Option<RadialData> {
     let best = shown.iter().max_by(|a, b| ess(a).total_cmp(&ess(b)))?;
     let w = relative(best);
     let centred = Centred::of(&best.draws.points, &w)?;
-    let target = survival("Target", &centred.distances(&best.draws.points), &w);
+    let target = survival("the target", &centred.distances(&best.draws.points), &w);
     let proposals = shown.iter().map(|c| {
         let drawn = c.proposal.draw(DISTANCES, seed, Purpose::Compare, 3);
         survival(&c.name, &centred.distances(&drawn.points), &vec![1.0; DISTANCES])
@@ -218,9 +221,8 @@ fn survival(name: &str, distances: &[f64], weights: &[f64]) -> RadialTail {
     let total: f64 = pairs.iter().map(|p| p.1).sum();
     let mut beyond = 0.0;
     let mut tail: Vec<(f64, f64)> = Vec::new();
-    // The outermost points have nothing beyond them: the share begins with the second.
-    for (r, w) in &pairs {
-        if beyond > 0.0 {
+    for (i, (r, w)) in pairs.iter().enumerate() {
+        if i >= BEYOND && beyond / total > LEAST_SHARE {
             tail.push((*r, ln(beyond / total)));
         }
         beyond += w;
@@ -251,14 +253,14 @@ fn thinned(tail: &[(f64, f64)]) -> Vec<(f64, f64)> {
 mod tests {
     use super::*;
 
-    /// Ten points of even weight at 1 to 10: beyond 7 lie three of ten.
+    /// Twenty points of even weight at 1 to 20: beyond 12 lie eight of twenty, and what is beyond 15 are five, the least.
     #[test]
     fn shares_further_out_are_counted() {
-        let distances: Vec<f64> = (1..=10).map(f64::from).collect();
-        let tail = survival("ten", &distances, &[1.0; 10]);
-        let at = tail.distance.iter().position(|&r| r == 7.0).unwrap();
-        assert!((tail.log_survival[at] - libm::log(0.3)).abs() < 1e-14);
-        assert_eq!(*tail.distance.last().unwrap(), 9.0);
+        let distances: Vec<f64> = (1..=20).map(f64::from).collect();
+        let tail = survival("twenty", &distances, &[1.0; 20]);
+        let at = tail.distance.iter().position(|&r| r == 12.0).unwrap();
+        assert!((tail.log_survival[at] - libm::log(0.4)).abs() < 1e-14);
+        assert_eq!(*tail.distance.last().unwrap(), 15.0);
     }
 
     #[test]

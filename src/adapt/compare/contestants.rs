@@ -21,7 +21,7 @@ pub enum Kind {
     StudentT,
     /// Student-t components with degrees of freedom that were asked for.
     FixedDf,
-    /// One Gaussian that takes the weighted mean and covariance.
+    /// Gaussian components that take the weighted mean and covariance of their draws, and nothing else.
     Moments,
     /// As the tuning chose it, its layers for caution included.
     Tuned,
@@ -76,7 +76,7 @@ pub(super) fn tuned(
     let light = Settings { family: Some(Family::Gaussian), ..plain.clone() };
     let mut entries = vec![(Kind::Gaussian, light.clone()), (Kind::StudentT, heavy(None))];
     entries.extend(wanted.df.iter().map(|&df| (Kind::FixedDf, heavy(Some(df)))));
-    entries.push((Kind::Moments, Settings { method: Preference::Moments, components: Some(1), ..light }));
+    entries.push((Kind::Moments, Settings { method: Preference::Moments, ..light }));
 
     let share = budget / entries.len() as u64;
     let (dim, least) = (problem.dim(), least_raise(problem.dim()));
@@ -86,10 +86,11 @@ pub(super) fn tuned(
     }
     let mut made = Vec::with_capacity(entries.len());
     for (kind, settings) in entries {
-        ledger.begin(title(kind, settings.df.unwrap_or(f64::NAN)).as_str());
+        let asked = settings.df;
+        ledger.begin(title(kind, asked.unwrap_or(f64::NAN)).as_str());
         let tuning = tune(problem, &Settings { budget: share, ..settings }, ledger)?;
-        let name = title(kind, tuning.df);
-        made.push(Made { kind, name, df: tuning.df, proposal: tuning.chosen, evaluations: tuning.evaluations });
+        let df = asked.unwrap_or(tuning.df);
+        made.push(Made { kind, name: title(kind, df), df, proposal: tuning.chosen, evaluations: tuning.evaluations });
     }
     made.extend(given(wanted));
     Ok(made)
@@ -175,7 +176,7 @@ fn title(kind: Kind, df: f64) -> String {
         Kind::StudentT if df.is_nan() => "Student-t, fitted".to_owned(),
         Kind::StudentT => "Student-t, fitted ∞".to_owned(),
         Kind::FixedDf => format!("Student-t, df {shown}"),
-        Kind::Moments => "Moments, one part".to_owned(),
+        Kind::Moments => "Moment matching".to_owned(),
         Kind::Tuned | Kind::Given => "As tuned".to_owned(),
     }
 }

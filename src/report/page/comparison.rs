@@ -165,12 +165,12 @@ fn method(page: &ComparisonPage, bibliography: &mut Bibliography) -> Vec<Block> 
     let made = match page.aim {
         Aim::Density => {
             "Every contestant is the outcome of a whole tuning with an equal share of three fifths of the budget; the Gaussian one has no \
-             heavy-tailed layers, the Student-t ones have. \"Moments, one part\" is the plain loop that gives one Gaussian the weighted mean \
-             and covariance of the draws, round by round."
+             heavy-tailed layers, the Student-t ones have. \"Moment matching\" is the plain loop: from the modes found, every Gaussian component \
+             takes the weighted mean and covariance of its draws, round by round."
         }
         Aim::Expectation | Aim::Probability => {
             "Three fifths of the budget went into one tuning; each contestant is a cross-entropy fit of its family to the draws of that \
-             tuning, mixed with 3 % of the density of the variables. \"Moments, one part\" has one Gaussian with their weighted mean and \
+             tuning, mixed with 3 % of the density of the variables. \"Moment matching\" has one Gaussian with their weighted mean and \
              covariance; \"As tuned\" is the proposal that the tuning chose."
         }
     };
