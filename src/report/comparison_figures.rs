@@ -46,6 +46,8 @@ const RADII: usize = 60;
 /// A share further out rests on so many draws, and is no smaller than this.
 const BEYOND: usize = 5;
 const LEAST_SHARE: f64 = 1e-6;
+/// Proposals are followed to so many times the distance at which the target ends.
+const FURTHER: f64 = 1.5;
 
 /// Draws all figures of a comparison.
 #[must_use]
@@ -89,7 +91,7 @@ fn degrees(contestant: &Contestant) -> DfData {
     let draws = &contestant.draws;
     let (w, log_proposal) = (relative(contestant), contestant.proposal.log_density(&draws.points));
     let score = |df: f64| {
-        let other = contestant.proposal.map(|c| c.with_df(df)).ok()?.log_density(&draws.points);
+        let other = contestant.with_fitted_df(df).ok()?.log_density(&draws.points);
         let squares: Vec<f64> = (0..w.len()).map(|i| w[i] * w[i] * exp(log_proposal[i] - other[i])).collect();
         let n = w.len() as f64;
         let (a, b) = (w.iter().sum::<f64>() / n, squares.iter().sum::<f64>() / n);
@@ -162,9 +164,15 @@ fn radial(shown: &[&Contestant], seed: u64) -> Option<RadialData> {
     let w = relative(best);
     let centred = Centred::of(&best.draws.points, &w)?;
     let target = survival("the target", &centred.distances(&best.draws.points), &w);
+    // What lies much further out than the target says nothing about it.
+    let far = target.distance.last().map_or(f64::INFINITY, |r| FURTHER * r);
     let proposals = shown.iter().map(|c| {
         let drawn = c.proposal.draw(DISTANCES, seed, Purpose::Compare, 3);
-        survival(&c.name, &centred.distances(&drawn.points), &vec![1.0; DISTANCES])
+        let mut tail = survival(&c.name, &centred.distances(&drawn.points), &vec![1.0; DISTANCES]);
+        let kept = tail.distance.iter().filter(|&&r| r <= far).count();
+        tail.distance.truncate(kept);
+        tail.log_survival.truncate(kept);
+        tail
     });
     Some(RadialData {
         distance: "distance from the centre (standard deviations)".to_owned(),

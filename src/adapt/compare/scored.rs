@@ -4,9 +4,10 @@ use super::contestants::{Kind, Made};
 use super::intervals::{Interval, bootstrap, relative_error};
 use super::ledger::Ledger;
 use crate::adapt::TuneError;
+use crate::adapt::layers::{HALO_DF, WIDE_DF};
 use crate::numeric::{Points, Purpose, exp, ln};
 use crate::problem::{Aim, Failed, Problem};
-use crate::proposal::{Drawn, Mixture};
+use crate::proposal::{Drawn, Mixture, ProposalError};
 use crate::weights::{LogWeights, Score, Strata, TailReason, score};
 
 /// A contestant, its fresh draws and what they say.
@@ -28,6 +29,17 @@ pub struct Contestant {
     pub score: Option<Score>,
     /// What is compared.
     pub merits: Merits,
+}
+
+impl Contestant {
+    /// The proposal with other degrees of freedom of its fitted components; the heavy-tailed layers stay what they are.
+    ///
+    /// # Errors
+    /// As [`Mixture::map`].
+    pub fn with_fitted_df(&self, df: f64) -> Result<Mixture, ProposalError> {
+        let layer = |own: f64| own == WIDE_DF || (own == HALO_DF && self.df > HALO_DF);
+        self.proposal.map(|c| if layer(c.df()) { c.clone() } else { c.with_df(df) })
+    }
 }
 
 /// Draws of a contestant.
