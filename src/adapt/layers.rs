@@ -12,9 +12,9 @@ pub(crate) struct LayerShares {
 
 /// The halo's scale and its degrees of freedom at most.
 const HALO_SCALE: f64 = 2.0;
-const HALO_DF: f64 = 4.0;
+pub(crate) const HALO_DF: f64 = 4.0;
 /// Degrees of freedom of the wide start.
-const WIDE_DF: f64 = 5.0;
+pub(crate) const WIDE_DF: f64 = 5.0;
 
 /// Every fitted component again, twice as wide in variance and heavy-tailed, with shares drawn together: `share^(1/2)`.
 pub(crate) fn halo(fitted: &Mixture) -> Result<Mixture, ProposalError> {

@@ -23,6 +23,7 @@ mod survey_together;
 mod together;
 mod tuning;
 
+pub mod compare;
 pub mod rare;
 
 pub use observer::{Answers, Batch, Observer, Silent, Stage};

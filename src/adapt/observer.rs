@@ -19,6 +19,8 @@ pub enum Stage {
     Confirm,
     /// Draws that are reported.
     Report,
+    /// Fresh draws of a contestant.
+    Compare,
 }
 
 impl fmt::Display for Stage {
@@ -29,6 +31,7 @@ impl fmt::Display for Stage {
             Self::Births(r) => write!(f, "births after round {r}"),
             Self::Confirm => f.write_str("confirm draws"),
             Self::Report => f.write_str("report draws"),
+            Self::Compare => f.write_str("fresh draws"),
         }
     }
 }
@@ -88,6 +91,9 @@ pub trait Observer {
 
     /// A round of a probability or an expectation is over.
     fn rare_round(&mut self, _round: &super::rare::RareRound) {}
+
+    /// In a comparison: the turn of a contestant begins, first to be made and later to be scored.
+    fn contestant(&mut self, _name: &str) {}
 
     /// Whether to stop before the next batch.
     fn interrupted(&self) -> bool {

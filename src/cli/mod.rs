@@ -6,6 +6,9 @@
 mod check;
 mod check_model;
 mod check_report;
+mod compare;
+mod compare_report;
+mod compare_watch;
 mod density;
 mod draw;
 mod ending;
@@ -61,6 +64,7 @@ enum Command {
     Density(density::Args),
     Estimate(Box<estimate::Args>),
     Pool(pool::Args),
+    Compare(compare::Args),
     Points(points::Args),
     Figures(figures::Args),
     Schema(schema::Args),
@@ -80,6 +84,7 @@ pub(crate) fn main() -> ExitCode {
         Command::Density(args) => density::run(args),
         Command::Estimate(args) => estimate::run(args),
         Command::Pool(args) => pool::run(args),
+        Command::Compare(args) => compare::run(args),
         Command::Points(args) => points::run(args),
         Command::Figures(args) => figures::run(args),
         Command::Schema(args) => schema::run(args),

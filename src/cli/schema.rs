@@ -20,6 +20,8 @@ enum Format {
     Summary,
     /// One row of rounds.csv, as an object of its cells.
     Rounds,
+    /// comparison.json.
+    Comparison,
 }
 
 pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
@@ -27,6 +29,7 @@ pub(crate) fn run(args: &Args) -> anyhow::Result<Ending> {
         Format::Proposal => include_str!("schemas/proposal.json"),
         Format::Summary => include_str!("schemas/summary.json"),
         Format::Rounds => include_str!("schemas/rounds.json"),
+        Format::Comparison => include_str!("schemas/comparison.json"),
     })?;
     Ok(Ending::Done)
 }

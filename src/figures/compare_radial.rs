@@ -3,6 +3,9 @@
 use super::Drawing;
 use super::Style;
 use super::axis::Scale;
+use super::canvas::Pen;
+use super::colour::INK;
+use super::contestants::Look;
 use super::contestants::look;
 use super::frame::Frame;
 use super::frame::SINGLE;
@@ -70,8 +73,11 @@ pub fn draw(data: &RadialData, style: &Style) -> Drawing {
     let entries: Vec<(Sample, String)> = tails()
         .enumerate()
         .map(|(k, tail)| {
-            let look = look(k, style);
-            let sample = if k == 0 { Sample::Marker(look, 0.8 * style.marker()) } else { Sample::Line(look.pen) };
+            // Proposals look as in the other figures; the target is ink.
+            let sample = match k.checked_sub(1) {
+                None => Sample::Marker(inked(style), 0.8 * style.marker()),
+                Some(k) => Sample::Line(look(k, style).pen),
+            };
             (sample, tail.name.clone())
         })
         .collect();
@@ -79,9 +85,9 @@ pub fn draw(data: &RadialData, style: &Style) -> Drawing {
     let y = Side { name: "share further out", unit: None, range: (least, 1.0, Scale::Log) };
     let mut frame = Frame::new(&x, &[(y, SINGLE)], &entries, style);
     for (k, proposal) in data.proposals.iter().enumerate() {
-        frame.curve(0, proposal.points(), look(k + 1, style).pen);
+        frame.curve(0, proposal.points(), look(k, style).pen);
     }
-    let look = look(0, style);
+    let look = inked(style);
     let mut last: Option<(f64, f64)> = None;
     for (r, share) in data.target.points().filter(|&(r, share)| frame.panels[0].shows(r, share)) {
         let spot = frame.panels[0].spot(r, share);
@@ -97,10 +103,19 @@ pub fn draw(data: &RadialData, style: &Style) -> Drawing {
     frame.finish("radial-tails", caption(data), table(data))
 }
 
+/// The look of the target.
+fn inked(style: &Style) -> Look {
+    let look = look(0, style);
+    Look { pen: Pen { colour: INK, ..look.pen }, ..look }
+}
+
 fn caption(data: &RadialData) -> String {
+    // Where a proposal ends there is nothing to compare with.
+    let ends = data.proposals.iter().filter_map(|proposal| proposal.points().last().map(|p| p.0));
+    let end = ends.fold(f64::INFINITY, f64::min);
     let mut caption =
         format!("Share of {} (markers) and of the proposals (lines) further out than a distance.", data.target.name);
-    let Some((r, share)) = data.target.points().last() else { return caption };
+    let Some((r, share)) = data.target.points().filter(|p| p.0 <= end).last() else { return caption };
     let ratios: Vec<String> = data
         .proposals
         .iter()

@@ -89,7 +89,8 @@ pub fn em(
 
 /// Moment matching: every component takes the weighted mean and covariance of its responsibilities, and the degrees of freedom
 /// that give the fourth moment, `v = (4 r - 2)/(r - 1)` with `r = E q^2 / (d (d + 2))` (from the moments of the t density,
-/// Kotz & Nadarajah 2004, chapter 1). The responsibilities' own scale takes the place of `Method::anchor`.
+/// Kotz & Nadarajah 2004, chapter 1). Where they are not fitted, those of the start stay, with the scale that has the covariance
+/// (for two and fewer, which have none, the covariance itself). The responsibilities' own scale takes the place of `Method::anchor`.
 ///
 /// # Errors
 /// As [`em`].
@@ -106,7 +107,9 @@ pub fn moments_fit(start: &Mixture, points: &Points, weights: &[f64], method: Me
     }
     let matched = Mixture::new(&masses, components)?;
     if !method.fit_df {
-        return Ok(matched);
+        let df = start.components()[0].df();
+        let narrowed = if df > 2.0 && df.is_finite() { (df - 2.0) / df } else { 1.0 };
+        return Ok(matched.map(|c| c.widened(narrowed).with_df(df))?);
     }
     let d = matched.dim() as f64;
     let (_, fourths) = weighted_moments(&matched, points, weights, false);

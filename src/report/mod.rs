@@ -5,6 +5,7 @@
 //! * [`Summary`], [`RareSummary`]: scores, verdict, choices and provenance, as in `summary.json`;
 //! * [`page`]: the page and its Markdown twin;
 //! * [`draw_columns`], [`kept_columns`]: production draws in natural units;
+//! * [`ComparisonSummary`], [`comparison_figures`]: a comparison of proposals, as in `comparison.json`;
 //! * [`trial`]: a look at a problem before it is tuned;
 //! * [`RunData`]: what the figures are drawn from, out of a tuning or out of a run's files alike.
 //!
@@ -12,6 +13,8 @@
 
 pub mod trial;
 
+mod comparison;
+mod comparison_figures;
 mod drawn;
 mod draws;
 mod figure_data;
@@ -30,6 +33,8 @@ mod summary_head;
 
 pub mod page;
 
+pub use comparison::{COMPARISON_FORMAT, ComparisonSummary, ContestantSummary, INTERVALS, YardstickSummary, shared};
+pub use comparison_figures::comparison_figures;
 pub use drawn::{draw_columns, draw_names, first_discrete, has_nominal, kept_columns, kept_names};
 pub use draws::DrawsTable;
 pub use figure_data::{RunData, SURVEY_PHASE, draw_figures};

@@ -11,10 +11,11 @@ use std::path::PathBuf;
 
 /// Everything that a run writes into its folder. The journal makes it the folder of a run: it is written first
 /// ([`Journal::create`](super::Journal::create) before any other file), and removed last.
-pub const RUN_ENTRIES: [&str; 16] = [
+pub const RUN_ENTRIES: [&str; 17] = [
     "report.html",
     "report.md",
     "summary.json",
+    "comparison.json",
     "proposal.json",
     "points.csv",
     "rounds.csv",

@@ -180,6 +180,7 @@ fn place(stage: Stage) -> (Purpose, u32) {
         Stage::Births(round) => (Purpose::Refit, round),
         Stage::Confirm => (Purpose::Confirm, 0),
         Stage::Report => (Purpose::Report, 0),
+        Stage::Compare => (Purpose::Compare, 0),
     }
 }
 

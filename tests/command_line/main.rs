@@ -3,6 +3,7 @@
 #![allow(clippy::unwrap_used, reason = "a test that cannot go on has failed")]
 
 mod common;
+mod compare;
 mod endings;
 mod others;
 mod rare;

@@ -22,7 +22,7 @@ event = "0.05 * inflow / gate + 0.1 * storms > 7"
 budget = 2500
 "#;
 
-fn schema(name: &str, folder: &Path) -> Value {
+pub(crate) fn schema(name: &str, folder: &Path) -> Value {
     let output = evenpoise(folder).args(["schema", name]).output().unwrap();
     assert!(output.status.success());
     serde_json::from_slice(&output.stdout).unwrap()
@@ -71,7 +71,7 @@ fn of_cell(cell: &str) -> Value {
 }
 
 /// Asserts that a value keeps to a schema.
-fn check(schema: &Value, value: &Value, at: &str) {
+pub(crate) fn check(schema: &Value, value: &Value, at: &str) {
     for (word, rule) in schema.as_object().unwrap() {
         match word.as_str() {
             "$schema" | "title" | "description" | "properties" | "additionalProperties" => {}

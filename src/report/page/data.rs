@@ -208,6 +208,12 @@ impl PageFigure {
                 "Chart: the draws in the plane of two variables, with the outlines of the proposal's components over them."
             }
             "importance" => "Bar chart: the signed squared direction cosine of every variable, the largest first.",
+            "tails" => {
+                "Chart: how often the weights of every proposal are larger than a given weight, with the fits to their upper tails."
+            }
+            "degrees" => "Chart: ESS fraction of the Student-t mixture against its degrees of freedom.",
+            "errors" => "Chart: relative standard error of every proposal against the draws spent.",
+            "radial" => "Chart: share of the target and of every proposal further out than a distance.",
             "heavy" => "Chart: where the heaviest draws lie in every variable, against an even spread.",
             _ => "Chart; its numbers stand in the CSV file of the same name.",
         };

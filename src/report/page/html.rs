@@ -39,31 +39,29 @@ const POLICY: &str = "default-src 'none'; img-src data:; style-src 'unsafe-inlin
 /// ```
 #[must_use]
 pub fn html(data: &PageData) -> String {
+    let lead = format!("Importance sampling report, aim {}, by {}", data.aim.word(), data.run.program);
+    let mut opening = String::new();
+    verdict(&mut opening, data);
+    document(&data.title, &lead, &opening, &blocks(data), &data.figures)
+}
+
+/// A whole page: the title with a line below it, what opens it (as HTML), and its blocks.
+pub(crate) fn document(title: &str, lead: &str, opening: &str, blocks: &[Block], figures: &[PageFigure]) -> String {
     let mut out = String::from("<!DOCTYPE html>\n<html lang=\"en\">\n<head>\n<meta charset=\"utf-8\">\n");
     out.push_str("<meta name=\"viewport\" content=\"width=device-width, initial-scale=1\">\n");
     out.push_str("<meta name=\"color-scheme\" content=\"light dark\">\n");
     put(&mut out, format_args!("<meta http-equiv=\"Content-Security-Policy\" content=\"{POLICY}\">\n"));
-    put(
-        &mut out,
-        format_args!("<title>{}</title>\n<style>\n{STYLE}</style>\n</head>\n<body>\n<main>\n", escape(&data.title)),
-    );
-    put(&mut out, format_args!("<header>\n<h1>{}</h1>\n", escape(&data.title)));
-    put(
-        &mut out,
-        format_args!(
-            "<p class=\"lead\">Importance sampling report, aim {}, by {}</p>\n</header>\n",
-            data.aim.word(),
-            escape(&data.run.program)
-        ),
-    );
-    verdict(&mut out, data);
+    let title = escape(title);
+    put(&mut out, format_args!("<title>{title}</title>\n<style>\n{STYLE}</style>\n</head>\n<body>\n<main>\n"));
+    put(&mut out, format_args!("<header>\n<h1>{title}</h1>\n<p class=\"lead\">{}</p>\n</header>\n", escape(lead)));
+    out.push_str(opening);
     let mut open = false;
-    for block in blocks(data) {
+    for block in blocks {
         if let Block::Heading(2, _) = block {
             out.push_str(if open { "</section>\n<section>\n" } else { "<section>\n" });
             open = true;
         }
-        write_block(&mut out, &block, &data.figures);
+        write_block(&mut out, block, figures);
     }
     out.push_str("</section>\n</main>\n</body>\n</html>\n");
     out

@@ -18,11 +18,22 @@ pub fn markdown(data: &PageData) -> String {
         out.push('\n');
     }
     out.push_str(&format!("{}\n", escape(&data.verdict.caution)));
-    for block in blocks(data) {
-        out.push('\n');
-        out.push_str(&written(&block, &data.figures));
-    }
+    write_all(&mut out, &blocks(data), &data.figures);
     out
+}
+
+/// A whole page: the title with a line below it, and its blocks.
+pub(crate) fn document(title: &str, lead: &str, blocks: &[Block], figures: &[PageFigure]) -> String {
+    let mut out = format!("# {}\n\n{}\n", escape(title), escape(lead));
+    write_all(&mut out, blocks, figures);
+    out
+}
+
+fn write_all(out: &mut String, blocks: &[Block], figures: &[PageFigure]) {
+    for block in blocks {
+        out.push('\n');
+        out.push_str(&written(block, figures));
+    }
 }
 
 fn written(block: &Block, figures: &[PageFigure]) -> String {

@@ -8,6 +8,7 @@
 
 mod base64;
 mod blocks;
+mod comparison;
 mod content;
 mod course;
 mod data;
@@ -20,6 +21,7 @@ mod raises;
 mod rare;
 mod sources;
 
+pub use comparison::{ComparisonPage, comparison_html, comparison_markdown};
 pub use data::{
     AnswerLine, FinalistLine, PageData, PageFigure, PointLine, RoundLine, RunFacts, ScheduleKind, SurveyLine,
     VariableLine,
