@@ -217,7 +217,10 @@ impl Outside {
                 (0..answers.dim()).for_each(|k| answers.set(to, k, rest.get(from, k)));
             }
         }
-        unfinished.clear();
+        if !open.is_empty() {
+            // Something new was asked: the batch that was broken off is behind.
+            unfinished.clear();
+        }
         Ok(answers)
     }
 
