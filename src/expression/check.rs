@@ -58,7 +58,6 @@ pub(super) fn compile(
             take_faults(&mut lowering, text.key, &mut errors);
         }
     }
-    forget_units(&mut errors);
     if !errors.is_empty() {
         return Err(in_order_of_texts(errors, scope, outputs));
     }
@@ -110,16 +109,6 @@ fn forget_equal_signs(faults: &[Fault], key: &str, errors: &mut Vec<FormulaError
     for error in errors.iter_mut().filter(|error| is_sign(error)) {
         error.help = Some("an event is made of inequalities: write >= or <=".to_owned());
     }
-}
-
-/// `20 kPa`: a unit after a number is told as such, and not once more as an unknown name.
-fn forget_units(errors: &mut Vec<FormulaError>) {
-    let follows = |error: &&FormulaError| error.message.ends_with("follows a number");
-    let units: Vec<_> = errors.iter().filter(follows).map(|error| (error.key.clone(), error.span.clone())).collect();
-    errors.retain(|error| {
-        let unknown = error.meant.is_none() && error.message.starts_with("nothing is called");
-        !unknown || !units.iter().any(|(key, span)| *key == error.key && *span == error.span)
-    });
 }
 
 fn take_faults(lowering: &mut Lowering<'_>, key: &str, errors: &mut Vec<FormulaError>) {
