@@ -40,7 +40,10 @@ fn known_tails_are_recommended_and_never_the_opposite() {
     assert_eq!(count(&heavy, Tails::Light), 0, "{:?}", sentences(&heavy));
     for one in heavy.iter().filter(|c| c.recommendation.tails == Tails::Heavy) {
         let said = &one.recommendation.sentence;
-        assert!(said.contains("Gaussian") && (said.contains("tail shape") || said.contains("ESS fraction is")), "{said}");
+        assert!(
+            said.contains("Gaussian") && (said.contains("tail shape") || said.contains("ESS fraction is")),
+            "{said}"
+        );
     }
     let light = recommended(f64::INFINITY, 12_000);
     assert!(count(&light, Tails::Light) >= 4, "{:?}", sentences(&light));
