@@ -55,6 +55,8 @@ const EVEN: f64 = 0.05;
 const NO_HEAVY_DRAW: f64 = 0.01;
 /// Fitted degrees of freedom below these say that the tail is a power, whatever the draws of the light proposal have met.
 const POWER_TAIL: f64 = 12.0;
+/// From so many degrees of freedom on, a gain comes from the fit and the layers around it, and not from the tails.
+const NEARLY_GAUSSIAN: f64 = 40.0;
 
 /// What the top of a contestant's weights says.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
@@ -135,6 +137,9 @@ pub(super) fn recommend(contestants: &[Contestant], differences: &[Difference]) 
         (Risk::Some | Risk::Grave, Risk::None) => (Tails::Heavy, sentences::removes_risk(light, heavy)),
         (Risk::Grave, Risk::Some) if lighter_top => (Tails::Heavy, sentences::lowers_risk(light, heavy)),
         (Risk::Some | Risk::Grave, _) => (Tails::Undecided, sentences::both_at_risk(light, heavy)),
+        (Risk::None, Risk::None) if gained && heavy.df >= NEARLY_GAUSSIAN => {
+            (Tails::Undecided, sentences::gain_of_fit(light, heavy))
+        }
         (Risk::None, Risk::None) if gained => (Tails::Heavy, sentences::gains(light, heavy, gain)),
         (Risk::None, _) if gained => (Tails::Undecided, sentences::gain_with_risk(heavy)),
         (Risk::None, _) if power => (Tails::Undecided, sentences::power_tail(light, heavy)),

@@ -64,6 +64,16 @@ pub(super) fn power_tail(light: &Contestant, heavy: &Contestant) -> String {
     )
 }
 
+pub(super) fn gain_of_fit(light: &Contestant, heavy: &Contestant) -> String {
+    format!(
+        "Undecided: {} has the higher ESS fraction ({} against {}), but its components are nearly Gaussian, so the gain is not one of \
+         tails. Raise the budget.",
+        heavy.name,
+        percent(heavy.merits.ess_fraction.value),
+        percent(light.merits.ess_fraction.value)
+    )
+}
+
 pub(super) fn gain_with_risk(heavy: &Contestant) -> String {
     format!("Undecided: {} has the higher ESS fraction, but {}. Raise the budget.", heavy.name, tail(heavy))
 }
