@@ -27,7 +27,8 @@ fn step(bibliography: &mut Bibliography, title: &str, parts: &[(&str, &[Source])
 
 fn density(b: &mut Bibliography) -> Vec<Vec<Span>> {
     use Source::{
-        Cappe, Cornuet, Douc, Hesterberg, Kong, LiuRubin, OwenZhou, PeelMcLachlan, VeachGuibas, Vehtari, ZhangStephens,
+        AssarafCaffarel, Cappe, Cornuet, Douc, Hesterberg, Kong, LiuRubin, Mira, OwenZhou, PeelMcLachlan, VeachGuibas,
+        Vehtari, ZhangStephens,
     };
     vec![
         step(
@@ -87,7 +88,11 @@ fn density(b: &mut Bibliography) -> Vec<Vec<Span>> {
                     &[Douc],
                 ),
                 (
-                    ". They are ranked by their weighted log density on points that are held out for good, so that no candidate is judged by what \
+                    ". Where the target gives its gradient, means that integration by parts makes known take noise out of the moments fitted",
+                    &[AssarafCaffarel, Mira],
+                ),
+                (
+                    ". Candidates are ranked by their weighted log density on points that are held out for good, so that no candidate is judged by what \
              it was fitted to, and at no cost in evaluations. The present proposal is among them and stays unless it is beaten. Where single \
              heavy draws show that the proposal is too thin, a component is born there from the local curvature.",
                     &[],

@@ -11,6 +11,8 @@ pub(crate) enum Source {
     OwenZhou,
     Cappe,
     Douc,
+    AssarafCaffarel,
+    Mira,
     ZhangStephens,
     Cornuet,
     LiuRubin,
@@ -46,6 +48,12 @@ impl Source {
             }
             Self::Douc => {
                 "R. Douc, A. Guillin, J.-M. Marin, C. P. Robert, Minimum variance importance sampling via population Monte Carlo, ESAIM: Probability and Statistics 11 (2007) 427–447."
+            }
+            Self::AssarafCaffarel => {
+                "R. Assaraf, M. Caffarel, Zero-variance principle for Monte Carlo algorithms, Physical Review Letters 83 (1999) 4682–4685."
+            }
+            Self::Mira => {
+                "A. Mira, R. Solgi, D. Imparato, Zero variance Markov chain Monte Carlo for Bayesian estimators, Statistics and Computing 23 (2013) 653–662."
             }
             Self::ZhangStephens => {
                 "J. Zhang, M. A. Stephens, A new and efficient estimation method for the generalized Pareto distribution, Technometrics 51 (2009) 316–325."
