@@ -111,7 +111,8 @@ pub(crate) fn duration(seconds: f64) -> String {
     match whole {
         0..60 => format!("{whole} s"),
         60..3600 => format!("{} min {:02} s", whole / 60, whole % 60),
-        _ => format!("{} h {:02} min", whole / 3600, whole / 60 % 60),
+        3600..3_600_000 => format!("{} h {:02} min", whole / 3600, whole / 60 % 60),
+        _ => "over 1,000 h".to_owned(),
     }
 }
 

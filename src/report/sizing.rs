@@ -12,6 +12,7 @@ use crate::proposal::Mixture;
 use crate::store::StoreError;
 use crate::store::Table;
 use crate::weights::TailShape;
+use crate::weights::verdict::checks::{TAIL_COUNTS_SHARE, TAIL_MAY_COUNT_VARIANCE};
 use std::path::Path;
 
 /// What production of a run will take.
@@ -129,7 +130,19 @@ fn tail_draws(log_ratio: &[f64], ages: &[f64], largest: f64, values: Option<&[f6
         rows.iter().map(|&i| weight(i) * f[i]).sum::<f64>() / mass
     });
     let size = |&i: &usize| values.map_or(1.0, |f| (f[i] - mean).abs()) * weight(i);
-    TailShape::of(&rows.iter().map(size).collect::<Vec<_>>(), 0.0).draws_needed
+    let sizes: Vec<f64> = rows.iter().map(size).collect();
+    if nearly_even(&rows.iter().map(|&i| weight(i)).collect::<Vec<_>>(), &sizes) {
+        return TailShape::of(&[1.0; 100], 0.0).draws_needed;
+    }
+    TailShape::of(&sizes, 0.0).draws_needed
+}
+
+/// Where the verdict lets a heavy but tiny top pass, it asks for no draws either.
+fn nearly_even(weights: &[f64], sizes: &[f64]) -> bool {
+    let n = weights.len() as f64;
+    let (sum, squares) = weights.iter().fold((0.0, 0.0), |(s, q), w| (s + w, q + w * w));
+    let largest = sizes.iter().copied().fold(0.0, f64::max) / sizes.iter().sum::<f64>();
+    n * squares / (sum * sum) - 1.0 <= TAIL_MAY_COUNT_VARIANCE && largest <= TAIL_COUNTS_SHARE
 }
 
 /// Seconds of the model for an evaluation; none without timings.
