@@ -83,7 +83,7 @@ fn against(d: &Difference) -> String {
     line([&d.name, &points(d.value), &se, &chance])
 }
 
-/// `value low..high`.
+/// `value low..high`; the value alone where that is too wide, which is a number of draws that nobody makes.
 fn with_interval(x: Interval, write: impl Fn(f64) -> String) -> String {
     if x.value == f64::NEG_INFINITY {
         return "bounded".to_owned();
@@ -94,7 +94,8 @@ fn with_interval(x: Interval, write: impl Fn(f64) -> String) -> String {
     if x.low.is_nan() || x.high.is_nan() {
         return write(x.value);
     }
-    format!("{} {}..{}", write(x.value), write(x.low), write(x.high))
+    let whole = format!("{} {}..{}", write(x.value), write(x.low), write(x.high));
+    if whole.chars().count() < NUMBER { whole } else { write(x.value) }
 }
 
 /// A number of draws, two digits; large ones with a power of ten.
