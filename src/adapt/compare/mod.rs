@@ -1,7 +1,7 @@
 //! Which tails: proposals of several families, scored on fresh draws with common random numbers.
 //!
-//! Three fifths of the budget make the contestants ([`contestants`]), all that is left scores them ([`scored`]), in equal parts;
-//! [`judgement`] compares them pair by pair and says which tails the evidence is for. Evaluations are counted, and never above the
+//! Three fifths of the budget make the contestants (`contestants`), all that is left scores them (`scored`), in equal parts;
+//! `judgement` compares them pair by pair and says which tails the evidence is for. Evaluations are counted, and never above the
 //! budget.
 //!
 //! **What is shared.** For a density every contestant is tuned by itself with an equal share of evaluations, the same seed and the same
