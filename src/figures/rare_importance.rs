@@ -71,8 +71,10 @@ struct Bar {
 /// ```
 /// use evenpoise::figures::Style;
 /// use evenpoise::figures::rare_importance::{Importance, ImportanceData, draw};
+/// use evenpoise::figures::sought::Sought;
 /// let variable = |name: &str, cosine| Importance { name: name.to_owned(), cosine };
-/// let data = ImportanceData { variables: vec![variable("gate", -0.28), variable("inflow", 0.96)] };
+/// let variables = vec![variable("gate", -0.28), variable("inflow", 0.96)];
+/// let data = ImportanceData { sought: Sought::Event, remarks: vec![], variables };
 /// let drawing = draw(&data, &Style::default());
 /// assert!(drawing.caption.ends_with("Nine tenths of it rest on inflow."));
 /// ```
