@@ -315,21 +315,8 @@ fn seeded(start: &Directed, from: &Material, plan: &Plan, round: u32) -> Option<
 /// Components split along their main axis, the heaviest first, as long as there is room for more.
 fn split(start: &Directed, from: &Material, most: usize) -> Option<Directed> {
     let k = start.k();
-    let (columns, _) = start.responsibilities(&from.points);
-    let total: f64 = from.weights.iter().sum();
-    let parts = start.parts();
-    let shares: Vec<f64> =
-        columns.iter().map(|c| c.iter().zip(&from.weights).map(|(r, w)| r * w).sum::<f64>() / total).collect();
-    let mut order: Vec<usize> = (0..parts.len()).collect();
-    order.sort_by(|&a, &b| shares[b].total_cmp(&shares[a]));
-    let chosen = &order[..parts.len().min(most - parts.len()).max(1)];
-    let mut grown = Vec::new();
-    for (i, part) in parts.iter().enumerate() {
-        if !chosen.contains(&i) || shares[i] <= SPLIT_LEAST {
-            grown.push(Part { mass: shares[i].max(1e-3), ..part.clone() });
-            continue;
-        }
-        let (mean, spread) = moments(&columns[i], &from.weights, &from.points, k);
+    split_heaviest(start, from, most, |part, responsibilities| {
+        let (mean, spread) = moments(responsibilities, &from.weights, &from.points, k);
         let main = eigen(&spread, k)?;
         let length = main.values[k - 1].max(0.0).sqrt();
         let covariance: Vec<f64> = spread
@@ -338,13 +325,12 @@ fn split(start: &Directed, from: &Material, most: usize) -> Option<Directed> {
             .enumerate()
             .map(|(at, (s, own))| 0.7 * s + 0.15 * own + if at % (k + 1) == 0 { 1e-6 } else { 0.0 })
             .collect();
-        for side in [1.0, -1.0] {
+        Some([1.0, -1.0].map(|side| {
             let moved =
                 mean.iter().zip(&main.vectors[k - 1]).map(|(m, v)| m + side * SPLIT_APART * length * v).collect();
-            grown.push(Part { mass: 0.5 * shares[i], mean: moved, covariance: covariance.clone(), rest: part.rest });
-        }
-    }
-    (grown.len() > parts.len()).then(|| Directed::new(&grown, start.rest_dim()).ok()).flatten()
+            Part { mean: moved, covariance: covariance.clone(), ..part.clone() }
+        }))
+    })
 }
 
 /// Components split by the variance of the rest: what the event wants there often changes along it.
@@ -352,6 +338,19 @@ fn split_rest(start: &Directed, from: &Material, most: usize) -> Option<Directed
     if start.rest_dim() == 0 {
         return None;
     }
+    split_heaviest(start, from, most, |part, _| {
+        Some([REST_APART, 1.0 / REST_APART].map(|factor| Part { rest: part.rest * factor, ..part.clone() }))
+    })
+}
+
+/// The heaviest components replaced by the two halves that `halves` makes of each and its responsibilities, as far as there is room;
+/// none where no component is heavy enough.
+fn split_heaviest(
+    start: &Directed,
+    from: &Material,
+    most: usize,
+    halves: impl Fn(&Part, &[f64]) -> Option<[Part; 2]>,
+) -> Option<Directed> {
     let (columns, _) = start.responsibilities(&from.points);
     let total: f64 = from.weights.iter().sum();
     let parts = start.parts();
@@ -366,9 +365,7 @@ fn split_rest(start: &Directed, from: &Material, most: usize) -> Option<Directed
             grown.push(Part { mass: shares[i].max(1e-3), ..part.clone() });
             continue;
         }
-        for factor in [REST_APART, 1.0 / REST_APART] {
-            grown.push(Part { mass: 0.5 * shares[i], rest: part.rest * factor, ..part.clone() });
-        }
+        grown.extend(halves(part, &columns[i])?.map(|half| Part { mass: 0.5 * shares[i], ..half }));
     }
     (grown.len() > parts.len()).then(|| Directed::new(&grown, start.rest_dim()).ok()).flatten()
 }
