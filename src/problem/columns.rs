@@ -271,7 +271,7 @@ fn is_unit(cell: &str) -> bool {
 }
 
 fn number_help(cell: &str, marks: &[String]) -> String {
-    if let Some(written) = super::slips::ungrouped(cell) {
+    if let Some(written) = super::written_numbers::ungrouped(cell) {
         return format!("write it without groups of thousands: {written}");
     }
     if let Some(help) = beyond_a_limit(cell) {

@@ -43,6 +43,7 @@ mod tuning;
 mod variable;
 mod variables_table;
 mod written;
+mod written_numbers;
 
 pub use angles::Degrees;
 pub use correlation::Correlation;
